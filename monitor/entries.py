@@ -1,0 +1,63 @@
+"""The typed journal entries: everything that can move the engine's state, and nothing else.
+
+Knows plain frozen data. Must not know where entries are kept or come from: the journal, exports and
+recordings share these types, and the engine takes no other input.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+
+
+@dataclass(frozen=True, slots=True)
+class Message:
+    """One MQTT message; ``time`` is its arrival, microseconds since 1970-01-01T00:00Z."""
+
+    time: int
+    topic: str
+    payload: bytes
+    retain: bool = False
+    qos: int = 1
+
+
+@dataclass(frozen=True, slots=True)
+class Reading:
+    """A row of a table: what a message would have said, already taken apart.
+
+    ``value`` may be anything the table held; the engine judges it as it judges a message's. ``at`` is
+    the event time as written (ISO 8601 text or epoch number), None where the table has no time: then
+    ``time``, the arrival, is the event time. ``stream`` holds the raw stream columns.
+    """
+
+    time: int
+    characteristic: str
+    stream: Mapping[str, str]
+    value: object
+    at: object = None
+    sequence: object = None
+
+
+@dataclass(frozen=True, slots=True)
+class Started:
+    """The daemon began (or a recording says one did)."""
+
+    time: int
+
+
+@dataclass(frozen=True, slots=True)
+class Connected:
+    """Subscribed at the broker; ``session_present`` is what the broker said of our session."""
+
+    time: int
+    session_present: bool
+
+
+@dataclass(frozen=True, slots=True)
+class Disconnected:
+    """The connection ended; until the next ``Connected`` nothing can be judged."""
+
+    time: int
+
+
+Entry = Message | Reading | Started | Connected | Disconnected

@@ -1,0 +1,61 @@
+"""What the engine gives out for an entry.
+
+Knows plain data. Must not know topics, JSON or who will read it.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import NamedTuple
+
+from monitor.messages import AlertEvent
+from monitor.plan import CharacteristicPlan
+from monitor.subgroups import Subgroup
+
+Stream = tuple[tuple[str, str], ...]
+"""(key, value) pairs sorted by key; empty where a characteristic is one stream."""
+
+
+class Row(NamedTuple):
+    """One statistic of one detector at one subgroup, in the characteristic's unit."""
+
+    detector: str
+    chart: str
+    statistic: str
+    value: float
+    centre: float
+    lower: float | None
+    upper: float | None
+    rules: tuple[str, ...]
+
+
+class Points(NamedTuple):
+    """All rows of one subgroup, in the order of the detectors."""
+
+    characteristic: CharacteristicPlan
+    stream: Stream
+    subgroup: Subgroup
+    rows: tuple[Row, ...]
+
+
+@dataclass(frozen=True, slots=True)
+class Alert:
+    """One alert event of one stream."""
+
+    characteristic: CharacteristicPlan
+    stream: Stream
+    event: AlertEvent
+
+
+@dataclass(frozen=True, slots=True)
+class SetAside:
+    """A message or reading that was not used; ``characteristic`` is None where none was found."""
+
+    reason: str
+    characteristic: str | None
+    time: int
+    topic: str
+    payload: bytes
+
+
+Output = Points | Alert | SetAside

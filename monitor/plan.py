@@ -1,0 +1,197 @@
+"""The resolved plan: what each characteristic is, how it is read, grouped, judged and answered.
+
+Knows plain frozen data only. Must not know YAML, pydantic, files or MQTT: everything below the
+configuration takes these objects, and two equal plans always behave alike.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, field
+from typing import Generic, Literal, TypeVar
+
+T = TypeVar("T")
+
+Direction = Literal["up", "down"]
+Side = Literal["both", "up", "down"]
+Priority = Literal["low", "medium", "high"]
+Chart = Literal["mean", "range", "individual", "moving_range"]
+
+
+@dataclass(frozen=True, slots=True)
+class SequencePlan:
+    """Where the sequence number stands in a payload, and at which count it starts again from 0."""
+
+    pointer: tuple[str, ...]
+    wraps: int | None = None
+
+
+@dataclass(frozen=True, slots=True)
+class SourcePlan:
+    """How messages become readings.
+
+    ``topic`` is the MQTT filter with ``+`` for every captured level; ``captures`` gives
+    (level index, stream key) pairs. Pointers are RFC 6901 pointers, split and unescaped.
+    """
+
+    topic: str
+    captures: tuple[tuple[int, str], ...]
+    payload: Literal["json", "number"]
+    value: tuple[str, ...] = ()
+    time: tuple[str, ...] | None = None
+    sequence: SequencePlan | None = None
+    stream: tuple[tuple[str, tuple[str, ...]], ...] = ()
+    use_if: tuple[tuple[tuple[str, ...], tuple[object, ...]], ...] = ()
+    plausible_lower: float = -1e100
+    plausible_upper: float = 1e100
+    expected_rate: float | None = None
+    """Readings per second of the whole characteristic, all streams together."""
+
+
+@dataclass(frozen=True, slots=True)
+class SubgroupPlan:
+    """Consecutive readings of one stream; ``max_gap`` in microseconds of event time."""
+
+    size: int
+    max_gap: int | None = None
+
+
+@dataclass(frozen=True, slots=True)
+class BaselinePlan:
+    """Frozen centre and spread, in the gauge's unit; ``sigma`` is of single readings."""
+
+    mean: float
+    sigma: float
+    sigma_between: float
+    revision: str
+
+
+@dataclass(frozen=True, slots=True)
+class RulePlan:
+    """One rule of a Shewhart chart. ``width`` in standard errors; unused fields stay at their default."""
+
+    rule: Literal["outside", "zone", "run", "trend", "alternation", "stratification", "mixture"]
+    width: float = 0.0
+    count: int = 0
+    of: int = 0
+    length: int = 0
+
+
+@dataclass(frozen=True, slots=True)
+class ShewhartPlan:
+    """Shewhart chart; rules in the order they are tried (the first met names the alert)."""
+
+    chart: Chart
+    width: float
+    rules: tuple[RulePlan, ...]
+    direction: Side = "both"
+
+
+@dataclass(frozen=True, slots=True)
+class CusumPlan:
+    """Tabular CUSUM; ``k`` and ``h`` in standard errors, ``head_start`` a fraction of ``h``."""
+
+    chart: Chart
+    k: float
+    h: float
+    head_start: float = 0.0
+    clip: float | None = None
+    hold: bool = False
+    direction: Side = "both"
+
+
+@dataclass(frozen=True, slots=True)
+class EwmaPlan:
+    """EWMA with weight ``lam``; limits at ``width`` of its own standard error."""
+
+    chart: Chart
+    lam: float
+    width: float
+    asymptotic: bool = False
+    clip: float | None = None
+    hold: bool = False
+    direction: Side = "both"
+
+
+Scheme = ShewhartPlan | CusumPlan | EwmaPlan
+
+
+@dataclass(frozen=True, slots=True)
+class DetectorPlan:
+    """A named detector; ``revision`` is its decision revision (contract, section 4, ``id``)."""
+
+    name: str
+    kind: str
+    scheme: Scheme
+    revision: str
+
+
+@dataclass(frozen=True, slots=True)
+class ByDirection(Generic[T]):
+    """What is declared for a rise, a fall, and for signals that have no side."""
+
+    up: T
+    down: T
+    other: T
+
+    def of(self, direction: Direction | None) -> T:
+        """The value for ``direction``; None is a spread or pattern signal."""
+        if direction == "up":
+            return self.up
+        return self.down if direction == "down" else self.other
+
+
+@dataclass(frozen=True, slots=True)
+class Specification:
+    """Tolerance of the product, shown beside an alert; it never moves a limit."""
+
+    nominal: float | None = None
+    lower: float | None = None
+    upper: float | None = None
+
+
+@dataclass(frozen=True, slots=True)
+class CharacteristicPlan:
+    """One characteristic; durations in microseconds of event time."""
+
+    name: str
+    title: str
+    unit: str
+    source: SourcePlan
+    subgroup: SubgroupPlan
+    baseline: BaselinePlan
+    detectors: tuple[DetectorPlan, ...]
+    priority: ByDirection[Priority]
+    reaction: ByDirection[tuple[str, ...]]
+    off_delay: int
+    rejoin: int
+    specification: Specification | None = None
+
+
+@dataclass(frozen=True, slots=True)
+class Plan:
+    """All that the engine needs."""
+
+    characteristics: tuple[CharacteristicPlan, ...]
+
+
+@dataclass(frozen=True, slots=True)
+class BrokerPlan:
+    """How to reach the broker; ``password`` never leaves this object in a log or an error."""
+
+    host: str
+    port: int
+    client_id: str
+    keepalive: int
+    username: str | None = None
+    password: str | None = field(default=None, repr=False)
+
+
+@dataclass(frozen=True, slots=True)
+class Settings:
+    """All that the daemon needs: the plan, and where its words come from and go to."""
+
+    plan: Plan
+    broker: BrokerPlan
+    root: str
+    points: bool
+    journal: str

@@ -1,0 +1,1 @@
+"""Recordings in, comparisons out: the same engine as the daemon, over files."""

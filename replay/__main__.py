@@ -1,0 +1,26 @@
+"""The ``driftbell-replay`` command: only the table of its subcommands."""
+
+from __future__ import annotations
+
+import sys
+from collections.abc import Sequence
+
+from monitor import commandline
+
+COMMANDS = {
+    "play": ("replay.commands.play", "run the engine over recordings"),
+}
+
+
+def main(arguments: Sequence[str] | None = None) -> int:
+    """Run the command line; returns the exit status (0 done, 1 could not, 2 wrong input)."""
+    return commandline.run(
+        "driftbell-replay",
+        "Plays recorded streams through the engine that watches the line.",
+        COMMANDS,
+        arguments,
+    )
+
+
+if __name__ == "__main__":
+    sys.exit(main())
