@@ -1,0 +1,114 @@
+"""What is charted: a subgroup's statistic, and the limits its baseline gives it at any size.
+
+Knows baselines and published limits. Must not know rules, sums or signals.
+"""
+
+from __future__ import annotations
+
+import math
+from typing import Protocol
+
+from monitor.methods.limits import Limits, moving_range_limits, range_limits
+from monitor.plan import BaselinePlan
+from monitor.subgroups import Subgroup
+
+
+def standard_error(baseline: BaselinePlan, size: int) -> float:
+    """Standard error of the mean of ``size`` readings: √(sigma_between² + sigma²/n)."""
+    return math.sqrt(baseline.sigma_between**2 + baseline.sigma**2 / size)
+
+
+class Chart(Protocol):
+    """A statistic and its limits."""
+
+    name: str
+
+    def value(self, subgroup: Subgroup) -> float | None:
+        """The statistic; None where there is none to plot (the point is blank)."""
+
+    def limits(self, size: int, width: float) -> Limits:
+        """Limits ``width`` standard errors from the centre for a subgroup of ``size``."""
+
+    def restart(self) -> None:
+        """Forget the readings before."""
+
+
+class Location:
+    """The subgroup mean; with single readings, the individual value."""
+
+    __slots__ = ("_baseline", "name")
+
+    def __init__(self, name: str, baseline: BaselinePlan) -> None:
+        self.name = name
+        self._baseline = baseline
+
+    def value(self, subgroup: Subgroup) -> float | None:
+        """The mean."""
+        return subgroup.mean
+
+    def limits(self, size: int, width: float) -> Limits:
+        """Mean ± width · SE."""
+        reach = width * standard_error(self._baseline, size)
+        return Limits(self._baseline.mean, self._baseline.mean - reach, self._baseline.mean + reach)
+
+    def restart(self) -> None:
+        """Nothing is remembered."""
+
+
+class Range:
+    """The range of a subgroup of two or more."""
+
+    __slots__ = ("_sigma", "name")
+
+    def __init__(self, name: str, baseline: BaselinePlan) -> None:
+        self.name = name
+        self._sigma = baseline.sigma
+
+    def value(self, subgroup: Subgroup) -> float | None:
+        """Largest less smallest."""
+        return subgroup.range
+
+    def limits(self, size: int, width: float) -> Limits:
+        """d2 σ ± width · d3 σ, not below zero."""
+        return range_limits(size, self._sigma, width)
+
+    def restart(self) -> None:
+        """Nothing is remembered."""
+
+
+class MovingRange:
+    """The distance between neighbouring single readings; blank at the first and after a gap."""
+
+    __slots__ = ("_previous", "_sigma", "name")
+
+    def __init__(self, name: str, baseline: BaselinePlan) -> None:
+        self.name = name
+        self._sigma = baseline.sigma
+        self._previous: float | None = None
+
+    def value(self, subgroup: Subgroup) -> float | None:
+        """How far this reading lies from the one before."""
+        previous = None if subgroup.broken else self._previous
+        self._previous = subgroup.mean
+        return None if previous is None else abs(subgroup.mean - previous)
+
+    def limits(self, size: int, width: float) -> Limits:
+        """Limits of a range of two."""
+        return moving_range_limits(self._sigma, width)
+
+    def restart(self) -> None:
+        """The next reading has no neighbour."""
+        self._previous = None
+
+
+def chart(name: str, baseline: BaselinePlan) -> Chart:
+    """The chart of that name."""
+    if name == "range":
+        return Range(name, baseline)
+    if name == "moving_range":
+        return MovingRange(name, baseline)
+    return Location(name, baseline)
+
+
+SPREAD = frozenset({"range", "moving_range"})
+"""Charts whose signals say that the spread changed, not the mean: they have no direction."""

@@ -1,0 +1,191 @@
+"""The decision rules of a Shewhart chart, one small object each.
+
+Knows one point after another. Must not know charts, units or other rules.
+
+Every rule takes every point, with the limits at the rule's own width. Pattern rules start afresh after
+they signal, so that two signals share no point.
+"""
+
+from __future__ import annotations
+
+from collections import deque
+from typing import Protocol
+
+from monitor.methods.limits import Limits
+from monitor.plan import RulePlan
+
+Met = tuple[str, ...]
+"""The names of what was met: ``outside-upper``, ``trend-down``, ``mixture`` …"""
+
+NONE: Met = ()
+
+
+class Rule(Protocol):
+    """One rule, fed with every point."""
+
+    def step(self, value: float, z: float, limits: Limits) -> Met:
+        """Take a point; ``limits`` are those at the rule's own width, ``z`` its standardised value."""
+
+
+def _side(value: float, limits: Limits) -> int:
+    if value > limits.upper:
+        return 1
+    return -1 if value < limits.lower else 0
+
+
+class Outside:
+    """One point beyond the limits; signals at each such point."""
+
+    __slots__ = ()
+
+    def step(self, value: float, z: float, limits: Limits) -> Met:
+        """Met on the side the point fell."""
+        if value > limits.upper:
+            return ("outside-upper",)
+        return ("outside-lower",) if value < limits.lower else NONE
+
+
+class Zone:
+    """``count`` of the last ``of`` points beyond, on one side, the newest among them."""
+
+    __slots__ = ("_count", "_sides")
+
+    def __init__(self, count: int, of: int) -> None:
+        self._count = count
+        self._sides: deque[int] = deque(maxlen=of)
+
+    def step(self, value: float, z: float, limits: Limits) -> Met:
+        """Met also while fewer than ``of`` points exist."""
+        side = _side(value, limits)
+        self._sides.append(side)
+        if side and self._sides.count(side) >= self._count:
+            return ("zone-upper",) if side > 0 else ("zone-lower",)
+        return NONE
+
+
+class Run:
+    """``length`` points in a row on one side of the centre; a point on the centre ends the run."""
+
+    __slots__ = ("_length", "_run", "_side")
+
+    def __init__(self, length: int) -> None:
+        self._length = length
+        self._side = self._run = 0
+
+    def step(self, value: float, z: float, limits: Limits) -> Met:
+        """Met at the last point of the run."""
+        side = (value > limits.centre) - (value < limits.centre)
+        self._run = self._run + 1 if side and side == self._side else abs(side)
+        self._side = side
+        if self._run < self._length:
+            return NONE
+        self._side = self._run = 0
+        return ("run-upper",) if side > 0 else ("run-lower",)
+
+
+class Trend:
+    """``length`` points in a row steadily rising or falling; equal neighbours end it."""
+
+    __slots__ = ("_length", "_points", "_previous", "_side")
+
+    def __init__(self, length: int) -> None:
+        self._length = length
+        self._points = self._side = 0
+        self._previous: float | None = None
+
+    def step(self, value: float, z: float, limits: Limits) -> Met:
+        """Met at the last point of the trend; judged on the values themselves."""
+        side = 0 if self._previous is None else _step_side(value, self._previous)
+        self._points = self._points + 1 if side and side == self._side else 1 + abs(side)
+        self._side, self._previous = side, value
+        if self._points < self._length:
+            return NONE
+        self._points = self._side = 0
+        self._previous = None
+        return ("trend-up",) if side > 0 else ("trend-down",)
+
+
+class Alternation:
+    """``length`` points in a row alternating up and down; equal neighbours end it."""
+
+    __slots__ = ("_length", "_points", "_previous", "_side")
+
+    def __init__(self, length: int) -> None:
+        self._length = length
+        self._points = self._side = 0
+        self._previous: float | None = None
+
+    def step(self, value: float, z: float, limits: Limits) -> Met:
+        """Met at the last point; judged on standardised values."""
+        side = 0 if self._previous is None else _step_side(z, self._previous)
+        self._points = self._points + 1 if side and side == -self._side else 1 + abs(side)
+        self._side, self._previous = side, z
+        if self._points < self._length:
+            return NONE
+        self._points = self._side = 0
+        self._previous = None
+        return ("alternation",)
+
+
+class Stratification:
+    """``length`` points in a row inside the limits: the spread is smaller than the baseline says."""
+
+    __slots__ = ("_length", "_run")
+
+    def __init__(self, length: int) -> None:
+        self._length = length
+        self._run = 0
+
+    def step(self, value: float, z: float, limits: Limits) -> Met:
+        """Met at the last point of the run."""
+        self._run = self._run + 1 if limits.lower < value < limits.upper else 0
+        if self._run < self._length:
+            return NONE
+        self._run = 0
+        return ("stratification",)
+
+
+class Mixture:
+    """``length`` points in a row outside the limits, on either side."""
+
+    __slots__ = ("_length", "_run")
+
+    def __init__(self, length: int) -> None:
+        self._length = length
+        self._run = 0
+
+    def step(self, value: float, z: float, limits: Limits) -> Met:
+        """Met at the last point of the run."""
+        self._run = self._run + 1 if _side(value, limits) else 0
+        if self._run < self._length:
+            return NONE
+        self._run = 0
+        return ("mixture",)
+
+
+def _step_side(value: float, previous: float) -> int:
+    return (value > previous) - (value < previous)
+
+
+def rule(plan: RulePlan) -> Rule:
+    """A fresh rule as planned."""
+    match plan.rule:
+        case "outside":
+            return Outside()
+        case "zone":
+            return Zone(plan.count, plan.of)
+        case "run":
+            return Run(plan.length)
+        case "trend":
+            return Trend(plan.length)
+        case "alternation":
+            return Alternation(plan.length)
+        case "stratification":
+            return Stratification(plan.length)
+        case "mixture":
+            return Mixture(plan.length)
+
+
+def span(plan: RulePlan) -> int:
+    """How many points the rule looks at."""
+    return plan.length or plan.of or 1

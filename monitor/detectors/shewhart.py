@@ -1,0 +1,108 @@
+"""Shewhart charts (W. A. Shewhart 1931; ISO 7870-2): a statistic, its limits, its rules.
+
+Knows one chart and the rules on it. Must not know streams or alerts.
+"""
+
+from __future__ import annotations
+
+from monitor.detectors.base import NO_SIGNALS, Signal, met
+from monitor.detectors.charts import SPREAD, chart
+from monitor.detectors.rules import rule, span
+from monitor.methods.limits import Limits
+from monitor.outputs import Row
+from monitor.plan import BaselinePlan, Direction, ShewhartPlan
+from monitor.subgroups import Subgroup
+
+_SIDES: dict[str, Direction] = {
+    "outside-upper": "up",
+    "zone-upper": "up",
+    "run-upper": "up",
+    "trend-up": "up",
+    "outside-lower": "down",
+    "zone-lower": "down",
+    "run-lower": "down",
+    "trend-down": "down",
+}
+
+
+class Shewhart:
+    """One Shewhart chart of one stream."""
+
+    __slots__ = (
+        "_at",
+        "_chart",
+        "_limits",
+        "_plan",
+        "_rules",
+        "_size",
+        "_spread",
+        "_unit",
+        "_value",
+        "_widths",
+    )
+
+    def __init__(self, plan: ShewhartPlan, baseline: BaselinePlan) -> None:
+        self._plan = plan
+        self._chart = chart(plan.chart, baseline)
+        self._spread = plan.chart in SPREAD
+        self._rules = tuple(rule(r) for r in plan.rules)
+        self._widths = tuple(r.width for r in plan.rules)
+        self._size = 0
+        self._limits: tuple[Limits, ...] = ()
+        self._at = self._unit = Limits(0.0, 0.0, 0.0)
+        self._value: float | None = None
+
+    def step(self, subgroup: Subgroup) -> tuple[Signal, ...]:
+        """Hold the subgroup's statistic against every rule."""
+        value = self._value = self._chart.value(subgroup)
+        if value is None:
+            return NO_SIGNALS
+        if subgroup.size != self._size:
+            self._resize(subgroup.size)
+        at, unit = self._at, self._unit
+        z = (value - unit.centre) / (unit.upper - unit.centre)
+        signals = NO_SIGNALS
+        for index, decide in enumerate(self._rules):
+            for name in decide.step(value, z, self._limits[index]):
+                signals += self._signal(name, index, value)
+        return signals
+
+    def _signal(self, name: str, index: int, value: float) -> tuple[Signal, ...]:
+        side = _SIDES.get(name)
+        if side and self._plan.direction not in ("both", side):
+            return NO_SIGNALS
+        planned = self._plan.rules[index]
+        limits = self._limits[index] if planned.rule in ("outside", "zone") else self._at
+        direction = None if self._spread else side
+        return (
+            Signal(
+                name,
+                direction,
+                self._plan.chart,
+                value,
+                limits.lower,
+                limits.upper,
+                span(planned),
+                planned.count,
+            ),
+        )
+
+    def _resize(self, size: int) -> None:
+        self._size = size
+        self._limits = tuple(self._chart.limits(size, width) for width in self._widths)
+        self._at = self._chart.limits(size, self._plan.width)
+        self._unit = self._chart.limits(size, 1.0)
+
+    def rows(self, name: str, signals: tuple[Signal, ...]) -> tuple[Row, ...]:
+        """One row; none where the point is blank."""
+        value, at, statistic = self._value, self._at, self._plan.chart
+        if value is None:
+            return ()
+        rules = met(signals, statistic)
+        return (Row(name, statistic, statistic, value, at.centre, at.lower, at.upper, rules),)
+
+    def restart(self) -> None:
+        """Fresh rules: no pattern reaches across."""
+        self._chart.restart()
+        self._rules = tuple(rule(r) for r in self._plan.rules)
+        self._value = None

@@ -1,0 +1,144 @@
+"""What has been seen of a stream and of a topic's counter: repeats, late ones, gaps, gauge restarts.
+
+Knows sequence numbers and event times. Must not know values, subgroups or why a reading was refused.
+"""
+
+from __future__ import annotations
+
+from collections import deque
+from enum import Enum
+
+WINDOW = 4096
+"""How far behind the newest sequence number a repeat is still told from a restarted counter."""
+
+_RECENT_TIMES = 64
+
+
+class Verdict(Enum):
+    """What a reading's identity says of it."""
+
+    NEW = "new"
+    RESTART = "restart"
+    REPEATED = "repeated"
+    LATE = "late"
+
+
+def ahead(number: int, last: int, wraps: int | None) -> int:
+    """How far ``number`` is ahead of ``last`` on a counter that may wrap; negative: behind."""
+    distance = number - last
+    if wraps is None:
+        return distance
+    distance %= wraps
+    return distance - wraps if distance > wraps // 2 else distance
+
+
+class StreamSeen:
+    """The identities a stream has accepted.
+
+    Sequence numbers are kept as a sliding window of bits behind the newest (the anti-replay window of
+    RFC 4303, section 3.4.3): half a kilobyte, however many readings.
+    """
+
+    __slots__ = ("_bits", "_last", "_mark", "_times", "_wraps")
+
+    def __init__(self, wraps: int | None) -> None:
+        self._wraps = wraps
+        self._mark: int | None = None
+        self._last: int | None = None
+        self._bits = 0
+        self._times: deque[int] | None = None
+
+    def admit(self, time: int, timed: bool, sequence: int | None) -> Verdict:
+        """Judge a reading by its identity and, unless it is a repeat or late, move the mark.
+
+        ``timed``: the gauge gave the time itself; otherwise ``time`` is the arrival, which proves
+        nothing about a repeat.
+        """
+        if sequence is None:
+            return self._admit_by_time(time) if timed else self._advance(time)
+        last, mark = self._last, self._mark
+        if last is None:
+            verdict = Verdict.NEW
+            distance = WINDOW
+            if timed and mark is not None and time < mark:
+                return Verdict.LATE
+        else:
+            distance = ahead(sequence, last, self._wraps)
+            verdict = Verdict.NEW if distance >= 0 else Verdict.RESTART
+            if timed:
+                if mark is not None and time <= mark:
+                    if self._has(distance):
+                        return Verdict.REPEATED
+                    if time < mark:
+                        return Verdict.LATE
+                    # Equal time, new number: accepted, also where it fills a hole behind the newest.
+                    verdict = Verdict.NEW
+            elif self._has(distance):
+                return Verdict.REPEATED
+            elif -WINDOW < distance < 0:
+                return Verdict.LATE
+        self._mark = time
+        if verdict is Verdict.RESTART or distance >= WINDOW:
+            self._last, self._bits = sequence, 1
+        elif distance >= 0:
+            self._last = sequence
+            self._bits = (self._bits << distance | 1) & _MASK
+        else:
+            self._bits |= 1 << -distance & _MASK
+        return verdict
+
+    def _admit_by_time(self, time: int) -> Verdict:
+        if self._times is None:
+            self._times = deque(maxlen=_RECENT_TIMES)
+        if self._mark is not None and time <= self._mark:
+            # A message that lacks its number has only its time to be known by.
+            known = time == self._mark or time in self._times
+            return Verdict.REPEATED if known else Verdict.LATE
+        self._times.append(time)
+        return self._advance(time)
+
+    def _advance(self, time: int) -> Verdict:
+        self._mark = time
+        return Verdict.NEW
+
+    def _has(self, distance: int) -> bool:
+        return -WINDOW < distance <= 0 and bool(self._bits >> -distance & 1)
+
+
+_MASK = (1 << WINDOW) - 1
+
+
+class TopicCounter:
+    """The sequence counter of one concrete topic, which its streams may share: counts what is missing.
+
+    A number whose message was set aside was not lost on the way, so it does not count as missing.
+    """
+
+    __slots__ = ("_last", "_noted", "_wraps")
+
+    def __init__(self, wraps: int | None) -> None:
+        self._wraps = wraps
+        self._last: int | None = None
+        self._noted: set[int] = set()
+
+    def note(self, sequence: int) -> None:
+        """A message with this number came, and was set aside."""
+        if self._last is not None and 0 < ahead(sequence, self._last, self._wraps) <= WINDOW:
+            self._noted.add(sequence)
+
+    def advance(self, sequence: int, restarted: bool) -> int:
+        """A reading with this number was accepted; how many numbers the gap before it lost."""
+        last = self._last
+        if last is None or restarted:
+            self._last = sequence
+            self._noted.clear()
+            return 0
+        distance = ahead(sequence, last, self._wraps)
+        if distance <= 0:
+            return 0
+        self._last = sequence
+        if not self._noted:
+            return distance - 1
+        passed = {n for n in self._noted if ahead(n, sequence, self._wraps) <= 0}
+        self._noted -= passed
+        return distance - 1 - len(passed - {sequence})
