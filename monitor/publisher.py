@@ -1,0 +1,127 @@
+"""What leaves for the broker after a commit: alerts, points, standings, health, set-aside notices.
+
+Knows topics and when each is due. Must not know sockets, the journal or how anything was decided.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from typing import Protocol
+
+from monitor import health, messages, times
+from monitor.engine import Engine, StreamState
+from monitor.health import EVERY, Health, SetAsideNotices
+from monitor.messages import SCHEMA, PointMessage, RowField
+from monitor.outbox import Outbox
+from monitor.outputs import Output, Points, SetAside
+from monitor.throttle import Throttle
+
+_IN_FLIGHT = 1_000
+_MOST_UNSENT = 8 << 20
+"""Bytes; a broker that takes no more gets no points until it does."""
+
+
+class Link(Protocol):
+    """What is needed of a connection."""
+
+    @property
+    def unsent(self) -> int:
+        """Bytes the connection has not taken yet."""
+
+    def publish(self, topic: str, payload: bytes, *, retain: bool = False) -> int:
+        """Queue a message; returns its packet identifier."""
+
+
+class Publisher:
+    """Says on the broker what is due, under one root."""
+
+    def __init__(self, root: str, engine: Engine, condition: Health, outbox: Outbox) -> None:
+        self._root = root
+        self._engine = engine
+        self._health = condition
+        self._outbox = outbox
+        self._notices = SetAsideNotices()
+        self._standings: Throttle[StreamState] = Throttle(EVERY)
+
+    def will(self, now: int) -> tuple[str, bytes]:
+        """(topic, payload) of what the broker says when we are gone without a word."""
+        return f"{self._root}/health", messages.encode(health.will(now))
+
+    def publish(self, link: Link, outputs: Sequence[Output], now: int) -> None:
+        """Publish what the outputs and the passing of time make due."""
+        if not self._health.online:
+            return
+        for alert in self._outbox.to_send(_IN_FLIGHT):
+            stamped = messages.published(alert.payload, times.format_time(now))
+            self._outbox.sent(link.publish(alert.topic, stamped))
+        for output in outputs:
+            if isinstance(output, Points):
+                self._point(link, output)
+            elif isinstance(output, SetAside) and self._notices.add(output, now):
+                self._notice(link, output.reason)
+        for reason in self._notices.due(now):
+            self._notice(link, reason)
+        self._publish_standings(link, now)
+        if self._health.is_due(now):
+            self._publish_health(link, now)
+
+    def farewell(self, link: Link, now: int) -> int:
+        """Say that we stop; the packet identifier of our last word."""
+        self._health.disconnected(now, "stopped")
+        return self._publish_health(link, now)
+
+    def _publish_health(self, link: Link, now: int) -> int:
+        engine = self._engine
+        message = self._health.message(now, engine.counts, engine.lag, len(self._outbox))
+        return link.publish(f"{self._root}/health", messages.encode(message), retain=True)
+
+    def _publish_standings(self, link: Link, now: int) -> None:
+        engine, throttle = self._engine, self._standings
+        due = dict.fromkeys(throttle.due(now))
+        for state in engine.touched:
+            if throttle.touch(state, engine.mark(state), now):
+                due[state] = None
+        engine.touched.clear()
+        for state in due:
+            link.publish(
+                f"{self._root}/standing/{messages.path(state.plan.name, state.stream)}",
+                messages.encode(engine.standing(state)),
+                retain=True,
+            )
+
+    def _notice(self, link: Link, reason: str) -> None:
+        message = self._notices.message(reason, self._engine.counts)
+        link.publish(f"{self._root}/setaside", messages.encode(message))
+
+    def _point(self, link: Link, point: Points) -> None:
+        if link.unsent > _MOST_UNSENT:
+            self._health.dropped_points += 1
+            return
+        plan, subgroup = point.characteristic, point.subgroup
+        message = PointMessage(
+            schema=SCHEMA,
+            characteristic=plan.name,
+            stream=dict(point.stream),
+            time=times.format_time(subgroup.last),
+            number=subgroup.number,
+            size=subgroup.size,
+            mean=subgroup.mean,
+            range=subgroup.range,
+            sd=subgroup.sd,
+            unit=plan.unit,
+            rows=[
+                RowField(
+                    detector=row.detector,
+                    chart=row.chart,
+                    statistic=row.statistic,
+                    value=row.value,
+                    centre=row.centre,
+                    lower=row.lower,
+                    upper=row.upper,
+                    rules=row.rules,
+                )
+                for row in point.rows
+            ],
+        )
+        topic = f"{self._root}/point/{messages.path(plan.name, point.stream)}"
+        link.publish(topic, messages.encode(message))
