@@ -1,0 +1,1 @@
+"""Published mathematics as pure functions over floats and arrays, each citing its source."""

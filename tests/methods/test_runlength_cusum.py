@@ -1,0 +1,150 @@
+"""Run lengths of the CUSUM: against simulation, against each other, and far out."""
+
+import math
+
+import numpy as np
+import pytest
+from hypothesis import given, settings
+from hypothesis import strategies as st
+
+from monitor.methods.runlength.cusum import decision_interval, run_length
+
+SERIES = 20_000
+
+
+def simulated(
+    k: float, h: float, shift: float, head_start: float, clip: float | None, sides: str
+) -> tuple[float, float]:
+    """Mean run length of 20,000 series, and its standard error."""
+    rng = np.random.default_rng(7)
+    upper = np.full(SERIES, head_start * h)
+    lower = upper.copy()
+    lengths: list[np.ndarray] = []
+    step = 0
+    while upper.size:
+        step += 1
+        z = rng.standard_normal(upper.size) + shift
+        if clip is not None:
+            z = np.clip(z, -clip, clip)
+        upper = np.maximum(0, upper + z - k)
+        lower = np.maximum(0, lower - z - k)
+        over = np.zeros(upper.size, bool)
+        if sides != "down":
+            over |= upper > h
+        if sides != "up":
+            over |= lower > h
+        lengths.append(np.full(int(over.sum()), step))
+        upper, lower = upper[~over], lower[~over]
+    found = np.concatenate(lengths)
+    return float(found.mean()), float(found.std() / math.sqrt(SERIES))
+
+
+@pytest.mark.parametrize(
+    ("k", "h", "shift", "head_start", "clip", "sides"),
+    [
+        (0.5, 4, 0, 0, None, "both"),
+        (0.5, 4, -0.7, 0, None, "down"),
+        (0.25, 6, 0.5, 0.5, None, "both"),
+        (1.0, 2.2, 0, 0.5, None, "up"),
+        (0.5, 4, 0, 0, 2.0, "both"),
+        (0.5, 5, 2, 0, 3.0, "both"),
+        (0.25, 6, 0, 0.5, 2.5, "up"),
+        (1.0, 2.0, 3, 0, 2.0, "up"),  # two clipped values come to h exactly: no signal
+        (0.5, 5, 2, 0.5, 3.0, "up"),
+    ],
+)
+def test_against_simulation(
+    k: float, h: float, shift: float, head_start: float, clip: float | None, sides: str
+) -> None:
+    mean, error = simulated(k, h, shift, head_start, clip, sides)
+    computed = run_length(k, h, shift, direction=sides, head_start=head_start, clip=clip)  # type: ignore[arg-type]
+    assert computed == pytest.approx(mean, abs=4 * error)
+
+
+@pytest.mark.parametrize(
+    ("k", "wanted", "h"),
+    [
+        (0.25, 1e4, 14.492),
+        (0.25, 1e6, 23.695),
+        (0.25, 1e7, 28.300),
+        (0.5, 1e4, 8.053),
+        (0.5, 1e6, 12.657),
+        (0.5, 1e7, 14.960),
+        (1.0, 1e4, 4.160),
+        (1.0, 1e6, 6.463),
+        (1.0, 1e7, 7.614),
+    ],
+)
+def test_decision_intervals_computed_elsewhere(k: float, wanted: float, h: float) -> None:
+    """Two-sided, by an independent solution of the integral equation."""
+    assert decision_interval(k, wanted) == pytest.approx(h, abs=0.0006)
+
+
+@pytest.mark.parametrize("k", [0.25, 0.5, 1.0])
+def test_far_out_the_interval_grows_by_its_asymptote(k: float) -> None:
+    """h(A₂) = h(A₁) + ln(A₂/A₁)/2k for the normal (D. Siegmund 1985, Sequential Analysis)."""
+    near = decision_interval(k, 1e9)
+    for wanted in (1e12, 1e15, 1e18):
+        grown = near + math.log(wanted / 1e9) / (2 * k)
+        assert decision_interval(k, wanted) == pytest.approx(grown, abs=1e-5)
+
+
+@settings(max_examples=40)
+@given(
+    st.floats(0.1, 1.5),
+    st.floats(2, 12),
+    st.sampled_from(["both", "up", "down"]),
+    st.floats(0, 0.9),
+    st.floats(-0.05, 0.05),
+)
+def test_the_inverse_gives_back_the_interval(
+    k: float, log10: float, direction: str, head_start: float, ignored: float
+) -> None:
+    wanted = 10**log10
+    options = {"direction": direction, "head_start": head_start}
+    h = decision_interval(k, wanted, ignored, **options)  # type: ignore[arg-type]
+    assert run_length(k, h, ignored, **options) == pytest.approx(wanted, rel=1e-6)  # type: ignore[arg-type]
+
+
+@settings(max_examples=40)
+@given(st.floats(0.1, 1.5), st.floats(0.5, 12), st.floats(0, 3))
+def test_order(k: float, h: float, shift: float) -> None:
+    """Two sides signal sooner than one, a head start sooner than none, a higher h later."""
+    one = run_length(k, h, shift, direction="up")
+    assert 1 <= run_length(k, h, shift) <= one * (1 + 1e-9)
+    assert run_length(k, h, shift, direction="up", head_start=0.5) <= one * (1 + 1e-9)
+    assert run_length(k, h * 1.1, shift, direction="up") > one * (1 - 1e-9)
+
+
+def test_a_wide_clip_changes_nothing() -> None:
+    assert run_length(0.5, 5, 0.3, clip=7.0) == pytest.approx(run_length(0.5, 5, 0.3), rel=1e-3)
+
+
+def test_a_clip_lengthens_the_interval_and_its_inverse_allows_for_it() -> None:
+    h = decision_interval(0.5, 1e4, clip=3.0)
+    assert h < decision_interval(0.5, 1e4)
+    assert run_length(0.5, h, clip=3.0) == pytest.approx(1e4, rel=1e-4)
+
+
+def test_a_clip_below_k_never_rises() -> None:
+    with pytest.raises(ValueError, match="never rise"):
+        run_length(0.5, 5, clip=0.5)
+
+
+def test_beyond_a_float_is_inf() -> None:
+    assert run_length(0.5, 5, -60, direction="up") == math.inf
+
+
+def test_no_interval_is_shorter_than_that_of_no_decision() -> None:
+    with pytest.raises(ValueError, match="no setting"):
+        decision_interval(0.5, 1.01)
+
+
+def test_a_shift_beyond_k_cannot_be_ignored_for_long() -> None:
+    with pytest.raises(ValueError, match="no setting"):
+        decision_interval(0.5, 1e12, 1.0)
+
+
+def test_an_interval_too_high_to_compute_says_so() -> None:
+    with pytest.raises(ValueError, match="as far as run lengths are computed"):
+        run_length(0.5, 1e9)
