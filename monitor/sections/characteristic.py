@@ -1,0 +1,152 @@
+"""The keys of a characteristic: what is measured, how it is judged and what to do about it.
+
+Knows how its parts must suit each other. Must not know other characteristics.
+"""
+
+from __future__ import annotations
+
+import re
+from typing import Annotated
+
+from pydantic import AfterValidator, BeforeValidator, Field, ValidationInfo, field_validator
+
+from monitor.plan import Priority
+from monitor.problems import Path
+from monitor.sections.base import Section, either, fault, faults
+from monitor.sections.detectors import AnyDetector, fits
+from monitor.sections.scalars import LINE, Duration, Line, Number, Positive, Whole
+from monitor.sections.source import Source
+
+_BRACED = re.compile(r"\{([^{}]*)\}")
+_PRIORITY = "low, medium or high, or a mapping such as {down: high, up: medium}"
+_REACTION = "a list of texts, or a mapping of up, down and other to such lists"
+
+
+def _some_time(value: int) -> int:
+    if value == 0:
+        raise fault("is no time at all", "write a longer one, such as 30s, or leave the key out")
+    return value
+
+
+class Subgroup(Section):
+    """How readings of one stream are gathered."""
+
+    size: Whole = Field(
+        default=1, ge=1, le=10_000, description="how many readings, from 1 to 10000"
+    )
+    max_gap: Annotated[Duration, AfterValidator(_some_time)] | None = Field(
+        default=None,
+        description="the longest time between two readings of one subgroup, such as 30s",
+    )
+
+
+class Baseline(Section):
+    """The frozen centre and spread."""
+
+    mean: Number = Field(description="the centre in the gauge's unit, such as 341.2")
+    sigma: Positive = Field(
+        description="the standard deviation of single readings within a subgroup, such as 1.9"
+    )
+    sigma_between: Number = Field(
+        0.0,
+        ge=0,
+        description="the standard deviation between subgroup means beyond sigma, such as 0.4, or 0",
+    )
+
+
+class Specification(Section):
+    """The product's tolerance."""
+
+    lower: Number | None = Field(None, description="the lower specification limit")
+    upper: Number | None = Field(None, description="the upper specification limit")
+    nominal: Number | None = Field(None, description="the nominal value")
+
+    @field_validator("upper", "nominal")
+    @classmethod
+    def _in_order(cls, value: float | None, info: ValidationInfo) -> float | None:
+        lower, upper = info.data.get("lower"), info.data.get("upper")
+        if value is None:
+            return value
+        if (lower is not None and value < lower) or (upper is not None and value > upper):
+            raise fault("is out of order", "write lower, nominal and upper in their order")
+        return value
+
+
+class PriorityByDirection(Section):
+    """How urgent a rise, a fall, and a signal without a side are."""
+
+    up: Priority | None = Field(default=None, description=_PRIORITY)
+    down: Priority | None = Field(default=None, description=_PRIORITY)
+    other: Priority | None = Field(default=None, description=_PRIORITY)
+
+
+class ReactionByDirection(Section):
+    """What to do about a rise, a fall, and a signal without a side."""
+
+    up: list[Line] | None = Field(default=None, description=_REACTION)
+    down: list[Line] | None = Field(default=None, description=_REACTION)
+    other: list[Line] | None = Field(default=None, description=_REACTION)
+
+
+def _spread_sides(value: object) -> object:
+    return value if isinstance(value, dict) else dict.fromkeys(("up", "down", "other"), value)
+
+
+class Characteristic(Section):
+    """One measured quantity on one line. Source and subgroup come first: what follows is held
+    against them."""
+
+    title: Line | None = Field(None, description="a title for people, such as Net weight")
+    unit: Annotated[str, Field(pattern=LINE)] = Field("", description="the unit, such as g")
+    specification: Specification | None = Field(
+        None, description="the tolerance, such as {nominal: 340, lower: 331, upper: 352}"
+    )
+    source: Source = Field(
+        description="where readings come from: {topic: …, payload: json, value: …}"
+    )
+    subgroup: Subgroup = Field(
+        Subgroup(),
+        description="how readings are gathered, such as {size: 5, max_gap: 30s}",
+    )
+    baseline: Baseline = Field(
+        description="the frozen centre and spread, such as {mean: 341.2, sigma: 1.9}"
+    )
+    detectors: list[Annotated[AnyDetector, Field(discriminator="kind"), AfterValidator(fits)]] = (
+        Field(
+            min_length=1,
+            description="a list such as [{kind: shewhart}, {kind: cusum, k: 0.5, h: 5}]",
+        )
+    )
+    priority: Annotated[PriorityByDirection, BeforeValidator(_spread_sides)] = Field(
+        PriorityByDirection(), description=_PRIORITY
+    )
+    reaction: Annotated[ReactionByDirection, BeforeValidator(_spread_sides)] = Field(
+        ReactionByDirection(), description=_REACTION
+    )
+
+    @field_validator("reaction")
+    @classmethod
+    def _names_stream_keys(
+        cls, value: ReactionByDirection, info: ValidationInfo
+    ) -> ReactionByDirection:
+        source: Source | None = info.data.get("source")
+        if source is None:
+            return value
+        keys = source.keys()
+        known = (
+            f"write {either([f'{{{key}}}' for key in keys])}" if keys else "leave the braces out"
+        )
+        found: list[tuple[Path, str, str]] = []
+        for side, steps in (("up", value.up), ("down", value.down), ("other", value.other)):
+            for index, step in enumerate(steps or ()):
+                strange = [name for name in _BRACED.findall(step) if name not in keys]
+                if strange:
+                    wrong = f"names {{{strange[0]}}}, which is no stream key of this characteristic"
+                elif set("{}") & set(_BRACED.sub("", step)):
+                    wrong = "has a brace without its partner"
+                else:
+                    continue
+                found.append(((side, index), wrong, known))
+        if found:
+            raise faults(found)
+        return value

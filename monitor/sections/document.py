@@ -1,0 +1,55 @@
+"""The whole configuration, and the keys of the contract that are still to come.
+
+Knows the top level. Must not know what the sections hold.
+"""
+
+from __future__ import annotations
+
+from typing import Annotated
+
+from pydantic import AfterValidator, Field
+
+from monitor.sections.base import Section, fault
+from monitor.sections.characteristic import Baseline, Characteristic, Subgroup
+from monitor.sections.daemon import Alerts, Broker, Journal, Outputs
+from monitor.sections.detectors import Detector
+from monitor.sections.scalars import Name, Whole
+
+
+def _known_version(value: int) -> int:
+    if value != 1:
+        raise fault("is no version of this configuration", "write version: 1")
+    return value
+
+
+class Document(Section):
+    """The whole configuration."""
+
+    version: Annotated[Whole, AfterValidator(_known_version)] = Field(description="version: 1")
+    broker: Broker = Field(description="how to reach the broker, such as {host: localhost}")
+    outputs: Outputs = Field(
+        description="where messages go, such as {root: plant/jar-line-2/monitor}"
+    )
+    journal: Journal = Field(description="where to keep the journal: {path: var/jar-line-2.db}")
+    alerts: Alerts = Field(Alerts(), description="{off_delay: 2min, rejoin: 30min}")
+    characteristics: dict[Name, Characteristic] = Field(
+        min_length=1, description="a mapping of names to what is measured"
+    )
+
+
+NOT_BUILT_KEYS: dict[type[Section], frozenset[str]] = {
+    Document: frozenset({"budget", "instances"}),
+    Broker: frozenset({"tls", "session_expiry"}),
+    Journal: frozenset({"keep", "max_size", "keep_alerts"}),
+    Characteristic: frozenset({"promise", "gauge", "changeover", "by_stream"}),
+    Subgroup: frozenset({"window", "min_size", "every"}),
+    Baseline: frozenset({"file", "learn", "over_at_least", "by_stream"}),
+    Detector: frozenset({"catch", "ignore", "catch_ratio", "share"}),
+}
+"""Keys of the contract that are still to come; delete one here when its field is added."""
+
+NOT_BUILT_VALUES: dict[str, frozenset[str]] = {
+    "protocol": frozenset({"5", "5.0"}),
+    "chart": frozenset({"sd", "median", "variance", "fraction", "number", "count", "rate"}),
+}
+"""Values of the contract that are still to come, by key."""

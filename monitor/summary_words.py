@@ -1,0 +1,269 @@
+"""A plan's summary in words, for the engineer who will put it on the line.
+
+Knows plain words, and how many digits are worth showing. Must not know how a figure was worked out.
+"""
+
+from __future__ import annotations
+
+import json
+import math
+import textwrap
+from collections.abc import Iterator
+from typing import Any
+
+from monitor import times
+from monitor.sections.base import either
+
+_WIDTH = 100
+_LABEL = 14
+_BOUND = "\u00a0"  # no line is broken here; it is printed as a plain space
+
+Summary = dict[str, Any]
+
+
+def lines(plan: Summary) -> Iterator[str]:
+    """What the whole plan does, line by line."""
+    broker, outputs = plan["broker"], plan["outputs"]
+    user = "" if broker["username"] is None else f", user {broker['username']}"
+    points = "every subgroup's points included" if outputs["points"] else "without points"
+    yield ""
+    yield from _entry(
+        "Broker", f"{broker['host']}:{broker['port']}, client id {broker['client_id']}{user}"
+    )
+    yield from _entry("Publishes", f"under {outputs['root']}/, {points}")
+    yield from _entry("Journal", plan["journal"])
+    for each in plan["characteristics"]:
+        yield ""
+        yield from _Speaker(each).lines()
+
+
+def _entry(label: str, *sentences: str) -> Iterator[str]:
+    """A label, and sentences beside it: each on lines of its own, wrapped where it is long."""
+    for index, sentence in enumerate(sentences):
+        wrapped = textwrap.fill(
+            sentence,
+            _WIDTH,
+            initial_indent=(label if index == 0 else "").ljust(_LABEL),
+            subsequent_indent=" " * (_LABEL + 2),
+            break_long_words=False,
+            break_on_hyphens=False,
+        )
+        yield wrapped.replace(_BOUND, " ")
+
+
+class _Speaker:
+    """Says one characteristic, in its unit and to the digits its standard error warrants."""
+
+    def __init__(self, plan: Summary) -> None:
+        self._plan = plan
+        error = plan["baseline"]["standard_error"]
+        self._places = max(0, 1 - math.floor(math.log10(error)))
+        self._unit = f"{_BOUND}{plan['unit']}" if plan["unit"] else ""
+
+    def lines(self) -> Iterator[str]:
+        plan = self._plan
+        unit = f" ({plan['unit']})" if plan["unit"] else ""
+        yield f"{plan['name']}: {plan['title']}{unit}"
+        yield from _entry("  Reads", *self._source())
+        yield from _entry("  Streams", self._streams())
+        yield from _entry("  Subgroups", *self._subgroups())
+        yield from _entry("  Baseline", *self._baseline())
+        for detector in plan["detectors"]:
+            yield from _entry("  Detector", *self._detector(detector))
+        yield from _entry("  Alerts", *self._alerts())
+
+    def _number(self, value: float) -> str:
+        if self._places > 9 or abs(value) >= 1e12:
+            return f"{value:.6g}"
+        return f"{value:.{self._places}f}"
+
+    def _amount(self, value: float) -> str:
+        return self._number(value) + self._unit
+
+    def _between(self, limits: Summary) -> str:
+        return f"{self._number(limits['lower'])} to {self._amount(limits['upper'])}"
+
+    def _as_given(self, value: float) -> str:
+        return f"{value:.12g}{self._unit}"
+
+    # What is read
+
+    def _source(self) -> Iterator[str]:
+        source = self._plan["source"]
+        if source["payload"] == "number":
+            yield f"{source['topic']}: the payload is the number, its arrival is its time"
+        else:
+            time = f"time at {source['time']}" if source["time"] else "its arrival is its time"
+            parts = [f"value at {source['value'] or 'the top'}", time]
+            if sequence := source["sequence"]:
+                again = f" (0 again after {sequence['wraps']} numbers)" if sequence["wraps"] else ""
+                parts.append(f"sequence number at {sequence['value']}{again}")
+            yield f"{source['topic']}: JSON, {', '.join(parts)}"
+        for pointer, values in source["use_if"].items():
+            allowed = either([json.dumps(value, ensure_ascii=False) for value in values])
+            yield f"used only where {pointer} is {allowed}"
+        lower, upper = source["plausible"]["lower"], source["plausible"]["upper"]
+        sides = (("below", lower), ("above", upper))
+        bounds = [f"{side} {self._as_given(v)}" for side, v in sides if v is not None]
+        if bounds:
+            yield f"set aside as implausible {either(bounds)}"
+
+    def _streams(self) -> str:
+        parts = [
+            f"{key} ({place['value']})"
+            if "value" in place
+            else f"{key} (level {place['topic_level']} of the topic)"
+            for key, place in self._plan["source"]["stream"].items()
+        ]
+        if not parts:
+            return "one"
+        *most, last = parts
+        each = f"{', '.join(most)} and {last}" if most else last
+        return f"one for each {each}, each judged on its own"
+
+    def _subgroups(self) -> Iterator[str]:
+        subgroup, rate = self._plan["subgroup"], self._plan["source"]["expected_rate"]
+        size, gap = subgroup["size"], subgroup["max_gap"]
+        longest = None if gap is None else times.format_duration(round(gap * times.SECOND))
+        if size == 1:
+            yield "every reading is judged by itself"
+            if longest and any(d["chart"] == "moving_range" for d in self._plan["detectors"]):
+                yield f"no moving range reaches across more than {longest}"
+            elif longest:
+                yield f"max_gap {longest} has nothing to break up"
+        else:
+            yield f"{size} consecutive readings of one stream"
+            if longest:
+                yield f"given up unfinished where two readings lie more than {longest} apart"
+        if rate is None:
+            yield "without expected_rate nobody can say how long one takes"
+            return
+        every = _span(subgroup["seconds"])
+        if not self._plan["source"]["stream"]:
+            yield f"at {rate * 60:.6g} readings a minute: one every {every}"
+            return
+        yield (
+            f"at {rate * 60:.6g} readings a minute over all streams: one every {every} in all, "
+            f"every N × {every} in each of N equally busy streams"
+        )
+
+    # How it is judged
+
+    def _baseline(self) -> Iterator[str]:
+        baseline, size = self._plan["baseline"], self._plan["subgroup"]["size"]
+        between = baseline["sigma_between"]
+        extra = f", sigma_between {self._as_given(between)}" if between else ""
+        of = "one reading" if size == 1 else f"a mean of {size}"
+        yield (
+            f"mean {self._as_given(baseline['mean'])}, sigma {self._as_given(baseline['sigma'])}"
+            f"{extra}; standard error of {of}: {self._amount(baseline['standard_error'])}"
+        )
+        if specification := self._plan["specification"]:
+            given = [
+                f"{key} {self._as_given(value)}"
+                for key, value in specification.items()
+                if value is not None
+            ]
+            yield f"specification {', '.join(given)}: shown with alerts, it moves no limit"
+
+    def _detector(self, detector: Summary) -> Iterator[str]:
+        only = {"both": "", "up": "; rises only", "down": "; falls only"}[detector["direction"]]
+        size = self._plan["subgroup"]["size"]
+        charted = {
+            "mean": f"mean of {size}",
+            "range": f"range of {size}",
+            "individual": "single reading",
+            "moving_range": "moving range",
+        }[detector["chart"]]
+        say = {"shewhart": self._shewhart, "cusum": self._cusum, "ewma": self._ewma}
+        first, *more = say[detector["kind"]](detector, charted)
+        yield f"{detector['name']}: {first}{only}"
+        yield from (f"  {sentence}" for sentence in more)
+
+    def _shewhart(self, detector: Summary, charted: str) -> Iterator[str]:
+        yield (
+            f"Shewhart chart of the {charted}, centre {self._amount(detector['centre'])}, "
+            f"limits {self._between(detector)}"
+        )
+        for rule in detector["rules"]:
+            yield f"{rule['rule']}: {self._rule(rule, detector['centre'])}"
+
+    def _rule(self, rule: Summary, centre: float) -> str:
+        band = (
+            f"{self._between(rule)} (±{rule['width']:g} standard errors)" if "width" in rule else ""
+        )
+        match rule["rule"]:
+            case "outside":
+                return f"one point outside {band}"
+            case "zone":
+                return f"{rule['count']} of the last {rule['of']} outside {band}, on one side"
+            case "run":
+                return f"{rule['length']} in a row on one side of {self._amount(centre)}"
+            case "trend":
+                return f"{rule['length']} in a row steadily rising or falling"
+            case "alternation":
+                return f"{rule['length']} in a row alternating up and down"
+            case "stratification":
+                return f"{rule['length']} in a row inside {band}"
+            case _:
+                return f"{rule['length']} in a row outside {band}, on either side"
+
+    def _cusum(self, detector: Summary, charted: str) -> Iterator[str]:
+        yield (
+            f"CUSUM of the {charted}: what lies more than {self._amount(detector['slack'])} off "
+            f"the centre is summed up, a sum above {self._amount(detector['limit'])} signals "
+            f"(k {detector['k']:g}, h {detector['h']:g})"
+        )
+        yield f"quickest for a lasting shift of {self._amount(detector['tuned_to'])}"
+        if detector["start"]:
+            yield f"both sums start at {self._amount(detector['start'])}"
+        yield from self._clip_and_after(detector, "the sum that signalled")
+
+    def _ewma(self, detector: Summary, charted: str) -> Iterator[str]:
+        first, settled = self._between(detector["first"]), self._between(detector["settled"])
+        early = "" if first == settled else f", {first} at the first point"
+        yield (
+            f"EWMA of the {charted}, weight {detector['lambda']:g}: "
+            f"signals outside {settled}{early}"
+        )
+        yield from self._clip_and_after(detector, "the average")
+
+    def _clip_and_after(self, detector: Summary, what: str) -> Iterator[str]:
+        if detector["clip"] is not None:
+            reach = detector["clip"] * self._plan["baseline"]["standard_error"]
+            yield f"no single point counts for more than {self._amount(reach)} off the centre"
+        goes = "starts again" if detector["after_signal"] == "restart" else "goes on as it is"
+        yield f"after a signal {what} {goes}"
+
+    # Who hears of it
+
+    def _alerts(self) -> Iterator[str]:
+        plan = self._plan
+        yield f"on {plan['alert_topic']}"
+        priority, reaction = plan["priority"], plan["reaction"]
+        sides = (("a rise", "up"), ("a fall", "down"), ("anything without a side", "other"))
+        if len(set(priority.values())) == 1:
+            yield f"priority {priority['up']}"
+        else:
+            yield "priority: " + ", ".join(f"{side} {priority[key]}" for side, key in sides)
+        yield (
+            f"open for at least {_duration(plan['off_delay'])}; ringing again within "
+            f"{_duration(plan['rejoin'])} of its end continues the same alert"
+        )
+        if not any(reaction.values()):
+            yield "no reaction is written down: whoever is rung must know what to do"
+        elif len(set(reaction.values())) == 1:
+            yield from (f"tells: {step}" for step in reaction["up"])
+        else:
+            for side, key in sides:
+                yield f"on {side}: {' '.join(reaction[key]) or 'no reaction is written down'}"
+
+
+def _duration(seconds: float) -> str:
+    return times.format_duration(round(seconds * times.SECOND))
+
+
+def _span(seconds: float) -> str:
+    if seconds < 120:
+        return f"{seconds:.3g} s"
+    return f"{seconds / 60:.3g} min" if seconds < 7_200 else f"{seconds / 3_600:.3g} h"

@@ -1,0 +1,127 @@
+"""``driftbell export``: a journal as a recording."""
+
+from __future__ import annotations
+
+import argparse
+import gzip
+import json
+import os
+import pty
+import sys
+from pathlib import Path
+
+import pytest
+from daemons import driftbell
+
+from monitor.commands import export
+from monitor.entries import Connected, Disconnected, Message, Recorded, Started
+from monitor.journal import Journal
+from monitor.times import SECOND
+from replay.lines import read_lines
+
+START = 1_772_433_672 * SECOND
+
+ENTRIES: list[Recorded] = [
+    Started(START),
+    Connected(START + 1, False),
+    Message(START + 2, "a/b", b'{"net":341.6}'),
+    Message(START + 3, "a/ä \x00", b'{ "net": 341.6 }'),
+    Message(START + 4, "a", b"\xff\x00", True, 0),
+    Message(START + 5, "a", b""),
+    Disconnected(START + 6),
+    Connected(START + 7, True),
+]
+
+
+@pytest.fixture
+def journal(tmp_path: Path) -> Path:
+    path = tmp_path / "journal.db"
+    journal = Journal(path)
+    journal.commit(ENTRIES, [("alert", b"{}")])
+    journal.close()
+    return path
+
+
+def read(lines: bytes) -> list[object]:
+    """The entries in a recording; a line that is none fails."""
+
+    def unreadable(number: int, wrong: str) -> None:
+        raise AssertionError(f"line {number}: {wrong}")
+
+    return [entry for _, entry in read_lines("x", lines.splitlines(keepends=True), unreadable)]
+
+
+@pytest.mark.parametrize("name", ["x.jsonl", "x.jsonl.gz", "-"])
+def test_every_entry_comes_back(journal: Path, tmp_path: Path, name: str) -> None:
+    to = name if name == "-" else tmp_path / name
+    done = driftbell("export", journal, "--to", to)
+    assert (done.returncode, done.stderr) == (0, b"8 entries\n")
+    if name == "-":
+        lines = done.stdout
+    else:
+        assert done.stdout == b""
+        content = (tmp_path / name).read_bytes()
+        lines = gzip.decompress(content) if name.endswith(".gz") else content
+    assert read(lines) == ENTRIES
+    first = json.loads(lines.splitlines()[2])
+    assert first == {
+        "time": "2026-03-02T06:41:12.000002Z",
+        "topic": "a/b",
+        "payload": {"net": 341.6},
+    }
+
+
+def test_a_journal_in_use_can_be_exported(journal: Path) -> None:
+    held = Journal(journal)
+    held.commit([Started(START + 9)], [])
+    done = driftbell("export", journal)
+    assert read(done.stdout) == [*ENTRIES, Started(START + 9)]
+
+
+def test_says_what_is_wrong(journal: Path, tmp_path: Path) -> None:
+    garbage = tmp_path / "garbage.db"
+    garbage.write_bytes(b"x" * 10_000)
+    for words, code, text in (
+        ([tmp_path / "none.db"], 1, "there is no journal at"),
+        ([garbage], 1, "file is not a database"),
+        ([journal, "--to", tmp_path / "no" / "x.jsonl"], 1, "cannot write"),
+        ([journal, "--to", journal], 2, "is the journal itself"),
+        ([], 2, "JOURNAL"),
+    ):
+        done = driftbell("export", *words)
+        said = done.stderr.decode()
+        assert (done.returncode, text in said, "Traceback" in said) == (code, True, False), said
+    held = Journal(journal)
+    assert list(held.entries()) == ENTRIES
+
+
+def test_a_damaged_journal_leaves_no_half_recording(tmp_path: Path) -> None:
+    path = tmp_path / "j.db"
+    journal = Journal(path)
+    journal.commit([Message(START + n, "a", b"x" * 500) for n in range(5_000)], [])
+    journal.close()
+    content = bytearray(path.read_bytes())
+    middle = len(content) // 2 // 4096 * 4096
+    content[middle : middle + 40_960] = b"\xff" * 40_960
+    path.write_bytes(content)
+    done = driftbell("export", path, "--to", tmp_path / "x.jsonl")
+    assert done.returncode == 1
+    assert f"cannot read {path} to its end" in done.stderr.decode()
+    assert not list(tmp_path.glob("*jsonl*"))
+
+
+def test_shows_how_far_it_is_on_a_terminal(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    path = tmp_path / "j.db"
+    journal = Journal(path)
+    journal.commit([Message(START, "a", b"{}")] * 3_000, [])
+    journal.close()
+    ours, theirs = pty.openpty()
+    with open(theirs, "w") as terminal:
+        monkeypatch.setattr(sys, "stderr", terminal)
+        monkeypatch.setattr(export, "_QUIET", 0.0)
+        words = argparse.Namespace(journal=str(path), to=str(tmp_path / "x.jsonl"))
+        assert export.main(words) == 0
+        terminal.flush()
+        seen = os.read(ours, 4096).decode()
+    os.close(ours)
+    assert seen == "\r\x1b[K1,024 entries\r\x1b[K3000 entries\r\n"
