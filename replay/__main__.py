@@ -9,6 +9,8 @@ from monitor import commandline
 
 COMMANDS = {
     "play": ("replay.commands.play", "run the engine over recordings"),
+    "design": ("replay.commands.design", "run lengths of a detector, or the one for a run length"),
+    "scene": ("replay.commands.scene", "write a story of the demo line as a recording"),
 }
 
 
