@@ -1,11 +1,12 @@
 """The life of a stream's alerts: raised, updated, rejoined, returned to normal, withdrawn.
 
-Knows slots, signals and event time. Must not know detectors' states, topics or a clock. Life cycle as
-in IEC 62682; what is decided here is decided at subgroups, in event time.
+Knows slots, signals and event time. Must not know detectors' states, topics or a clock. Life cycle
+as in IEC 62682; what is decided here is decided at subgroups, in event time.
 """
 
 from __future__ import annotations
 
+import math
 import re
 from dataclasses import dataclass, field
 from hashlib import sha256
@@ -37,7 +38,7 @@ _PLACEHOLDER = re.compile(r"\{([^{}]+)\}")
 
 @dataclass(slots=True)
 class Slot:
-    """The one alert a stream may have open in a direction, or on a chart whose signals have none."""
+    """The one alert a stream may have open in a direction, or on a chart for signals without."""
 
     id: str
     detector: DetectorPlan
@@ -51,7 +52,7 @@ class Slot:
     text: str = ""
     last_signal: int = 0
     returned: int = 0
-    reference: float = _SMALLEST_REFERENCE
+    reference: float = math.inf
     towards: float = 0.0
     quiet: int = 0
     quiet_needed: int = 0
@@ -65,20 +66,23 @@ class Slot:
         self.quiet = 0
         self.quiet_needed = max(self.quiet_needed, 2 * signal.span)
         size = 0.0 if shift is None else shift.size * _sign(self.direction)
-        self.reference = max(_SMALLEST_REFERENCE, size / 2.0)
+        # The smallest estimate so far: those at a signal are rather too large than too small, and a
+        # shift that grew and is half repaired is not over.
+        self.reference = min(self.reference, max(_SMALLEST_REFERENCE, size / 2.0))
 
     def is_back(self, z: float, time: int, off_delay: int) -> bool:
         """Whether a subgroup without a signal, standardised mean ``z``, completes the return.
 
-        With a direction: a CUSUM towards the baseline (E. S. Page 1954) whose reference lies half-way
-        between the baseline and the shift. Without: twice the rule's span without a signal.
+        With a direction: a CUSUM towards the baseline (E. S. Page 1954) whose reference lies
+        half-way between the baseline and the shift. Without: twice the rule's span without a
+        signal.
         """
         if self.direction is None:
             self.quiet += 1
             back = self.quiet >= self.quiet_needed
         else:
             towards = self.towards + self.reference - z * _sign(self.direction)
-            # Held just above the interval, so that evidence gathered before off_delay can be lost again.
+            # Held just above the interval, so that what was gathered before off_delay can be lost.
             self.towards = min(max(0.0, towards), RETURN_INTERVAL + self.reference)
             back = self.towards > RETURN_INTERVAL
         return back and time - self.last_signal >= off_delay
@@ -111,13 +115,13 @@ class StreamAlerts:
             key: str = signal.direction or detector.scheme.chart
             by_slot.setdefault(key, []).append((detector, signal))
         for name, slot in self._slots.items():
-            if slot.open and name not in by_slot:
-                if slot.is_back(z, subgroup.last, self._plan.off_delay):
-                    slot.open, slot.returned = False, subgroup.last
-                    events.append(self._event(slot, "returned-to-normal", subgroup))
-                    if slot.direction is not None:
-                        # A repaired shift must not pass for the onset of the next.
-                        lookback.clear()
+            if not slot.open or name in by_slot:
+                continue
+            if slot.is_back(z, subgroup.last, self._plan.off_delay):
+                slot.open, slot.returned = False, subgroup.last
+                events.append(self._event(slot, "returned-to-normal", subgroup))
+                if slot.direction is not None:
+                    lookback.forget(slot.direction)
         for name, met in by_slot.items():
             event = self._signalled(name, met, subgroup, lookback)
             if event is not None:
@@ -137,6 +141,7 @@ class StreamAlerts:
         detector, signal = met[0]
         if slot is None or (not slot.open and time - slot.returned > self._plan.rejoin):
             kind = "raised"
+            self._slots.pop(key, None)  # the new one takes its place at the end
             slot = self._slots[key] = Slot(
                 self._identify(detector, signal, subgroup),
                 detector,
@@ -300,6 +305,6 @@ def _sign(direction: Direction | None) -> int:
 
 
 def _filled(step: str, stream: Stream) -> str:
-    # One pass, and not str.format: a value from a gauge is text, never a placeholder or a format code.
+    # One pass, and not str.format: a value from a gauge is never a placeholder or a format code.
     values = dict(stream)
     return _PLACEHOLDER.sub(lambda found: values.get(found[1], found[0]), step)

@@ -1,7 +1,7 @@
 """From a message to a reading of a stream, or to the reason why not.
 
-Knows a source's pointers, numbers and times, and the order of the checks. Must not know what was read
-before: repeats and lateness are judged against the stream.
+Knows a source's pointers, numbers and times, and the order of the checks. Must not know what was
+read before: repeats and lateness are judged against the stream.
 """
 
 from __future__ import annotations
@@ -18,14 +18,12 @@ MAX_PAYLOAD = 256 * 1024
 FUTURE = 5 * 60 * times.SECOND
 _MILLISECONDS_FROM = 1e11
 _MAX_STREAM_VALUE = 256
-_OLDEST = (
-    -62_135_596_800 * times.SECOND
-)  # 0001-01-01T00:00Z, the first instant ISO 8601 can write here
+_OLDEST = -62_135_596_800 * times.SECOND  # 0001-01-01T00:00Z: ISO 8601 writes none before it
 _MAX_SEQUENCE = 2**63
 
 
 class Found(NamedTuple):
-    """What a message says before it is judged; ``keys`` are stream values in the order of their keys."""
+    """What a message says before it is judged; ``keys`` are stream values in their keys' order."""
 
     keys: tuple[str, ...]
     value: object
@@ -49,7 +47,7 @@ class Decoder:
         self._stream = tuple(within.get(key, ()) for key in self.keys)
 
     def levels(self, topic: str) -> tuple[str | None, ...]:
-        """The values a concrete topic fixes, in the order of ``keys``; None: the payload's to say."""
+        """The values a topic fixes, in the order of ``keys``; None: the payload's to say."""
         parts = topic.split("/")
         return tuple(None if at is None else parts[at] for at in self._captured)
 

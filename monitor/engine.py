@@ -1,7 +1,7 @@
 """The fold: journal entries in, outputs out.
 
-Knows how the steps are wired: decode, seen, subgroups, detectors, alerts. Must not know a clock, a file,
-a socket or who calls it: the daemon and the replay are two shells around this object.
+Knows how the steps are wired: decode, seen, subgroups, detectors, alerts. Must not know a clock, a
+file, a socket or who calls it: the daemon and the replay are two shells around this object.
 """
 
 from __future__ import annotations
@@ -19,7 +19,7 @@ from monitor.entries import Connected, Disconnected, Entry, Message, Reading, St
 from monitor.lookback import LookBack
 from monitor.messages import SCHEMA, StandingMessage
 from monitor.outputs import Alert, Output, Points, Row, SetAside, Stream
-from monitor.plan import CharacteristicPlan, DetectorPlan, Plan
+from monitor.plan import CharacteristicPlan, DetectorPlan, Plan, SequencePlan
 from monitor.seen import StreamSeen, TopicCounter, Verdict
 from monitor.subgroups import Gatherer, Identity, Subgroup
 
@@ -104,8 +104,8 @@ class _Route(NamedTuple):
 class Engine:
     """Folds entries, in order, into outputs.
 
-    ``points`` asks for ``Points`` outputs, with a row for each statistic of each detector. Equal plans
-    and equal entries give equal outputs, always.
+    ``points`` asks for ``Points`` outputs, with a row for each statistic of each detector. Equal
+    plans and equal entries give equal outputs, always.
     """
 
     def __init__(self, plan: Plan, *, points: bool) -> None:
@@ -118,7 +118,6 @@ class Engine:
         self._characteristics = {c.name: Characteristic(c) for c in plan.characteristics}
         self._routes: dict[str, tuple[_Route, ...]] = {}
         self._arrival = 0
-        self._place = 0
         self._blind: tuple[int, str] | None = None
         self._watching_since = 0
 
@@ -126,11 +125,7 @@ class Engine:
         """Take one entry; what it caused, in order."""
         time = entry.time
         if time > self._arrival:
-            self._arrival, self._place = time, 0
-        else:
-            # Arrival never runs backwards; equal arrivals are told apart by their place.
-            time = self._arrival
-            self._place += 1
+            self._arrival = time
         match entry:
             case Message():
                 return self._message(entry, time)
@@ -195,15 +190,10 @@ class Engine:
             routes = self._route(topic)
         if not routes:
             return self._set_aside("no-topic", None, arrival, topic, payload)
-        document: object = None
-        parsed = False
         outputs: Sequence[Output] = ()
         for route in routes:
-            if route.characteristic.decoder.number:
-                document = numbers.parse_plain(payload)
-            elif not parsed:
-                document = numbers.parse(payload)
-                parsed = True
+            number = route.characteristic.decoder.number
+            document = numbers.parse_plain(payload) if number else numbers.parse(payload)
             result = self._document(route, document, arrival)
             if isinstance(result, str):
                 name = route.characteristic.plan.name
@@ -218,14 +208,17 @@ class Engine:
         decoder = characteristic.decoder
         sequence = judge_sequence(decoder.sequence(document))
         found = decoder.find(document, levels)
+        result: Sequence[Output] | str
         if isinstance(found, str):
-            if counter is not None and sequence is not None:
-                counter.note(sequence)
-            return found
-        keys, value, at = found
-        return self._judge(
-            characteristic, keys, value, at, decoder.timed, sequence, arrival, counter
-        )
+            result = found
+        else:
+            keys, value, at = found
+            result = self._judge(
+                characteristic, keys, value, at, decoder.timed, sequence, arrival, counter
+            )
+        if counter is not None and sequence is not None and isinstance(result, str):
+            counter.note(sequence)
+        return result
 
     def _row(self, row: Reading, arrival: int) -> Sequence[Output]:
         self.counts.messages += 1
@@ -256,22 +249,25 @@ class Engine:
         arrival: int,
         counter: TopicCounter | None,
     ) -> Sequence[Output] | str:
-        value = characteristic.decoder.judge_value(raw)
-        moment = judge_time(at, arrival) if timed else arrival
-        if isinstance(value, str) or isinstance(moment, str):
-            if counter is not None and sequence is not None:
-                counter.note(sequence)
-            return value if isinstance(value, str) else str(moment)
         state = characteristic.streams.get(keys)
+        if state is None and len(characteristic.streams) >= MAX_STREAMS:
+            return "no-stream"
+        value = characteristic.decoder.judge_value(raw)
+        if isinstance(value, str):
+            return value
+        moment = judge_time(at, arrival) if timed else arrival
+        if isinstance(moment, str):
+            return moment
         if state is None:
-            if len(characteristic.streams) >= MAX_STREAMS:
-                return "no-stream"
             stream = tuple(zip(characteristic.decoder.keys, keys, strict=True))
             state = StreamState(characteristic.plan, stream, arrival)
             characteristic.streams[keys] = state
+        if not timed:
+            # To a stream arrival never runs backwards, whatever else came before.
+            moment = max(moment, state.seen.mark)
         verdict = state.seen.admit(moment, timed, sequence)
         if verdict is Verdict.REPEATED or verdict is Verdict.LATE:
-            return verdict.value
+            return str(verdict.value)
         self.counts.readings += 1
         outputs: Sequence[Output] = ()
         if verdict is Verdict.RESTART:
@@ -282,7 +278,7 @@ class Engine:
         if timed or sequence is not None:
             identity = (sequence, moment if timed else None, None, None)
         else:
-            identity = (None, None, arrival, self._place)
+            identity = (None, None, moment, state.seen.place)
         if timed:
             self.lag = arrival - moment
         gatherer = state.gatherer
@@ -337,20 +333,23 @@ class Engine:
     # Topics and what is set aside
 
     def _route(self, topic: str) -> tuple[_Route, ...]:
-        routes = tuple(
-            _Route(c, c.decoder.levels(topic), self._counter(c))
-            for c in self._characteristics.values()
-            if filters.overlap(c.plan.source.topic, topic)
-        )
+        wild = "+" in topic or "#" in topic  # a recording may hold what no broker delivers
+        found: list[_Route] = []
+        counters: dict[SequencePlan, TopicCounter] = {}
+        for each in self._characteristics.values():
+            source = each.plan.source
+            if wild or not filters.overlap(source.topic, topic):
+                continue
+            counter = None
+            if source.sequence is not None:
+                # Characteristics that read one counter of a topic miss a number together.
+                fresh = TopicCounter(source.sequence.wraps)
+                counter = counters.setdefault(source.sequence, fresh)
+            found.append(_Route(each, each.decoder.levels(topic), counter))
         if len(self._routes) >= _MAX_ROUTES:
             self._routes.clear()
-        self._routes[topic] = routes
+        routes = self._routes[topic] = tuple(found)
         return routes
-
-    @staticmethod
-    def _counter(characteristic: Characteristic) -> TopicCounter | None:
-        sequence = characteristic.plan.source.sequence
-        return TopicCounter(sequence.wraps) if sequence else None
 
     def _set_aside(
         self, reason: str, characteristic: str | None, time: int, topic: str, payload: bytes

@@ -25,9 +25,9 @@ class Message:
 class Reading:
     """A row of a table: what a message would have said, already taken apart.
 
-    ``value`` may be anything the table held; the engine judges it as it judges a message's. ``at`` is
-    the event time as written (ISO 8601 text or epoch number), None where the table has no time: then
-    ``time``, the arrival, is the event time. ``stream`` holds the raw stream columns.
+    ``value`` may be anything the table held; the engine judges it as it judges a message's. ``at``
+    is the event time (ISO 8601 text or epoch number), None where the row has none. ``stream`` holds
+    the raw stream columns.
     """
 
     time: int
@@ -60,4 +60,7 @@ class Disconnected:
     time: int
 
 
-Entry = Message | Reading | Started | Connected | Disconnected
+Recorded = Message | Started | Connected | Disconnected
+"""What a journal holds; a table's ``Reading`` was never a message."""
+
+Entry = Recorded | Reading

@@ -7,16 +7,18 @@ from __future__ import annotations
 
 from collections.abc import Callable
 
-from monitor.entries import Entry, Message
+from monitor.entries import Message, Recorded
 
 NANOSECONDS = 1_000
+_MOST = 2_000
+_MOST_BYTES = 8 << 20
 
 
 class Arrival:
     """Stamps arrivals in microseconds: the wall clock once, then only the monotonic clock.
 
-    So a step of the host's clock moves no arrival, and none runs backwards: not even across a restart,
-    if ``not_before`` is the journal's last. ``wall`` and ``monotonic`` give nanoseconds.
+    So a step of the host's clock moves no arrival, and none runs backwards: not even across a
+    restart, if ``not_before`` is the journal's last. ``wall`` and ``monotonic`` give nanoseconds.
     """
 
     __slots__ = ("_ahead", "_monotonic")
@@ -35,34 +37,40 @@ class Arrival:
 class Intake:
     """Entries in order, and the acknowledgements that their commit will allow."""
 
-    __slots__ = ("_now", "acknowledge", "entries", "unsafe")
+    __slots__ = ("_acknowledge", "_bytes", "_entries", "_now", "unsafe")
 
     def __init__(self, now: Callable[[], int]) -> None:
         self._now = now
-        self.entries: list[Entry] = []
-        self.acknowledge: list[int] = []
+        self._entries: list[Recorded] = []
+        self._acknowledge: list[int] = []
+        self._bytes = 0
         self.unsafe = 0
         """Messages that came at QoS 0: no broker keeps those for us."""
 
     def message(self, topic: str, payload: bytes, retain: bool, qos: int, packet: int) -> None:
         """A message arrived; ``packet`` is its identifier where it wants an acknowledgement."""
-        self.entries.append(Message(self._now(), topic, payload, retain, qos))
+        self._entries.append(Message(self._now(), topic, payload, retain, qos))
+        self._bytes += len(payload)
         if qos:
-            self.acknowledge.append(packet)
+            self._acknowledge.append(packet)
         elif not retain:
             self.unsafe += 1
 
-    def note(self, entry: Entry) -> None:
+    def note(self, entry: Recorded) -> None:
         """Something else happened that moves state."""
-        self.entries.append(entry)
+        self._entries.append(entry)
 
-    def take(self) -> tuple[list[Entry], list[int]]:
+    def full(self) -> bool:
+        """Whether the batch is large enough: brokers differ in whether they bound it."""
+        return len(self._entries) >= _MOST or self._bytes >= _MOST_BYTES
+
+    def take(self) -> tuple[list[Recorded], list[int]]:
         """The batch and its acknowledgements; both start again empty."""
-        taken = self.entries, self.acknowledge
-        self.entries, self.acknowledge = [], []
+        taken = self._entries, self._acknowledge
+        self._entries, self._acknowledge, self._bytes = [], [], 0
         return taken
 
     def connection_lost(self) -> None:
-        """A batch dies with its connection: the broker will send again what it has no word about."""
-        self.acknowledge.clear()
-        self.entries = [e for e in self.entries if not (isinstance(e, Message) and e.qos)]
+        """A batch dies with its connection: the broker sends again what it has no word about."""
+        self._acknowledge.clear()
+        self._entries = [e for e in self._entries if not (isinstance(e, Message) and e.qos)]

@@ -1,4 +1,4 @@
-"""The journal: the daemon's durable, ordered log of entries, and the alerts that wait for the broker.
+"""The journal: the daemon's durable, ordered log of entries, and alerts that wait for the broker.
 
 Knows SQLite and the entries' types. Must not know what entries mean or how alerts are decided.
 """
@@ -11,7 +11,7 @@ import sqlite3
 from collections.abc import Iterable, Iterator, Sequence
 from pathlib import Path
 
-from monitor.entries import Connected, Disconnected, Entry, Message, Reading, Started
+from monitor.entries import Connected, Disconnected, Message, Recorded, Started
 
 SCHEMA = 1
 
@@ -32,7 +32,9 @@ CREATE TABLE outbox (position INTEGER PRIMARY KEY, topic TEXT NOT NULL, payload 
 _MESSAGE, _STARTED, _CONNECTED, _DISCONNECTED = range(4)
 _RETAINED = 4
 
-Row = tuple[int, int, int | None, bytes | None, int]
+_MOST_TOPICS = 20_000  # remembered; whoever may publish may invent topics
+
+_Row = tuple[int, int, int | None, bytes | None, int]
 
 
 class JournalError(Exception):
@@ -42,37 +44,32 @@ class JournalError(Exception):
 class Journal:
     """The journal of one daemon, which holds it alone.
 
-    One transaction a batch: entries and the alerts they caused become durable together, or not at all.
+    One transaction a batch: entries and the alerts they caused become durable together, or not at
+    all.
     """
 
     def __init__(self, path: Path) -> None:
-        self._path = path
         self._gone: list[int] = []
         self._topics: dict[str, int] = {}
-        try:
-            path.parent.mkdir(parents=True, exist_ok=True)
-            self._lock = os.open(f"{path}.lock", os.O_RDWR | os.O_CREAT, 0o644)
-        except OSError as error:
-            raise JournalError(f"cannot open the journal {path}: {error.strerror}") from error
-        try:
-            fcntl.flock(self._lock, fcntl.LOCK_EX | fcntl.LOCK_NB)
-        except OSError as error:
-            os.close(self._lock)
-            raise JournalError(
-                f"another daemon holds the journal {path}: stop it, or give this one its own"
-            ) from error
+        self._lock = _locked(path)
         try:
             self._db = sqlite3.connect(path, isolation_level=None)
             _prepare(self._db, path)
-            self._topics.update(self._db.execute("SELECT topic, id FROM topics"))
-            self._position = _single(self._db, "SELECT coalesce(max(position), 0) FROM entries")
             self._outbox = _single(self._db, "SELECT coalesce(max(position), 0) FROM outbox")
             self.last_time = _single(self._db, "SELECT coalesce(max(time), 0) FROM entries")
         except sqlite3.Error as error:
             os.close(self._lock)
-            raise JournalError(f"cannot read the journal {path}: {error}") from error
+            raise JournalError(f"cannot use the journal {path}: {error}") from error
+        except JournalError:
+            os.close(self._lock)
+            raise
 
-    def commit(self, entries: Sequence[Entry], alerts: Sequence[tuple[str, bytes]]) -> list[int]:
+    @property
+    def unsettled(self) -> bool:
+        """Whether an alert was delivered that a crash would make us send again."""
+        return bool(self._gone)
+
+    def commit(self, entries: Sequence[Recorded], alerts: Sequence[tuple[str, bytes]]) -> list[int]:
         """Make entries and (topic, payload) alerts durable; the alerts' places in the outbox.
 
         Raises sqlite3.Error where the disk will not take them; then nothing was written.
@@ -92,6 +89,7 @@ class Journal:
             db.executemany("DELETE FROM outbox WHERE position = ?", [(n,) for n in self._gone])
             db.execute("COMMIT")
         except BaseException:
+            self._topics.clear()  # some are not in the file
             if db.in_transaction:
                 db.execute("ROLLBACK")
             raise
@@ -109,7 +107,7 @@ class Journal:
             "SELECT position, topic, payload FROM outbox ORDER BY position"
         ).fetchall()
 
-    def entries(self) -> Iterator[Entry]:
+    def entries(self) -> Iterator[Recorded]:
         """All entries, oldest first."""
         return read_entries(self._db)
 
@@ -120,7 +118,7 @@ class Journal:
         self._db.close()
         os.close(self._lock)
 
-    def _rows(self, entries: Iterable[Entry]) -> Iterator[Row]:
+    def _rows(self, entries: Iterable[Recorded]) -> Iterator[_Row]:
         topics = self._topics
         for entry in entries:
             match entry:
@@ -135,13 +133,12 @@ class Journal:
                     yield time, _CONNECTED, None, None, int(session_present)
                 case Disconnected(time):
                     yield time, _DISCONNECTED, None, None, 0
-                case Reading():
-                    raise TypeError("a table's rows are played, never journaled")
 
     def _topic(self, topic: str) -> int:
-        # OR IGNORE: the cache may have outlived a transaction that was rolled back.
         self._db.execute("INSERT OR IGNORE INTO topics (topic) VALUES (?)", (topic,))
         number = _single(self._db, "SELECT id FROM topics WHERE topic = ?", topic)
+        if len(self._topics) >= _MOST_TOPICS:
+            self._topics.clear()
         self._topics[topic] = number
         return number
 
@@ -151,14 +148,15 @@ def open_reader(path: Path) -> sqlite3.Connection:
     if not path.is_file():
         raise JournalError(f"there is no journal at {path}")
     try:
-        db = sqlite3.connect(f"file:{path}?mode=ro", uri=True, isolation_level=None)
+        uri = f"{path.absolute().as_uri()}?mode=ro"
+        db = sqlite3.connect(uri, uri=True, isolation_level=None)
         _check_schema(db, path)
     except sqlite3.Error as error:
         raise JournalError(f"cannot read the journal {path}: {error}") from error
     return db
 
 
-def read_entries(db: sqlite3.Connection) -> Iterator[Entry]:
+def read_entries(db: sqlite3.Connection) -> Iterator[Recorded]:
     """All entries of an open journal, oldest first."""
     cursor = db.execute(
         "SELECT e.time, e.kind, t.topic, e.payload, e.flags FROM entries e"
@@ -173,6 +171,27 @@ def read_entries(db: sqlite3.Connection) -> Iterator[Entry]:
             yield Connected(time, bool(flags))
         else:
             yield Disconnected(time)
+
+
+def _locked(path: Path) -> int:
+    """The open file whose lock says that the journal is ours."""
+    try:
+        path.parent.mkdir(parents=True, exist_ok=True)
+        lock = os.open(f"{path}.lock", os.O_RDWR | os.O_CREAT | os.O_CLOEXEC, 0o644)
+    except OSError as error:
+        why = "Not a directory" if isinstance(error, FileExistsError) else error.strerror
+        raise JournalError(
+            f"cannot make the journal {path}: {why}; "
+            "give journal.path a folder that can be written to"
+        ) from error
+    try:
+        fcntl.flock(lock, fcntl.LOCK_EX | fcntl.LOCK_NB)
+    except OSError as error:
+        os.close(lock)
+        raise JournalError(
+            f"another daemon holds the journal {path}: stop it, or give this one its own"
+        ) from error
+    return lock
 
 
 def _prepare(db: sqlite3.Connection, path: Path) -> None:

@@ -1,6 +1,6 @@
 """The last subgroups of a stream, for looking back at when a shift began.
 
-Knows standardised means and the times their subgroups began and ended. Must not know detectors or alerts.
+Knows standardised means and the times their subgroups began. Must not know detectors or alerts.
 """
 
 from __future__ import annotations
@@ -8,8 +8,12 @@ from __future__ import annotations
 from array import array
 from typing import NamedTuple
 
+import numpy as np
+
 from monitor.methods.onset import LOOK_BACK, estimate
 from monitor.plan import Direction
+
+_CLIP = 6.0
 
 
 class Shift(NamedTuple):
@@ -26,14 +30,15 @@ class Shift(NamedTuple):
 
 
 class LookBack:
-    """A ring of the last ``LOOK_BACK`` subgroups (3 kB, since ten thousand streams have one each)."""
+    """A ring of the last ``LOOK_BACK`` subgroups: 3 kB, as ten thousand streams have one each."""
 
-    __slots__ = ("_count", "_first", "_values")
+    __slots__ = ("_count", "_first", "_from", "_values")
 
     def __init__(self) -> None:
         self._values = array("d")
         self._first = array("q")
         self._count = 0
+        self._from: dict[Direction, int] = {"up": 0, "down": 0}
 
     def append(self, z: float, first: int) -> None:
         """A subgroup with standardised mean ``z`` whose first reading was at ``first``."""
@@ -50,13 +55,26 @@ class LookBack:
         """Forget all: what comes does not continue what was."""
         self.__init__()  # type: ignore[misc]
 
+    def forget(self, direction: Direction) -> None:
+        """A shift that way is over, and must not pass for the onset of the next."""
+        self._from[direction] = self._count
+
     def shift(self, direction: Direction) -> Shift:
-        """The shift in ``direction`` that lasts to the newest subgroup. At least one is needed."""
-        at = self._count % LOOK_BACK if len(self._values) == LOOK_BACK else 0
-        onset = estimate(self._values[at:] + self._values[:at], 1 if direction == "up" else -1)
-        first = self._first[at:] + self._first[:at]
+        """The shift in ``direction`` that lasts to the newest subgroup.
+
+        ValueError where none came since the start, or since that direction was forgotten.
+        """
+        length = len(self._values)
+        at = self._count % length if length == LOOK_BACK else 0
+        skip = max(0, length - (self._count - self._from[direction]))
+        values = (self._values[at:] + self._values[:at])[skip:]
+        first = (self._first[at:] + self._first[:at])[skip:]
+        # One wild value long ago, which a clipped detector rightly passed over, is no onset.
+        clipped = np.clip(values, -_CLIP, _CLIP)
+        onset = estimate(clipped, 1 if direction == "up" else -1)
+        since = values[onset.index :]
         return Shift(
-            size=onset.size,
+            size=sum(since) / len(since),
             onset=first[onset.index],
             # The shift began after the last unshifted subgroup had begun.
             earliest=None if onset.first is None else first[max(onset.first - 1, 0)],

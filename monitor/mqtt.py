@@ -1,13 +1,15 @@
-"""One connection to the broker, from connecting to its end; for the next, a new one is made.
+"""One connection to the broker, from CONNECT to its end; for the next, a new one is made.
 
-Knows paho and sockets. Must not know what messages mean, or when to connect again.
+Knows paho and sockets. Must not know what messages mean, or how a broker is reached.
 """
 
 from __future__ import annotations
 
 import contextlib
+import select
 import socket
 import struct
+import time
 from collections.abc import Callable, Iterable, Sequence
 from typing import Any, Protocol
 
@@ -17,11 +19,11 @@ from paho.mqtt.reasoncodes import ReasonCode
 
 from monitor.plan import BrokerPlan
 
-CONNECT_TIMEOUT = 2.0
+_ANSWER = 10.0  # seconds a broker has to answer our CONNECT
+_PARTING = 1.0  # seconds it has to close the connection after our DISCONNECT
 _CHUNK = 1 << 18
-
-
 _PUBACK = struct.Struct("!BBH")
+_DISCONNECT = b"\xe0\x00"
 
 
 class Receiver(Protocol):
@@ -40,8 +42,8 @@ class Receiver(Protocol):
 class _Corked:
     """A socket that reads ahead and writes when told to.
 
-    paho asks for one byte, then one, then the rest, and writes packet by packet: three system calls to
-    read a message and one to acknowledge it. Here both are shared by a whole batch.
+    paho asks for one byte, then one, then the rest, and writes packet by packet: three system calls
+    to read a message and one to acknowledge it. Here both are shared by a whole batch.
     """
 
     def __init__(self, sock: socket.socket) -> None:
@@ -51,10 +53,15 @@ class _Corked:
         self._out = bytearray()
         self.dry = False
         """Whether the last read found nothing more to read."""
+        self.full: Callable[[], bool] = lambda: False
+        """Whether no more should be read now: paho reads many packets at a call where many of ours
+        wait for an answer."""
 
     def recv(self, size: int) -> bytes:
         at = self._at
         if at >= len(self._in):
+            if self.full():
+                raise BlockingIOError
             self.dry = True  # unless this read brings something
             self._in = self._sock.recv(_CHUNK)
             self.dry = not self._in
@@ -79,49 +86,58 @@ class _Corked:
     def unsent(self) -> int:
         return len(self._out)
 
-    def pending(self) -> int:
-        return max(0, len(self._in) - self._at)
-
     def fileno(self) -> int:
         return self._sock.fileno()
 
     def setblocking(self, flag: bool) -> None:
         self._sock.setblocking(flag)
 
+    def part(self, patience: float) -> None:
+        """Write what is waiting and let the other side close; OSError where it does not in time.
+
+        Whoever closes with something unread resets the connection, and what was written last, such as
+        acknowledgements, may be lost with it.
+        """
+        deadline = time.monotonic() + patience
+        self._sock.settimeout(patience)
+        self._sock.sendall(self._out)
+        while self._sock.recv(_CHUNK) and time.monotonic() < deadline:
+            pass
+
     def close(self) -> None:
-        with contextlib.suppress(OSError):
-            self.flush()  # paho closes as soon as it has written its goodbye, which is still here
         self._sock.close()
 
 
 class _Client(paho.Client):
-    """paho's client over a corked socket, wrapped where paho wraps its own (TLS, WebSockets)."""
+    """paho's client over a connection that is there already."""
 
     corked: _Corked
 
     def _create_socket(self) -> Any:
-        sock: Any = super()._create_socket()
-        if isinstance(sock, socket.socket):
-            sock.setsockopt(socket.IPPROTO_TCP, socket.TCP_NODELAY, 1)
-        self.corked = _Corked(sock)
         return self.corked
 
 
 class Link:
-    """A connection: made when built (OSError where it cannot be), used until ``lost`` says why it ended."""
+    """A session on ``connection``, used until ``lost`` says why it ended."""
 
     def __init__(
         self,
+        connection: socket.socket,
         broker: BrokerPlan,
         filters: Iterable[str],
         will: tuple[str, bytes],
         receiver: Receiver,
     ) -> None:
         self.lost: str | None = None
+        self.accepted = False
+        """Whether the broker has agreed to our CONNECT."""
+        self.waiting = 0
+        """Publications that the broker has not taken over yet."""
         self._filters = list(filters)
         self._receiver = receiver
         self._session_present = False
-        self._stopping = False
+        self._answer_by = time.monotonic() + _ANSWER
+        connection.setsockopt(socket.IPPROTO_TCP, socket.TCP_NODELAY, 1)
         client = self._client = _Client(
             CallbackAPIVersion.VERSION2,
             client_id=broker.client_id,
@@ -129,10 +145,9 @@ class Link:
             manual_ack=True,
             reconnect_on_failure=False,
         )
-        client.max_inflight_messages_set(
-            0
-        )  # no limit, else each word of the broker costs paho a search
-        client.connect_timeout = CONNECT_TIMEOUT
+        self._corked = client.corked = _Corked(connection)
+        # Without a limit; with one, each word of the broker costs paho a search.
+        client.max_inflight_messages_set(0)
         client.username_pw_set(broker.username, broker.password)
         client.will_set(*will, qos=1, retain=True)
         # With this set paho leaves its packets in its queue until it is told to write.
@@ -143,7 +158,6 @@ class Link:
         client.on_message = self._on_message
         client.on_publish = self._on_publish
         client.connect(broker.host, broker.port, broker.keepalive)
-        self._corked = client.corked
 
     def fileno(self) -> int:
         """For select."""
@@ -154,20 +168,19 @@ class Link:
         """Whether something waits for the connection to take more."""
         return self._client.want_write() or self._corked.unsent > 0
 
-    @property
-    def unsent(self) -> int:
-        """Bytes that the connection has not taken yet."""
-        return self._corked.unsent
-
     def read(self, full: Callable[[], bool]) -> bool:
-        """Hand on what has arrived, until nothing more or ``full()``; True where more may be there."""
+        """Hand on what has arrived, until nothing more or ``full()``; True where more may be."""
         client, corked = self._client, self._corked
-        corked.dry = False
+        corked.dry, corked.full = False, full
         while not corked.dry and self.lost is None:
             if full():
-                return True
+                break
             client.loop_read()
-        return False
+        # Now, not after what takes long: what has just arrived says that the broker lives.
+        client.loop_misc()
+        if not self.accepted and time.monotonic() >= self._answer_by:
+            self._end("the broker does not answer")
+        return not corked.dry
 
     def acknowledge(self, packets: Sequence[int]) -> None:
         """Tell the broker that these messages are ours now.
@@ -179,27 +192,35 @@ class Link:
 
     def publish(self, topic: str, payload: bytes, *, retain: bool = False) -> int:
         """Queue a message at QoS 1; the packet identifier that ``taken`` will name."""
+        self.waiting += 1
         return self._client.publish(topic, payload, qos=1, retain=retain).mid
 
     def write(self) -> None:
-        """Write what is queued, and keep the connection alive. Call after ``read``: what arrived says
-        that the broker lives, however long we were busy."""
+        """Write what is queued, as much as the connection takes."""
         if self.lost is not None:
             return
         try:
             self._client.loop_write()
             self._corked.flush()
-            self._client.loop_misc()
-            self._client.loop_write()
-            self._corked.flush()
         except OSError as error:
-            self._end(str(error))
+            self._end(f"the connection was lost: {error}")
 
-    def close(self) -> None:
-        """Say goodbye, so that the broker does not publish the will."""
-        self._stopping = True
-        self._client.disconnect()
+    def close(self, patience: float) -> None:
+        """Say goodbye, so that the broker does not publish the will.
+
+        Before that, it has ``patience`` seconds to take over what was published.
+        """
+        deadline = time.monotonic() + patience
         self.write()
+        while self.waiting and self.lost is None and time.monotonic() < deadline:
+            select.select([self], [self] if self.wants_write else [], [], 0.05)
+            self.read(lambda: time.monotonic() >= deadline)
+            self.write()
+        # By hand: paho would close at once.
+        self._corked.send(_DISCONNECT)
+        with contextlib.suppress(OSError):
+            self._corked.part(_PARTING)
+        self._corked.close()
 
     def drop(self) -> None:
         """Let go of the socket of a connection that is lost."""
@@ -215,6 +236,7 @@ class Link:
         if reason.is_failure:
             self._end(f"the broker refused the connection: {reason}")
             return
+        self.accepted = True
         self._session_present = bool(flags.session_present)
         client.subscribe([(topic, 1) for topic in self._filters])
 
@@ -230,16 +252,22 @@ class Link:
     def _on_disconnect(
         self, client: object, userdata: object, flags: object, reason: ReasonCode, _: object
     ) -> None:
-        self._end("closed" if self._stopping else f"the connection was lost: {reason}")
+        self._end(f"the connection was lost: {reason}")
 
     def _on_message(self, client: object, userdata: object, message: paho.MQTTMessage) -> None:
+        try:
+            topic = message.topic
+        except UnicodeDecodeError as error:
+            # Taken as it can be read, and so told apart: refused, it would only be sent again.
+            topic = error.object.decode(errors="backslashreplace")
         self._receiver.message(
-            message.topic, bytes(message.payload), message.retain, message.qos, message.mid
+            topic, bytes(message.payload), message.retain, message.qos, message.mid
         )
 
     def _on_publish(
         self, client: object, userdata: object, mid: int, reason: object, _: object
     ) -> None:
+        self.waiting -= 1
         self._receiver.taken(mid)
 
 

@@ -1,4 +1,4 @@
-"""JSON texts and numbers as gauges send them: strict where it matters, lenient where it is harmless.
+"""JSON texts and numbers as gauges send them: strict where it matters, lenient where harmless.
 
 Knows JSON. Must not know topics, streams or plausibility.
 """
@@ -35,7 +35,7 @@ def parse(payload: bytes) -> object:
 
 
 def parse_plain(payload: bytes) -> object:
-    """The document in a payload that should be one number; the bytes themselves if it is no JSON."""
+    """The document in a payload that should be one number; the bytes themselves if no JSON."""
     document = parse(payload)
     return payload if document is NOT_JSON else document
 

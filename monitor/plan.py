@@ -67,7 +67,7 @@ class BaselinePlan:
 
 @dataclass(frozen=True, slots=True)
 class RulePlan:
-    """One rule of a Shewhart chart. ``width`` in standard errors; unused fields stay at their default."""
+    """One rule of a Shewhart chart; ``width`` in standard errors, unused fields at 0."""
 
     rule: Literal["outside", "zone", "run", "trend", "alternation", "stratification", "mixture"]
     width: float = 0.0

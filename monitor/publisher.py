@@ -13,20 +13,27 @@ from monitor.engine import Engine, StreamState
 from monitor.health import EVERY, Health, SetAsideNotices
 from monitor.messages import SCHEMA, PointMessage, RowField
 from monitor.outbox import Outbox
-from monitor.outputs import Output, Points, SetAside
+from monitor.outputs import Alert, Output, Points, SetAside
 from monitor.throttle import Throttle
 
 _IN_FLIGHT = 1_000
-_MOST_UNSENT = 8 << 20
-"""Bytes; a broker that takes no more gets no points until it does."""
+_MOST_WAITING = 10_000
+"""A broker that has so much to take over gets no points and standings until it has.
+
+Far from 65,535 packet identifiers: one that comes round while it is in use would name two alerts.
+"""
 
 
 class Link(Protocol):
     """What is needed of a connection."""
 
     @property
-    def unsent(self) -> int:
-        """Bytes the connection has not taken yet."""
+    def accepted(self) -> bool:
+        """Whether the broker has agreed to talk to us."""
+
+    @property
+    def waiting(self) -> int:
+        """Publications that the broker has not taken over yet."""
 
     def publish(self, topic: str, payload: bytes, *, retain: bool = False) -> int:
         """Queue a message; returns its packet identifier."""
@@ -47,9 +54,20 @@ class Publisher:
         """(topic, payload) of what the broker says when we are gone without a word."""
         return f"{self._root}/health", messages.encode(health.will(now))
 
+    def alerts(self, outputs: Sequence[Output]) -> list[tuple[str, bytes]]:
+        """(topic, payload) of the alerts among the outputs: to be durable before they are sent."""
+        return [
+            (
+                f"{self._root}/alert/{messages.path(output.characteristic.name, output.stream)}",
+                messages.encode(output.event),
+            )
+            for output in outputs
+            if isinstance(output, Alert)
+        ]
+
     def publish(self, link: Link, outputs: Sequence[Output], now: int) -> None:
-        """Publish what the outputs and the passing of time make due."""
-        if not self._health.online:
+        """Publish what the outbox holds, and what outputs and the passing of time make due."""
+        if not link.accepted:
             return
         for alert in self._outbox.to_send(_IN_FLIGHT):
             stamped = messages.published(alert.payload, times.format_time(now))
@@ -61,19 +79,21 @@ class Publisher:
                 self._notice(link, output.reason)
         for reason in self._notices.due(now):
             self._notice(link, reason)
-        self._publish_standings(link, now)
-        if self._health.is_due(now):
+        if link.waiting < _MOST_WAITING:
+            self._publish_standings(link, now)
+        if self._health.online and self._health.is_due(now):
             self._publish_health(link, now)
 
-    def farewell(self, link: Link, now: int) -> int:
-        """Say that we stop; the packet identifier of our last word."""
-        self._health.disconnected(now, "stopped")
-        return self._publish_health(link, now)
+    def farewell(self, link: Link, now: int) -> None:
+        """Say that we stop."""
+        if link.accepted:
+            self._health.disconnected(now, "stopped")
+            self._publish_health(link, now)
 
-    def _publish_health(self, link: Link, now: int) -> int:
+    def _publish_health(self, link: Link, now: int) -> None:
         engine = self._engine
         message = self._health.message(now, engine.counts, engine.lag, len(self._outbox))
-        return link.publish(f"{self._root}/health", messages.encode(message), retain=True)
+        link.publish(f"{self._root}/health", messages.encode(message), retain=True)
 
     def _publish_standings(self, link: Link, now: int) -> None:
         engine, throttle = self._engine, self._standings
@@ -94,7 +114,7 @@ class Publisher:
         link.publish(f"{self._root}/setaside", messages.encode(message))
 
     def _point(self, link: Link, point: Points) -> None:
-        if link.unsent > _MOST_UNSENT:
+        if link.waiting >= _MOST_WAITING:
             self._health.dropped_points += 1
             return
         plan, subgroup = point.characteristic, point.subgroup

@@ -1,6 +1,7 @@
-"""What has been seen of a stream and of a topic's counter: repeats, late ones, gaps, gauge restarts.
+"""What was seen of a stream and of a topic's counter: repeats, late ones, gaps, gauge restarts.
 
-Knows sequence numbers and event times. Must not know values, subgroups or why a reading was refused.
+Knows sequence numbers and event times. Must not know values, subgroups or why a reading was
+refused.
 """
 
 from __future__ import annotations
@@ -10,6 +11,9 @@ from enum import Enum
 
 WINDOW = 4096
 """How far behind the newest sequence number a repeat is still told from a restarted counter."""
+
+NEVER = -(2**63)
+"""Before every instant."""
 
 _RECENT_TIMES = 64
 
@@ -35,15 +39,18 @@ def ahead(number: int, last: int, wraps: int | None) -> int:
 class StreamSeen:
     """The identities a stream has accepted.
 
-    Sequence numbers are kept as a sliding window of bits behind the newest (the anti-replay window of
-    RFC 4303, section 3.4.3): half a kilobyte, however many readings.
+    Sequence numbers are kept as a sliding window of bits behind the newest (the anti-replay window
+    of RFC 4303, section 3.4.3): half a kilobyte, however many readings.
     """
 
-    __slots__ = ("_bits", "_last", "_mark", "_times", "_wraps")
+    __slots__ = ("_bits", "_last", "_times", "_wraps", "mark", "place")
 
     def __init__(self, wraps: int | None) -> None:
+        self.mark = NEVER
+        """The time of the latest reading accepted."""
+        self.place = 0
+        """How many readings before it, all without a number, were of that same time."""
         self._wraps = wraps
-        self._mark: int | None = None
         self._last: int | None = None
         self._bits = 0
         self._times: deque[int] | None = None
@@ -56,49 +63,51 @@ class StreamSeen:
         """
         if sequence is None:
             return self._admit_by_time(time) if timed else self._advance(time)
-        last, mark = self._last, self._mark
+        last, mark = self._last, self.mark
         if last is None:
             verdict = Verdict.NEW
             distance = WINDOW
-            if timed and mark is not None and time < mark:
+            if timed and time < mark:
                 return Verdict.LATE
         else:
             distance = ahead(sequence, last, self._wraps)
             verdict = Verdict.NEW if distance >= 0 else Verdict.RESTART
             if timed:
-                if mark is not None and time <= mark:
+                if time <= mark:
                     if self._has(distance):
                         return Verdict.REPEATED
                     if time < mark:
                         return Verdict.LATE
-                    # Equal time, new number: accepted, also where it fills a hole behind the newest.
+                    # Equal time, new number: accepted, also where it fills a hole.
                     verdict = Verdict.NEW
             elif self._has(distance):
                 return Verdict.REPEATED
             elif -WINDOW < distance < 0:
                 return Verdict.LATE
-        self._mark = time
-        if verdict is Verdict.RESTART or distance >= WINDOW:
+        self.mark = time
+        if verdict is Verdict.RESTART or not -WINDOW < distance < WINDOW:
+            # Out of the window's reach, whichever way: the window goes there.
             self._last, self._bits = sequence, 1
         elif distance >= 0:
             self._last = sequence
             self._bits = (self._bits << distance | 1) & _MASK
         else:
-            self._bits |= 1 << -distance & _MASK
+            self._bits |= 1 << -distance
         return verdict
 
     def _admit_by_time(self, time: int) -> Verdict:
         if self._times is None:
             self._times = deque(maxlen=_RECENT_TIMES)
-        if self._mark is not None and time <= self._mark:
+        if time <= self.mark:
             # A message that lacks its number has only its time to be known by.
-            known = time == self._mark or time in self._times
+            known = time == self.mark or time in self._times
             return Verdict.REPEATED if known else Verdict.LATE
         self._times.append(time)
         return self._advance(time)
 
     def _advance(self, time: int) -> Verdict:
-        self._mark = time
+        self.place = self.place + 1 if time == self.mark else 0
+        self.mark = time
         return Verdict.NEW
 
     def _has(self, distance: int) -> bool:
@@ -109,7 +118,8 @@ _MASK = (1 << WINDOW) - 1
 
 
 class TopicCounter:
-    """The sequence counter of one concrete topic, which its streams may share: counts what is missing.
+    """The sequence counter of one concrete topic, which its streams may share: counts what is
+    missing.
 
     A number whose message was set aside was not lost on the way, so it does not count as missing.
     """
@@ -127,13 +137,17 @@ class TopicCounter:
             self._noted.add(sequence)
 
     def advance(self, sequence: int, restarted: bool) -> int:
-        """A reading with this number was accepted; how many numbers the gap before it lost."""
+        """A reading with this number was accepted; how many numbers the gap before it lost.
+
+        ``restarted``: its stream saw the counter fall. Where another stream saw that first, the
+        number is ahead already and its gap counts like any other.
+        """
         last = self._last
-        if last is None or restarted:
+        distance = 0 if last is None else ahead(sequence, last, self._wraps)
+        if last is None or (restarted and distance < 0):
             self._last = sequence
             self._noted.clear()
             return 0
-        distance = ahead(sequence, last, self._wraps)
         if distance <= 0:
             return 0
         self._last = sequence

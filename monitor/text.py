@@ -13,30 +13,30 @@ from monitor.detectors.charts import SPREAD, standard_error
 from monitor.lookback import Shift
 from monitor.messages import EventKind
 from monitor.outputs import Stream
-from monitor.plan import CharacteristicPlan, Direction
+from monitor.plan import CharacteristicPlan
 
 CAUTION = (
     "Isolate and lock out before reaching in; your site's rules come first. "
     "This is an advisory message, not a safety function."
 )
 
-_WITHDRAWN = {"gauge-restart": "the gauge restarted and is judged afresh"}
+_MOST_PLACES = 12
+_PLAIN_BELOW = 1e12  # from there up a string of digits tells less than an exponent
+_WITHDRAWN = {"gauge-restart": "the gauge restarted"}
 
 
 def subject(plan: CharacteristicPlan, stream: Stream) -> str:
     """``Net weight, lane 1 head 4,``: the title up to its first comma, stream keys as declared."""
     values = dict(stream)
     declared = [key for _, key in plan.source.captures] + [key for key, _ in plan.source.stream]
-    name = plan.title.split(",")[0].strip()
+    name = plan.title.split(",")[0].strip() or plan.name
     where = " ".join(f"{key} {values[key]}" for key in declared)
     return f"{name}, {where}," if where else name
 
 
 def quantity(value: float, plan: CharacteristicPlan) -> str:
     """A value with its unit, to two significant digits of the standard error."""
-    error = standard_error(plan.baseline, plan.subgroup.size)
-    places = min(max(0, 1 - math.floor(math.log10(error))), 12)
-    return _with_unit(f"{value:.{places}f}", plan)
+    return _with_unit(_number(value, _places(plan)), plan)
 
 
 def sentence(
@@ -52,9 +52,10 @@ def sentence(
     """What happened, how much, since when, and the figures that decided it."""
     who = subject(plan, stream)
     if event == "returned-to-normal":
-        return f"{who} has returned to normal."
+        return f"{who} has returned to normal: {_over(signal, chart)}."
     if event == "withdrawn":
-        return f"{who} is no longer alerted: {_WITHDRAWN[reason or '']}."
+        why = _WITHDRAWN[reason or ""]
+        return f"{who} is judged afresh because {why}: what was reported may still be there."
     again = " again" if event == "rejoined" else ""
     also = "now also: " if event == "updated" else ""
     figures = _figures(plan, signal, chart)
@@ -75,56 +76,94 @@ def _change(
     if signal.direction is None:
         return {
             "alternation": f"goes up and down by turns{again}",
-            "stratification": f"stays closer to its centre than its baseline allows for{again}",
+            "stratification": f"keeps closer to its centre than usual{again}",
             "mixture": f"keeps away from its centre{again}, as if two sources were mixed",
         }[signal.rule]
-    moved = _moved(signal.direction)
-    if shift is None or shift.size * (1 if signal.direction == "up" else -1) <= 0:
+    moved, sign = ("risen", 1) if signal.direction == "up" else ("fallen", -1)
+    size = sign * shift.size * standard_error(plan.baseline, plan.subgroup.size) if shift else 0.0
+    if shift is None or size <= 0.0:
         return f"has {moved}{again}"
-    size = _about(abs(shift.size) * standard_error(plan.baseline, plan.subgroup.size))
     comma = "," if again else ""
+    earlier = " or earlier" if shift.earliest is None else ""
     return (
-        f"has {moved}{again}{comma} by about {_with_unit(size, plan)} "
-        f"since about {_clock(shift.onset, time)}"
+        f"has {moved}{again}{comma} by about {_with_unit(_about(size), plan)} "
+        f"since about {_clock(shift.onset, time)}{earlier}"
     )
+
+
+def _over(signal: Signal, chart: str) -> str:
+    if chart in SPREAD:
+        return "it varies as usual"
+    if signal.direction is None:
+        return "the pattern is gone"
+    return "the rise is over" if signal.direction == "up" else "the fall is over"
 
 
 def _figures(plan: CharacteristicPlan, signal: Signal, chart: str) -> str:
     name = {"moving_range": "moving range", "individual": "value"}.get(chart, chart)
+    row = f"{signal.span} {name}s in a row"
+    latest = f"the latest {quantity(signal.value, plan)}"
     upper = signal.rule.endswith(("upper", "up"))
-    limit = signal.upper if upper or signal.lower is None else signal.lower
-    at = "" if limit is None else f"limit {quantity(limit, plan)}"
-    value = quantity(signal.value, plan)
     beyond = "above" if upper else "below"
-    rule = signal.rule.rsplit("-", 1)[0]
-    if rule == "cusum":
-        return f"{signal.statistic.replace('_', ' ')} {value}, {at}"
-    if rule == "ewma":
-        return f"weighted {name} {value}, {at}"
-    if rule == "outside":
-        return f"{name} {value}, {at}"
-    if rule == "zone":
-        count = f"{signal.needed} of the last {signal.span} {name}s"
-        return f"{count} {beyond} {quantity(limit or 0.0, plan)}, the latest {value}"
-    if rule == "run":
-        centre = quantity(plan.baseline.mean, plan)
-        return f"{signal.span} {name}s in a row {beyond} {centre}, the latest {value}"
-    if rule == "trend":
-        way = "rising" if upper else "falling"
-        return f"{signal.span} {name}s in a row {way}, the latest {value}"
-    return f"{signal.span} {name}s in a row, the latest {value}"
+    limit = signal.upper if upper else signal.lower
+    match signal.rule.rsplit("-", 1)[0]:
+        case "cusum":
+            return _held(plan, signal.statistic.replace("_", " "), signal.value, signal.upper)
+        case "ewma":
+            return _held(plan, "weighted average", signal.value, limit)
+        case "outside":
+            return _held(plan, name, signal.value, limit)
+        case "zone":
+            count = f"{signal.needed} of the last {signal.span} {name}s"
+            return f"{count} {beyond} {quantity(limit or 0.0, plan)}, {latest}"
+        case "run":
+            return f"{row} {beyond} {quantity(plan.baseline.mean, plan)}, {latest}"
+        case "trend":
+            return f"{row} {'rising' if upper else 'falling'}, {latest}"
+        case "stratification":
+            return f"{row} within {_band(plan, signal)}, {latest}"
+        case "mixture":
+            return f"{row} outside {_band(plan, signal)}, {latest}"
+        case _:
+            return f"{row}, {latest}"
 
 
-def _moved(direction: Direction) -> str:
-    return "risen" if direction == "up" else "fallen"
+def _held(plan: CharacteristicPlan, name: str, value: float, limit: float | None) -> str:
+    """A value and the limit it broke, to as many digits as tell them apart."""
+    if limit is None:
+        return f"{name} {quantity(value, plan)}"
+    places = _places(plan)
+    while _number(value, places) == _number(limit, places) and places < _MOST_PLACES:
+        places += 1
+    held, against = (_with_unit(_number(x, places), plan) for x in (value, limit))
+    return f"{name} {held}, limit {against}"
+
+
+def _band(plan: CharacteristicPlan, signal: Signal) -> str:
+    lower = _number(signal.lower or 0.0, _places(plan))
+    return f"{lower} to {quantity(signal.upper or 0.0, plan)}"
+
+
+def _places(plan: CharacteristicPlan) -> int:
+    """Decimals worth showing: two significant digits of the standard error."""
+    error = standard_error(plan.baseline, plan.subgroup.size)
+    return max(0, 1 - math.floor(math.log10(error)))
+
+
+def _number(value: float, places: int) -> str:
+    if places > _MOST_PLACES or abs(value) >= _PLAIN_BELOW:
+        return f"{value:.6g}"
+    return f"{value:.{places}f}"
 
 
 def _about(size: float) -> str:
-    """Two significant digits, never in exponents."""
-    if size == 0.0:
-        return "0"
+    """Two significant digits, without an exponent where that is readable."""
     places = 1 - math.floor(math.log10(size))
-    return f"{round(size, places):.{min(max(places, 0), 12)}f}"
+    return (
+        f"{size:.2g}"
+        if abs(places) > _MOST_PLACES
+        else _number(round(size, places), max(places, 0))
+    )
 
 
 def _with_unit(number: str, plan: CharacteristicPlan) -> str:

@@ -35,5 +35,9 @@ def main(args: argparse.Namespace) -> int:
     except JournalError as error:
         raise CommandError(str(error), COULD_NOT) from error
     except sqlite3.Error as error:
-        raise CommandError(f"cannot write the journal: {error}", COULD_NOT) from error
+        raise CommandError(
+            f"cannot write the journal {settings.journal}: {error}; "
+            "what it could not hold is still at the broker: make room on its disk and start again",
+            COULD_NOT,
+        ) from error
     return DONE

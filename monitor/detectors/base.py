@@ -15,8 +15,9 @@ from monitor.subgroups import Subgroup
 class Signal(NamedTuple):
     """A detector's rule met at one subgroup; ``value`` and limits in the characteristic's unit.
 
-    ``span`` is the number of points the rule looks at, ``needed`` how many a zone rule asks for. ``direction`` is the side the process mean went
-    to; None for spread and for patterns without a side.
+    ``span`` is the number of points the rule looks at, ``needed`` how many a zone rule asks for.
+    ``direction`` is the side the process mean went to; None for spread and for patterns without a
+    side.
     """
 
     rule: str

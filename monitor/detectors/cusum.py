@@ -13,7 +13,7 @@ from monitor.subgroups import Subgroup
 
 
 class Cusum:
-    """The two sums of one stream, kept in standard errors and shown in the characteristic's unit."""
+    """The two sums of one stream: kept in standard errors, shown in the characteristic's unit."""
 
     __slots__ = (
         "_baseline",
@@ -40,7 +40,7 @@ class Cusum:
         self._shown: tuple[float, float] | None = None
 
     def step(self, subgroup: Subgroup) -> tuple[Signal, ...]:
-        """Add the standardised mean to both sums; a sum beyond ``h`` signals and goes to its start."""
+        """Add the standardised mean to both sums; one above ``h`` signals and goes to its start."""
         plan = self._plan
         if subgroup.size != self._size:
             self._size = subgroup.size

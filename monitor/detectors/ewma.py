@@ -1,4 +1,4 @@
-"""EWMA (S. W. Roberts 1959; ISO 7870-6), with limits for its variance at that point or in the long run.
+"""EWMA (S. W. Roberts 1959; ISO 7870-6), its limits for the variance so far or in the long run.
 
 Knows one average. Must not know streams or alerts.
 """

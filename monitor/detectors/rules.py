@@ -2,8 +2,8 @@
 
 Knows one point after another. Must not know charts, units or other rules.
 
-Every rule takes every point, with the limits at the rule's own width. Pattern rules start afresh after
-they signal, so that two signals share no point.
+Every rule takes every point, with the limits at the rule's own width. Pattern rules start afresh
+after they signal, so that two signals share no point.
 """
 
 from __future__ import annotations
@@ -24,7 +24,7 @@ class Rule(Protocol):
     """One rule, fed with every point."""
 
     def step(self, value: float, z: float, limits: Limits) -> Met:
-        """Take a point; ``limits`` are those at the rule's own width, ``z`` its standardised value."""
+        """Take a point: ``limits`` are at the rule's own width, ``z`` is its standardised value."""
 
 
 def _side(value: float, limits: Limits) -> int:
@@ -128,7 +128,7 @@ class Alternation:
 
 
 class Stratification:
-    """``length`` points in a row inside the limits: the spread is smaller than the baseline says."""
+    """``length`` points in a row inside the limits: they spread less than the baseline says."""
 
     __slots__ = ("_length", "_run")
 

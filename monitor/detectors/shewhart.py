@@ -6,7 +6,7 @@ Knows one chart and the rules on it. Must not know streams or alerts.
 from __future__ import annotations
 
 from monitor.detectors.base import NO_SIGNALS, Signal, met
-from monitor.detectors.charts import SPREAD, chart
+from monitor.detectors.charts import SPREAD, chart, standard_error
 from monitor.detectors.rules import rule, span
 from monitor.methods.limits import Limits
 from monitor.outputs import Row
@@ -30,26 +30,29 @@ class Shewhart:
 
     __slots__ = (
         "_at",
+        "_baseline",
         "_chart",
         "_limits",
         "_plan",
         "_rules",
+        "_se",
         "_size",
         "_spread",
-        "_unit",
         "_value",
         "_widths",
     )
 
     def __init__(self, plan: ShewhartPlan, baseline: BaselinePlan) -> None:
         self._plan = plan
+        self._baseline = baseline
         self._chart = chart(plan.chart, baseline)
         self._spread = plan.chart in SPREAD
         self._rules = tuple(rule(r) for r in plan.rules)
         self._widths = tuple(r.width for r in plan.rules)
         self._size = 0
         self._limits: tuple[Limits, ...] = ()
-        self._at = self._unit = Limits(0.0, 0.0, 0.0)
+        self._at = Limits(0.0, 0.0, 0.0)
+        self._se = 1.0
         self._value: float | None = None
 
     def step(self, subgroup: Subgroup) -> tuple[Signal, ...]:
@@ -59,12 +62,13 @@ class Shewhart:
             return NO_SIGNALS
         if subgroup.size != self._size:
             self._resize(subgroup.size)
-        at, unit = self._at, self._unit
-        z = (value - unit.centre) / (unit.upper - unit.centre)
+        z = (value - self._at.centre) / self._se
         signals = NO_SIGNALS
         for index, decide in enumerate(self._rules):
             for name in decide.step(value, z, self._limits[index]):
-                signals += self._signal(name, index, value)
+                # Two of one name may be met (2 of 3 and 4 of 5): the one declared first tells.
+                if not any(signal.rule == name for signal in signals):
+                    signals += self._signal(name, index, value)
         return signals
 
     def _signal(self, name: str, index: int, value: float) -> tuple[Signal, ...]:
@@ -72,7 +76,7 @@ class Shewhart:
         if side and self._plan.direction not in ("both", side):
             return NO_SIGNALS
         planned = self._plan.rules[index]
-        limits = self._limits[index] if planned.rule in ("outside", "zone") else self._at
+        limits = self._limits[index] if planned.width else self._at
         direction = None if self._spread else side
         return (
             Signal(
@@ -91,7 +95,7 @@ class Shewhart:
         self._size = size
         self._limits = tuple(self._chart.limits(size, width) for width in self._widths)
         self._at = self._chart.limits(size, self._plan.width)
-        self._unit = self._chart.limits(size, 1.0)
+        self._se = standard_error(self._baseline, size)
 
     def rows(self, name: str, signals: tuple[Signal, ...]) -> tuple[Row, ...]:
         """One row; none where the point is blank."""

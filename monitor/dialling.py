@@ -1,0 +1,80 @@
+"""Reaching the broker: one try at a time, and when the next is due.
+
+Knows addresses, sockets and backoff. Must not know MQTT, or what a connection is for.
+"""
+
+from __future__ import annotations
+
+import math
+import socket
+import time
+from collections.abc import Callable
+from concurrent.futures import Future
+from threading import Thread
+
+_TIMEOUT = 5.0  # seconds for each address a name stands for
+_BACKOFF = (0.05, 0.5, 1.0, 2.0, 5.0, 10.0, 30.0)
+_STEADY = 1.0  # seconds; a connection that held so long was a good one
+
+
+class Dialler:
+    """Tries one address for ever: at once after a good connection, else ever more seldom.
+
+    A try runs in a thread of its own, because nothing interrupts the wait for a name server, and a
+    process that is told to stop must. ``wake`` is called from that thread when the try is over.
+    """
+
+    def __init__(self, host: str, port: int, wake: Callable[[], object]) -> None:
+        self._address = host, port
+        self._wake = wake
+        self._trying: Future[socket.socket] | None = None
+        self._failures = 0
+        self._try_at = -math.inf
+        self._held_since = math.inf
+
+    def delay(self) -> float:
+        """Seconds until ``ask`` has something to do, unless ``wake`` is called before."""
+        if self._trying is not None:
+            return 0.0 if self._trying.done() else math.inf
+        return max(0.0, self._try_at - time.monotonic())
+
+    def ask(self) -> socket.socket | None:
+        """The connection, once there is one; until then tries, each when it is due.
+
+        Raises OSError where a try failed: then call ``lost``, as when a connection was lost.
+        """
+        trying = self._trying
+        if trying is None:
+            if time.monotonic() >= self._try_at:
+                self._trying = Future()
+                Thread(target=self._try, args=(self._trying,), daemon=True).start()
+            return None
+        if not trying.done():
+            return None
+        self._trying = None
+        return trying.result()
+
+    def holds(self) -> None:
+        """The connection is good for what it was made for."""
+        self._held_since = time.monotonic()
+
+    def lost(self) -> float:
+        """There is no connection any more, or again; returns the seconds until the next try."""
+        now = time.monotonic()
+        if now - self._held_since >= _STEADY:
+            # Not sooner: two daemons under one client id end each other's connection at once.
+            self._failures = 0
+        self._held_since = math.inf
+        delay = _BACKOFF[min(self._failures, len(_BACKOFF) - 1)]
+        self._failures += 1
+        self._try_at = now + delay
+        return delay
+
+    def _try(self, result: Future[socket.socket]) -> None:
+        try:
+            result.set_result(socket.create_connection(self._address, _TIMEOUT))
+        except OSError as error:
+            result.set_exception(error)
+        except UnicodeError:  # from the codec of host names
+            result.set_exception(OSError("no host can have this name"))
+        self._wake()

@@ -1,0 +1,89 @@
+"""The ring of subgroups, against a list that keeps them all."""
+
+from __future__ import annotations
+
+import pytest
+from hypothesis import given
+from hypothesis import strategies as st
+
+from monitor.lookback import LookBack, Shift
+from monitor.methods.onset import LOOK_BACK, estimate
+from monitor.plan import Direction
+
+
+def filled(z: list[float]) -> LookBack:
+    lookback = LookBack()
+    for index, value in enumerate(z):
+        lookback.append(value, 10 * index)
+    return lookback
+
+
+@given(
+    st.lists(st.floats(-4, 4, width=16), min_size=1, max_size=30),
+    st.integers(0, 2 * LOOK_BACK),
+    st.sampled_from(["up", "down"]),
+)
+def test_only_the_last_subgroups_are_looked_at(
+    z: list[float], earlier: int, direction: Direction
+) -> None:
+    series = [0.25] * earlier + z
+    shift = filled(series).shift(direction)
+    start = max(0, len(series) - LOOK_BACK)
+    onset = estimate(series[start:], 1 if direction == "up" else -1)
+    assert shift == Shift(
+        size=pytest.approx(onset.size),
+        onset=10 * (start + onset.index),
+        earliest=None if onset.first is None else 10 * (start + onset.first - 1),
+        latest=10 * (start + onset.last),
+    )
+
+
+def test_a_shift_older_than_the_ring_has_no_earliest_moment() -> None:
+    shift = filled([0.0] * 50 + [1.5] * LOOK_BACK).shift("up")
+    assert shift.size == 1.5
+    assert shift.onset == 10 * 50
+    assert shift.earliest is None
+
+
+def test_a_forgotten_shift_is_not_the_onset_of_the_next() -> None:
+    lookback = filled([0.0] * 20 + [4.0] * 20)
+    lookback.forget("up")
+    for index in range(40, 60):
+        lookback.append(0.0 if index < 50 else 1.0, 10 * index)
+    assert lookback.shift("up").onset == 500
+    assert lookback.shift("up").size == 1.0
+
+
+def test_one_side_forgets_nothing_of_the_other() -> None:
+    lookback = filled([0.0] * 20 + [-2.0] * 20)
+    lookback.forget("up")
+    assert lookback.shift("down").onset == 200
+    with pytest.raises(ValueError):
+        lookback.shift("up")
+
+
+def test_what_was_forgotten_may_fall_out_of_the_ring() -> None:
+    lookback = filled([5.0] * 10)
+    lookback.forget("up")
+    for index in range(10, 10 + 3 * LOOK_BACK):
+        lookback.append(1.0, 10 * index)
+    assert lookback.shift("up").onset == 10 * (10 + 2 * LOOK_BACK)
+
+
+def test_clearing_forgets_both_sides_and_what_was_forgotten() -> None:
+    lookback = filled([3.0] * 10)
+    lookback.forget("up")
+    lookback.clear()
+    lookback.append(2.0, 7)
+    assert lookback.shift("up") == Shift(size=2.0, onset=7, earliest=None, latest=7)
+
+
+def test_one_wild_value_long_ago_is_not_the_onset_of_a_drift() -> None:
+    shift = filled([0.0] * 20 + [1000.0] + [0.0] * 80 + [1.0] * 12).shift("up")
+    assert (shift.onset, shift.size) == (1010, 1.0)
+
+
+@pytest.mark.filterwarnings("error")
+def test_an_absurd_value_is_an_onset_and_no_error() -> None:
+    shift = filled([0.0] * 10 + [1e200, 1e200]).shift("up")
+    assert (shift.onset, shift.size) == (100, 1e200)
