@@ -7,33 +7,26 @@ as in IEC 62682; what is decided here is decided at subgroups, in event time.
 from __future__ import annotations
 
 import math
-import re
-from dataclasses import dataclass, field
+from collections.abc import Iterable, Mapping, Sequence
+from dataclasses import dataclass, field, fields
 from hashlib import sha256
+from typing import Any
 
 import rfc8785
 
-from monitor import text, times
+from monitor import events, times
 from monitor.detectors import Signal
 from monitor.detectors.charts import standard_error
 from monitor.lookback import LookBack, Shift
-from monitor.messages import (
-    SCHEMA,
-    AlertEvent,
-    EventKind,
-    OpenField,
-    SignalField,
-    SubgroupField,
-)
-from monitor.outputs import Stream
-from monitor.plan import CharacteristicPlan, DetectorPlan, Direction
+from monitor.messages import AlertEvent, EventKind, OpenField, SignalField
+from monitor.plan import DetectorPlan, Direction, Judged
 from monitor.subgroups import Subgroup
+from monitor.text import Finding
 
 RETURN_INTERVAL = 5.0
 """Decision interval of the return test, in standard errors."""
 
 _SMALLEST_REFERENCE = 0.5
-_PLACEHOLDER = re.compile(r"\{([^{}]+)\}")
 
 
 @dataclass(slots=True)
@@ -45,9 +38,8 @@ class Slot:
     rule: str
     direction: Direction | None
     raised: int
-    signal: Signal
+    finding: Finding
     signals: dict[tuple[str, str], SignalField] = field(default_factory=dict)
-    shift: Shift | None = None
     open: bool = True
     text: str = ""
     last_signal: int = 0
@@ -57,14 +49,42 @@ class Slot:
     quiet: int = 0
     quiet_needed: int = 0
 
-    def signalled(self, signal: Signal, time: int, shift: Shift | None) -> None:
+    def met(self) -> Iterable[SignalField]:
+        """The rules met so far, in the order they were first met."""
+        return self.signals.values()
+
+    def state(self) -> dict[str, Any]:
+        """As JSON values, the detector by its name."""
+        values = {name: getattr(self, name) for name in _PLAIN}
+        signal, chart, shift, error = self.finding
+        return values | {
+            "detector": self.detector.name,
+            "finding": [list(signal), chart, None if shift is None else list(shift), error],
+            "signals": list(self.signals.values()),
+        }
+
+    @classmethod
+    def restored(cls, state: Mapping[str, Any], detectors: Mapping[str, DetectorPlan]) -> Slot:
+        """From what ``state`` gave."""
+        signal, chart, shift, error = state["finding"]
+        met: list[SignalField] = state["signals"]
+        return cls(
+            **{name: state[name] for name in _PLAIN},
+            detector=detectors[state["detector"]],
+            finding=Finding(
+                Signal(*signal), chart, None if shift is None else Shift(*shift), error
+            ),
+            signals={(known["detector"], known["rule"]): known for known in met},
+        )
+
+    def signalled(self, finding: Finding, time: int) -> None:
         """The condition is there: every return test starts again."""
-        self.signal = signal
-        self.shift = shift
+        self.finding = finding
         self.last_signal = time
         self.towards = 0.0
         self.quiet = 0
-        self.quiet_needed = max(self.quiet_needed, 2 * signal.span)
+        self.quiet_needed = max(self.quiet_needed, 2 * finding.signal.span)
+        shift = finding.shift
         size = 0.0 if shift is None else shift.size * _sign(self.direction)
         # The smallest estimate so far: those at a signal are rather too large than too small, and a
         # shift that grew and is half repaired is not over.
@@ -88,14 +108,18 @@ class Slot:
         return back and time - self.last_signal >= off_delay
 
 
+_PLAIN = tuple(
+    each.name for each in fields(Slot) if each.name not in ("detector", "finding", "signals")
+)
+
+
 class StreamAlerts:
     """All alerts of one stream, and the counter of their events."""
 
-    __slots__ = ("_plan", "_slots", "_stream", "sequence")
+    __slots__ = ("_judged", "_slots", "sequence")
 
-    def __init__(self, plan: CharacteristicPlan, stream: Stream) -> None:
-        self._plan = plan
-        self._stream = stream
+    def __init__(self, judged: Judged) -> None:
+        self._judged = judged
         self._slots: dict[str, Slot] = {}
         self.sequence = 0
 
@@ -109,7 +133,7 @@ class StreamAlerts:
         """The events that a subgroup and its signals cause; most subgroups cause none."""
         if not signals and not self._slots:
             return []
-        events: list[AlertEvent] = []
+        caused: list[AlertEvent] = []
         by_slot: dict[str, list[tuple[DetectorPlan, Signal]]] = {}
         for detector, signal in signals:
             key: str = signal.direction or detector.scheme.chart
@@ -117,16 +141,16 @@ class StreamAlerts:
         for name, slot in self._slots.items():
             if not slot.open or name in by_slot:
                 continue
-            if slot.is_back(z, subgroup.last, self._plan.off_delay):
+            if slot.is_back(z, subgroup.last, self._judged.plan.off_delay):
                 slot.open, slot.returned = False, subgroup.last
-                events.append(self._event(slot, "returned-to-normal", subgroup))
+                caused.append(self._event(slot, "returned-to-normal", subgroup.last, subgroup))
                 if slot.direction is not None:
                     lookback.forget(slot.direction)
         for name, met in by_slot.items():
             event = self._signalled(name, met, subgroup, lookback)
             if event is not None:
-                events.append(event)
-        return events
+                caused.append(event)
+        return caused
 
     def _signalled(
         self,
@@ -135,50 +159,51 @@ class StreamAlerts:
         subgroup: Subgroup,
         lookback: LookBack,
     ) -> AlertEvent | None:
-        time = subgroup.last
+        time, plan, baseline = subgroup.last, self._judged.plan, self._judged.baseline
         slot = self._slots.get(key)
+        shift = None if met[0][1].direction is None else lookback.shift(met[0][1].direction)
+        error = standard_error(baseline, subgroup.size)
+        findings = [(by, Finding(each, by.scheme.chart, shift, error)) for by, each in met]
+        detector, telling = findings[0]
         kind: EventKind | None = None
-        detector, signal = met[0]
-        if slot is None or (not slot.open and time - slot.returned > self._plan.rejoin):
+        if slot is None or (not slot.open and time - slot.returned > plan.rejoin):
             kind = "raised"
             self._slots.pop(key, None)  # the new one takes its place at the end
             slot = self._slots[key] = Slot(
-                self._identify(detector, signal, subgroup),
+                self._identify(detector, telling.signal, subgroup),
                 detector,
-                signal.rule,
-                signal.direction,
+                telling.signal.rule,
+                telling.signal.direction,
                 time,
-                signal,
+                telling,
             )
         elif not slot.open:
             kind = "rejoined"
             slot.open = True
-        shift = None if slot.direction is None else lookback.shift(slot.direction)
-        for by, each in met:
-            known = slot.signals.get((by.name, each.rule))
+        for by, finding in findings:
+            rule = finding.signal.rule
+            known = slot.signals.get((by.name, rule))
             if known is None:
-                slot.signals[by.name, each.rule] = SignalField(
-                    detector=by.name, rule=each.rule, time=times.format_time(time), count=1
+                slot.signals[by.name, rule] = SignalField(
+                    detector=by.name, rule=rule, time=times.format_time(time), count=1
                 )
                 if kind is None:
-                    kind, detector, signal = "updated", by, each
+                    kind, telling = "updated", finding
             else:
                 known["count"] += 1
-            slot.signalled(each, time, shift)
-        slot.signal = signal
-        return (
-            None if kind is None else self._event(slot, kind, subgroup, chart=detector.scheme.chart)
-        )
+            slot.signalled(finding, time)
+        slot.finding = telling
+        return None if kind is None else self._event(slot, kind, time, subgroup)
 
     def withdraw(self, time: int, reason: str) -> list[AlertEvent]:
         """Close all that is open, for a reason that is not the process's."""
-        events = [
-            self._event(slot, "withdrawn", None, reason=reason, time=time)
+        caused = [
+            self._event(slot, "withdrawn", time, None, reason)
             for slot in self._slots.values()
             if slot.open
         ]
         self._slots.clear()
-        return events
+        return caused
 
     def open(self) -> list[OpenField]:
         """What is open now, in the order it was raised."""
@@ -187,7 +212,7 @@ class StreamAlerts:
                 id=slot.id,
                 rule=slot.rule,
                 direction=slot.direction,
-                priority=self._plan.priority.of(slot.direction),
+                priority=self._judged.plan.priority.of(slot.direction),
                 since=times.format_time(slot.raised),
                 text=slot.text,
             )
@@ -199,8 +224,8 @@ class StreamAlerts:
         canonical = rfc8785.dumps(
             [
                 1,
-                self._plan.name,
-                dict(self._stream),
+                self._judged.plan.name,
+                dict(self._judged.stream),
                 detector.name,
                 signal.rule,
                 detector.revision,
@@ -214,97 +239,24 @@ class StreamAlerts:
         self,
         slot: Slot,
         kind: EventKind,
+        time: int,
         subgroup: Subgroup | None,
-        *,
-        chart: str | None = None,
         reason: str | None = None,
-        time: int = 0,
     ) -> AlertEvent:
-        plan, signal = self._plan, slot.signal
-        at = subgroup.last if subgroup else time
         self.sequence += 1
-        slot.text = text.sentence(
-            plan,
-            self._stream,
-            kind,
-            signal,
-            chart or slot.detector.scheme.chart,
-            slot.shift,
-            at,
-            reason,
-        )
-        tolerance, baseline = plan.specification, plan.baseline
-        return AlertEvent(
-            schema=SCHEMA,
-            id=slot.id,
-            sequence=self.sequence,
-            event=kind,
-            characteristic=plan.name,
-            title=plan.title,
-            stream=dict(self._stream),
-            time=times.format_time(at),
-            detector=slot.detector.name,
-            chart=slot.detector.scheme.chart,
-            rule=slot.rule,
-            direction=slot.direction,
-            priority=plan.priority.of(slot.direction),
-            text=slot.text,
-            statistic={
-                "name": signal.statistic,
-                "value": signal.value,
-                "lower": signal.lower,
-                "upper": signal.upper,
-                "unit": plan.unit,
-            },
-            signals=[SignalField(**known) for known in slot.signals.values()],
-            subgroup=None if subgroup is None else subgroup_field(subgroup),
-            shift=None
-            if slot.shift is None
-            else {
-                "estimate": slot.shift.size * standard_error(baseline, plan.subgroup.size),
-                "unit": plan.unit,
-                "onset": times.format_time(slot.shift.onset),
-                "onset_from": None
-                if slot.shift.earliest is None
-                else times.format_time(slot.shift.earliest),
-                "onset_to": times.format_time(slot.shift.latest),
-            },
-            specification=None
-            if tolerance is None
-            else {
-                "nominal": tolerance.nominal,
-                "lower": tolerance.lower,
-                "upper": tolerance.upper,
-            },
-            baseline={
-                "revision": baseline.revision,
-                "mean": baseline.mean,
-                "sigma": baseline.sigma,
-            },
-            reaction=[_filled(step, self._stream) for step in plan.reaction.of(slot.direction)],
-            caution=text.CAUTION,
-            reason=reason,
-        )
+        told = events.event(self._judged, slot, kind, self.sequence, time, subgroup, reason)
+        slot.text = told["text"]
+        return told
 
+    def state(self) -> list[Any]:
+        """The sequence and every slot, as JSON values; detectors by name."""
+        return [self.sequence, {key: slot.state() for key, slot in self._slots.items()}]
 
-def subgroup_field(subgroup: Subgroup) -> SubgroupField:
-    """A subgroup as messages show it; a single reading has no range and no standard deviation."""
-    return SubgroupField(
-        number=subgroup.number,
-        size=subgroup.size,
-        mean=subgroup.mean,
-        range=subgroup.range,
-        sd=subgroup.sd,
-        first=times.format_time(subgroup.first),
-        last=times.format_time(subgroup.last),
-    )
+    def restore(self, state: Sequence[Any], detectors: Mapping[str, DetectorPlan]) -> None:
+        """Take back what ``state`` gave; ``detectors`` are the plan's, by name."""
+        self.sequence, slots = state
+        self._slots = {key: Slot.restored(slot, detectors) for key, slot in slots.items()}
 
 
 def _sign(direction: Direction | None) -> int:
     return -1 if direction == "down" else 1
-
-
-def _filled(step: str, stream: Stream) -> str:
-    # One pass, and not str.format: a value from a gauge is never a placeholder or a format code.
-    values = dict(stream)
-    return _PLACEHOLDER.sub(lambda found: values.get(found[1], found[0]), step)

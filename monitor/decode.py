@@ -8,11 +8,10 @@ from __future__ import annotations
 
 import math
 from collections.abc import Mapping
-from typing import NamedTuple
 
 from monitor import numbers, times
 from monitor.plan import SourcePlan
-from monitor.pointers import MISSING, lookup
+from monitor.pointers import MISSING, getter
 
 MAX_PAYLOAD = 256 * 1024
 FUTURE = 5 * 60 * times.SECOND
@@ -22,69 +21,88 @@ _OLDEST = -62_135_596_800 * times.SECOND  # 0001-01-01T00:00Z: ISO 8601 writes n
 _MAX_SEQUENCE = 2**63
 
 
-class Found(NamedTuple):
-    """What a message says before it is judged; ``keys`` are stream values in their keys' order."""
-
-    keys: tuple[str, ...]
-    value: object
-    at: object
-
-
 class Decoder:
-    """Reads the messages of one source."""
+    """Reads the messages of one source: what its pointers find, and what may be used of it.
 
-    __slots__ = ("_captured", "_sequence", "_source", "_stream", "keys", "number", "timed")
+    ``value``, ``at`` and ``sequence`` look into a parsed document; ``MISSING`` where the source has
+    no such pointer, or the document no such place.
+    """
+
+    __slots__ = (
+        "_captured",
+        "_lower",
+        "_stream",
+        "_upper",
+        "_use_if",
+        "at",
+        "keys",
+        "number",
+        "sequence",
+        "timed",
+        "value",
+    )
 
     def __init__(self, source: SourcePlan) -> None:
-        self._source = source
         self.keys = tuple(sorted([k for _, k in source.captures] + [k for k, _ in source.stream]))
         self.number = source.payload == "number"
         self.timed = source.time is not None
-        self._sequence = source.sequence.pointer if source.sequence else None
+        self.value = getter(source.value)
+        self.at = _missing if source.time is None else getter(source.time)
+        self.sequence = _missing if source.sequence is None else getter(source.sequence.pointer)
+        self._lower, self._upper = source.plausible_lower, source.plausible_upper
+        self._use_if = tuple((getter(pointer), allowed) for pointer, allowed in source.use_if)
         captured = {key: index for index, key in source.captures}
         within = dict(source.stream)
         self._captured = tuple(captured.get(key) for key in self.keys)
-        self._stream = tuple(within.get(key, ()) for key in self.keys)
+        self._stream = tuple(getter(within[key]) for key in self.keys if key in within)
 
     def levels(self, topic: str) -> tuple[str | None, ...]:
         """The values a topic fixes, in the order of ``keys``; None: the payload's to say."""
         parts = topic.split("/")
         return tuple(None if at is None else parts[at] for at in self._captured)
 
-    def find(self, document: object, levels: tuple[str | None, ...]) -> Found | str:
-        """What the document says, or ``not-used`` or ``no-stream``."""
-        source = self._source
-        for pointer, allowed in source.use_if:
-            if not _among(lookup(document, pointer), allowed):
-                return "not-used"
-        keys = []
-        for level, pointer in zip(levels, self._stream, strict=True):
-            key = _stream_value(lookup(document, pointer) if level is None else level)
-            if key is None:
-                return "no-stream"
-            keys.append(key)
-        at = MISSING if source.time is None else lookup(document, source.time)
-        return Found(tuple(keys), lookup(document, source.value), at)
+    def is_used(self, document: object) -> bool:
+        """Whether the document meets ``use_if``."""
+        for get, allowed in self._use_if:
+            value = get(document)
+            if not (value in allowed if type(value) is str else _among(value, allowed)):
+                return False
+        return True
 
-    def sequence(self, document: object) -> object:
-        """The sequence number as the document has it; ``MISSING`` where none is configured."""
-        return MISSING if self._sequence is None else lookup(document, self._sequence)
+    def quick_key(self, document: object) -> object:
+        """What tells the document's stream from others on its topic, for looking it up again.
+
+        None where it takes ``stream_values`` to tell: only whole numbers and texts are sure to be
+        equal when their streams are.
+        """
+        stream = self._stream
+        if len(stream) == 1:
+            value = stream[0](document)
+            return value if type(value) is int or type(value) is str else None
+        values = tuple(get(document) for get in stream)
+        return values if all(type(v) is int or type(v) is str for v in values) else None
+
+    def stream_values(
+        self, document: object, levels: tuple[str | None, ...]
+    ) -> tuple[str, ...] | None:
+        """Stream values in the order of ``keys``; None where one is missing or is none."""
+        stream = iter(self._stream)
+        return _all_known(
+            [_stream_value(next(stream)(document) if level is None else level) for level in levels]
+        )
 
     def row(self, columns: Mapping[str, str]) -> tuple[str, ...] | None:
         """The stream values of a table row, or None where one is missing."""
-        keys = [_stream_value(columns.get(key)) for key in self.keys]
-        known = tuple(key for key in keys if key is not None)
-        return known if len(known) == len(keys) else None
+        return _all_known([_stream_value(columns.get(key)) for key in self.keys])
 
     def judge_value(self, value: object) -> float | str:
         """The value as a plausible float, or the reason it cannot be used."""
+        if type(value) is float and self._lower <= value <= self._upper:
+            return value
         if value is MISSING or value is None:
             return "no-value"
         result = numbers.number(value)
-        source = self._source
-        if isinstance(result, float) and not (
-            source.plausible_lower <= result <= source.plausible_upper
-        ):
+        if isinstance(result, float) and not self._lower <= result <= self._upper:
             return "implausible"
         return result
 
@@ -104,6 +122,8 @@ def judge_time(at: object, arrival: int) -> int | str:
 
 def judge_sequence(sequence: object) -> int | None:
     """The sequence number, or None where the message lacks a usable one."""
+    if type(sequence) is int and 0 <= sequence < _MAX_SEQUENCE:
+        return sequence
     if isinstance(sequence, str):
         sequence = _number(sequence)
     if isinstance(sequence, float) and sequence.is_integer():
@@ -122,7 +142,8 @@ def _number(text: str) -> int | float | str:
 
 def _moment(at: object) -> int:
     if isinstance(at, str):
-        at = _number(at)
+        if at[4:5] != "-":  # what has a dash after its year is no number
+            at = _number(at)
         if isinstance(at, str):
             return times.parse_iso_time(at)
     if isinstance(at, bool) or not isinstance(at, int | float):
@@ -151,6 +172,15 @@ def _stream_value(value: object) -> str | None:
         except UnicodeEncodeError:  # half of a surrogate pair: no topic can carry it
             return None
     return text
+
+
+def _all_known(values: list[str | None]) -> tuple[str, ...] | None:
+    known = tuple(value for value in values if value is not None)
+    return known if len(known) == len(values) else None
+
+
+def _missing(document: object) -> object:
+    return MISSING
 
 
 def _among(value: object, allowed: tuple[object, ...]) -> bool:

@@ -6,7 +6,6 @@ Knows counts, errors and when they are worth saying. Must not know sockets, file
 from __future__ import annotations
 
 from monitor import times
-from monitor.engine import Counts
 from monitor.messages import (
     SCHEMA,
     CountsField,
@@ -15,6 +14,7 @@ from monitor.messages import (
     SetAsideMessage,
 )
 from monitor.outputs import SetAside
+from monitor.stream import Counts
 from monitor.throttle import Throttle
 
 EVERY = 10 * times.SECOND

@@ -6,7 +6,8 @@ Knows standardised means and the times their subgroups began. Must not know dete
 from __future__ import annotations
 
 from array import array
-from typing import NamedTuple
+from collections.abc import Sequence
+from typing import Any, NamedTuple
 
 import numpy as np
 
@@ -58,6 +59,16 @@ class LookBack:
     def forget(self, direction: Direction) -> None:
         """A shift that way is over, and must not pass for the onset of the next."""
         self._from[direction] = self._count
+
+    def state(self) -> list[Any]:
+        """What is remembered, as JSON values."""
+        return [self._count, list(self._values), list(self._first), self._from]
+
+    def restore(self, state: Sequence[Any]) -> None:
+        """Take back what ``state`` gave."""
+        self._count, values, first, forgotten = state
+        self._values, self._first = array("d", values), array("q", first)
+        self._from = dict(forgotten)
 
     def shift(self, direction: Direction) -> Shift:
         """The shift in ``direction`` that lasts to the newest subgroup.

@@ -34,10 +34,9 @@ def parse(payload: bytes) -> object:
             return NOT_JSON
 
 
-def parse_plain(payload: bytes) -> object:
-    """The document in a payload that should be one number; the bytes themselves if no JSON."""
-    document = parse(payload)
-    return payload if document is NOT_JSON else document
+def text(document: object) -> bytes:
+    """The text of a parsed document, for showing it."""
+    return orjson.dumps(document)
 
 
 def number(value: object) -> float | str:

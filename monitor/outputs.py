@@ -9,11 +9,8 @@ from dataclasses import dataclass
 from typing import NamedTuple
 
 from monitor.messages import AlertEvent
-from monitor.plan import CharacteristicPlan
+from monitor.plan import CharacteristicPlan, Stream
 from monitor.subgroups import Subgroup
-
-Stream = tuple[tuple[str, str], ...]
-"""(key, value) pairs sorted by key; empty where a characteristic is one stream."""
 
 
 class Row(NamedTuple):

@@ -6,15 +6,19 @@ configuration takes these objects, and two equal plans always behave alike.
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from dataclasses import dataclass, field
 from typing import Generic, Literal, TypeVar
 
 T = TypeVar("T")
 
+Stream = tuple[tuple[str, str], ...]
+"""(key, value) pairs sorted by key; empty where a characteristic is one stream."""
+
 Direction = Literal["up", "down"]
 Side = Literal["both", "up", "down"]
 Priority = Literal["low", "medium", "high"]
-Chart = Literal["mean", "range", "individual", "moving_range"]
+Chart = Literal["mean", "range", "sd", "median", "individual", "moving_range"]
 
 
 @dataclass(frozen=True, slots=True)
@@ -48,11 +52,26 @@ class SourcePlan:
 
 
 @dataclass(frozen=True, slots=True)
-class SubgroupPlan:
-    """Consecutive readings of one stream; ``max_gap`` in microseconds of event time."""
+class ByCount:
+    """``size`` consecutive readings of one stream, a new start ``every`` so long (µs) where given.
+
+    A gap between readings longer than ``max_gap`` (µs of event time) abandons what was gathered.
+    """
 
     size: int
     max_gap: int | None = None
+    every: int | None = None
+
+
+@dataclass(frozen=True, slots=True)
+class ByWindow:
+    """All readings of one stream in a UTC-aligned ``window`` (µs), if there are ``min_size``."""
+
+    window: int
+    min_size: int = 1
+
+
+SubgroupPlan = ByCount | ByWindow
 
 
 @dataclass(frozen=True, slots=True)
@@ -150,6 +169,14 @@ class Specification:
 
 
 @dataclass(frozen=True, slots=True)
+class Judgement:
+    """What a stream is held against, and by which detectors."""
+
+    baseline: BaselinePlan
+    detectors: tuple[DetectorPlan, ...]
+
+
+@dataclass(frozen=True, slots=True)
 class CharacteristicPlan:
     """One characteristic; durations in microseconds of event time."""
 
@@ -158,13 +185,27 @@ class CharacteristicPlan:
     unit: str
     source: SourcePlan
     subgroup: SubgroupPlan
-    baseline: BaselinePlan
-    detectors: tuple[DetectorPlan, ...]
+    judgement: Judgement | None
+    """Of the streams that have none of their own; None: those are not judged."""
     priority: ByDirection[Priority]
     reaction: ByDirection[tuple[str, ...]]
     off_delay: int
     rejoin: int
     specification: Specification | None = None
+    by_stream: Mapping[Stream, Judgement] = field(default_factory=dict)
+
+    def judgement_of(self, stream: Stream) -> Judgement | None:
+        """The stream's own judgement, else the common one; None where it has neither."""
+        return self.by_stream.get(stream, self.judgement)
+
+
+@dataclass(frozen=True, slots=True)
+class Judged:
+    """A stream that is judged: of which characteristic, against which baseline."""
+
+    plan: CharacteristicPlan
+    stream: Stream
+    baseline: BaselinePlan
 
 
 @dataclass(frozen=True, slots=True)

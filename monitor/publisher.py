@@ -9,11 +9,12 @@ from collections.abc import Sequence
 from typing import Protocol
 
 from monitor import health, messages, times
-from monitor.engine import Engine, StreamState
+from monitor.engine import Engine
 from monitor.health import EVERY, Health, SetAsideNotices
 from monitor.messages import SCHEMA, PointMessage, RowField
 from monitor.outbox import Outbox
 from monitor.outputs import Alert, Output, Points, SetAside
+from monitor.stream import StreamState
 from monitor.throttle import Throttle
 
 _IN_FLIGHT = 1_000

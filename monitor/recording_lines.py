@@ -11,7 +11,7 @@ from typing import IO
 
 import orjson
 
-from monitor.entries import Connected, Disconnected, Message, Recorded, Started
+from monitor.entries import Connected, Disconnected, Message, Recorded, Started, Tick
 from monitor.times import format_time
 
 
@@ -26,6 +26,8 @@ def encode_line(entry: Recorded) -> bytes:
             return _control_line(entry.time, "disconnected")
         case Started():
             return _control_line(entry.time, "started")
+        case Tick():
+            return _control_line(entry.time, "tick")
 
 
 def write_jsonl(file: IO[bytes], entries: Iterable[Recorded]) -> int:

@@ -19,12 +19,14 @@ from monitor.config import Config, load
 from monitor.plan import (
     BaselinePlan,
     BrokerPlan,
+    ByCount,
     ByDirection,
     CharacteristicPlan,
     Chart,
     CusumPlan,
     DetectorPlan,
     EwmaPlan,
+    Judgement,
     Plan,
     Priority,
     RulePlan,
@@ -34,7 +36,6 @@ from monitor.plan import (
     ShewhartPlan,
     SourcePlan,
     Specification,
-    SubgroupPlan,
 )
 from monitor.presets import OUTSIDE_LIMITS, as_written, preset
 from monitor.sections.base import Section
@@ -96,12 +97,12 @@ def _characteristic(name: str, section: Characteristic, alerts: Alerts) -> Chara
         title=section.title or name,
         unit=section.unit,
         source=_source(section.source),
-        subgroup=SubgroupPlan(section.subgroup.size, section.subgroup.max_gap),
-        baseline=BaselinePlan(
-            baseline.mean, baseline.sigma, baseline.sigma_between, _digest(declared["baseline"])
-        ),
-        detectors=tuple(
-            _detector(each, section.subgroup.size, declared) for each in section.detectors
+        subgroup=ByCount(section.subgroup.size, section.subgroup.max_gap),
+        judgement=Judgement(
+            BaselinePlan(
+                baseline.mean, baseline.sigma, baseline.sigma_between, _digest(declared["baseline"])
+            ),
+            tuple(_detector(each, section.subgroup.size, declared) for each in section.detectors),
         ),
         priority=_priority(section),
         reaction=_reaction(section),

@@ -7,7 +7,9 @@ refused.
 from __future__ import annotations
 
 from collections import deque
+from collections.abc import Sequence
 from enum import Enum
+from typing import Any
 
 WINDOW = 4096
 """How far behind the newest sequence number a repeat is still told from a restarted counter."""
@@ -43,7 +45,7 @@ class StreamSeen:
     of RFC 4303, section 3.4.3): half a kilobyte, however many readings.
     """
 
-    __slots__ = ("_bits", "_last", "_times", "_wraps", "mark", "place")
+    __slots__ = ("_bits", "_closed", "_last", "_near", "_times", "_wraps", "mark", "place")
 
     def __init__(self, wraps: int | None) -> None:
         self.mark = NEVER
@@ -51,6 +53,8 @@ class StreamSeen:
         self.place = 0
         """How many readings before it, all without a number, were of that same time."""
         self._wraps = wraps
+        self._closed = NEVER
+        self._near = WINDOW - 1 if wraps is None else min(WINDOW - 1, wraps // 2)
         self._last: int | None = None
         self._bits = 0
         self._times: deque[int] | None = None
@@ -64,10 +68,20 @@ class StreamSeen:
         if sequence is None:
             return self._admit_by_time(time) if timed else self._advance(time)
         last, mark = self._last, self.mark
+        if (
+            last is not None
+            and 0 < sequence - last <= self._near
+            and (not timed or (time > mark and time >= self._closed))
+        ):
+            # The next, or one soon after it: what nearly every reading is.
+            self.mark = time
+            self._bits = (self._bits << (sequence - last) | 1) & _MASK
+            self._last = sequence
+            return Verdict.NEW
         if last is None:
             verdict = Verdict.NEW
             distance = WINDOW
-            if timed and time < mark:
+            if timed and time < max(mark, self._closed):
                 return Verdict.LATE
         else:
             distance = ahead(sequence, last, self._wraps)
@@ -80,6 +94,8 @@ class StreamSeen:
                         return Verdict.LATE
                     # Equal time, new number: accepted, also where it fills a hole.
                     verdict = Verdict.NEW
+                if time < self._closed:
+                    return Verdict.LATE
             elif self._has(distance):
                 return Verdict.REPEATED
             elif -WINDOW < distance < 0:
@@ -102,6 +118,8 @@ class StreamSeen:
             # A message that lacks its number has only its time to be known by.
             known = time == self.mark or time in self._times
             return Verdict.REPEATED if known else Verdict.LATE
+        if time < self._closed:
+            return Verdict.LATE
         self._times.append(time)
         return self._advance(time)
 
@@ -109,6 +127,21 @@ class StreamSeen:
         self.place = self.place + 1 if time == self.mark else 0
         self.mark = time
         return Verdict.NEW
+
+    def close(self, before: int) -> None:
+        """What was gathered is done with: readings from before this event time are late now."""
+        self._closed = before
+
+    def state(self) -> list[Any]:
+        """What is remembered, as JSON values."""
+        times = None if self._times is None else list(self._times)
+        return [self.mark, self._closed, self._last, hex(self._bits), times, self.place]
+
+    def restore(self, state: Sequence[Any]) -> None:
+        """Take back what ``state`` gave."""
+        self.mark, self._closed, self._last, bits, times, self.place = state
+        self._bits = int(bits, 16)
+        self._times = None if times is None else deque(times, maxlen=_RECENT_TIMES)
 
     def _has(self, distance: int) -> bool:
         return -WINDOW < distance <= 0 and bool(self._bits >> -distance & 1)
@@ -131,6 +164,15 @@ class TopicCounter:
         self._last: int | None = None
         self._noted: set[int] = set()
 
+    def state(self) -> list[Any]:
+        """What is remembered, as JSON values."""
+        return [self._last, sorted(self._noted)]
+
+    def restore(self, state: Sequence[Any]) -> None:
+        """Take back what ``state`` gave."""
+        self._last, noted = state
+        self._noted = set(noted)
+
     def note(self, sequence: int) -> None:
         """A message with this number came, and was set aside."""
         if self._last is not None and 0 < ahead(sequence, self._last, self._wraps) <= WINDOW:
@@ -143,6 +185,9 @@ class TopicCounter:
         number is ahead already and its gap counts like any other.
         """
         last = self._last
+        if last is not None and sequence - last == 1 and not self._noted:
+            self._last = sequence
+            return 0
         distance = 0 if last is None else ahead(sequence, last, self._wraps)
         if last is None or (restarted and distance < 0):
             self._last = sequence

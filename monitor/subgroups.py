@@ -6,9 +6,13 @@ Knows counting and gaps. Must not know detectors, topics or limits.
 from __future__ import annotations
 
 import math
+import statistics
+from collections.abc import Sequence
 from dataclasses import dataclass
+from typing import Any, Protocol
 
-from monitor.plan import SubgroupPlan
+from monitor.memory import Remembers
+from monitor.plan import ByCount, ByWindow, SubgroupPlan
 
 Identity = tuple[int | None, int | None, int | None, int | None]
 """(sequence, event time, arrival, place) of a reading; None for what it is not known by."""
@@ -32,10 +36,34 @@ class Subgroup:
     size: int
     mean: float
 
+    def state(self) -> list[Any]:
+        """As JSON values."""
+        return [
+            self.number,
+            self.values,
+            self.first,
+            self.last,
+            self.identity,
+            self.broken,
+            self.size,
+            self.mean,
+        ]
+
+    @classmethod
+    def restored(cls, state: Sequence[Any]) -> Subgroup:
+        """From what ``state`` gave."""
+        number, values, first, last, identity, *rest = state
+        return cls(number, tuple(values), first, last, tuple(identity), *rest)
+
     @property
     def range(self) -> float | None:
         """Largest less smallest value; None for a single value."""
         return max(self.values) - min(self.values) if self.size > 1 else None
+
+    @property
+    def median(self) -> float:
+        """Middle value, or the mean of the two in the middle."""
+        return statistics.median(self.values)
 
     @property
     def sd(self) -> float | None:
@@ -46,53 +74,149 @@ class Subgroup:
         return math.sqrt(sum((x - centre) * (x - centre) for x in self.values) / (self.size - 1))
 
 
-class Gatherer:
-    """Gathers one stream's readings: consecutive ones, ``size`` at a time."""
+class Gatherer(Protocol):
+    """Gathers one stream's readings into subgroups; ``abandoned`` counts the unfinished."""
 
-    __slots__ = ("_broken", "_first", "_last", "_plan", "_values", "abandoned", "number")
+    number: int
+    abandoned: int
 
-    def __init__(self, plan: SubgroupPlan) -> None:
+    def add(self, value: float, time: int, identity: Identity) -> Subgroup | None:
+        """Take a reading at event time ``time``; the subgroup that it ends, if any."""
+
+    def closes(self) -> int | None:
+        """The event time at which what is gathered ends without a further reading; None: never."""
+
+    def close(self) -> Subgroup | None:
+        """End what is gathered, since its time has come; the subgroup it makes, if any."""
+
+    def abandon(self) -> None:
+        """Drop what was gathered: what comes does not continue what was."""
+
+    def state(self) -> list[Any]:
+        """What is remembered, as JSON values."""
+
+    def restore(self, state: Sequence[Any]) -> None:
+        """Take back what ``state`` gave."""
+
+
+class CountGatherer(Remembers):
+    """Consecutive readings, ``size`` at a time; with ``every``, so far apart."""
+
+    __slots__ = (
+        "_broken",
+        "_first",
+        "_last",
+        "_plan",
+        "_started",
+        "_values",
+        "abandoned",
+        "number",
+    )
+    _memory = ("_values", "_first", "_last", "_started", "_broken", "number", "abandoned")
+
+    def __init__(self, plan: ByCount) -> None:
         self._plan = plan
         self._values: list[float] = []
         self._first = 0
         self._last: int | None = None
+        self._started: int | None = None
         self._broken = False
         self.number = 0
         self.abandoned = 0
 
     def add(self, value: float, time: int, identity: Identity) -> Subgroup | None:
-        """Take a reading at event time ``time``; the subgroup it completes, if any.
-
-        A gap longer than ``max_gap`` since the reading before abandons what was gathered.
-        """
+        """A gap longer than ``max_gap`` since the reading before abandons what was gathered. With
+        ``every``, a subgroup starts at the first reading that long after the last one started."""
         plan, last, values = self._plan, self._last, self._values
         if plan.max_gap is not None and last is not None and time - last > plan.max_gap:
             self.abandon()
             values = self._values
         self._last = time
         if not values:
+            if plan.every is not None:
+                if self._started is not None and time < self._started + plan.every:
+                    return None
+                self._started = time
             self._first = time
         values.append(value)
-        size = len(values)
-        if size < plan.size:
+        if len(values) < plan.size:
             return None
         self.number += 1
         self._values = []
         broken, self._broken = self._broken, False
-        return Subgroup(
-            self.number,
-            tuple(values),
-            self._first,
-            time,
-            identity,
-            broken,
-            size,
-            sum(values) / size if size > 1 else value,
-        )
+        return _subgroup(self.number, values, self._first, time, identity, broken)
+
+    def closes(self) -> int | None:
+        """Only readings end it."""
+        return None
+
+    def close(self) -> Subgroup | None:
+        """Only readings end it."""
+        return None
 
     def abandon(self) -> None:
-        """Drop what was gathered: what comes does not continue what was."""
+        """Count what was gathered as abandoned."""
         if self._values:
             self.abandoned += 1
             self._values = []
         self._broken = True
+
+
+class WindowGatherer(Remembers):
+    """The readings of each UTC-aligned window [start, start + window), ``min_size`` at least."""
+
+    __slots__ = ("_first", "_identity", "_last", "_plan", "_values", "abandoned", "number")
+    _memory = ("_values", "_first", "_last", "_identity", "number", "abandoned")
+
+    def __init__(self, plan: ByWindow) -> None:
+        self._plan = plan
+        self._values: list[float] = []
+        self._first = self._last = 0
+        self._identity: Identity = (None, None, None, None)
+        self.number = 0
+        self.abandoned = 0
+
+    def add(self, value: float, time: int, identity: Identity) -> Subgroup | None:
+        """A reading past the window's end closes it, and opens its own."""
+        end = self.closes()
+        done = self.close() if end is not None and time >= end else None
+        if not self._values:
+            self._first = time
+        self._values.append(value)
+        self._last, self._identity = time, identity
+        return done
+
+    def closes(self) -> int | None:
+        """The end of the window, which belongs to the next."""
+        if not self._values:
+            return None
+        return self._first - self._first % self._plan.window + self._plan.window
+
+    def close(self) -> Subgroup | None:
+        """Too few readings are abandoned."""
+        values = self._values
+        if len(values) < self._plan.min_size:
+            self.abandon()
+            return None
+        self.number += 1
+        self._values = []
+        return _subgroup(self.number, values, self._first, self._last, self._identity, False)
+
+    def abandon(self) -> None:
+        """Count what was gathered as abandoned."""
+        if self._values:
+            self.abandoned += 1
+            self._values = []
+
+
+def gatherer(plan: SubgroupPlan) -> Gatherer:
+    """A fresh gatherer as planned."""
+    return CountGatherer(plan) if isinstance(plan, ByCount) else WindowGatherer(plan)
+
+
+def _subgroup(
+    number: int, values: list[float], first: int, last: int, identity: Identity, broken: bool
+) -> Subgroup:
+    size = len(values)
+    mean = sum(values) / size if size > 1 else values[0]
+    return Subgroup(number, tuple(values), first, last, identity, broken, size, mean)

@@ -11,6 +11,8 @@ from typing import Any
 from monitor import times
 from monitor.detectors.charts import chart, standard_error
 from monitor.plan import (
+    BaselinePlan,
+    ByCount,
     ByDirection,
     CharacteristicPlan,
     CusumPlan,
@@ -43,8 +45,11 @@ def summary(settings: Settings) -> dict[str, Any]:
 
 
 def _characteristic(plan: CharacteristicPlan, root: str) -> dict[str, Any]:
-    size, gap, rate = plan.subgroup.size, plan.subgroup.max_gap, plan.source.expected_rate
-    baseline, specification = plan.baseline, plan.specification
+    subgroup, judgement = plan.subgroup, plan.judgement
+    assert isinstance(subgroup, ByCount)
+    assert judgement is not None
+    size, gap, rate = subgroup.size, subgroup.max_gap, plan.source.expected_rate
+    baseline, specification = judgement.baseline, plan.specification
     keys = sorted([k for _, k in plan.source.captures] + [k for k, _ in plan.source.stream])
     return {
         "name": plan.name,
@@ -70,7 +75,7 @@ def _characteristic(plan: CharacteristicPlan, root: str) -> dict[str, Any]:
             "standard_error": standard_error(baseline, size),
             "revision": baseline.revision,
         },
-        "detectors": [_detector(each, plan) for each in plan.detectors],
+        "detectors": [_detector(each, baseline, size) for each in judgement.detectors],
         "priority": _sides(plan.priority),
         "reaction": _sides(plan.reaction),
         "off_delay": plan.off_delay / times.SECOND,
@@ -110,7 +115,7 @@ def _sides(plan: ByDirection[Any]) -> dict[str, Any]:
     return {"up": plan.up, "down": plan.down, "other": plan.other}
 
 
-def _detector(plan: DetectorPlan, within: CharacteristicPlan) -> dict[str, Any]:
+def _detector(plan: DetectorPlan, baseline: BaselinePlan, size: int) -> dict[str, Any]:
     scheme = plan.scheme
     common = {
         "name": plan.name,
@@ -121,38 +126,40 @@ def _detector(plan: DetectorPlan, within: CharacteristicPlan) -> dict[str, Any]:
     }
     match scheme:
         case ShewhartPlan():
-            return common | _shewhart(scheme, within)
+            return common | _shewhart(scheme, baseline, size)
         case CusumPlan():
-            return common | _cusum(scheme, within)
+            return common | _cusum(scheme, baseline, size)
         case EwmaPlan():
-            return common | _ewma(scheme, within)
+            return common | _ewma(scheme, baseline, size)
 
 
-def _shewhart(plan: ShewhartPlan, within: CharacteristicPlan) -> dict[str, Any]:
+def _shewhart(plan: ShewhartPlan, baseline: BaselinePlan, size: int) -> dict[str, Any]:
     return {
         "width": plan.width,
-        **_limits(plan, within, plan.width),
-        "rules": [_rule(rule, plan, within) for rule in plan.rules],
+        **_limits(plan, baseline, size, plan.width),
+        "rules": [_rule(rule, plan, baseline, size) for rule in plan.rules],
     }
 
 
-def _rule(rule: RulePlan, plan: ShewhartPlan, within: CharacteristicPlan) -> dict[str, Any]:
+def _rule(rule: RulePlan, plan: ShewhartPlan, baseline: BaselinePlan, size: int) -> dict[str, Any]:
     given: dict[str, Any] = {"rule": rule.rule}
     if rule.length:
         given["length"] = rule.length
     if rule.of:
         given |= {"count": rule.count, "of": rule.of}
     if rule.width:
-        given |= {"width": rule.width, **_limits(plan, within, rule.width)}
+        given |= {"width": rule.width, **_limits(plan, baseline, size, rule.width)}
     return given
 
 
-def _limits(plan: ShewhartPlan, within: CharacteristicPlan, width: float) -> dict[str, float]:
-    return chart(plan.chart, within.baseline).limits(within.subgroup.size, width)._asdict()
+def _limits(
+    plan: ShewhartPlan, baseline: BaselinePlan, size: int, width: float
+) -> dict[str, float]:
+    return chart(plan.chart, baseline).limits(size, width)._asdict()
 
 
-def _cusum(plan: CusumPlan, within: CharacteristicPlan) -> dict[str, Any]:
-    error = standard_error(within.baseline, within.subgroup.size)
+def _cusum(plan: CusumPlan, baseline: BaselinePlan, size: int) -> dict[str, Any]:
+    error = standard_error(baseline, size)
     return {
         "k": plan.k,
         "h": plan.h,
@@ -166,8 +173,8 @@ def _cusum(plan: CusumPlan, within: CharacteristicPlan) -> dict[str, Any]:
     }
 
 
-def _ewma(plan: EwmaPlan, within: CharacteristicPlan) -> dict[str, Any]:
-    error, centre = standard_error(within.baseline, within.subgroup.size), within.baseline.mean
+def _ewma(plan: EwmaPlan, baseline: BaselinePlan, size: int) -> dict[str, Any]:
+    error, centre = standard_error(baseline, size), baseline.mean
     settled = plan.width * error * math.sqrt(plan.lam / (2.0 - plan.lam))
     first = settled if plan.asymptotic else plan.width * error * plan.lam
     return {

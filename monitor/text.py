@@ -6,14 +6,14 @@ Knows plain words for rules, sides, sizes and times. Must not know how an alert 
 from __future__ import annotations
 
 import math
+from typing import NamedTuple
 
 from monitor import times
 from monitor.detectors import Signal
-from monitor.detectors.charts import SPREAD, standard_error
+from monitor.detectors.charts import SPREAD
 from monitor.lookback import Shift
 from monitor.messages import EventKind
-from monitor.outputs import Stream
-from monitor.plan import CharacteristicPlan
+from monitor.plan import Judged
 
 CAUTION = (
     "Isolate and lock out before reaching in; your site's rules come first. "
@@ -25,32 +25,33 @@ _PLAIN_BELOW = 1e12  # from there up a string of digits tells less than an expon
 _WITHDRAWN = {"gauge-restart": "the gauge restarted"}
 
 
-def subject(plan: CharacteristicPlan, stream: Stream) -> str:
+def subject(judged: Judged) -> str:
     """``Net weight, lane 1 head 4,``: the title up to its first comma, stream keys as declared."""
-    values = dict(stream)
+    plan, values = judged.plan, dict(judged.stream)
     declared = [key for _, key in plan.source.captures] + [key for key, _ in plan.source.stream]
     name = plan.title.split(",")[0].strip() or plan.name
     where = " ".join(f"{key} {values[key]}" for key in declared)
     return f"{name}, {where}," if where else name
 
 
-def quantity(value: float, plan: CharacteristicPlan) -> str:
-    """A value with its unit, to two significant digits of the standard error."""
-    return _with_unit(_number(value, _places(plan)), plan)
+class Finding(NamedTuple):
+    """What an event tells of: a signal on a chart, and the shift behind it.
+
+    ``error`` is the standard error of the subgroup that signalled, in the characteristic's unit.
+    """
+
+    signal: Signal
+    chart: str
+    shift: Shift | None
+    error: float
 
 
 def sentence(
-    plan: CharacteristicPlan,
-    stream: Stream,
-    event: EventKind,
-    signal: Signal,
-    chart: str,
-    shift: Shift | None,
-    time: int,
-    reason: str | None = None,
+    judged: Judged, event: EventKind, finding: Finding, time: int, reason: str | None = None
 ) -> str:
     """What happened, how much, since when, and the figures that decided it."""
-    who = subject(plan, stream)
+    who = subject(judged)
+    signal, chart = finding.signal, finding.chart
     if event == "returned-to-normal":
         return f"{who} has returned to normal: {_over(signal, chart)}."
     if event == "withdrawn":
@@ -58,18 +59,12 @@ def sentence(
         return f"{who} is judged afresh because {why}: what was reported may still be there."
     again = " again" if event == "rejoined" else ""
     also = "now also: " if event == "updated" else ""
-    figures = _figures(plan, signal, chart)
-    return f"{who} {_change(plan, signal, chart, shift, time, again)} ({also}{figures})."
+    change = _change(finding, judged.plan.unit, time, again)
+    return f"{who} {change} ({also}{_figures(judged, finding)})."
 
 
-def _change(
-    plan: CharacteristicPlan,
-    signal: Signal,
-    chart: str,
-    shift: Shift | None,
-    time: int,
-    again: str,
-) -> str:
+def _change(finding: Finding, unit: str, time: int, again: str) -> str:
+    signal, chart, shift, error = finding
     if chart in SPREAD:
         more = "more" if signal.rule.endswith("upper") else "less"
         return f"varies {more} than usual{again}"
@@ -80,13 +75,13 @@ def _change(
             "mixture": f"keeps away from its centre{again}, as if two sources were mixed",
         }[signal.rule]
     moved, sign = ("risen", 1) if signal.direction == "up" else ("fallen", -1)
-    size = sign * shift.size * standard_error(plan.baseline, plan.subgroup.size) if shift else 0.0
+    size = sign * shift.size * error if shift else 0.0
     if shift is None or size <= 0.0:
         return f"has {moved}{again}"
     comma = "," if again else ""
     earlier = " or earlier" if shift.earliest is None else ""
     return (
-        f"has {moved}{again}{comma} by about {_with_unit(_about(size), plan)} "
+        f"has {moved}{again}{comma} by about {_with_unit(_about(size), unit)} "
         f"since about {_clock(shift.onset, time)}{earlier}"
     )
 
@@ -99,55 +94,67 @@ def _over(signal: Signal, chart: str) -> str:
     return "the rise is over" if signal.direction == "up" else "the fall is over"
 
 
-def _figures(plan: CharacteristicPlan, signal: Signal, chart: str) -> str:
-    name = {"moving_range": "moving range", "individual": "value"}.get(chart, chart)
+def _figures(judged: Judged, finding: Finding) -> str:
+    signal, chart, _, error = finding
+    scale = _Scale(judged.plan.unit, error)
+    name = {"moving_range": "moving range", "individual": "value", "sd": "standard deviation"}.get(
+        chart, chart
+    )
     row = f"{signal.span} {name}s in a row"
-    latest = f"the latest {quantity(signal.value, plan)}"
+    latest = f"the latest {scale.show(signal.value)}"
     upper = signal.rule.endswith(("upper", "up"))
     beyond = "above" if upper else "below"
     limit = signal.upper if upper else signal.lower
     match signal.rule.rsplit("-", 1)[0]:
         case "cusum":
-            return _held(plan, signal.statistic.replace("_", " "), signal.value, signal.upper)
+            return scale.held(signal.statistic.replace("_", " "), signal.value, signal.upper)
         case "ewma":
-            return _held(plan, "weighted average", signal.value, limit)
+            return scale.held("weighted average", signal.value, limit)
         case "outside":
-            return _held(plan, name, signal.value, limit)
+            return scale.held(name, signal.value, limit)
         case "zone":
             count = f"{signal.needed} of the last {signal.span} {name}s"
-            return f"{count} {beyond} {quantity(limit or 0.0, plan)}, {latest}"
+            return f"{count} {beyond} {scale.show(limit or 0.0)}, {latest}"
         case "run":
-            return f"{row} {beyond} {quantity(plan.baseline.mean, plan)}, {latest}"
+            return f"{row} {beyond} {scale.show(judged.baseline.mean)}, {latest}"
         case "trend":
             return f"{row} {'rising' if upper else 'falling'}, {latest}"
         case "stratification":
-            return f"{row} within {_band(plan, signal)}, {latest}"
+            return f"{row} within {scale.band(signal)}, {latest}"
         case "mixture":
-            return f"{row} outside {_band(plan, signal)}, {latest}"
+            return f"{row} outside {scale.band(signal)}, {latest}"
         case _:
             return f"{row}, {latest}"
 
 
-def _held(plan: CharacteristicPlan, name: str, value: float, limit: float | None) -> str:
-    """A value and the limit it broke, to as many digits as tell them apart."""
-    if limit is None:
-        return f"{name} {quantity(value, plan)}"
-    places = _places(plan)
-    while _number(value, places) == _number(limit, places) and places < _MOST_PLACES:
-        places += 1
-    held, against = (_with_unit(_number(x, places), plan) for x in (value, limit))
-    return f"{name} {held}, limit {against}"
+class _Scale(NamedTuple):
+    """Values in a unit, to as many digits as a standard error makes worth showing."""
 
+    unit: str
+    error: float
 
-def _band(plan: CharacteristicPlan, signal: Signal) -> str:
-    lower = _number(signal.lower or 0.0, _places(plan))
-    return f"{lower} to {quantity(signal.upper or 0.0, plan)}"
+    @property
+    def places(self) -> int:
+        """Decimals: two significant digits of the standard error."""
+        return max(0, 1 - math.floor(math.log10(self.error)))
 
+    def show(self, value: float) -> str:
+        """A value with its unit."""
+        return _with_unit(_number(value, self.places), self.unit)
 
-def _places(plan: CharacteristicPlan) -> int:
-    """Decimals worth showing: two significant digits of the standard error."""
-    error = standard_error(plan.baseline, plan.subgroup.size)
-    return max(0, 1 - math.floor(math.log10(error)))
+    def held(self, name: str, value: float, limit: float | None) -> str:
+        """A value and the limit it broke, to as many digits as tell them apart."""
+        if limit is None:
+            return f"{name} {self.show(value)}"
+        places = self.places
+        while _number(value, places) == _number(limit, places) and places < _MOST_PLACES:
+            places += 1
+        held, against = (_with_unit(_number(x, places), self.unit) for x in (value, limit))
+        return f"{name} {held}, limit {against}"
+
+    def band(self, signal: Signal) -> str:
+        """Both limits of a signal."""
+        return f"{_number(signal.lower or 0.0, self.places)} to {self.show(signal.upper or 0.0)}"
 
 
 def _number(value: float, places: int) -> str:
@@ -166,8 +173,8 @@ def _about(size: float) -> str:
     )
 
 
-def _with_unit(number: str, plan: CharacteristicPlan) -> str:
-    return f"{number} {plan.unit}".strip()
+def _with_unit(number: str, unit: str) -> str:
+    return f"{number} {unit}".strip()
 
 
 def _clock(moment: int, now: int) -> str:

@@ -13,11 +13,12 @@ from time import perf_counter
 from typing import IO
 
 from monitor import messages
-from monitor.engine import Counts, Engine
+from monitor.engine import Engine
 from monitor.entries import Entry, Reading
 from monitor.messages import AlertEvent
 from monitor.outputs import Alert, Output, Points, SetAside
 from monitor.plan import Plan
+from monitor.stream import Counts
 from replay.points import HEADER, PointsTable, name_stream
 from replay.recordings import Recording
 from replay.tables import FIRST_ROW, Layout

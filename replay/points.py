@@ -5,8 +5,8 @@ Knows the columns and CSV. Must not know files or where points come from.
 
 from __future__ import annotations
 
-from monitor.outputs import Points, Row, Stream
-from monitor.plan import CharacteristicPlan
+from monitor.outputs import Points, Row
+from monitor.plan import CharacteristicPlan, Stream
 from monitor.times import format_time
 
 HEADER = (

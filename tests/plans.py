@@ -16,12 +16,14 @@ from monitor.messages import AlertEvent
 from monitor.outputs import Alert, Output, Points, SetAside
 from monitor.plan import (
     BaselinePlan,
+    ByCount,
     ByDirection,
     CharacteristicPlan,
     Chart,
     CusumPlan,
     DetectorPlan,
     EwmaPlan,
+    Judgement,
     Plan,
     RulePlan,
     Scheme,
@@ -30,7 +32,6 @@ from monitor.plan import (
     Side,
     SourcePlan,
     Specification,
-    SubgroupPlan,
 )
 from monitor.subgroups import Subgroup
 from monitor.times import SECOND
@@ -87,9 +88,10 @@ def characteristic(
         title=title,
         unit=unit,
         source=source,
-        subgroup=SubgroupPlan(size, max_gap),
-        baseline=BaselinePlan(mean, sigma, sigma_between, "revision of the baseline"),
-        detectors=tuple(detectors),
+        subgroup=ByCount(size, max_gap),
+        judgement=Judgement(
+            BaselinePlan(mean, sigma, sigma_between, "revision of the baseline"), tuple(detectors)
+        ),
         priority=ByDirection("medium", "high", "low"),
         reaction=ByDirection(reaction, reaction, reaction),
         off_delay=off_delay,

@@ -30,7 +30,7 @@ from plans import (
 
 from monitor import messages
 from monitor.decode import MAX_PAYLOAD
-from monitor.engine import MAX_STREAMS, Engine
+from monitor.engine import Engine
 from monitor.entries import Connected, Disconnected, Entry, Message, Reading, Started
 from monitor.outputs import Alert, Output, SetAside
 from monitor.plan import (
@@ -42,6 +42,7 @@ from monitor.plan import (
     SequencePlan,
     SourcePlan,
 )
+from monitor.routes import MAX_STREAMS
 from monitor.times import SECOND
 
 NOW = START / SECOND

@@ -15,18 +15,19 @@ import yaml
 
 from monitor.plan import (
     BaselinePlan,
+    ByCount,
     ByDirection,
     CharacteristicPlan,
     CusumPlan,
     DetectorPlan,
     EwmaPlan,
+    Judgement,
     RulePlan,
     SequencePlan,
     Settings,
     ShewhartPlan,
     SourcePlan,
     Specification,
-    SubgroupPlan,
 )
 from monitor.presets import PRESETS, preset
 from monitor.resolve import read_settings
@@ -108,8 +109,10 @@ def test_all_of_a_characteristic(read: Read) -> None:
     plan = only(read())
     anonymous = replace(
         plan,
-        baseline=replace(plan.baseline, revision=""),
-        detectors=tuple(replace(each, revision="") for each in plan.detectors),
+        judgement=Judgement(
+            replace(plan.judgement.baseline, revision=""),
+            tuple(replace(each, revision="") for each in plan.judgement.detectors),
+        ),
     )
     outside = RulePlan("outside", width=3.0)
     wide = RulePlan("outside", width=3.5)
@@ -129,15 +132,19 @@ def test_all_of_a_characteristic(read: Read) -> None:
             plausible_upper=1000.0,
             expected_rate=10.0,
         ),
-        subgroup=SubgroupPlan(5, 30_000_000),
-        baseline=BaselinePlan(341.2, 1.9, 0.4, ""),
-        detectors=(
-            DetectorPlan("shewhart", "shewhart", ShewhartPlan("mean", 3.0, (outside,)), ""),
-            DetectorPlan(
-                "shewhart-range", "shewhart", ShewhartPlan("range", 3.5, (wide,), "up"), ""
+        subgroup=ByCount(5, 30_000_000),
+        judgement=Judgement(
+            BaselinePlan(341.2, 1.9, 0.4, ""),
+            (
+                DetectorPlan("shewhart", "shewhart", ShewhartPlan("mean", 3.0, (outside,)), ""),
+                DetectorPlan(
+                    "shewhart-range", "shewhart", ShewhartPlan("range", 3.5, (wide,), "up"), ""
+                ),
+                DetectorPlan(
+                    "cusum", "cusum", CusumPlan("mean", 0.5, 5.0, 0.5, 3.0, True, "down"), ""
+                ),
+                DetectorPlan("slow", "ewma", EwmaPlan("mean", 0.1, 3.0, asymptotic=True), ""),
             ),
-            DetectorPlan("cusum", "cusum", CusumPlan("mean", 0.5, 5.0, 0.5, 3.0, True, "down"), ""),
-            DetectorPlan("slow", "ewma", EwmaPlan("mean", 0.1, 3.0, asymptotic=True), ""),
         ),
         priority=ByDirection("medium", "high", "high"),
         reaction=ByDirection(
@@ -153,14 +160,14 @@ def test_defaults_of_a_characteristic(read: Read) -> None:
     plan = only(read(characteristics={"glue": GLUE}))
     assert (plan.title, plan.unit, plan.specification) == ("glue", "", None)
     assert plan.source == SourcePlan("plant/glue", (), "number")
-    assert plan.subgroup == SubgroupPlan(1, None)
-    assert [(each.name, each.scheme.chart) for each in plan.detectors] == [
+    assert plan.subgroup == ByCount(1, None)
+    assert [(each.name, each.scheme.chart) for each in plan.judgement.detectors] == [
         ("shewhart", "individual"),
         ("cusum", "individual"),
         ("ewma", "individual"),
     ]
-    assert plan.detectors[1].scheme == CusumPlan("individual", 1.0, 4.0)
-    assert plan.detectors[2].scheme == EwmaPlan("individual", 0.2, 3.0)
+    assert plan.judgement.detectors[1].scheme == CusumPlan("individual", 1.0, 4.0)
+    assert plan.judgement.detectors[2].scheme == EwmaPlan("individual", 0.2, 3.0)
     assert plan.priority == ByDirection("medium", "medium", "medium")
     assert plan.reaction == ByDirection((), (), ())
 
@@ -223,7 +230,7 @@ def rules(read: Read, **detector: object) -> tuple[float, tuple[RulePlan, ...]]:
     plan = only(
         read(characteristics={"glue": GLUE | {"detectors": [{"kind": "shewhart"} | detector]}})
     )
-    scheme = plan.detectors[0].scheme
+    scheme = plan.judgement.detectors[0].scheme
     assert isinstance(scheme, ShewhartPlan)
     return scheme.width, scheme.rules
 
@@ -290,7 +297,7 @@ def test_presets_are_those_of_the_sources() -> None:
 
 def revisions(settings: Settings) -> tuple[str, ...]:
     plan = only(settings)
-    return (plan.baseline.revision, *(each.revision for each in plan.detectors))
+    return (plan.judgement.baseline.revision, *(each.revision for each in plan.judgement.detectors))
 
 
 def edited(path: str, value: object) -> dict[str, Any]:
@@ -325,8 +332,8 @@ def test_a_revision_is_what_it_says_it_is(read: Read) -> None:
         text = json.dumps(value, sort_keys=True, separators=(",", ":"))
         return hashlib.sha256(text.encode()).hexdigest()[:32]
 
-    assert plan.detectors[1].revision == digest(declared)
-    assert plan.baseline.revision == digest(declared["baseline"])
+    assert plan.judgement.detectors[1].revision == digest(declared)
+    assert plan.judgement.baseline.revision == digest(declared["baseline"])
 
 
 @pytest.mark.parametrize(
@@ -409,7 +416,10 @@ def test_nothing_outside_a_characteristic_changes_its_revisions(read: Read) -> N
     }
     settings = read(**other)
     plan = settings.plan.characteristics[1]
-    assert (plan.baseline.revision, *(d.revision for d in plan.detectors)) == revisions(read())
+    assert (
+        plan.judgement.baseline.revision,
+        *(d.revision for d in plan.judgement.detectors),
+    ) == revisions(read())
 
 
 def test_revisions_do_not_drift(read: Read) -> None:

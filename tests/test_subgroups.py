@@ -8,14 +8,14 @@ import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
-from monitor.plan import SubgroupPlan
-from monitor.subgroups import Gatherer, Subgroup
+from monitor.plan import ByCount
+from monitor.subgroups import CountGatherer, Subgroup
 
 NOBODY = (None, None, None, None)
 
 
-def gather(plan: SubgroupPlan, readings: list[tuple[float, int]]) -> tuple[list[Subgroup], int]:
-    gatherer = Gatherer(plan)
+def gather(plan: ByCount, readings: list[tuple[float, int]]) -> tuple[list[Subgroup], int]:
+    gatherer = CountGatherer(plan)
     made = [gatherer.add(v, t, (i, t, None, None)) for i, (v, t) in enumerate(readings)]
     return [each for each in made if each], gatherer.abandoned
 
@@ -32,7 +32,7 @@ def test_subgroups_are_full_slices_of_unbroken_stretches(
     for value, step in steps:
         now += step
         readings.append((value, now))
-    made, abandoned = gather(SubgroupPlan(size, max_gap), readings)
+    made, abandoned = gather(ByCount(size, max_gap), readings)
 
     stretches: list[list[tuple[float, int]]] = []
     for reading in readings:
@@ -54,7 +54,7 @@ def test_subgroups_are_full_slices_of_unbroken_stretches(
 
 
 def test_a_gap_is_strictly_longer_than_max_gap() -> None:
-    plan = SubgroupPlan(2, 30)
+    plan = ByCount(2, 30)
     made, abandoned = gather(plan, [(1.0, 0), (2.0, 30)])
     assert ([s.values for s in made], abandoned) == ([(1.0, 2.0)], 0)
     made, abandoned = gather(plan, [(1.0, 0), (2.0, 31), (3.0, 31)])
@@ -63,13 +63,13 @@ def test_a_gap_is_strictly_longer_than_max_gap() -> None:
 
 
 def test_a_gap_between_subgroups_abandons_nothing_but_is_a_break() -> None:
-    made, abandoned = gather(SubgroupPlan(1, 30), [(1.0, 0), (2.0, 31), (3.0, 32)])
+    made, abandoned = gather(ByCount(1, 30), [(1.0, 0), (2.0, 31), (3.0, 32)])
     assert [s.broken for s in made] == [False, True, False]
     assert abandoned == 0
 
 
 def test_abandoning_counts_what_was_begun_and_breaks() -> None:
-    gatherer = Gatherer(SubgroupPlan(2))
+    gatherer = CountGatherer(ByCount(2))
     gatherer.abandon()
     assert gatherer.abandoned == 0
     gatherer.add(1.0, 0, NOBODY)
@@ -83,13 +83,13 @@ def test_abandoning_counts_what_was_begun_and_breaks() -> None:
 
 
 def test_a_subgroup_is_known_by_its_last_reading() -> None:
-    made, _ = gather(SubgroupPlan(3), [(1.0, 5), (2.0, 6), (3.0, 7)])
+    made, _ = gather(ByCount(3), [(1.0, 5), (2.0, 6), (3.0, 7)])
     assert (made[0].first, made[0].last, made[0].identity) == (5, 7, (2, 7, None, None))
 
 
 @given(st.lists(st.floats(-1e6, 1e6), min_size=2, max_size=10))
 def test_statistics_agree_with_the_standard_library(values: list[float]) -> None:
-    made, _ = gather(SubgroupPlan(len(values)), [(v, 0) for v in values])
+    made, _ = gather(ByCount(len(values)), [(v, 0) for v in values])
     only = made[0]
     assert only.mean == pytest.approx(statistics.fmean(values), abs=1e-9)
     assert only.range == max(values) - min(values)
@@ -97,5 +97,5 @@ def test_statistics_agree_with_the_standard_library(values: list[float]) -> None
 
 
 def test_a_single_reading_has_neither_range_nor_sd() -> None:
-    made, _ = gather(SubgroupPlan(1), [(4.25, 0)])
+    made, _ = gather(ByCount(1), [(4.25, 0)])
     assert (made[0].mean, made[0].range, made[0].sd) == (4.25, None, None)

@@ -25,9 +25,19 @@ from plans import (
 
 from monitor import text
 from monitor.detectors import Signal
+from monitor.detectors.charts import standard_error
 from monitor.lookback import Shift
 from monitor.messages import EventKind
-from monitor.plan import CharacteristicPlan, CusumPlan, EwmaPlan, RulePlan, SourcePlan
+from monitor.plan import (
+    ByCount,
+    CharacteristicPlan,
+    CusumPlan,
+    EwmaPlan,
+    Judged,
+    RulePlan,
+    SourcePlan,
+    Stream,
+)
 from monitor.times import DAY, SECOND
 
 LANES = replace(GAUGE, topic="jar/{lane}", captures=((1, "lane"),), stream=(("head", ("head",)),))
@@ -57,7 +67,22 @@ def say(
     reason: str | None = None,
 ) -> str:
     stream = HEAD_4 if plan is WEIGHT else ()
-    return text.sentence(plan, stream, event, signal, chart, shift, START, reason)
+    return text.sentence(
+        judged(plan, stream), event, finding(plan, signal, chart, shift), START, reason
+    )
+
+
+def judged(plan: CharacteristicPlan, stream: Stream = ()) -> Judged:
+    assert plan.judgement is not None
+    return Judged(plan, stream, plan.judgement.baseline)
+
+
+def finding(
+    plan: CharacteristicPlan, signal: Signal, chart: str, shift: Shift | None
+) -> text.Finding:
+    assert isinstance(plan.subgroup, ByCount)
+    error = standard_error(judged(plan).baseline, plan.subgroup.size)
+    return text.Finding(signal, chart, shift, error)
 
 
 UPPER_SUM = Signal("cusum-upper", "up", "upper_sum", 10.5, None, 10.4)
@@ -205,7 +230,7 @@ def test_a_size_has_two_digits_and_no_exponent(size: float, amount: str) -> None
     plan = characteristic(unit="g")
     shift = Shift(size, SINCE, SINCE, SINCE)
     assert f"has risen by about {amount} g since" in text.sentence(
-        plan, (), "raised", ABOVE, "individual", shift, START
+        judged(plan), "raised", finding(plan, ABOVE, "individual", shift), START
     )
 
 
@@ -219,16 +244,16 @@ def test_a_size_has_two_digits_and_no_exponent(size: float, amount: str) -> None
     ],
 )
 def test_the_subject_is_the_title_up_to_its_first_comma(title: str, subject: str) -> None:
-    assert text.subject(characteristic(title=title), ()) == subject
+    assert text.subject(judged(characteristic(title=title))) == subject
 
 
 def test_stream_keys_stand_in_the_order_they_were_declared_in() -> None:
-    assert text.subject(WEIGHT, HEAD_4) == "Net weight, lane 1 head 4,"
+    assert text.subject(judged(WEIGHT, HEAD_4)) == "Net weight, lane 1 head 4,"
 
 
 def test_without_a_unit_no_space_is_left() -> None:
     plan = characteristic(unit="", title="Count")
-    said = text.sentence(plan, (), "raised", ABOVE, "individual", RISE, START)
+    said = text.sentence(judged(plan), "raised", finding(plan, ABOVE, "individual", RISE), START)
     assert (
         said == "Count has risen by about 1.7 since about 06:40:48 UTC (value 345.6, limit 345.4)."
     )
@@ -238,12 +263,16 @@ def test_what_the_engine_raises_reads_as_one_story() -> None:
     plan = replace(
         WEIGHT,
         source=replace(LANES, topic="jar/+"),
-        detectors=characteristic(
+        judgement=characteristic(
             CusumPlan("mean", 0.5, 5.0),
             shewhart(chart="mean"),
             EwmaPlan("mean", 0.2, 2.962),
             shewhart(chart="range"),
-        ).detectors,
+            size=5,
+            mean=341.2,
+            sigma=1.9,
+            sigma_between=0.4,
+        ).judgement,
         off_delay=30 * SECOND,
     )
     usual = [341.2, 341.0, 341.4, 341.2, 341.2]
@@ -277,7 +306,10 @@ def test_any_figures_make_a_short_sentence(
     signal = Signal("outside-upper", "up", "individual", value, -limit, limit, 3, 2)
     for rule in ("outside-upper", "zone-upper", "run-upper", "trend-up"):
         said = text.sentence(
-            plan, (), "raised", signal._replace(rule=rule), "individual", shift, START
+            judged(plan),
+            "raised",
+            finding(plan, signal._replace(rule=rule), "individual", shift),
+            START,
         )
         assert said.startswith("Net weight has risen")
         assert len(said) < 200

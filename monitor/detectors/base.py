@@ -5,7 +5,8 @@ Knows subgroups and signals. Must not know alerts, streams or any particular cha
 
 from __future__ import annotations
 
-from typing import NamedTuple, Protocol
+from collections.abc import Sequence
+from typing import Any, NamedTuple, Protocol
 
 from monitor.outputs import Row
 from monitor.plan import Direction
@@ -50,3 +51,9 @@ class Detector(Protocol):
 
     def restart(self) -> None:
         """Forget all that was seen."""
+
+    def state(self) -> list[Any]:
+        """What is remembered, as JSON values."""
+
+    def restore(self, state: Sequence[Any]) -> None:
+        """Take back what ``state`` gave."""

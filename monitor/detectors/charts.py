@@ -6,9 +6,12 @@ Knows baselines and published limits. Must not know rules, sums or signals.
 from __future__ import annotations
 
 import math
-from typing import Protocol
+from collections.abc import Callable, Sequence
+from typing import Any, Protocol
 
-from monitor.methods.limits import Limits, moving_range_limits, range_limits
+from monitor.memory import Remembers
+from monitor.methods.constants import median_se
+from monitor.methods.limits import Limits, moving_range_limits, range_limits, sd_limits
 from monitor.plan import BaselinePlan
 from monitor.subgroups import Subgroup
 
@@ -32,8 +35,14 @@ class Chart(Protocol):
     def restart(self) -> None:
         """Forget the readings before."""
 
+    def state(self) -> list[Any]:
+        """What is remembered, as JSON values."""
 
-class Location:
+    def restore(self, state: Sequence[Any]) -> None:
+        """Take back what ``state`` gave."""
+
+
+class Location(Remembers):
     """The subgroup mean; with single readings, the individual value."""
 
     __slots__ = ("_baseline", "name")
@@ -55,7 +64,7 @@ class Location:
         """Nothing is remembered."""
 
 
-class Range:
+class Range(Remembers):
     """The range of a subgroup of two or more."""
 
     __slots__ = ("_sigma", "name")
@@ -76,10 +85,55 @@ class Range:
         """Nothing is remembered."""
 
 
-class MovingRange:
+class Sd(Remembers):
+    """The standard deviation of a subgroup of two or more."""
+
+    __slots__ = ("_sigma", "name")
+
+    def __init__(self, name: str, baseline: BaselinePlan) -> None:
+        self.name = name
+        self._sigma = baseline.sigma
+
+    def value(self, subgroup: Subgroup) -> float | None:
+        """Sample standard deviation."""
+        return subgroup.sd
+
+    def limits(self, size: int, width: float) -> Limits:
+        """c4 σ ± width · c5 σ, not below zero."""
+        return sd_limits(size, self._sigma, width)
+
+    def restart(self) -> None:
+        """Nothing is remembered."""
+
+
+class Median(Remembers):
+    """The subgroup median, whose standard error is the exact one for the normal."""
+
+    __slots__ = ("_baseline", "name")
+
+    def __init__(self, name: str, baseline: BaselinePlan) -> None:
+        self.name = name
+        self._baseline = baseline
+
+    def value(self, subgroup: Subgroup) -> float | None:
+        """The median."""
+        return subgroup.median
+
+    def limits(self, size: int, width: float) -> Limits:
+        """Mean ± width · √(sigma_between² + the median's own variance)."""
+        base = self._baseline
+        reach = width * math.hypot(base.sigma_between, median_se(size) * base.sigma)
+        return Limits(base.mean, base.mean - reach, base.mean + reach)
+
+    def restart(self) -> None:
+        """Nothing is remembered."""
+
+
+class MovingRange(Remembers):
     """The distance between neighbouring single readings; blank at the first and after a gap."""
 
     __slots__ = ("_previous", "_sigma", "name")
+    _memory = ("_previous",)
 
     def __init__(self, name: str, baseline: BaselinePlan) -> None:
         self.name = name
@@ -101,14 +155,19 @@ class MovingRange:
         self._previous = None
 
 
+_KINDS: dict[str, Callable[[str, BaselinePlan], Chart]] = {
+    "mean": Location,
+    "individual": Location,
+    "median": Median,
+    "range": Range,
+    "sd": Sd,
+    "moving_range": MovingRange,
+}
+
+SPREAD = frozenset({"range", "sd", "moving_range"})
+"""Charts whose signals say that the spread changed, not the mean: they have no direction."""
+
+
 def chart(name: str, baseline: BaselinePlan) -> Chart:
     """The chart of that name."""
-    if name == "range":
-        return Range(name, baseline)
-    if name == "moving_range":
-        return MovingRange(name, baseline)
-    return Location(name, baseline)
-
-
-SPREAD = frozenset({"range", "moving_range"})
-"""Charts whose signals say that the spread changed, not the mean: they have no direction."""
+    return _KINDS[name](name, baseline)

@@ -7,12 +7,13 @@ from __future__ import annotations
 
 from monitor.detectors.base import NO_SIGNALS, Signal, met
 from monitor.detectors.charts import standard_error
+from monitor.memory import Remembers
 from monitor.outputs import Row
 from monitor.plan import BaselinePlan, CusumPlan
 from monitor.subgroups import Subgroup
 
 
-class Cusum:
+class Cusum(Remembers):
     """The two sums of one stream: kept in standard errors, shown in the characteristic's unit."""
 
     __slots__ = (
@@ -27,6 +28,7 @@ class Cusum:
         "_up",
         "_upper",
     )
+    _memory = ("_upper", "_lower")
 
     def __init__(self, plan: CusumPlan, baseline: BaselinePlan) -> None:
         self._plan = plan

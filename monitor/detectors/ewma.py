@@ -9,12 +9,13 @@ import math
 
 from monitor.detectors.base import NO_SIGNALS, Signal, met
 from monitor.detectors.charts import standard_error
+from monitor.memory import Remembers
 from monitor.outputs import Row
 from monitor.plan import BaselinePlan, EwmaPlan
 from monitor.subgroups import Subgroup
 
 
-class Ewma:
+class Ewma(Remembers):
     """The average of one stream, in the characteristic's unit."""
 
     __slots__ = (
@@ -30,6 +31,7 @@ class Ewma:
         "_up",
         "_variance",
     )
+    _memory = ("_average", "_variance")
 
     def __init__(self, plan: EwmaPlan, baseline: BaselinePlan) -> None:
         self._plan = plan

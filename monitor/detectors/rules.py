@@ -9,8 +9,10 @@ after they signal, so that two signals share no point.
 from __future__ import annotations
 
 from collections import deque
-from typing import Protocol
+from collections.abc import Sequence
+from typing import Any, Protocol
 
+from monitor.memory import Remembers
 from monitor.methods.limits import Limits
 from monitor.plan import RulePlan
 
@@ -26,6 +28,12 @@ class Rule(Protocol):
     def step(self, value: float, z: float, limits: Limits) -> Met:
         """Take a point: ``limits`` are at the rule's own width, ``z`` is its standardised value."""
 
+    def state(self) -> list[Any]:
+        """What is remembered, as JSON values."""
+
+    def restore(self, state: Sequence[Any]) -> None:
+        """Take back what ``state`` gave."""
+
 
 def _side(value: float, limits: Limits) -> int:
     if value > limits.upper:
@@ -33,7 +41,7 @@ def _side(value: float, limits: Limits) -> int:
     return -1 if value < limits.lower else 0
 
 
-class Outside:
+class Outside(Remembers):
     """One point beyond the limits; signals at each such point."""
 
     __slots__ = ()
@@ -45,7 +53,7 @@ class Outside:
         return ("outside-lower",) if value < limits.lower else NONE
 
 
-class Zone:
+class Zone(Remembers):
     """``count`` of the last ``of`` points beyond, on one side, the newest among them."""
 
     __slots__ = ("_count", "_sides")
@@ -53,6 +61,14 @@ class Zone:
     def __init__(self, count: int, of: int) -> None:
         self._count = count
         self._sides: deque[int] = deque(maxlen=of)
+
+    def state(self) -> list[Any]:
+        """The sides of the last points."""
+        return list(self._sides)
+
+    def restore(self, state: Sequence[Any]) -> None:
+        """Take back what ``state`` gave."""
+        self._sides.extend(state)
 
     def step(self, value: float, z: float, limits: Limits) -> Met:
         """Met also while fewer than ``of`` points exist."""
@@ -63,10 +79,11 @@ class Zone:
         return NONE
 
 
-class Run:
+class Run(Remembers):
     """``length`` points in a row on one side of the centre; a point on the centre ends the run."""
 
     __slots__ = ("_length", "_run", "_side")
+    _memory = ("_side", "_run")
 
     def __init__(self, length: int) -> None:
         self._length = length
@@ -83,10 +100,11 @@ class Run:
         return ("run-upper",) if side > 0 else ("run-lower",)
 
 
-class Trend:
+class Trend(Remembers):
     """``length`` points in a row steadily rising or falling; equal neighbours end it."""
 
     __slots__ = ("_length", "_points", "_previous", "_side")
+    _memory = ("_points", "_side", "_previous")
 
     def __init__(self, length: int) -> None:
         self._length = length
@@ -105,10 +123,11 @@ class Trend:
         return ("trend-up",) if side > 0 else ("trend-down",)
 
 
-class Alternation:
+class Alternation(Remembers):
     """``length`` points in a row alternating up and down; equal neighbours end it."""
 
     __slots__ = ("_length", "_points", "_previous", "_side")
+    _memory = ("_points", "_side", "_previous")
 
     def __init__(self, length: int) -> None:
         self._length = length
@@ -127,10 +146,11 @@ class Alternation:
         return ("alternation",)
 
 
-class Stratification:
+class Stratification(Remembers):
     """``length`` points in a row inside the limits: they spread less than the baseline says."""
 
     __slots__ = ("_length", "_run")
+    _memory = ("_run",)
 
     def __init__(self, length: int) -> None:
         self._length = length
@@ -145,10 +165,11 @@ class Stratification:
         return ("stratification",)
 
 
-class Mixture:
+class Mixture(Remembers):
     """``length`` points in a row outside the limits, on either side."""
 
     __slots__ = ("_length", "_run")
+    _memory = ("_run",)
 
     def __init__(self, length: int) -> None:
         self._length = length

@@ -5,6 +5,9 @@ Knows one chart and the rules on it. Must not know streams or alerts.
 
 from __future__ import annotations
 
+from collections.abc import Sequence
+from typing import Any
+
 from monitor.detectors.base import NO_SIGNALS, Signal, met
 from monitor.detectors.charts import SPREAD, chart, standard_error
 from monitor.detectors.rules import rule, span
@@ -104,6 +107,17 @@ class Shewhart:
             return ()
         rules = met(signals, statistic)
         return (Row(name, statistic, statistic, value, at.centre, at.lower, at.upper, rules),)
+
+    def state(self) -> list[Any]:
+        """The chart's and every rule's."""
+        return [self._chart.state(), [each.state() for each in self._rules]]
+
+    def restore(self, state: Sequence[Any]) -> None:
+        """Take back what ``state`` gave."""
+        chart, rules = state
+        self._chart.restore(chart)
+        for each, remembered in zip(self._rules, rules, strict=True):
+            each.restore(remembered)
 
     def restart(self) -> None:
         """Fresh rules: no pattern reaches across."""

@@ -1,0 +1,161 @@
+"""One stream: everything that is remembered of it, and what a reading of it does.
+
+Knows subgroups, detectors, alerts and their order. Must not know topics, payloads or other streams.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, field
+from typing import Any
+
+from monitor.alerts import StreamAlerts
+from monitor.detectors import Detector, Signal, detector
+from monitor.detectors.charts import standard_error
+from monitor.lookback import LookBack
+from monitor.outputs import Alert, Output, Points, Row
+from monitor.plan import ByWindow, CharacteristicPlan, DetectorPlan, Judged, Judgement, Stream
+from monitor.seen import StreamSeen
+from monitor.subgroups import Identity, Subgroup, gatherer
+
+
+@dataclass(slots=True)
+class Counts:
+    """What was taken in and given out since the first entry; ``set_aside`` by reason."""
+
+    messages: int = 0
+    readings: int = 0
+    subgroups: int = 0
+    abandoned: int = 0
+    missing: int = 0
+    signals: int = 0
+    alerts: int = 0
+    set_aside: dict[str, int] = field(default_factory=dict)
+
+
+class StreamState:
+    """One stream of one characteristic; ``keys`` are its values in the order of their keys."""
+
+    __slots__ = (
+        "_error",
+        "_size",
+        "alerts",
+        "detectors",
+        "gatherer",
+        "judgement",
+        "keys",
+        "last",
+        "lookback",
+        "plan",
+        "seen",
+        "since",
+        "stream",
+        "windowed",
+    )
+
+    def __init__(self, plan: CharacteristicPlan, stream: Stream, since: int) -> None:
+        sequence = plan.source.sequence
+        self.plan = plan
+        self.stream = stream
+        self.keys = tuple(value for _, value in stream)
+        self.since = since
+        self.judgement: Judgement | None = plan.judgement_of(stream)
+        self.seen = StreamSeen(sequence.wraps if sequence else None)
+        self.gatherer = gatherer(plan.subgroup)
+        self.windowed = isinstance(plan.subgroup, ByWindow)
+        self.detectors: list[tuple[DetectorPlan, Detector]] = []
+        self.alerts: StreamAlerts | None = None
+        if self.judgement is not None:
+            baseline = self.judgement.baseline
+            self.detectors += [(p, detector(p, baseline)) for p in self.judgement.detectors]
+            self.alerts = StreamAlerts(Judged(plan, stream, baseline))
+        self.lookback = LookBack()
+        self.last: Subgroup | None = None
+        self._size = 0
+        self._error = 1.0
+
+    def read(self, value: float, time: int, identity: Identity, counts: Counts) -> Subgroup | None:
+        """A new reading; the subgroup that it ends, if it ends one."""
+        gatherer = self.gatherer
+        abandoned = gatherer.abandoned
+        subgroup = gatherer.add(value, time, identity)
+        counts.abandoned += gatherer.abandoned - abandoned
+        return subgroup
+
+    def close(self, counts: Counts, points: bool) -> list[Output]:
+        """The time of what was gathered has come; a reading from before it is late from now on."""
+        gatherer = self.gatherer
+        end, abandoned = gatherer.closes(), gatherer.abandoned
+        if end is not None:
+            self.seen.close(end)
+        subgroup = gatherer.close()
+        counts.abandoned += gatherer.abandoned - abandoned
+        return [] if subgroup is None else self.judge(subgroup, counts, points)
+
+    def gauge_restarted(self, time: int, counts: Counts) -> list[Output]:
+        """The gauge counts afresh: what it sends does not continue what it sent."""
+        abandoned = self.gatherer.abandoned
+        self.gatherer.abandon()
+        counts.abandoned += self.gatherer.abandoned - abandoned
+        for _, each in self.detectors:
+            each.restart()
+        self.lookback.clear()
+        if self.alerts is None:
+            return []
+        events = self.alerts.withdraw(time, "gauge-restart")
+        counts.alerts += len(events)
+        return [Alert(self.plan, self.stream, event) for event in events]
+
+    def judge(self, subgroup: Subgroup, counts: Counts, points: bool) -> list[Output]:
+        """What a finished subgroup causes."""
+        counts.subgroups += 1
+        self.last = subgroup
+        if self.judgement is None or self.alerts is None:
+            return [Points(self.plan, self.stream, subgroup, ())] if points else []
+        baseline = self.judgement.baseline
+        if subgroup.size != self._size:
+            self._size = subgroup.size
+            self._error = standard_error(baseline, subgroup.size)
+        z = (subgroup.mean - baseline.mean) / self._error
+        self.lookback.append(z, subgroup.first)
+        signals: list[tuple[DetectorPlan, Signal]] = []
+        rows: tuple[Row, ...] = ()
+        for plan, each in self.detectors:
+            met = each.step(subgroup)
+            if met:
+                signals += [(plan, signal) for signal in met]
+            if points:
+                rows += each.rows(plan.name, met)
+        counts.signals += len(signals)
+        outputs: list[Output] = []
+        if points:
+            outputs.append(Points(self.plan, self.stream, subgroup, rows))
+        for event in self.alerts.judge(subgroup, z, signals, self.lookback):
+            counts.alerts += 1
+            outputs.append(Alert(self.plan, self.stream, event))
+        return outputs
+
+    def state(self) -> dict[str, Any]:
+        """Everything remembered, as JSON values; detectors by name."""
+        last = self.last
+        return {
+            "characteristic": self.plan.name,
+            "stream": dict(self.stream),
+            "since": self.since,
+            "seen": self.seen.state(),
+            "gatherer": self.gatherer.state(),
+            "detectors": {plan.name: each.state() for plan, each in self.detectors},
+            "lookback": self.lookback.state(),
+            "alerts": None if self.alerts is None else self.alerts.state(),
+            "last": None if last is None else last.state(),
+        }
+
+    def restore(self, state: dict[str, Any]) -> None:
+        """Take back what ``state`` gave under the same plan."""
+        self.seen.restore(state["seen"])
+        self.gatherer.restore(state["gatherer"])
+        for plan, each in self.detectors:
+            each.restore(state["detectors"][plan.name])
+        self.lookback.restore(state["lookback"])
+        if self.alerts is not None:
+            self.alerts.restore(state["alerts"], {plan.name: plan for plan, _ in self.detectors})
+        self.last = None if state["last"] is None else Subgroup.restored(state["last"])
