@@ -1,7 +1,7 @@
 """What every command shares: finding its module, exit codes, errors for people.
 
 Knows argparse and the three exit codes. Must not know what any command does: a command is a module
-with ``SUMMARY``, ``configure(parser)`` and ``main(args) -> int``, imported only when it is asked for.
+with ``configure(parser)`` and ``main(args) -> int``, imported only when it is asked for.
 """
 
 from __future__ import annotations

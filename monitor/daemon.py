@@ -5,7 +5,6 @@ Knows the order: read, fold, commit, acknowledge, publish. Must not know how any
 
 from __future__ import annotations
 
-import select
 import time
 from pathlib import Path
 
@@ -13,7 +12,7 @@ import structlog
 
 from monitor.dialling import Dialler
 from monitor.engine import Engine
-from monitor.entries import Connected, Disconnected, Started
+from monitor.entries import Connected, Disconnected, Started, Tick
 from monitor.health import Health
 from monitor.intake import Arrival, Intake
 from monitor.journal import Journal
@@ -25,7 +24,7 @@ from monitor.wakeup import Wakeup
 
 log = structlog.get_logger()
 
-_TICK = 1.0
+_LONGEST_WAIT = 1.0  # seconds
 _FAREWELL = 2.0  # seconds the broker has to take our last words
 
 
@@ -84,21 +83,18 @@ class Daemon:
         self._intake.note(Started(self._arrival.now()))
 
     def _wait(self) -> None:
-        link = self._link
-        reading: list[Wakeup | Link] = [self._wakeup] if link is None else [self._wakeup, link]
-        writing = [link] if link is not None and link.wants_write else []
-        timeout = 0.0 if self._more else _TICK
-        if link is None:
+        timeout = 0.0 if self._more else self._arrival.until(self._engine.next_deadline())
+        if self._link is None:
             timeout = min(timeout, self._dialler.delay())
-        ready, _, _ = select.select(reading, writing, [], timeout)
-        if self._wakeup in ready:
-            self._wakeup.clear()
+        self._wakeup.wait(self._link, min(timeout, _LONGEST_WAIT))
 
     def _turn(self) -> None:
         link = self._link or self._connect()
         if link is not None:
             self._more = link.read(self._intake.full)
             self._let_go_if_lost(link)
+        if self._arrival.until(self._engine.next_deadline()) == 0.0:
+            self._intake.note(Tick(self._arrival.now()))
         entries, acknowledge = self._intake.take()
         outputs = [output for entry in entries for output in self._engine.fold(entry)]
         alerts = self._publisher.alerts(outputs)

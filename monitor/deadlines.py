@@ -17,10 +17,11 @@ Owner = tuple[str, tuple[str, ...]]
 class Deadlines:
     """One deadline an owner at most. All instants in microseconds."""
 
-    __slots__ = ("_due", "_frozen", "_heap", "_outages", "_queued")
+    __slots__ = ("_due", "_frozen", "_outages", "_queued", "heap")
 
     def __init__(self) -> None:
-        self._heap: list[tuple[int, Owner]] = []
+        self.heap: list[tuple[int, Owner]] = []
+        """Empty while nothing can become due."""
         self._due: dict[Owner, int] = {}
         self._queued: dict[Owner, int] = {}
         self._outages = 0
@@ -48,7 +49,7 @@ class Deadlines:
         # only when its old place comes up.
         if queued is None or deadline < queued:
             self._queued[owner] = deadline
-            heapq.heappush(self._heap, (deadline, owner))
+            heapq.heappush(self.heap, (deadline, owner))
 
     def cancel(self, owner: Owner) -> None:
         """Nothing is due for ``owner``."""
@@ -57,8 +58,8 @@ class Deadlines:
     def pop(self, time: int) -> Owner | None:
         """The owner of the earliest deadline not after this arrival; it is due no more."""
         now = self.watched(time)
-        while self._heap and self._heap[0][0] <= now:
-            deadline, owner = heapq.heappop(self._heap)
+        while self.heap and self.heap[0][0] <= now:
+            deadline, owner = heapq.heappop(self.heap)
             if self._queued.get(owner) == deadline:
                 del self._queued[owner]
             due = self._due.get(owner)
@@ -71,9 +72,9 @@ class Deadlines:
 
     def next(self) -> int | None:
         """The arrival at which to look again; None while nothing can become due."""
-        if not self._heap or self._frozen is not None:
+        if not self.heap or self._frozen is not None:
             return None
-        return self._heap[0][0] + self._outages
+        return self.heap[0][0] + self._outages
 
     def state(self) -> dict[str, Any]:
         """All of it, as JSON values."""

@@ -7,11 +7,13 @@ read before: repeats and lateness are judged against the stream.
 from __future__ import annotations
 
 import math
-from collections.abc import Mapping
+from collections.abc import Callable
+from typing import Any
 
 from monitor import numbers, times
+from monitor.entries import Reading
 from monitor.plan import SourcePlan
-from monitor.pointers import MISSING, getter
+from monitor.pointers import MISSING, lookup
 
 MAX_PAYLOAD = 256 * 1024
 FUTURE = 5 * 60 * times.SECOND
@@ -19,14 +21,20 @@ _MILLISECONDS_FROM = 1e11
 _MAX_STREAM_VALUE = 256
 _OLDEST = -62_135_596_800 * times.SECOND  # 0001-01-01T00:00Z: ISO 8601 writes none before it
 _MAX_SEQUENCE = 2**63
+_ONE_SPELLING = frozenset({int, str, tuple})
+"""Types whose equal values are one stream; the tuple is that of a source whose payload has none."""
+
+
+Found = tuple[object, object, object, object]
+"""(key, value, time, sequence) as a document has them; ``MISSING`` where it does not.
+
+The key tells its stream from others on the same topic: equal keys, equal streams. It is None where
+only ``stream_values`` can tell: no stream value, or one that has several spellings.
+"""
 
 
 class Decoder:
-    """Reads the messages of one source: what its pointers find, and what may be used of it.
-
-    ``value``, ``at`` and ``sequence`` look into a parsed document; ``MISSING`` where the source has
-    no such pointer, or the document no such place.
-    """
+    """Reads the messages of one source: what its pointers find, and what may be used of it."""
 
     __slots__ = (
         "_captured",
@@ -34,27 +42,25 @@ class Decoder:
         "_stream",
         "_upper",
         "_use_if",
-        "at",
+        "conditional",
+        "find",
         "keys",
         "number",
-        "sequence",
         "timed",
-        "value",
     )
 
     def __init__(self, source: SourcePlan) -> None:
         self.keys = tuple(sorted([k for _, k in source.captures] + [k for k, _ in source.stream]))
         self.number = source.payload == "number"
         self.timed = source.time is not None
-        self.value = getter(source.value)
-        self.at = _missing if source.time is None else getter(source.time)
-        self.sequence = _missing if source.sequence is None else getter(source.sequence.pointer)
         self._lower, self._upper = source.plausible_lower, source.plausible_upper
-        self._use_if = tuple((getter(pointer), allowed) for pointer, allowed in source.use_if)
+        self._use_if = source.use_if
+        self.conditional = bool(source.use_if)
         captured = {key: index for index, key in source.captures}
         within = dict(source.stream)
         self._captured = tuple(captured.get(key) for key in self.keys)
-        self._stream = tuple(getter(within[key]) for key in self.keys if key in within)
+        self._stream = tuple(within[key] for key in self.keys if key in within)
+        self.find = _finder(source, self._stream)
 
     def levels(self, topic: str) -> tuple[str | None, ...]:
         """The values a topic fixes, in the order of ``keys``; None: the payload's to say."""
@@ -63,24 +69,7 @@ class Decoder:
 
     def is_used(self, document: object) -> bool:
         """Whether the document meets ``use_if``."""
-        for get, allowed in self._use_if:
-            value = get(document)
-            if not (value in allowed if type(value) is str else _among(value, allowed)):
-                return False
-        return True
-
-    def quick_key(self, document: object) -> object:
-        """What tells the document's stream from others on its topic, for looking it up again.
-
-        None where it takes ``stream_values`` to tell: only whole numbers and texts are sure to be
-        equal when their streams are.
-        """
-        stream = self._stream
-        if len(stream) == 1:
-            value = stream[0](document)
-            return value if type(value) is int or type(value) is str else None
-        values = tuple(get(document) for get in stream)
-        return values if all(type(v) is int or type(v) is str for v in values) else None
+        return all(_among(lookup(document, pointer), among) for pointer, among in self._use_if)
 
     def stream_values(
         self, document: object, levels: tuple[str | None, ...]
@@ -88,12 +77,11 @@ class Decoder:
         """Stream values in the order of ``keys``; None where one is missing or is none."""
         stream = iter(self._stream)
         return _all_known(
-            [_stream_value(next(stream)(document) if level is None else level) for level in levels]
+            [
+                _stream_value(lookup(document, next(stream)) if level is None else level)
+                for level in levels
+            ]
         )
-
-    def row(self, columns: Mapping[str, str]) -> tuple[str, ...] | None:
-        """The stream values of a table row, or None where one is missing."""
-        return _all_known([_stream_value(columns.get(key)) for key in self.keys])
 
     def judge_value(self, value: object) -> float | str:
         """The value as a plausible float, or the reason it cannot be used."""
@@ -107,6 +95,29 @@ class Decoder:
         return result
 
 
+class RowDecoder(Decoder):
+    """Reads the rows of a table for one source: what a message would have said, taken apart."""
+
+    __slots__ = ()
+
+    def __init__(self, source: SourcePlan) -> None:
+        super().__init__(source)
+        # A table's value may be any text, its time is the event's, and it holds what was used.
+        self.number, self.timed, self.conditional = True, True, False
+        self.find = self._columns
+
+    def stream_values(
+        self, document: object, levels: tuple[str | None, ...]
+    ) -> tuple[str, ...] | None:
+        """From the stream columns, whichever level or member they come from on the line."""
+        assert isinstance(document, Reading)
+        return _all_known([_stream_value(document.stream.get(key)) for key in self.keys])
+
+    def _columns(self, document: object) -> Found:
+        assert isinstance(document, Reading)
+        return None, document.value, document.at, document.sequence
+
+
 def judge_time(at: object, arrival: int) -> int | str:
     """The event time in microseconds, or ``no-time``, ``bad-time`` or ``future``."""
     if at is MISSING or at is None:
@@ -115,9 +126,9 @@ def judge_time(at: object, arrival: int) -> int | str:
         moment = _moment(at)
     except (ValueError, OverflowError):
         return "bad-time"
-    if moment - arrival > FUTURE:
-        return "future"
-    return moment if moment >= _OLDEST else "bad-time"
+    if _OLDEST <= moment <= arrival + FUTURE:
+        return moment
+    return "future" if moment > arrival else "bad-time"
 
 
 def judge_sequence(sequence: object) -> int | None:
@@ -141,12 +152,12 @@ def _number(text: str) -> int | float | str:
 
 
 def _moment(at: object) -> int:
-    if isinstance(at, str):
-        if at[4:5] != "-":  # what has a dash after its year is no number
-            at = _number(at)
+    if type(at) is str:
+        # What has a dash after its year is no number.
+        at = at if at[4:5] == "-" else _number(at)
         if isinstance(at, str):
             return times.parse_iso_time(at)
-    if isinstance(at, bool) or not isinstance(at, int | float):
+    if type(at) is not float and type(at) is not int:
         raise ValueError("neither a text nor a number")
     # round() refuses what is not finite, with the errors that the caller awaits.
     return round(at * (1_000 if abs(at) >= _MILLISECONDS_FROM else times.SECOND))
@@ -179,11 +190,45 @@ def _all_known(values: list[str | None]) -> tuple[str, ...] | None:
     return known if len(known) == len(values) else None
 
 
-def _missing(document: object) -> object:
-    return MISSING
+def _finder(source: SourcePlan, stream: tuple[tuple[str, ...], ...]) -> Callable[[object], Found]:
+    """Finds everything at once; by name alone where each place is a member of the document."""
+    value, at = source.value, source.time
+    sequence = source.sequence.pointer if source.sequence else None
+
+    def anywhere(document: object) -> Found:
+        keys = tuple(lookup(document, pointer) for pointer in stream)
+        return (
+            keys if all(type(key) in _ONE_SPELLING for key in keys) else None,
+            lookup(document, value),
+            MISSING if at is None else lookup(document, at),
+            MISSING if sequence is None else lookup(document, sequence),
+        )
+
+    if len(stream) > 1 or any(len(p) != 1 for p in (value, at, sequence, *stream) if p is not None):
+        return anywhere
+    # A name that no document has finds nothing: the empty tuple is no JSON member.
+    names: list[Any] = [p[0] if p else () for p in (*stream, value, at, sequence)]
+    *key_names, value_name, at_name, sequence_name = names
+    key_name = key_names[0] if key_names else None
+
+    def members(document: object) -> Found:
+        if type(document) is not dict:
+            return anywhere(document)
+        get = document.get
+        key = () if key_name is None else get(key_name)
+        return (
+            key if type(key) in _ONE_SPELLING else None,
+            get(value_name, MISSING),
+            get(at_name, MISSING),
+            get(sequence_name, MISSING),
+        )
+
+    return members
 
 
 def _among(value: object, allowed: tuple[object, ...]) -> bool:
+    if type(value) is str:
+        return value in allowed
     # True == 1 in Python, not in JSON.
     return any(
         value == candidate and isinstance(value, bool) == isinstance(candidate, bool)

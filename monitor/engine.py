@@ -21,13 +21,12 @@ from monitor.entries import (
     Parsed,
     Reading,
     Started,
-    Tick,
 )
 from monitor.messages import StandingMessage
 from monitor.outputs import Output, SetAside
 from monitor.plan import Plan
 from monitor.routes import Characteristic, Route, Routes
-from monitor.seen import TopicCounter, Verdict
+from monitor.seen import Verdict
 from monitor.standing import standing
 from monitor.stream import Counts, StreamState
 
@@ -63,26 +62,19 @@ class Engine:
         last, time = self._arrival, entry.time
         if time > last:
             self._arrival = time
-        match entry:
-            case Started():
-                self._blinded(last, "starting")
-                return _NOTHING
-            case Disconnected():
-                self._blinded(last, "disconnected from the broker")
-                return _NOTHING
-        due = self._close_due() if self._deadlines.next() is not None else _NOTHING
-        match entry:
-            case Parsed():
-                outputs = self._document(entry.topic, entry.document, None, time)
-            case Message():
-                outputs = self._message(entry, time)
-            case Reading():
-                outputs = self._row(entry, time)
-            case Connected():
-                self._watch()
-                outputs = _NOTHING
-            case Tick():
-                outputs = _NOTHING
+        if isinstance(entry, Started | Disconnected):
+            self._blinded(last, entry)
+            return _NOTHING
+        due = self._close_due() if self._deadlines.heap else _NOTHING
+        outputs = _NOTHING
+        if isinstance(entry, Parsed):
+            outputs = self._document(entry.topic, entry.document, None, time)
+        elif isinstance(entry, Message):
+            outputs = self._message(entry, time)
+        elif isinstance(entry, Reading):
+            outputs = self._row(entry, time)
+        elif isinstance(entry, Connected):
+            self._watch()
         return (*due, *outputs) if due else outputs
 
     def next_deadline(self) -> int | None:
@@ -134,7 +126,7 @@ class Engine:
         for each in streams:
             characteristic = self._characteristics[each["characteristic"]]
             keys = tuple(each["stream"][key] for key in characteristic.decoder.keys)
-            characteristic.open(keys, each["since"]).restore(each)
+            characteristic.open(keys, each["since"], self.counts).restore(each)
 
     # Time
 
@@ -144,7 +136,9 @@ class Engine:
         self._watching_since = self._arrival
         self._touch_all()
 
-    def _blinded(self, last: int, why: str) -> None:
+    def _blinded(self, last: int, entry: Started | Disconnected) -> None:
+        starting = isinstance(entry, Started)
+        why = "starting" if starting else "disconnected from the broker"
         self._deadlines.freeze(last)
         self._blind = (self._arrival, why)
         self._touch_all()
@@ -176,11 +170,14 @@ class Engine:
     ) -> Sequence[Output]:
         """``payload`` is None where it is only the document's own text."""
         self.counts.messages += 1
-        routes = self._routes.of(topic)
         outputs = _NOTHING
+        routes = self._routes.known.get(topic)
+        if routes is None:
+            routes = self._routes.find(topic)
         for route in routes:
             result = self._read(route, document, arrival)
             if isinstance(result, str):
+                route.note(document)
                 name = route.characteristic.plan.name
                 shown = numbers.text(document) if payload is None else payload
                 result = (self._set_aside(result, name, arrival, topic, shown),)
@@ -190,101 +187,63 @@ class Engine:
             return (self._set_aside("no-topic", None, arrival, topic, shown),)
         return outputs
 
-    def _read(self, route: Route, document: object, arrival: int) -> Sequence[Output] | str:
-        """A document's reading on a route; a text is the reason why it was set aside."""
-        characteristic, counter = route.characteristic, route.counter
-        decoder = characteristic.decoder
-        if document is numbers.NOT_JSON and not decoder.number:
-            return "not-json"
-        sequence = None if counter is None else judge_sequence(decoder.sequence(document))
-        result = self._find(route, document, sequence, arrival)
-        if counter is not None and sequence is not None and isinstance(result, str):
-            counter.note(sequence)
-        return result
-
-    def _find(
-        self, route: Route, document: object, sequence: int | None, arrival: int
-    ) -> Sequence[Output] | str:
-        characteristic = route.characteristic
-        decoder = characteristic.decoder
-        if not decoder.is_used(document):
-            return "not-used"
-        key = decoder.quick_key(document)
-        state = route.known.get(key)
-        keys: tuple[str, ...] = ()
-        if state is None:
-            values = decoder.stream_values(document, route.levels)
-            if values is None or not characteristic.may_open(values):
-                return "no-stream"
-            keys, state = values, characteristic.streams.get(values)
-        timed = decoder.timed
-        value = decoder.judge_value(decoder.value(document))
-        if isinstance(value, str):
-            return value
-        moment = judge_time(decoder.at(document), arrival) if timed else arrival
-        if isinstance(moment, str):
-            return moment
-        if state is None:
-            state = characteristic.open(keys, arrival)
-        if key is not None:
-            route.known[key] = state
-        return self._admit(state, value, moment, timed, sequence, arrival, route.counter)
-
     def _row(self, row: Reading, arrival: int) -> Sequence[Output]:
         self.counts.messages += 1
-        result = self._find_row(row, arrival)
+        route = self._routes.tables.get(row.characteristic)
+        result = "no-topic" if route is None else self._read(route, row, arrival)
         if not isinstance(result, str):
             return result
         shown = str(row.value).encode(errors="replace")
         return (self._set_aside(result, row.characteristic, arrival, "", shown),)
 
-    def _find_row(self, row: Reading, arrival: int) -> Sequence[Output] | str:
-        characteristic = self._characteristics.get(row.characteristic)
-        if characteristic is None:
-            return "no-topic"
-        keys = characteristic.decoder.row(row.stream)
-        if keys is None or not characteristic.may_open(keys):
-            return "no-stream"
-        value = characteristic.decoder.judge_value(row.value)
+    def _read(self, route: Route, document: object, arrival: int) -> Sequence[Output] | str:
+        """A document's reading on a route; a text is the reason why it was set aside."""
+        decoder, counts = route.decoder, self.counts
+        if document is numbers.NOT_JSON and not decoder.number:
+            return "not-json"
+        if decoder.conditional and not decoder.is_used(document):
+            return "not-used"
+        key, raw, at, number = decoder.find(document)
+        state = route.known.get(key)
+        keys: tuple[str, ...] = ()
+        if state is None:
+            values = decoder.stream_values(document, route.levels)
+            if values is None or not route.characteristic.may_open(values):
+                return "no-stream"
+            keys, state = values, route.characteristic.streams.get(values)
+        value = decoder.judge_value(raw)
         if isinstance(value, str):
             return value
-        moment = judge_time(row.at, arrival)
+        timed = decoder.timed
+        moment = judge_time(at, arrival) if timed else arrival
         if isinstance(moment, str):
             return moment
-        state = characteristic.streams.get(keys) or characteristic.open(keys, arrival)
-        return self._admit(state, value, moment, True, judge_sequence(row.sequence), arrival, None)
-
-    def _admit(
-        self,
-        state: StreamState,
-        value: float,
-        moment: int,
-        timed: bool,
-        sequence: int | None,
-        arrival: int,
-        counter: TopicCounter | None,
-    ) -> Sequence[Output] | str:
+        if state is None:
+            state = route.characteristic.open(keys, arrival, counts)
+        if key is not None:
+            route.known[key] = state
+        sequence = judge_sequence(number)
+        seen = state.seen
         if not timed:
             # To a stream arrival never runs backwards, whatever else came before.
-            moment = max(moment, state.seen.mark)
-        verdict = state.seen.admit(moment, timed, sequence)
+            moment = max(moment, seen.mark)
+        verdict = seen.admit(moment, timed, sequence)
         if verdict is Verdict.REPEATED or verdict is Verdict.LATE:
             return str(verdict.value)
-        counts = self.counts
         counts.readings += 1
         outputs = _NOTHING
         if verdict is Verdict.RESTART:
             outputs = state.gauge_restarted(moment, counts)
             self.touched[state] = None
-        if counter is not None and sequence is not None:
-            counts.missing += counter.advance(sequence, verdict is Verdict.RESTART)
+        if sequence is not None and route.counter is not None:
+            counts.missing += route.counter.advance(sequence, verdict is Verdict.RESTART)
         if timed:
             self.lag = arrival - moment
-            subgroup = state.read(value, moment, (sequence, moment, None, None), counts)
+            subgroup = state.gatherer.add(value, moment, (sequence, moment, None, None))
         elif sequence is not None:
-            subgroup = state.read(value, moment, (sequence, None, None, None), counts)
+            subgroup = state.gatherer.add(value, moment, (sequence, None, None, None))
         else:
-            subgroup = state.read(value, moment, (None, None, moment, state.seen.place), counts)
+            subgroup = state.gatherer.add(value, moment, (None, None, moment, seen.place))
         if subgroup is not None:
             judged = state.judge(subgroup, counts, self._points)
             outputs = (*outputs, *judged) if outputs else judged

@@ -5,9 +5,11 @@ Knows messages and how arrival is reckoned. Must not know sockets, files or what
 
 from __future__ import annotations
 
+import math
 from collections.abc import Callable
 
 from monitor.entries import Message, Recorded
+from monitor.times import SECOND
 
 NANOSECONDS = 1_000
 _MOST = 2_000
@@ -32,6 +34,10 @@ class Arrival:
     def now(self) -> int:
         """The arrival of what arrives now."""
         return (self._monotonic() + self._ahead) // NANOSECONDS
+
+    def until(self, time: int | None) -> float:
+        """Seconds until ``time`` has come, 0 once it has; for ever where it is None."""
+        return math.inf if time is None else max(0, time - self.now()) / SECOND
 
 
 class Intake:

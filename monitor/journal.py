@@ -11,7 +11,7 @@ import sqlite3
 from collections.abc import Iterable, Iterator, Sequence
 from pathlib import Path
 
-from monitor.entries import Connected, Disconnected, Message, Recorded, Started
+from monitor.entries import Connected, Disconnected, Message, Recorded, Started, Tick
 
 SCHEMA = 1
 
@@ -21,7 +21,7 @@ CREATE TABLE topics (id INTEGER PRIMARY KEY, topic TEXT NOT NULL UNIQUE);
 CREATE TABLE entries (
     position INTEGER PRIMARY KEY,
     time INTEGER NOT NULL,   -- arrival, microseconds since 1970
-    kind INTEGER NOT NULL,   -- 0 message, 1 started, 2 connected, 3 disconnected
+    kind INTEGER NOT NULL,   -- 0 message, 1 started, 2 connected, 3 disconnected, 4 tick
     topic INTEGER,
     payload BLOB,
     flags INTEGER            -- message: QoS, plus 4 where retained; connected: session present
@@ -29,7 +29,7 @@ CREATE TABLE entries (
 CREATE TABLE outbox (position INTEGER PRIMARY KEY, topic TEXT NOT NULL, payload BLOB NOT NULL);
 """
 
-_MESSAGE, _STARTED, _CONNECTED, _DISCONNECTED = range(4)
+_MESSAGE, _STARTED, _CONNECTED, _DISCONNECTED, _TICK = range(5)
 _RETAINED = 4
 
 _MOST_TOPICS = 20_000  # remembered; whoever may publish may invent topics
@@ -133,6 +133,8 @@ class Journal:
                     yield time, _CONNECTED, None, None, int(session_present)
                 case Disconnected(time):
                     yield time, _DISCONNECTED, None, None, 0
+                case Tick(time):
+                    yield time, _TICK, None, None, 0
 
     def _topic(self, topic: str) -> int:
         self._db.execute("INSERT OR IGNORE INTO topics (topic) VALUES (?)", (topic,))
@@ -169,8 +171,10 @@ def read_entries(db: sqlite3.Connection) -> Iterator[Recorded]:
             yield Started(time)
         elif kind == _CONNECTED:
             yield Connected(time, bool(flags))
-        else:
+        elif kind == _DISCONNECTED:
             yield Disconnected(time)
+        else:
+            yield Tick(time)
 
 
 def _locked(path: Path) -> int:

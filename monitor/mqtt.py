@@ -95,8 +95,8 @@ class _Corked:
     def part(self, patience: float) -> None:
         """Write what is waiting and let the other side close; OSError where it does not in time.
 
-        Whoever closes with something unread resets the connection, and what was written last, such as
-        acknowledgements, may be lost with it.
+        Whoever closes with something unread resets the connection, and what was written last, such
+        as acknowledgements, may be lost with it.
         """
         deadline = time.monotonic() + patience
         self._sock.settimeout(patience)

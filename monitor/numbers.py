@@ -36,7 +36,13 @@ def parse(payload: bytes) -> object:
 
 def text(document: object) -> bytes:
     """The text of a parsed document, for showing it."""
-    return orjson.dumps(document)
+    try:
+        return orjson.dumps(document)
+    except TypeError:  # half a surrogate pair, 65 bits, or nested deeper than orjson writes
+        try:
+            return repr(document).encode(errors="replace")
+        except RecursionError:
+            return b"[[[..."
 
 
 def number(value: object) -> float | str:

@@ -216,8 +216,20 @@ class Plan:
 
 
 @dataclass(frozen=True, slots=True)
+class TlsPlan:
+    """Files in PEM: whose signature the broker must show, and what we show it (both or neither)."""
+
+    ca: str
+    certificate: str | None = None
+    key: str | None = None
+
+
+@dataclass(frozen=True, slots=True)
 class BrokerPlan:
-    """How to reach the broker; ``password`` never leaves this object in a log or an error."""
+    """How to reach the broker; ``password`` never leaves this object in a log or an error.
+
+    ``keepalive`` and ``session_expiry`` are seconds; the latter is said in protocol 5 only.
+    """
 
     host: str
     port: int
@@ -225,6 +237,9 @@ class BrokerPlan:
     keepalive: int
     username: str | None = None
     password: str | None = field(default=None, repr=False)
+    protocol: Literal["3.1.1", "5"] = "3.1.1"
+    session_expiry: int = 7 * 86_400
+    tls: TlsPlan | None = None
 
 
 @dataclass(frozen=True, slots=True)

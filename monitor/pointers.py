@@ -6,7 +6,6 @@ Knows the standard. Must not know what the values mean.
 from __future__ import annotations
 
 import re
-from collections.abc import Callable
 from typing import Final
 
 MISSING: Final = object()
@@ -25,20 +24,6 @@ def parse(text: str) -> tuple[str, ...]:
     if _ESCAPE.search(text):
         raise ValueError(f"{text!r} is not a JSON Pointer: write ~ as ~0, and / in a name as ~1")
     return tuple(token.replace("~1", "/").replace("~0", "~") for token in text[1:].split("/"))
-
-
-def getter(tokens: tuple[str, ...]) -> Callable[[object], object]:
-    """``lookup`` for these tokens, quicker where there is one, as there nearly always is."""
-    if len(tokens) != 1:
-        return lambda document: lookup(document, tokens)
-    token = tokens[0]
-
-    def get(document: object) -> object:
-        if type(document) is dict:
-            return document.get(token, MISSING)
-        return lookup(document, tokens)
-
-    return get
 
 
 def lookup(document: object, tokens: tuple[str, ...]) -> object:

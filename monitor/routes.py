@@ -9,10 +9,10 @@ from collections.abc import Iterable
 from typing import Any
 
 from monitor import filters
-from monitor.decode import Decoder
+from monitor.decode import Decoder, RowDecoder, judge_sequence
 from monitor.plan import CharacteristicPlan, SequencePlan
 from monitor.seen import TopicCounter
-from monitor.stream import StreamState
+from monitor.stream import Counts, StreamState
 
 MAX_STREAMS = 10_000
 """Streams a characteristic may have: a guard against a field that was no stream key."""
@@ -34,44 +34,68 @@ class Characteristic:
         """Whether the stream is there, or there is room for it."""
         return keys in self.streams or len(self.streams) < MAX_STREAMS
 
-    def open(self, keys: tuple[str, ...], since: int) -> StreamState:
+    def open(self, keys: tuple[str, ...], since: int, counts: Counts) -> StreamState:
         """A new stream, first heard of at arrival ``since``."""
         stream = tuple(zip(self.decoder.keys, keys, strict=True))
-        state = self.streams[keys] = StreamState(self.plan, stream, since)
+        state = self.streams[keys] = StreamState(self.plan, stream, since, counts)
         return state
 
 
 class Route:
-    """One characteristic on one topic; ``known`` finds a stream by ``Decoder.quick_key``."""
+    """One characteristic on one topic; ``known`` finds streams by what ``decoder.find`` gave."""
 
-    __slots__ = ("characteristic", "counter", "known", "levels")
+    __slots__ = ("characteristic", "counter", "decoder", "known", "levels")
 
     def __init__(
         self,
         characteristic: Characteristic,
-        levels: tuple[str | None, ...],
-        counter: TopicCounter | None,
+        decoder: Decoder,
+        levels: tuple[str | None, ...] = (),
+        counter: TopicCounter | None = None,
     ) -> None:
         self.characteristic = characteristic
+        self.decoder = decoder
         self.levels = levels
         self.counter = counter
         self.known: dict[object, StreamState] = {}
 
+    def note(self, document: object) -> None:
+        """The document was set aside; its number is not missing."""
+        if self.counter is not None:
+            *_, sequence = self.decoder.find(document)
+            number = judge_sequence(sequence)
+            if number is not None:
+                self.counter.note(number)
+
 
 class Routes:
-    """All topics heard of so far."""
+    """Where every topic heard of so far leads, and every table: ``known`` and ``tables``."""
 
-    __slots__ = ("_characteristics", "_counters", "_known")
+    __slots__ = ("_characteristics", "_counters", "known", "tables")
 
     def __init__(self, characteristics: Iterable[Characteristic]) -> None:
         self._characteristics = tuple(characteristics)
-        self._known: dict[str, tuple[Route, ...]] = {}
+        self.known: dict[str, tuple[Route, ...]] = {}
+        self.tables = {
+            c.plan.name: Route(c, RowDecoder(c.plan.source)) for c in self._characteristics
+        }
         self._counters: dict[tuple[str, SequencePlan], TopicCounter] = {}
 
-    def of(self, topic: str) -> tuple[Route, ...]:
-        """Where messages on ``topic`` lead, in the order of the configuration."""
-        routes = self._known.get(topic)
-        return self._find(topic) if routes is None else routes
+    def find(self, topic: str) -> tuple[Route, ...]:
+        """Where messages on ``topic`` lead, in the order of the configuration; known from now."""
+        if len(self.known) >= _MAX_TOPICS:
+            self.known.clear()
+            self._counters.clear()
+        found = []
+        wild = "+" in topic or "#" in topic  # a recording may hold what no broker delivers
+        for each in self._characteristics:
+            source = each.plan.source
+            if not wild and filters.overlap(source.topic, topic):
+                sequence = source.sequence
+                counter = None if sequence is None else self._counter(topic, sequence)
+                found.append(Route(each, each.decoder, each.decoder.levels(topic), counter))
+        routes = self.known[topic] = tuple(found)
+        return routes
 
     def state(self) -> list[Any]:
         """Every counter, as JSON values."""
@@ -85,22 +109,6 @@ class Routes:
         for topic, pointer, wraps, remembered in state:
             plan = SequencePlan(tuple(pointer), wraps)
             self._counter(topic, plan).restore(remembered)
-
-    def _find(self, topic: str) -> tuple[Route, ...]:
-        if len(self._known) >= _MAX_TOPICS:
-            self._known.clear()
-            self._counters.clear()
-        if "+" in topic or "#" in topic:  # a recording may hold what no broker delivers
-            return ()
-        found = []
-        for each in self._characteristics:
-            source = each.plan.source
-            if filters.overlap(source.topic, topic):
-                sequence = source.sequence
-                counter = None if sequence is None else self._counter(topic, sequence)
-                found.append(Route(each, each.decoder.levels(topic), counter))
-        routes = self._known[topic] = tuple(found)
-        return routes
 
     def _counter(self, topic: str, plan: SequencePlan) -> TopicCounter:
         # Characteristics that read one counter of a topic miss a number together.

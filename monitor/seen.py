@@ -18,6 +18,7 @@ NEVER = -(2**63)
 """Before every instant."""
 
 _RECENT_TIMES = 64
+_UNSETTLED = 32
 
 
 class Verdict(Enum):
@@ -45,7 +46,17 @@ class StreamSeen:
     of RFC 4303, section 3.4.3): half a kilobyte, however many readings.
     """
 
-    __slots__ = ("_bits", "_closed", "_last", "_near", "_times", "_wraps", "mark", "place")
+    __slots__ = (
+        "_ahead_of",
+        "_bits",
+        "_closed",
+        "_last",
+        "_near",
+        "_times",
+        "_wraps",
+        "mark",
+        "place",
+    )
 
     def __init__(self, wraps: int | None) -> None:
         self.mark = NEVER
@@ -57,6 +68,8 @@ class StreamSeen:
         self._near = WINDOW - 1 if wraps is None else min(WINDOW - 1, wraps // 2)
         self._last: int | None = None
         self._bits = 0
+        self._ahead_of: list[int] = []
+        """The numbers before the newest that the bits do not show yet."""
         self._times: deque[int] | None = None
 
     def admit(self, time: int, timed: bool, sequence: int | None) -> Verdict:
@@ -75,9 +88,13 @@ class StreamSeen:
         ):
             # The next, or one soon after it: what nearly every reading is.
             self.mark = time
-            self._bits = (self._bits << (sequence - last) | 1) & _MASK
             self._last = sequence
+            ahead_of = self._ahead_of
+            ahead_of.append(last)
+            if len(ahead_of) >= _UNSETTLED:
+                self._settle()
             return Verdict.NEW
+        self._settle()
         if last is None:
             verdict = Verdict.NEW
             distance = WINDOW
@@ -134,6 +151,7 @@ class StreamSeen:
 
     def state(self) -> list[Any]:
         """What is remembered, as JSON values."""
+        self._settle()
         times = None if self._times is None else list(self._times)
         return [self.mark, self._closed, self._last, hex(self._bits), times, self.place]
 
@@ -142,6 +160,17 @@ class StreamSeen:
         self.mark, self._closed, self._last, bits, times, self.place = state
         self._bits = int(bits, 16)
         self._times = None if times is None else deque(times, maxlen=_RECENT_TIMES)
+
+    def _settle(self) -> None:
+        """Move the window of bits to the newest number, which it may lag behind by a few."""
+        if not self._ahead_of or self._last is None:
+            return
+        oldest = self._ahead_of[0]
+        bits = self._bits << (self._last - oldest) | 1
+        for number in self._ahead_of:
+            bits |= 1 << (self._last - number)
+        self._bits = bits & _MASK
+        self._ahead_of.clear()
 
     def _has(self, distance: int) -> bool:
         return -WINDOW < distance <= 0 and bool(self._bits >> -distance & 1)

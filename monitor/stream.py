@@ -15,7 +15,7 @@ from monitor.lookback import LookBack
 from monitor.outputs import Alert, Output, Points, Row
 from monitor.plan import ByWindow, CharacteristicPlan, DetectorPlan, Judged, Judgement, Stream
 from monitor.seen import StreamSeen
-from monitor.subgroups import Identity, Subgroup, gatherer
+from monitor.subgroups import Subgroup, gatherer
 
 
 @dataclass(slots=True)
@@ -30,6 +30,10 @@ class Counts:
     signals: int = 0
     alerts: int = 0
     set_aside: dict[str, int] = field(default_factory=dict)
+
+    def abandon(self) -> None:
+        """A subgroup was given up unfinished."""
+        self.abandoned += 1
 
 
 class StreamState:
@@ -52,7 +56,9 @@ class StreamState:
         "windowed",
     )
 
-    def __init__(self, plan: CharacteristicPlan, stream: Stream, since: int) -> None:
+    def __init__(
+        self, plan: CharacteristicPlan, stream: Stream, since: int, counts: Counts
+    ) -> None:
         sequence = plan.source.sequence
         self.plan = plan
         self.stream = stream
@@ -60,7 +66,7 @@ class StreamState:
         self.since = since
         self.judgement: Judgement | None = plan.judgement_of(stream)
         self.seen = StreamSeen(sequence.wraps if sequence else None)
-        self.gatherer = gatherer(plan.subgroup)
+        self.gatherer = gatherer(plan.subgroup, counts.abandon)
         self.windowed = isinstance(plan.subgroup, ByWindow)
         self.detectors: list[tuple[DetectorPlan, Detector]] = []
         self.alerts: StreamAlerts | None = None
@@ -73,29 +79,17 @@ class StreamState:
         self._size = 0
         self._error = 1.0
 
-    def read(self, value: float, time: int, identity: Identity, counts: Counts) -> Subgroup | None:
-        """A new reading; the subgroup that it ends, if it ends one."""
-        gatherer = self.gatherer
-        abandoned = gatherer.abandoned
-        subgroup = gatherer.add(value, time, identity)
-        counts.abandoned += gatherer.abandoned - abandoned
-        return subgroup
-
     def close(self, counts: Counts, points: bool) -> list[Output]:
         """The time of what was gathered has come; a reading from before it is late from now on."""
-        gatherer = self.gatherer
-        end, abandoned = gatherer.closes(), gatherer.abandoned
+        end = self.gatherer.closes()
         if end is not None:
             self.seen.close(end)
-        subgroup = gatherer.close()
-        counts.abandoned += gatherer.abandoned - abandoned
+        subgroup = self.gatherer.close()
         return [] if subgroup is None else self.judge(subgroup, counts, points)
 
     def gauge_restarted(self, time: int, counts: Counts) -> list[Output]:
         """The gauge counts afresh: what it sends does not continue what it sent."""
-        abandoned = self.gatherer.abandoned
         self.gatherer.abandon()
-        counts.abandoned += self.gatherer.abandoned - abandoned
         for _, each in self.detectors:
             each.restart()
         self.lookback.clear()

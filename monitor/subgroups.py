@@ -7,7 +7,7 @@ from __future__ import annotations
 
 import math
 import statistics
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 from typing import Any, Protocol
 
@@ -75,10 +75,9 @@ class Subgroup:
 
 
 class Gatherer(Protocol):
-    """Gathers one stream's readings into subgroups; ``abandoned`` counts the unfinished."""
+    """Gathers one stream's readings into subgroups, and tells ``given_up`` of unfinished ones."""
 
     number: int
-    abandoned: int
 
     def add(self, value: float, time: int, identity: Identity) -> Subgroup | None:
         """Take a reading at event time ``time``; the subgroup that it ends, if any."""
@@ -105,24 +104,24 @@ class CountGatherer(Remembers):
     __slots__ = (
         "_broken",
         "_first",
+        "_given_up",
         "_last",
         "_plan",
         "_started",
         "_values",
-        "abandoned",
         "number",
     )
-    _memory = ("_values", "_first", "_last", "_started", "_broken", "number", "abandoned")
+    _memory = ("_values", "_first", "_last", "_started", "_broken", "number")
 
-    def __init__(self, plan: ByCount) -> None:
+    def __init__(self, plan: ByCount, given_up: Callable[[], None]) -> None:
         self._plan = plan
+        self._given_up = given_up
         self._values: list[float] = []
         self._first = 0
         self._last: int | None = None
         self._started: int | None = None
         self._broken = False
         self.number = 0
-        self.abandoned = 0
 
     def add(self, value: float, time: int, identity: Identity) -> Subgroup | None:
         """A gap longer than ``max_gap`` since the reading before abandons what was gathered. With
@@ -157,7 +156,7 @@ class CountGatherer(Remembers):
     def abandon(self) -> None:
         """Count what was gathered as abandoned."""
         if self._values:
-            self.abandoned += 1
+            self._given_up()
             self._values = []
         self._broken = True
 
@@ -165,16 +164,16 @@ class CountGatherer(Remembers):
 class WindowGatherer(Remembers):
     """The readings of each UTC-aligned window [start, start + window), ``min_size`` at least."""
 
-    __slots__ = ("_first", "_identity", "_last", "_plan", "_values", "abandoned", "number")
-    _memory = ("_values", "_first", "_last", "_identity", "number", "abandoned")
+    __slots__ = ("_first", "_given_up", "_identity", "_last", "_plan", "_values", "number")
+    _memory = ("_values", "_first", "_last", "_identity", "number")
 
-    def __init__(self, plan: ByWindow) -> None:
+    def __init__(self, plan: ByWindow, given_up: Callable[[], None]) -> None:
         self._plan = plan
+        self._given_up = given_up
         self._values: list[float] = []
         self._first = self._last = 0
         self._identity: Identity = (None, None, None, None)
         self.number = 0
-        self.abandoned = 0
 
     def add(self, value: float, time: int, identity: Identity) -> Subgroup | None:
         """A reading past the window's end closes it, and opens its own."""
@@ -205,13 +204,15 @@ class WindowGatherer(Remembers):
     def abandon(self) -> None:
         """Count what was gathered as abandoned."""
         if self._values:
-            self.abandoned += 1
+            self._given_up()
             self._values = []
 
 
-def gatherer(plan: SubgroupPlan) -> Gatherer:
-    """A fresh gatherer as planned."""
-    return CountGatherer(plan) if isinstance(plan, ByCount) else WindowGatherer(plan)
+def gatherer(plan: SubgroupPlan, given_up: Callable[[], None]) -> Gatherer:
+    """A fresh gatherer as planned; it calls ``given_up`` for each subgroup it abandons."""
+    if isinstance(plan, ByCount):
+        return CountGatherer(plan, given_up)
+    return WindowGatherer(plan, given_up)
 
 
 def _subgroup(

@@ -6,12 +6,25 @@ Knows signals and a pair of sockets. Must not know what is waited for.
 from __future__ import annotations
 
 import contextlib
+import select
 import signal
 import socket
+from typing import Protocol
+
+
+class Waitable(Protocol):
+    """What else may end a wait."""
+
+    @property
+    def wants_write(self) -> bool:
+        """Whether it waits for writing, too."""
+
+    def fileno(self) -> int:
+        """For select."""
 
 
 class Wakeup:
-    """Give it to select; call it from a thread to be woken."""
+    """Waits; call it from a thread to be woken."""
 
     def __init__(self) -> None:
         self.stopping = False
@@ -31,14 +44,18 @@ class Wakeup:
         with contextlib.suppress(BlockingIOError):
             self._writer.send(b"\0")
 
-    def clear(self) -> None:
-        """What woke us is being seen to."""
-        with contextlib.suppress(BlockingIOError):
-            self._reader.recv(4096)
-
-    def fileno(self) -> int:
-        """For select."""
-        return self._reader.fileno()
+    def wait(self, link: Waitable | None, timeout: float) -> None:
+        """Until ``link`` can be read or written, we are woken, or ``timeout`` seconds are over."""
+        reading: list[socket.socket | Waitable] = [self._reader]
+        writing: list[Waitable] = []
+        if link is not None:
+            reading.append(link)
+            if link.wants_write:
+                writing.append(link)
+        ready, _, _ = select.select(reading, writing, [], timeout)
+        if self._reader in ready:
+            with contextlib.suppress(BlockingIOError):
+                self._reader.recv(4096)
 
     def _stop(self, *_: object) -> None:
         self.stopping = True

@@ -266,11 +266,11 @@ def test_no_return_before_off_delay_since_the_last_signal(off_delay: int) -> Non
 
 
 def test_what_was_gathered_before_off_delay_can_be_lost_again() -> None:
-    # At the baseline for 9 subgroups, then most of the way up again: no return when off_delay ends.
-    plan = characteristic(off_delay=10 * SECOND)
-    alerts = told(plan, [8] + [0] * 8 + [2.9] * 6)
+    # At the baseline for 8 subgroups, then most of the way up again: no return at off_delay's end.
+    plan = characteristic(shewhart(width=7.0), off_delay=10 * SECOND)
+    alerts = told(plan, [8] + [0] * 8 + [2] * 6)
     assert [(e["event"], second(e)) for e in alerts] == [("raised", 0), ("returned-to-normal", 10)]
-    assert kinds(told(plan, [8] + [0] * 8 + [7.5] * 6)) == ["raised"]
+    assert kinds(told(plan, [8] + [0] * 8 + [6] * 6)) == ["raised"]
 
 
 @pytest.mark.parametrize("settle", [0, 300])
@@ -304,8 +304,8 @@ def test_a_repaired_shift_is_declared_returned_within_some_twenty_subgroups() ->
 
 def test_a_spread_returns_after_twice_the_rules_span_without_a_signal() -> None:
     plan = characteristic(shewhart(chart="range"), size=2)
-    alerts = told(plan, [0, 9, 0, 0, 0, 0])
-    assert [(e["event"], second(e)) for e in alerts] == [("raised", 1), ("returned-to-normal", 5)]
+    alerts = told(plan, [0, 9, 0, 0, 0, 9, 0, 0, 0, 0])
+    assert [(e["event"], second(e)) for e in alerts] == [("raised", 1), ("returned-to-normal", 9)]
 
 
 def test_a_pattern_returns_after_twice_its_span_without_a_signal() -> None:

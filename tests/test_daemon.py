@@ -12,7 +12,7 @@ import socket
 import subprocess
 import threading
 from collections.abc import Callable, Iterator
-from itertools import pairwise
+from itertools import cycle, pairwise
 from pathlib import Path
 from typing import Any
 
@@ -271,7 +271,7 @@ def test_takes_its_leave_in_the_middle_of_a_flood(
         process = daemon.process
         assert process is not None
         enough = threading.Event()
-        sent = iter(weighings(60_000))
+        sent = cycle(weighings(2_000))
 
         def flood() -> None:
             while not enough.is_set():
@@ -532,6 +532,27 @@ def test_killed_at_any_moment_it_loses_nothing(
         found = events(watcher.wait_for(lambda ms: len(events(ms)) >= len(expected), ALERTS))
     assert by_stream(found) == by_stream(expected)
     assert len(expected) > 10
+
+
+def test_alerts_under_way_are_sent_again(
+    mosquitto: Callable[..., Mosquitto], tmp_path: Path
+) -> None:
+    # Each jar on a head of its own, and each pair an alert.
+    messages = [weighing(n, START + n, 360.0, head=n // 2) for n in range(3_000)]
+    server = mosquitto(max_inflight_messages=1000)
+    with started(tmp_path / "a", server.port) as daemon:
+        with Client(server.port, "watcher", clean=False) as watcher:
+            watcher.subscribe(ALERTS)
+        with Client(server.port) as line:
+            line.publish_all(messages)
+        until(lambda: daemon.waiting() > 50, "alerts in the outbox", daemon.is_running)
+        server.stop()
+        server.start()
+        with Client(server.port, "watcher", clean=False) as watcher:
+            settled(daemon, messages)
+            found = events(watcher.wait_for(lambda ms: len(events(ms)) >= 1_500))
+        assert daemon.logged("not connected")
+    assert {e["stream"]["head"] for e in found} == {str(n) for n in range(1_500)}
 
 
 def test_live_and_replay_give_the_same_alerts(

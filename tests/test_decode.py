@@ -10,7 +10,8 @@ from hypothesis import given
 from hypothesis import strategies as st
 from plans import GAUGE, START
 
-from monitor.decode import FUTURE, Decoder, judge_sequence, judge_time
+from monitor.decode import FUTURE, Decoder, RowDecoder, judge_sequence, judge_time
+from monitor.entries import Reading
 from monitor.plan import SourcePlan
 from monitor.pointers import MISSING
 from monitor.times import SECOND
@@ -37,7 +38,8 @@ def look(decoder: Decoder, document: object, topic: str) -> Found | str:
     if not decoder.is_used(document):
         return "not-used"
     keys = decoder.stream_values(document, decoder.levels(topic))
-    return "no-stream" if keys is None else (keys, decoder.value(document), decoder.at(document))
+    _, value, at, _ = decoder.find(document)
+    return "no-stream" if keys is None else (keys, value, at)
 
 
 def find(**changes: object) -> Found | str:
@@ -106,10 +108,14 @@ def test_an_empty_topic_level_is_no_stream() -> None:
 
 
 def test_a_row_of_a_table_needs_every_key() -> None:
-    decoder = Decoder(CHECKWEIGHER)
-    assert decoder.row({"lane": "1", "head": "4", "cup": "c", "spare": "x"}) == ("c", "4", "1")
-    assert decoder.row({"lane": "1", "head": "4"}) is None
-    assert decoder.row({"lane": "1", "head": "4", "cup": ""}) is None
+    decoder = RowDecoder(CHECKWEIGHER)
+
+    def streams(**columns: str) -> tuple[str, ...] | None:
+        return decoder.stream_values(Reading(0, "weight", columns, 341.6), ())
+
+    assert streams(lane="1", head="4", cup="c", spare="x") == ("c", "4", "1")
+    assert streams(lane="1", head="4") is None
+    assert streams(lane="1", head="4", cup="") is None
 
 
 @pytest.mark.parametrize(

@@ -31,7 +31,8 @@ from plans import (
 from monitor import messages
 from monitor.decode import MAX_PAYLOAD
 from monitor.engine import Engine
-from monitor.entries import Connected, Disconnected, Entry, Message, Reading, Started
+from monitor.entries import Connected, Disconnected, Entry, Message, Parsed, Reading, Started
+from monitor.numbers import NOT_JSON, parse
 from monitor.outputs import Alert, Output, SetAside
 from monitor.plan import (
     CharacteristicPlan,
@@ -378,6 +379,21 @@ def test_what_is_set_aside_moves_no_mark_and_no_limit(
     assert encoded(among) == encoded(alone)
     assert points(among) == points(alone)
     assert mixed.counts.readings == clean.counts.readings == len(accepted)
+
+
+@settings(max_examples=60)
+@pytest.mark.parametrize("kind", PLANS)
+@given(st.lists(bodies.filter(lambda body: parse(body) is not NOT_JSON), max_size=20))
+def test_a_parsed_message_is_the_message(kind: str, payloads: list[bytes]) -> None:
+    whole, parsed = engine(PLANS[kind]), engine(PLANS[kind])
+    for second, payload in enumerate(payloads):
+        entry = message(payload, second)
+        one = whole.fold(entry)
+        other = parsed.fold(Parsed(entry.time, entry.topic, parse(payload)))
+        assert reasons(one) == reasons(other)
+        assert points(one) == points(other)
+        assert encoded(one) == encoded(other)
+    assert whole.counts == parsed.counts
 
 
 @settings(max_examples=100)

@@ -7,7 +7,7 @@ import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
-from monitor.numbers import NOT_JSON, number, parse
+from monitor.numbers import NOT_JSON, number, parse, text
 
 plain = st.recursive(
     st.none()
@@ -92,6 +92,22 @@ def test_a_text_is_a_number_where_json_says_so(text: str) -> None:
 def test_what_orjson_refuses_in_a_field_nobody_asked_for_does_no_harm() -> None:
     assert parse(b'{"net": 341.6, "spare": NaN, "far": 1e999}')["net"] == 341.6  # type: ignore[index]
     assert parse(b'{"net": 341.6, "text": "\\ud800"}')["net"] == 341.6  # type: ignore[index]
+
+
+@given(st.binary(max_size=40) | plain.map(lambda document: json.dumps(document).encode()))
+def test_whatever_was_read_can_be_shown(payload: bytes) -> None:
+    document = parse(payload)
+    if document is not NOT_JSON:
+        assert text(document)
+
+
+@pytest.mark.parametrize(
+    "payload", [b'"\\ud800"', b"[NaN, %s]" % (b"9" * 30), b"[" * 1_020 + b"]" * 1_020]
+)
+def test_what_orjson_does_not_write_is_shown_all_the_same(payload: bytes) -> None:
+    document = parse(payload)
+    assert document is not NOT_JSON
+    assert text(document)
 
 
 @pytest.mark.parametrize(

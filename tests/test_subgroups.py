@@ -15,9 +15,10 @@ NOBODY = (None, None, None, None)
 
 
 def gather(plan: ByCount, readings: list[tuple[float, int]]) -> tuple[list[Subgroup], int]:
-    gatherer = CountGatherer(plan)
+    given_up: list[None] = []
+    gatherer = CountGatherer(plan, lambda: given_up.append(None))
     made = [gatherer.add(v, t, (i, t, None, None)) for i, (v, t) in enumerate(readings)]
-    return [each for each in made if each], gatherer.abandoned
+    return [each for each in made if each], len(given_up)
 
 
 @given(
@@ -69,13 +70,14 @@ def test_a_gap_between_subgroups_abandons_nothing_but_is_a_break() -> None:
 
 
 def test_abandoning_counts_what_was_begun_and_breaks() -> None:
-    gatherer = CountGatherer(ByCount(2))
+    given_up: list[None] = []
+    gatherer = CountGatherer(ByCount(2), lambda: given_up.append(None))
     gatherer.abandon()
-    assert gatherer.abandoned == 0
+    assert len(given_up) == 0
     gatherer.add(1.0, 0, NOBODY)
     gatherer.abandon()
     gatherer.abandon()
-    assert gatherer.abandoned == 1
+    assert len(given_up) == 1
     assert gatherer.add(2.0, 1, NOBODY) is None
     made = gatherer.add(3.0, 2, NOBODY)
     assert made is not None
