@@ -7,7 +7,7 @@ as in IEC 62682; what is decided here is decided at subgroups, in event time.
 from __future__ import annotations
 
 import math
-from collections.abc import Iterable, Mapping, Sequence
+from collections.abc import Iterable, Mapping
 from dataclasses import dataclass, field, fields
 from hashlib import sha256
 from typing import Any
@@ -113,15 +113,29 @@ _PLAIN = tuple(
 )
 
 
+class Sequence:
+    """Counts the events of one characteristic and stream, from 1."""
+
+    __slots__ = ("value",)
+
+    def __init__(self) -> None:
+        self.value = 0
+
+    def next(self) -> int:
+        """The number of the next event."""
+        self.value += 1
+        return self.value
+
+
 class StreamAlerts:
     """All alerts of one stream, and the counter of their events."""
 
-    __slots__ = ("_judged", "_slots", "sequence")
+    __slots__ = ("_judged", "_sequence", "_slots")
 
-    def __init__(self, judged: Judged) -> None:
+    def __init__(self, judged: Judged, sequence: Sequence) -> None:
         self._judged = judged
+        self._sequence = sequence
         self._slots: dict[str, Slot] = {}
-        self.sequence = 0
 
     def judge(
         self,
@@ -243,19 +257,35 @@ class StreamAlerts:
         subgroup: Subgroup | None,
         reason: str | None = None,
     ) -> AlertEvent:
-        self.sequence += 1
-        told = events.event(self._judged, slot, kind, self.sequence, time, subgroup, reason)
+        number = self._sequence.next()
+        told = events.event(self._judged, slot, kind, number, time, subgroup, reason)
         slot.text = told["text"]
         return told
 
-    def state(self) -> list[Any]:
-        """The sequence and every slot, as JSON values; detectors by name."""
-        return [self.sequence, {key: slot.state() for key, slot in self._slots.items()}]
+    def reconfigure(self, judged: Judged, time: int) -> list[AlertEvent]:
+        """Another plan is in force: what a detector raised that is no more, or decides otherwise
+        now, is withdrawn."""
+        self._judged = judged
+        judgement = judged.plan.judgement_of(judged.stream)
+        detectors = {} if judgement is None else {d.name: d for d in judgement.detectors}
+        caused = []
+        for key, slot in list(self._slots.items()):
+            detector = detectors.get(slot.detector.name)
+            if detector is not None and detector.revision == slot.detector.revision:
+                slot.detector = detector
+                continue
+            del self._slots[key]
+            if slot.open:
+                caused.append(self._event(slot, "withdrawn", time, None, "configuration"))
+        return caused
 
-    def restore(self, state: Sequence[Any], detectors: Mapping[str, DetectorPlan]) -> None:
+    def state(self) -> dict[str, Any]:
+        """Every slot, as JSON values; detectors by name."""
+        return {key: slot.state() for key, slot in self._slots.items()}
+
+    def restore(self, state: Mapping[str, Any], detectors: Mapping[str, DetectorPlan]) -> None:
         """Take back what ``state`` gave; ``detectors`` are the plan's, by name."""
-        self.sequence, slots = state
-        self._slots = {key: Slot.restored(slot, detectors) for key, slot in slots.items()}
+        self._slots = {key: Slot.restored(slot, detectors) for key, slot in state.items()}
 
 
 def _sign(direction: Direction | None) -> int:

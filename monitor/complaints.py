@@ -23,7 +23,7 @@ from monitor.sections.document import NOT_BUILT_KEYS, NOT_BUILT_VALUES
 from monitor.yamltree import Filled, Node, child_of, scalar
 
 _KEY = "[key]"  # how pydantic marks that the key itself is meant
-_HIDDEN = "password_file"  # someone will write the password itself there
+_HIDDEN = {"password_file", "key"}  # someone will write the secret itself there
 _TYPES = ("int_type", "float_type", "bool_type")
 _ANY = "*"  # stands for every key
 _LONGEST = 60  # characters of a value that an error shows
@@ -48,6 +48,7 @@ _WRONG = {
     "string_too_short": "is empty",
     "string_too_long": "{shown} is longer than {max_length} characters",
     "too_short": "is empty",
+    "too_long": "holds more than {max_length}",
 }
 
 
@@ -185,7 +186,7 @@ def shown(node: Node) -> str:
 
 
 def _subject(node: Node, path: Path) -> str:
-    return "the value" if path[-1:] == (_HIDDEN,) else shown(node)
+    return "the value" if path and path[-1] in _HIDDEN else shown(node)
 
 
 def _unknown_key(trace: _Trace, tree: Node) -> tuple[Complaint, set[str]]:

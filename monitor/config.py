@@ -1,6 +1,6 @@
 """Reads a configuration: files to a tree, the tree to checked sections, or all that is wrong.
 
-Knows files, secrets and what must be true between sections. Must not know what a section holds
+Knows files and what must be true between sections. Must not know what a section holds
 (that is ``sections``) or what the engine makes of it (``resolve``).
 """
 
@@ -10,20 +10,22 @@ from collections.abc import Iterator, Mapping
 from dataclasses import dataclass, field
 from itertools import combinations
 from pathlib import Path
+from typing import TypeVar
 
 from pydantic import ValidationError
 
-from monitor import filters, yamltree
+from monitor import baseline_files, credentials, filters, yamltree
 from monitor.complaints import Complaint, complaints, shown
 from monitor.problems import ConfigurationError, Problem, dotted
 from monitor.problems import Path as KeyPath
-from monitor.sections.document import Document
+from monitor.sections.document import DAEMON, Document, Measured
 from monitor.yamltree import Flaw, Node, UnreadableError
 
-__all__ = ["Config", "ConfigurationError", "load"]
+__all__ = ["Config", "ConfigurationError", "load", "load_measured"]
 
 _PUBLISHED = ("alert/#", "standing/#", "point/#", "health", "setaside", "command/#")
-_MAX_SECRET = 65_535  # bytes; what MQTT can carry
+
+D = TypeVar("D", bound=Measured)
 
 
 @dataclass(frozen=True, slots=True)
@@ -35,37 +37,61 @@ class Config:
     password: str | None = field(default=None, repr=False)
 
 
-def load(path: Path, environ: Mapping[str, str], *, secrets: bool = True) -> Config:
+def load(path: Path, environ: Mapping[str, str]) -> Config:
     """Read one file, or a folder whose ``*.yaml`` merge; ``environ`` fills in ``${NAME}``.
 
-    ``secrets``: whether the password is wanted too; a replay on another machine has none to read.
     Raises ConfigurationError with everything that is wrong.
     """
-    flaws: list[Flaw] = []
-    trees, unreadable = _trees(path, environ, flaws)
-    if not trees:
-        raise ConfigurationError(unreadable or [_nothing(path)])
-    tree = yamltree.merged(trees, flaws)
-    flaws += _blanks(tree)
-    document: Document | None = None
-    found: list[Complaint] = []
-    try:
-        document = Document.model_validate(yamltree.plain(tree))
-    except ValidationError as error:
-        found = complaints(error, Document, tree)
-    folder = path if path.is_dir() else path.parent
-    password, secret = _password(tree, folder) if secrets else (None, [])
-    found += [*_names(tree), *_topics(tree), *secret]
-    silenced = [flaw.path for flaw in flaws if flaw.path is not None]
-    problems = unreadable + [flaw.problem for flaw in flaws]
-    for complaint in found:
-        if unreadable and complaint.absent:
-            continue  # what is missing may stand in the file that cannot be read
-        if not any(complaint.path[: len(flaw)] == flaw for flaw in silenced):
-            problems.append(complaint.problem)
-    if problems or document is None:
-        raise ConfigurationError(problems)
-    return Config(document, folder, password)
+    reading = _Reading(path, environ)
+    password, secret = credentials.password(reading.tree, reading.folder)
+    more = [*secret, *credentials.certificates(reading.tree, reading.folder)]
+    return Config(reading.checked(Document, more), reading.folder, password)
+
+
+def load_measured(path: Path, environ: Mapping[str, str]) -> Measured:
+    """Read only what a replay needs: it has no broker, and no password to read.
+
+    Arguments and errors are those of ``load``.
+    """
+    reading = _Reading(path, environ, leaving=DAEMON)
+    return reading.checked(Measured, [])
+
+
+class _Reading:
+    """A configuration as it was found. Raises ConfigurationError where there is none to judge."""
+
+    def __init__(
+        self, path: Path, environ: Mapping[str, str], *, leaving: frozenset[str] = frozenset()
+    ) -> None:
+        flaws: list[Flaw] = []
+        trees, self._unreadable = _trees(path, environ, flaws)
+        if not trees:
+            raise ConfigurationError(self._unreadable or [_nothing(path)])
+        self.folder = path if path.is_dir() else path.parent
+        whole = yamltree.without(yamltree.merged(trees, flaws), leaving)
+        flaws = [flaw for flaw in flaws if not (flaw.path and flaw.path[0] in leaving)]
+        self._planted = baseline_files.plant(whole, self.folder, environ)
+        self.tree = self._planted.tree
+        self._flaws = [*flaws, *self._planted.flaws, *_blanks(self.tree)]
+
+    def checked(self, model: type[D], found: list[Complaint]) -> D:
+        """The configuration as ``model``, where neither that nor ``found`` leaves a complaint."""
+        document: D | None = None
+        try:
+            document = model.model_validate(yamltree.plain(self.tree))
+        except ValidationError as error:
+            found = [*complaints(error, model, self.tree), *found]
+        found = [*found, *_names(self.tree), *_topics(self.tree), *self._planted.strangers()]
+        silenced = [flaw.path for flaw in self._flaws if flaw.path is not None]
+        problems = self._unreadable + [flaw.problem for flaw in self._flaws]
+        for complaint in found:
+            if self._unreadable and complaint.absent:
+                continue  # what is missing may stand in the file that cannot be read
+            if not any(complaint.path[: len(flaw)] == flaw for flaw in silenced):
+                problems.append(complaint.problem)
+        if problems or document is None:
+            raise ConfigurationError(map(self._planted.placed, problems))
+        return document
 
 
 # ── files ────────────────────────────────────────────────────────────────────────────────────────
@@ -187,29 +213,3 @@ def _topics(tree: Node) -> Iterator[Complaint]:
                 wrong = f"{shown(node)} also matches what we publish under outputs.root"
                 instead = "write a narrower filter, or another outputs.root"
                 yield Complaint(path, Problem(node.file, node.line, dotted(path), wrong, instead))
-
-
-def _password(tree: Node, folder: Path) -> tuple[str | None, list[Complaint]]:
-    path = ("broker", "password_file")
-    node = yamltree.at(tree, path)
-    if node is None or not isinstance(node.value, str):
-        return None, []
-    try:
-        with (folder / node.value).open("rb") as file:
-            secret = file.read(_MAX_SECRET + 2).decode().rstrip("\r\n")
-        wrong = "is empty" if not secret else "is too long" if len(secret) > _MAX_SECRET else ""
-    except OSError as error:
-        wrong = f"cannot be read ({error.strerror})"
-    except ValueError:  # not UTF-8, or a path with a NUL
-        wrong = "is not a file of UTF-8 text"
-    else:
-        if not wrong:
-            return secret, []
-    problem = Problem(
-        node.file,
-        node.line,
-        dotted(path),
-        f"the file {wrong}",  # its name is not shown: someone will write the password here
-        "write the path of a file that holds the password and nothing else",
-    )
-    return None, [Complaint(path, problem)]

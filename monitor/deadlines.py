@@ -13,6 +13,8 @@ from typing import Any
 Owner = tuple[str, tuple[str, ...]]
 """Characteristic and stream values: equal deadlines fire in this order."""
 
+_SPARE = 64
+
 
 class Deadlines:
     """One deadline an owner at most. All instants in microseconds."""
@@ -50,6 +52,8 @@ class Deadlines:
         if queued is None or deadline < queued:
             self._queued[owner] = deadline
             heapq.heappush(self.heap, (deadline, owner))
+            if len(self.heap) > 2 * len(self._due) + _SPARE:
+                self._tidy()
 
     def cancel(self, owner: Owner) -> None:
         """Nothing is due for ``owner``."""
@@ -75,6 +79,13 @@ class Deadlines:
         if not self.heap or self._frozen is not None:
             return None
         return self.heap[0][0] + self._outages
+
+    def _tidy(self) -> None:
+        # Each move to an earlier time leaves a place behind, and while a backlog is read every
+        # deadline moves earlier with every reading.
+        self.heap[:] = [(deadline, owner) for owner, deadline in self._due.items()]
+        heapq.heapify(self.heap)
+        self._queued = dict(self._due)
 
     def state(self) -> dict[str, Any]:
         """All of it, as JSON values."""

@@ -14,6 +14,7 @@ from threading import Thread
 
 _TIMEOUT = 5.0  # seconds for each address a name stands for
 _BACKOFF = (0.05, 0.5, 1.0, 2.0, 5.0, 10.0, 30.0)
+_CONTENDED = 3
 _STEADY = 1.0  # seconds; a connection that held so long was a good one
 
 
@@ -31,6 +32,7 @@ class Dialler:
         self._failures = 0
         self._try_at = -math.inf
         self._held_since = math.inf
+        self._ended_at_once = 0
 
     def delay(self) -> float:
         """Seconds until ``ask`` has something to do, unless ``wake`` is called before."""
@@ -54,6 +56,14 @@ class Dialler:
         self._trying = None
         return trying.result()
 
+    @property
+    def is_contended(self) -> bool:
+        """Whether connections that were good ended at once, several in a row.
+
+        So it looks when two clients share a client id: the broker ends the one for the other.
+        """
+        return self._ended_at_once >= _CONTENDED
+
     def holds(self) -> None:
         """The connection is good for what it was made for."""
         self._held_since = time.monotonic()
@@ -63,7 +73,9 @@ class Dialler:
         now = time.monotonic()
         if now - self._held_since >= _STEADY:
             # Not sooner: two daemons under one client id end each other's connection at once.
-            self._failures = 0
+            self._failures = self._ended_at_once = 0
+        elif self._held_since != math.inf:
+            self._ended_at_once += 1
         self._held_since = math.inf
         delay = _BACKOFF[min(self._failures, len(_BACKOFF) - 1)]
         self._failures += 1

@@ -14,6 +14,7 @@ from monitor import numbers, times
 from monitor.deadlines import Deadlines
 from monitor.decode import MAX_PAYLOAD, judge_sequence, judge_time
 from monitor.entries import (
+    Configured,
     Connected,
     Disconnected,
     Entry,
@@ -21,9 +22,10 @@ from monitor.entries import (
     Parsed,
     Reading,
     Started,
+    Tick,
 )
-from monitor.messages import StandingMessage
-from monitor.outputs import Output, SetAside
+from monitor.messages import AlertEvent, StandingMessage
+from monitor.outputs import Alert, Evidence, Output, SetAside
 from monitor.plan import Plan
 from monitor.routes import Characteristic, Route, Routes
 from monitor.seen import Verdict
@@ -34,6 +36,7 @@ STATE_VERSION = 1
 
 _NOTHING: Sequence[Output] = ()
 _GRACE = times.SECOND
+_UNHEARD = (Started, Disconnected, Tick)  # that they came says nothing of the line
 
 
 class Engine:
@@ -47,24 +50,33 @@ class Engine:
         self.counts = Counts()
         self.touched: dict[StreamState, None] = {}
         """Streams whose standing changed since the caller last cleared it, in order."""
+        self.changed: dict[StreamState, None] = {}
+        """Streams that remember something else since the caller last cleared it."""
         self.lag: int | None = None
         """Microseconds from the latest reading's own time to its arrival."""
+        self.plan = plan
+        self.sessions_lost = 0
         self._points = points
         self._characteristics = {c.name: Characteristic(c) for c in plan.characteristics}
         self._routes = Routes(self._characteristics.values())
         self._deadlines = Deadlines()
         self._arrival = 0
+        self._heard = 0
         self._blind: tuple[int, str] | None = None
         self._watching_since = 0
+        self._had_session = False
 
     def fold(self, entry: Entry) -> Sequence[Output]:
         """Take one entry; what it caused, in order."""
-        last, time = self._arrival, entry.time
-        if time > last:
+        time = entry.time
+        if time > self._arrival:
             self._arrival = time
-        if isinstance(entry, Started | Disconnected):
-            self._blinded(last, entry)
+        if isinstance(entry, _UNHEARD):
+            if isinstance(entry, Tick):
+                return self._close_due()
+            self._blinded(entry)
             return _NOTHING
+        self._heard = self._arrival
         due = self._close_due() if self._deadlines.heap else _NOTHING
         outputs = _NOTHING
         if isinstance(entry, Parsed):
@@ -74,7 +86,9 @@ class Engine:
         elif isinstance(entry, Reading):
             outputs = self._row(entry, time)
         elif isinstance(entry, Connected):
-            self._watch()
+            outputs = self._watch(entry.session_present)
+        elif isinstance(entry, Configured):
+            outputs = self._configure(entry.plan)
         return (*due, *outputs) if due else outputs
 
     def next_deadline(self) -> int | None:
@@ -87,7 +101,7 @@ class Engine:
 
     def mark(self, state: StreamState) -> object:
         """What of a standing deserves to be said at once when it differs."""
-        return state.alerts and state.alerts.sequence, self._blind
+        return state.sequence.value, self._blind, state.judgement
 
     def standing(self, state: StreamState) -> StandingMessage:
         """How a stream stands now."""
@@ -101,12 +115,16 @@ class Engine:
         return {
             "version": STATE_VERSION,
             "arrival": self._arrival,
+            "heard": self._heard,
             "blind": self._blind,
             "watching_since": self._watching_since,
             "lag": self.lag,
             "counts": asdict(self.counts),
             "deadlines": self._deadlines.state(),
             "counters": self._routes.state(),
+            "had_session": self._had_session,
+            "sessions_lost": self.sessions_lost,
+            "gauges": {c.plan.name: c.gauge.state() for c in self._characteristics.values()},
         }
 
     def restore(self, state: dict[str, Any], streams: Iterable[dict[str, Any]]) -> None:
@@ -114,15 +132,18 @@ class Engine:
 
         ValueError where they were given by another version.
         """
-        if state["version"] != STATE_VERSION:
-            raise ValueError(f"state of version {state['version']}, not {STATE_VERSION}")
-        self._arrival = state["arrival"]
+        if state.get("version") != STATE_VERSION:
+            raise ValueError(f"state of version {state.get('version')}, not {STATE_VERSION}")
+        self._arrival, self._heard = state["arrival"], state["heard"]
         self._blind = None if state["blind"] is None else tuple(state["blind"])
         self._watching_since = state["watching_since"]
         self.lag = state["lag"]
         self.counts = Counts(**state["counts"])
         self._deadlines.restore(state["deadlines"])
         self._routes.restore(state["counters"])
+        self._had_session, self.sessions_lost = state["had_session"], state["sessions_lost"]
+        for name, remembered in state["gauges"].items():
+            self._characteristics[name].gauge.restore(remembered)
         for each in streams:
             characteristic = self._characteristics[each["characteristic"]]
             keys = tuple(each["stream"][key] for key in characteristic.decoder.keys)
@@ -130,16 +151,59 @@ class Engine:
 
     # Time
 
-    def _watch(self) -> None:
+    def _watch(self, session_present: bool) -> list[Output]:
         self._deadlines.resume(self._arrival)
         self._blind = None
         self._watching_since = self._arrival
         self._touch_all()
+        lost, self._had_session = self._had_session and not session_present, True
+        if not lost:
+            return []
+        self.sessions_lost += 1
+        return [
+            self._told(c, event)
+            for c in self._characteristics.values()
+            for event in c.gauge.met("session-lost", self._arrival)
+        ]
 
-    def _blinded(self, last: int, entry: Started | Disconnected) -> None:
+    def _told(self, characteristic: Characteristic, event: AlertEvent) -> Alert:
+        self.counts.alerts += 1
+        return Alert(characteristic.plan, (), event, Evidence((), ()))
+
+    def _configure(self, plan: Plan) -> list[Output]:
+        """Another plan is in force: streams that go on being judged alike go on."""
+        if plan == self.plan:
+            return []
+        self.plan = plan
+        time, counts = self._arrival, self.counts
+        before, self._characteristics = self._characteristics, {}
+        outputs: list[Output] = []
+        for each in plan.characteristics:
+            old, new = before.get(each.name), Characteristic(each)
+            if old is not None and old.decoder.keys == new.decoder.keys:
+                del before[each.name]
+                new.adopt(old)
+                for state in new.streams.values():
+                    outputs += state.reconfigure(each, time, counts)
+                    if state.gatherer.closes() is None:
+                        self._deadlines.cancel((each.name, state.keys))
+            self._characteristics[each.name] = new
+        for old in before.values():
+            for state in old.streams.values():
+                outputs += state.leave(time, counts)
+                self._deadlines.cancel((old.plan.name, state.keys))
+                self.touched.pop(state, None)
+                self.changed.pop(state, None)
+        self._routes = Routes(self._characteristics.values(), self._routes)
+        self._touch_all()
+        self.changed.update(self.touched)
+        return outputs
+
+    def _blinded(self, entry: Started | Disconnected) -> None:
         starting = isinstance(entry, Started)
         why = "starting" if starting else "disconnected from the broker"
-        self._deadlines.freeze(last)
+        # From the last we heard, not from a tick: whether one came to pass must change nothing.
+        self._deadlines.freeze(self._heard)
         self._blind = (self._arrival, why)
         self._touch_all()
 
@@ -152,7 +216,7 @@ class Engine:
             name, keys = owner
             state = self._characteristics[name].streams[keys]
             outputs += state.close(self.counts, self._points)
-            self.touched[state] = None
+            self.touched[state] = self.changed[state] = None
         return outputs
 
     # Readings in
@@ -231,6 +295,7 @@ class Engine:
         if verdict is Verdict.REPEATED or verdict is Verdict.LATE:
             return str(verdict.value)
         counts.readings += 1
+        self.changed[state] = None
         outputs = _NOTHING
         if verdict is Verdict.RESTART:
             outputs = state.gauge_restarted(moment, counts)
@@ -248,18 +313,21 @@ class Engine:
             judged = state.judge(subgroup, counts, self._points)
             outputs = (*outputs, *judged) if outputs else judged
             self.touched[state] = None
+            if route.characteristic.gauge.is_open:
+                ended = route.characteristic.gauge.ended(arrival)
+                outputs = (*outputs, *(self._told(route.characteristic, e) for e in ended))
         if state.windowed:
-            self._await_close(state, moment, arrival)
+            self._await_close(state, moment)
         return outputs
 
-    def _await_close(self, state: StreamState, moment: int, arrival: int) -> None:
+    def _await_close(self, state: StreamState, moment: int) -> None:
         closes = state.gatherer.closes()
         if closes is not None:
             # The gauge's clock need not be ours: what is left of the window by its clock, and a
             # moment for what is still on its way.
             left = closes - moment + _GRACE
             owner = (state.plan.name, state.keys)
-            self._deadlines.set(owner, self._deadlines.watched(max(arrival, self._arrival)) + left)
+            self._deadlines.set(owner, self._deadlines.watched(self._arrival) + left)
 
     def _set_aside(
         self, reason: str, characteristic: str | None, time: int, topic: str, payload: bytes

@@ -9,13 +9,16 @@ from __future__ import annotations
 from collections.abc import Mapping
 from dataclasses import dataclass
 
+from monitor.plan import Plan
+
 
 @dataclass(slots=True)
 class Message:
     """One MQTT message; ``time`` is its arrival, microseconds since 1970-01-01T00:00Z.
 
     Never changed once it is made. Not declared so, since one is made for every reading and a frozen
-    one takes four times as long to make.
+    one takes four times as long to make. ``packet`` is the broker's identifier, by which a message
+    sent again is recognised; it moves nothing in the engine.
     """
 
     time: int
@@ -23,6 +26,7 @@ class Message:
     payload: bytes
     retain: bool = False
     qos: int = 1
+    packet: int = 0
 
 
 @dataclass(slots=True)
@@ -83,7 +87,15 @@ class Tick:
     time: int
 
 
-Recorded = Message | Started | Connected | Disconnected | Tick
+@dataclass(frozen=True, slots=True)
+class Configured:
+    """From here on ``plan`` is in force."""
+
+    time: int
+    plan: Plan
+
+
+Recorded = Message | Started | Connected | Disconnected | Tick | Configured
 """What a journal holds; a table's ``Reading`` was never a message."""
 
 Entry = Recorded | Parsed | Reading

@@ -31,6 +31,8 @@ class Health:
         self.online = False
         self.since: int | None = None
         self.last_error: str | None = None
+        self.frozen: str | None = None
+        """Why nothing can be acknowledged."""
         self.unsafe = 0
         self.dropped_points = 0
         self._due = 0
@@ -67,7 +69,7 @@ class Health:
             ),
             lag=None if lag is None else lag / times.SECOND,
             waiting=waiting,
-            last_error=self.last_error,
+            last_error=self.frozen or self.last_error,
             qos_0=self.unsafe,
             points_dropped=self.dropped_points,
         )

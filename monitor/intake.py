@@ -9,6 +9,7 @@ import math
 from collections.abc import Callable
 
 from monitor.entries import Message, Recorded
+from monitor.resends import Resends
 from monitor.times import SECOND
 
 NANOSECONDS = 1_000
@@ -43,22 +44,29 @@ class Arrival:
 class Intake:
     """Entries in order, and the acknowledgements that their commit will allow."""
 
-    __slots__ = ("_acknowledge", "_bytes", "_entries", "_now", "unsafe")
+    __slots__ = ("_acknowledge", "_bytes", "_came", "_entries", "_now", "_resends", "unsafe")
 
-    def __init__(self, now: Callable[[], int]) -> None:
+    def __init__(self, now: Callable[[], int], resends: Resends) -> None:
         self._now = now
+        self._resends = resends
         self._entries: list[Recorded] = []
         self._acknowledge: list[int] = []
+        self._came: list[tuple[Message, bool]] = []
         self._bytes = 0
         self.unsafe = 0
         """Messages that came at QoS 0: no broker keeps those for us."""
 
-    def message(self, topic: str, payload: bytes, retain: bool, qos: int, packet: int) -> None:
+    def message(
+        self, topic: str, payload: bytes, retain: bool, qos: int, packet: int, dup: bool
+    ) -> None:
         """A message arrived; ``packet`` is its identifier where it wants an acknowledgement."""
-        self._entries.append(Message(self._now(), topic, payload, retain, qos))
+        message = Message(self._now(), topic, payload, retain, qos, packet)
+        self._entries.append(message)
         self._bytes += len(payload)
         if qos:
             self._acknowledge.append(packet)
+            if self._resends.matching:
+                self._came.append((message, dup))
         elif not retain:
             self.unsafe += 1
 
@@ -71,12 +79,19 @@ class Intake:
         return len(self._entries) >= _MOST or self._bytes >= _MOST_BYTES
 
     def take(self) -> tuple[list[Recorded], list[int]]:
-        """The batch and its acknowledgements; both start again empty."""
-        taken = self._entries, self._acknowledge
-        self._entries, self._acknowledge, self._bytes = [], [], 0
-        return taken
+        """The batch and its acknowledgements; both start again empty.
+
+        What was journaled before is only acknowledged.
+        """
+        entries, acknowledge, came = self._entries, self._acknowledge, self._came
+        self._entries, self._acknowledge, self._came, self._bytes = [], [], [], 0
+        if came:
+            again = {id(message) for message, _ in came[: self._resends.again(came)]}
+            entries = [each for each in entries if id(each) not in again]
+        return entries, acknowledge
 
     def connection_lost(self) -> None:
         """A batch dies with its connection: the broker sends again what it has no word about."""
         self._acknowledge.clear()
+        self._came.clear()
         self._entries = [e for e in self._entries if not (isinstance(e, Message) and e.qos)]

@@ -1,6 +1,6 @@
-"""The journal: the daemon's durable, ordered log of entries, and alerts that wait for the broker.
+"""The journal: the daemon's durable, ordered log of entries, its alerts, and what it remembered.
 
-Knows SQLite and the entries' types. Must not know what entries mean or how alerts are decided.
+Knows SQLite. Must not know what entries mean, how alerts are decided or when to forget.
 """
 
 from __future__ import annotations
@@ -8,55 +8,126 @@ from __future__ import annotations
 import fcntl
 import os
 import sqlite3
-from collections.abc import Iterable, Iterator, Sequence
+from collections.abc import Iterator, Sequence
+from dataclasses import dataclass, field
 from pathlib import Path
+from typing import NamedTuple
 
-from monitor.entries import Connected, Disconnected, Message, Recorded, Started, Tick
+from monitor import rows
+from monitor.entries import Recorded
 
-SCHEMA = 1
+SCHEMA = 2
 
-_TABLES = """
+_FIRST = """
 CREATE TABLE meta (name TEXT PRIMARY KEY, value TEXT NOT NULL) WITHOUT ROWID;
 CREATE TABLE topics (id INTEGER PRIMARY KEY, topic TEXT NOT NULL UNIQUE);
 CREATE TABLE entries (
     position INTEGER PRIMARY KEY,
     time INTEGER NOT NULL,   -- arrival, microseconds since 1970
-    kind INTEGER NOT NULL,   -- 0 message, 1 started, 2 connected, 3 disconnected, 4 tick
+    kind INTEGER NOT NULL,   -- see rows.py
     topic INTEGER,
     payload BLOB,
-    flags INTEGER            -- message: QoS, plus 4 where retained; connected: session present
+    flags INTEGER
 );
 CREATE TABLE outbox (position INTEGER PRIMARY KEY, topic TEXT NOT NULL, payload BLOB NOT NULL);
 """
 
-_MESSAGE, _STARTED, _CONNECTED, _DISCONNECTED, _TICK = range(5)
-_RETAINED = 4
+_MIGRATIONS = {
+    0: _FIRST,
+    1: """
+CREATE TABLE alerts (
+    position INTEGER PRIMARY KEY,
+    at INTEGER NOT NULL,     -- position of the entry that caused it
+    time INTEGER NOT NULL,   -- arrival of that entry
+    id TEXT NOT NULL,
+    event BLOB NOT NULL,
+    evidence BLOB NOT NULL
+);
+CREATE INDEX alerts_by_id ON alerts (id);
+CREATE TABLE state (owner TEXT PRIMARY KEY, value BLOB NOT NULL) WITHOUT ROWID;
+CREATE TABLE bases (
+    position INTEGER NOT NULL,
+    owner TEXT NOT NULL,
+    value BLOB NOT NULL,
+    PRIMARY KEY (position, owner)
+) WITHOUT ROWID;
+""",
+}
+"""From each schema to the next; each runs in one transaction, on an existing file too."""
 
+NEWEST = 2**62
+"""After every position."""
+
+_MOST_UNPROVEN = 70_000  # a little more than packet identifiers can be outstanding
 _MOST_TOPICS = 20_000  # remembered; whoever may publish may invent topics
-
-_Row = tuple[int, int, int | None, bytes | None, int]
 
 
 class JournalError(Exception):
     """The journal cannot be used; the text says which file and what to do."""
 
 
-class Journal:
-    """The journal of one daemon, which holds it alone.
+class AlertRow(NamedTuple):
+    """An alert to be published, and what it was decided on."""
 
-    One transaction a batch: entries and the alerts they caused become durable together, or not at
-    all.
+    topic: str
+    id: str
+    event: bytes
+    evidence: bytes
+    entry: int
+    """Index of its cause among the batch's entries."""
+
+
+class Snapshot(NamedTuple):
+    """What was remembered after an entry, by owner."""
+
+    position: int
+    values: dict[str, bytes]
+
+
+class Pruning(NamedTuple):
+    """Up to which positions entries and alerts may go, ``few`` rows of each at once."""
+
+    entries_to: int
+    alerts_to: int
+    few: int
+
+
+@dataclass(slots=True)
+class Batch:
+    """What becomes durable together, or not at all. ``clears`` are topics whose retained message is
+    to go; they leave through the outbox as alerts do, with nothing in them.
+
+    ``remembered`` goes with all ``entries`` folded; ``base`` keeps a copy of it to fold again from.
     """
 
+    entries: Sequence[Recorded]
+    alerts: Sequence[AlertRow] = ()
+    remembered: dict[str, bytes] = field(default_factory=dict)
+    forgotten: Sequence[str] = ()
+    base: bool = False
+    proven: int | None = None
+    pruning: Pruning | None = None
+    clears: Sequence[str] = ()
+
+
+class Journal:
+    """The journal of one daemon, which holds it alone; one transaction a batch."""
+
     def __init__(self, path: Path) -> None:
+        self.path = path
         self._gone: list[int] = []
         self._topics: dict[str, int] = {}
         self._lock = _locked(path)
         try:
-            self._db = sqlite3.connect(path, isolation_level=None)
-            _prepare(self._db, path)
-            self._outbox = _single(self._db, "SELECT coalesce(max(position), 0) FROM outbox")
-            self.last_time = _single(self._db, "SELECT coalesce(max(time), 0) FROM entries")
+            self.db = sqlite3.connect(path, isolation_level=None)
+            _prepare(self.db, path)
+            self._outbox = max(
+                _single(self.db, f"SELECT coalesce(max(position), 0) FROM {table}")
+                for table in ("outbox", "alerts")
+            )
+            self.position = _single(self.db, "SELECT coalesce(max(position), 0) FROM entries")
+            self.position = max(self.position, meta(self.db, "snapshot"))
+            self.oldest = _single(self.db, "SELECT coalesce(min(position), 0) FROM entries")
         except sqlite3.Error as error:
             os.close(self._lock)
             raise JournalError(f"cannot use the journal {path}: {error}") from error
@@ -69,31 +140,50 @@ class Journal:
         """Whether an alert was delivered that a crash would make us send again."""
         return bool(self._gone)
 
-    def commit(self, entries: Sequence[Recorded], alerts: Sequence[tuple[str, bytes]]) -> list[int]:
-        """Make entries and (topic, payload) alerts durable; the alerts' places in the outbox.
+    @property
+    def last_time(self) -> int:
+        """The arrival of the newest entry; 0 where there is none."""
+        last = "SELECT time FROM entries ORDER BY position DESC LIMIT 1"
+        return _single(self.db, f"SELECT coalesce(({last}), 0)")
 
-        Raises sqlite3.Error where the disk will not take them; then nothing was written.
+    def commit(self, batch: Batch) -> list[int]:
+        """Make a batch durable; the alerts' places in the outbox.
+
+        Raises sqlite3.Error where the disk will not take it; then nothing was written.
         """
-        db = self._db
+        db, first = self.db, self.position + 1
+        last = self.position + len(batch.entries)
+        oldest = self.oldest
+        leaving = len(batch.alerts) + len(batch.clears)
+        places = list(range(self._outbox + 1, self._outbox + 1 + leaving))
         db.execute("BEGIN IMMEDIATE")
         try:
             db.executemany(
-                "INSERT INTO entries (time, kind, topic, payload, flags) VALUES (?, ?, ?, ?, ?)",
-                self._rows(entries),
+                "INSERT INTO entries (position, time, kind, topic, payload, flags)"
+                " VALUES (?, ?, ?, ?, ?, ?)",
+                [(n, *row) for n, row in enumerate(rows.rows(batch.entries, self._number), first)],
             )
-            places = list(range(self._outbox + 1, self._outbox + 1 + len(alerts)))
+            for place, alert in zip(places, batch.alerts, strict=False):
+                self._write_alert(place, alert, first, batch.entries)
             db.executemany(
-                "INSERT INTO outbox (position, topic, payload) VALUES (?, ?, ?)",
-                [(place, *alert) for place, alert in zip(places, alerts, strict=True)],
+                "INSERT INTO outbox (position, topic, payload) VALUES (?, ?, x'')",
+                zip(places[len(batch.alerts) :], batch.clears, strict=True),
             )
             db.executemany("DELETE FROM outbox WHERE position = ?", [(n,) for n in self._gone])
+            if batch.remembered:
+                self._remember(batch, last)
+            if batch.proven is not None:
+                set_meta(db, "proven", batch.proven)
+            if batch.pruning is not None:
+                oldest = self._prune(batch.pruning)
             db.execute("COMMIT")
         except BaseException:
             self._topics.clear()  # some are not in the file
             if db.in_transaction:
                 db.execute("ROLLBACK")
             raise
-        self._outbox += len(alerts)
+        self.position, self.oldest = last, oldest
+        self._outbox += leaving
         self._gone.clear()
         return places
 
@@ -102,46 +192,91 @@ class Journal:
         self._gone.append(place)
 
     def waiting(self) -> list[tuple[int, str, bytes]]:
-        """(place, topic, payload) of the alerts that no broker has acknowledged, oldest first."""
-        return self._db.execute(
+        """(place, topic, event) of the alerts that no broker has acknowledged, oldest first."""
+        return self.db.execute(
             "SELECT position, topic, payload FROM outbox ORDER BY position"
         ).fetchall()
 
-    def entries(self) -> Iterator[Recorded]:
-        """All entries, oldest first."""
-        return read_entries(self._db)
+    def unproven(self) -> Iterator[tuple[int, Recorded]]:
+        """(position, entry) after the last that the broker is known to have our word for."""
+        proven = max(meta(self.db, "proven"), self.position - _MOST_UNPROVEN)
+        return numbered_entries(self.db, after=proven)
 
     def close(self) -> None:
         """Let go of the file, once what the broker acknowledged is noted."""
         if self._gone:
-            self.commit((), ())
-        self._db.close()
+            self.commit(Batch(()))
+        self.db.close()
         os.close(self._lock)
 
-    def _rows(self, entries: Iterable[Recorded]) -> Iterator[_Row]:
-        topics = self._topics
-        for entry in entries:
-            match entry:
-                case Message(time, topic, payload, retain, qos):
-                    number = topics.get(topic)
-                    if number is None:
-                        number = self._topic(topic)
-                    yield time, _MESSAGE, number, payload, qos | (_RETAINED if retain else 0)
-                case Started(time):
-                    yield time, _STARTED, None, None, 0
-                case Connected(time, session_present):
-                    yield time, _CONNECTED, None, None, int(session_present)
-                case Disconnected(time):
-                    yield time, _DISCONNECTED, None, None, 0
-                case Tick(time):
-                    yield time, _TICK, None, None, 0
+    def _write_alert(
+        self, place: int, alert: AlertRow, first: int, entries: Sequence[Recorded]
+    ) -> None:
+        self.db.execute(
+            "INSERT INTO outbox (position, topic, payload) VALUES (?, ?, ?)",
+            (place, alert.topic, alert.event),
+        )
+        self.db.execute(
+            "INSERT INTO alerts (position, at, time, id, event, evidence)"
+            " VALUES (?, ?, ?, ?, ?, ?)",
+            (
+                place,
+                first + alert.entry,
+                entries[alert.entry].time,
+                alert.id,
+                alert.event,
+                alert.evidence,
+            ),
+        )
 
-    def _topic(self, topic: str) -> int:
-        self._db.execute("INSERT OR IGNORE INTO topics (topic) VALUES (?)", (topic,))
-        number = _single(self._db, "SELECT id FROM topics WHERE topic = ?", topic)
-        if len(self._topics) >= _MOST_TOPICS:
-            self._topics.clear()
-        self._topics[topic] = number
+    def _remember(self, batch: Batch, position: int) -> None:
+        db = self.db
+        db.executemany(
+            "INSERT OR REPLACE INTO state (owner, value) VALUES (?, ?)", batch.remembered.items()
+        )
+        db.executemany("DELETE FROM state WHERE owner = ?", [(name,) for name in batch.forgotten])
+        set_meta(db, "snapshot", position)
+        if batch.base:
+            db.execute("INSERT INTO bases SELECT ?, owner, value FROM state", (position,))
+
+    def owners(self) -> set[str]:
+        """Whose memory the newest snapshot holds."""
+        return {owner for (owner,) in self.db.execute("SELECT owner FROM state")}
+
+    def used_bytes(self) -> int:
+        """How much of the file is in use."""
+        pages = _single(self.db, "PRAGMA page_count") - _single(self.db, "PRAGMA freelist_count")
+        return pages * _single(self.db, "PRAGMA page_size")
+
+    def _prune(self, pruning: Pruning) -> int:
+        """Drop a few old rows; the position of the oldest entry left."""
+        db, oldest = self.db, self.oldest
+        # The base's own entry stays: it tells the base's age.
+        until = min(oldest + pruning.few - 1, pruning.entries_to - 1)
+        if until >= oldest:
+            db.execute("DELETE FROM entries WHERE position <= ?", (until,))
+            oldest = until + 1
+            db.execute(
+                "DELETE FROM bases WHERE (position, owner) IN"
+                " (SELECT position, owner FROM bases WHERE position < ? LIMIT ?)",
+                (pruning.entries_to, pruning.few),
+            )
+        if pruning.alerts_to:
+            db.execute(
+                "DELETE FROM alerts WHERE position IN"
+                " (SELECT position FROM alerts WHERE position <= ? ORDER BY position LIMIT ?)",
+                (pruning.alerts_to, pruning.few),
+            )
+        return oldest
+
+    def _number(self, topic: str) -> int:
+        number = self._topics.get(topic)
+        if number is None:
+            self.db.execute("INSERT OR IGNORE INTO topics (topic) VALUES (?)", (topic,))
+            number = _single(self.db, "SELECT id FROM topics WHERE topic = ?", topic)
+            if len(self._topics) >= _MOST_TOPICS:
+                self._topics.clear()
+            self._topics[topic] = number
         return number
 
 
@@ -152,29 +287,73 @@ def open_reader(path: Path) -> sqlite3.Connection:
     try:
         uri = f"{path.absolute().as_uri()}?mode=ro"
         db = sqlite3.connect(uri, uri=True, isolation_level=None)
-        _check_schema(db, path)
+        found = _schema(db)
     except sqlite3.Error as error:
         raise JournalError(f"cannot read the journal {path}: {error}") from error
+    if found != SCHEMA:
+        raise JournalError(_other_version(path))
     return db
 
 
-def read_entries(db: sqlite3.Connection) -> Iterator[Recorded]:
-    """All entries of an open journal, oldest first."""
+def snapshot(db: sqlite3.Connection) -> Snapshot:
+    """The newest snapshot; position 0 and nothing where there is none."""
+    values = dict(db.execute("SELECT owner, value FROM state"))
+    return Snapshot(meta(db, "snapshot") if values else 0, values)
+
+
+def base(db: sqlite3.Connection, at: int) -> Snapshot:
+    """The newest base not after a position; position 0 and nothing where there is none."""
+    query = "SELECT coalesce(max(position), 0) FROM bases WHERE position <= ?"
+    position = _single(db, query, at)
+    found = db.execute("SELECT owner, value FROM bases WHERE position = ?", (position,))
+    return Snapshot(position, dict(found))
+
+
+def bases_between(db: sqlite3.Connection, time: int) -> tuple[int, int]:
+    """(position of the newest base that old or older, time of the newest base); 0 for none."""
+    found = db.execute(
+        "SELECT b.position, e.time FROM (SELECT DISTINCT position FROM bases) b"
+        " JOIN entries e ON e.position = b.position ORDER BY b.position"
+    ).fetchall()
+    old = [position for position, at in found if at <= time]
+    return (old[-1] if old else 0), (found[-1][1] if found else 0)
+
+
+def base_after(db: sqlite3.Connection, position: int) -> int:
+    """The first base after a position; 0 for none."""
+    query = "SELECT coalesce(min(position), 0) FROM bases WHERE position > ?"
+    return _single(db, query, position)
+
+
+def alerts_before(db: sqlite3.Connection, time: int) -> int:
+    """The position of the last alert older than a time; 0 for none."""
+    return _single(db, "SELECT coalesce(max(position), 0) FROM alerts WHERE time < ?", time)
+
+
+def read_entries(db: sqlite3.Connection, after: int = 0) -> Iterator[Recorded]:
+    """The entries of an open journal after a position, oldest first."""
+    return (each for _, each in numbered_entries(db, after))
+
+
+def numbered_entries(db: sqlite3.Connection, after: int = 0) -> Iterator[tuple[int, Recorded]]:
+    """The same with their positions."""
     cursor = db.execute(
-        "SELECT e.time, e.kind, t.topic, e.payload, e.flags FROM entries e"
-        " LEFT JOIN topics t ON t.id = e.topic ORDER BY e.position"
+        "SELECT e.position, e.time, e.kind, t.topic, e.payload, e.flags FROM entries e"
+        " LEFT JOIN topics t ON t.id = e.topic WHERE e.position > ? ORDER BY e.position",
+        (after,),
     )
-    for time, kind, topic, payload, flags in cursor:
-        if kind == _MESSAGE:
-            yield Message(time, topic, payload, flags >= _RETAINED, flags % _RETAINED)
-        elif kind == _STARTED:
-            yield Started(time)
-        elif kind == _CONNECTED:
-            yield Connected(time, bool(flags))
-        elif kind == _DISCONNECTED:
-            yield Disconnected(time)
-        else:
-            yield Tick(time)
+    for position, *row in cursor:
+        yield position, rows.entry(*row)
+
+
+def meta(db: sqlite3.Connection, name: str) -> int:
+    """A number that is noted under ``name``; 0 where none is."""
+    return _single(db, "SELECT coalesce((SELECT value FROM meta WHERE name = ?), 0)", name)
+
+
+def set_meta(db: sqlite3.Connection, name: str, value: int) -> None:
+    """Note a number under ``name``."""
+    db.execute("INSERT OR REPLACE INTO meta (name, value) VALUES (?, ?)", (name, str(value)))
 
 
 def _locked(path: Path) -> int:
@@ -201,20 +380,31 @@ def _locked(path: Path) -> int:
 def _prepare(db: sqlite3.Connection, path: Path) -> None:
     db.execute("PRAGMA journal_mode = WAL")
     db.execute("PRAGMA synchronous = FULL")
-    if _single(db, "SELECT count(*) FROM sqlite_master") == 0:
-        db.executescript(f"BEGIN;{_TABLES}INSERT INTO meta VALUES ('schema', '{SCHEMA}');COMMIT;")
-    _check_schema(db, path)
-
-
-def _check_schema(db: sqlite3.Connection, path: Path) -> None:
-    found = db.execute("SELECT value FROM meta WHERE name = 'schema'").fetchone()
-    if found is None or found[0] != str(SCHEMA):
-        raise JournalError(
-            f"the journal {path} was written by another version: "
-            "use that version, or give this one a new file"
+    found = _schema(db)
+    if found is None or found > SCHEMA:
+        raise JournalError(_other_version(path))
+    for step in range(found, SCHEMA):
+        db.executescript(
+            f"BEGIN;{_MIGRATIONS[step]}"
+            f"INSERT OR REPLACE INTO meta VALUES ('schema', '{step + 1}');COMMIT;"
         )
 
 
+def _schema(db: sqlite3.Connection) -> int | None:
+    """The schema's number, 0 for an empty file, None where it is not ours."""
+    if _single(db, "SELECT count(*) FROM sqlite_master") == 0:
+        return 0
+    if _single(db, "SELECT count(*) FROM sqlite_master WHERE name = 'meta'") == 0:
+        return None
+    return meta(db, "schema") or None
+
+
+def _other_version(path: Path) -> str:
+    return (
+        f"the journal {path} was written by another version: "
+        "use that version, or give this one a new file"
+    )
+
+
 def _single(db: sqlite3.Connection, query: str, *values: object) -> int:
-    result: int = db.execute(query, values).fetchone()[0]
-    return result
+    return int(db.execute(query, values).fetchone()[0])

@@ -12,6 +12,7 @@ from typing import Any, NamedTuple
 import numpy as np
 
 from monitor.methods.onset import LOOK_BACK, estimate
+from monitor.outputs import Evidence
 from monitor.plan import Direction
 
 _CLIP = 6.0
@@ -59,6 +60,13 @@ class LookBack:
     def forget(self, direction: Direction) -> None:
         """A shift that way is over, and must not pass for the onset of the next."""
         self._from[direction] = self._count
+
+    def evidence(self) -> Evidence:
+        """All of it, the newest last."""
+        at = self._count % LOOK_BACK if len(self._values) == LOOK_BACK else 0
+        return Evidence(
+            tuple(self._first[at:] + self._first[:at]), tuple(self._values[at:] + self._values[:at])
+        )
 
     def state(self) -> list[Any]:
         """What is remembered, as JSON values."""

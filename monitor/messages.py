@@ -103,6 +103,7 @@ RuleName = Annotated[
             "cusum-lower": "the sum of what lies below the baseline is beyond its limit",
             "ewma-upper": "the exponentially weighted average is above its upper limit",
             "ewma-lower": "the exponentially weighted average is below its lower limit",
+            "session-lost": "the broker forgot what it kept for us while we were away",
             "trend-up": "many points in a row steadily rising",
             "trend-down": "many points in a row steadily falling",
             "alternation": "many points in a row going up and down by turns",
@@ -246,7 +247,9 @@ class AlertEvent(TypedDict):
     """When it was sent to the broker, which only the sender knows: every published event has it; a
     line of the file that `driftbell-replay play --alerts` writes has not."""
     detector: DetectorName
-    chart: ChartName
+    """`gauge` where the gauge or the way of its readings is at fault, not the process."""
+    chart: ChartName | None
+    """Null where the gauge is at fault."""
     rule: RuleName
     """The rule that raised the alert; ``signals`` has all of them."""
     direction: Direction | None
@@ -255,8 +258,8 @@ class AlertEvent(TypedDict):
     """As declared for this direction."""
     text: str
     """A sentence for people: what changed, how much, since when, and by which figures."""
-    statistic: StatisticField
-    """As it was when a rule was last met."""
+    statistic: StatisticField | None
+    """As it was when a rule was last met; null where the gauge is at fault."""
     signals: list[SignalField]
     """The rules met since the alert was raised, in the order they were first met."""
     subgroup: SubgroupField | None
@@ -265,14 +268,15 @@ class AlertEvent(TypedDict):
     """Null where ``direction`` is."""
     specification: SpecificationField | None
     """Null where none is declared."""
-    baseline: BaselineField
+    baseline: BaselineField | None
+    """Null where the gauge is at fault."""
     reaction: list[str]
     """What to do, step by step, as declared for this direction."""
     caution: str
     """To be shown wherever ``reaction`` is."""
-    reason: Annotated[str, Keywords(enum=["gauge-restart"])] | None
+    reason: Annotated[str, Keywords(enum=["gauge-restart", "configuration"])] | None
     """Why it was withdrawn, else null. `gauge-restart`: the gauge's counter began again, and what
-    it sends does not continue what it sent."""
+    it sends does not continue what it sent. `configuration`: what it was judged by has changed."""
 
 
 class RowField(TypedDict):

@@ -29,7 +29,9 @@ _DISCONNECT = b"\xe0\x00"
 class Receiver(Protocol):
     """Who is told what the broker says."""
 
-    def message(self, topic: str, payload: bytes, retain: bool, qos: int, packet: int) -> None:
+    def message(
+        self, topic: str, payload: bytes, retain: bool, qos: int, packet: int, dup: bool
+    ) -> None:
         """A message came."""
 
     def subscribed(self, session_present: bool) -> None:
@@ -125,6 +127,7 @@ class Link:
         connection: socket.socket,
         broker: BrokerPlan,
         filters: Iterable[str],
+        stale: Iterable[str],
         will: tuple[str, bytes],
         receiver: Receiver,
     ) -> None:
@@ -133,7 +136,11 @@ class Link:
         """Whether the broker has agreed to our CONNECT."""
         self.waiting = 0
         """Publications that the broker has not taken over yet."""
+        self.last_packet = 0
+        """Of the latest publication; 0 where there was none."""
         self._filters = list(filters)
+        self._stale = list(stale)
+        self._announced = False
         self._receiver = receiver
         self._session_present = False
         self._answer_by = time.monotonic() + _ANSWER
@@ -190,10 +197,19 @@ class Link:
         """
         self._corked.send(b"".join([_PUBACK.pack(0x40, 2, packet) for packet in packets]))
 
+    def subscribe(self, filters: Iterable[str], stale: Iterable[str]) -> None:
+        """Ask for these filters, and for the stale ones no more: a session outlives both."""
+        self._filters, stale = list(filters), list(stale)
+        if self.accepted:
+            self._client.subscribe([(topic, 1) for topic in self._filters])
+            if stale:
+                self._client.unsubscribe(stale)
+
     def publish(self, topic: str, payload: bytes, *, retain: bool = False) -> int:
         """Queue a message at QoS 1; the packet identifier that ``taken`` will name."""
         self.waiting += 1
-        return self._client.publish(topic, payload, qos=1, retain=retain).mid
+        self.last_packet = self._client.publish(topic, payload, qos=1, retain=retain).mid
+        return self.last_packet
 
     def write(self) -> None:
         """Write what is queued, as much as the connection takes."""
@@ -238,7 +254,7 @@ class Link:
             return
         self.accepted = True
         self._session_present = bool(flags.session_present)
-        client.subscribe([(topic, 1) for topic in self._filters])
+        self.subscribe(self._filters, self._stale)
 
     def _on_subscribe(
         self, client: object, userdata: object, mid: int, reasons: list[ReasonCode], _: object
@@ -246,7 +262,8 @@ class Link:
         refused = [t for t, r in zip(self._filters, reasons, strict=False) if r.is_failure]
         if refused:
             self._end(f"the broker refused the subscription to {', '.join(refused)}")
-        else:
+        elif not self._announced:
+            self._announced = True
             self._receiver.subscribed(self._session_present)
 
     def _on_disconnect(
@@ -261,7 +278,12 @@ class Link:
             # Taken as it can be read, and so told apart: refused, it would only be sent again.
             topic = error.object.decode(errors="backslashreplace")
         self._receiver.message(
-            topic, bytes(message.payload), message.retain, message.qos, message.mid
+            topic,
+            bytes(message.payload),
+            message.retain,
+            message.qos,
+            message.mid,
+            message.dup,
         )
 
     def _on_publish(

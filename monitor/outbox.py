@@ -6,7 +6,7 @@ Knows places in the journal's outbox and packet identifiers. Must not know socke
 from __future__ import annotations
 
 from collections import deque
-from collections.abc import Iterator
+from collections.abc import Iterable, Iterator
 from typing import NamedTuple
 
 
@@ -23,16 +23,17 @@ class Outbox:
 
     __slots__ = ("_sent", "_unsent")
 
-    def __init__(self) -> None:
+    def __init__(self, waiting: Iterable[tuple[int, str, bytes]] = ()) -> None:
         self._unsent: deque[Waiting] = deque()
         self._sent: dict[int, Waiting] = {}
+        self.extend(waiting)
 
     def __len__(self) -> int:
         return len(self._unsent) + len(self._sent)
 
-    def add(self, place: int, topic: str, payload: bytes) -> None:
-        """An alert that is durable now."""
-        self._unsent.append(Waiting(place, topic, payload))
+    def extend(self, waiting: Iterable[tuple[int, str, bytes]]) -> None:
+        """(place, topic, payload) of alerts that are durable now."""
+        self._unsent.extend(Waiting(*each) for each in waiting)
 
     def to_send(self, in_flight: int) -> Iterator[Waiting]:
         """Alerts to send now, oldest first, while fewer than ``in_flight`` are unacknowledged.

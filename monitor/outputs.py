@@ -13,6 +13,13 @@ from monitor.plan import CharacteristicPlan, Stream
 from monitor.subgroups import Subgroup
 
 
+class Evidence(NamedTuple):
+    """The last subgroups of a stream: event time of the first reading, standardised mean."""
+
+    first: tuple[int, ...]
+    z: tuple[float, ...]
+
+
 class Row(NamedTuple):
     """One statistic of one detector at one subgroup, in the characteristic's unit."""
 
@@ -37,11 +44,12 @@ class Points(NamedTuple):
 
 @dataclass(frozen=True, slots=True)
 class Alert:
-    """One alert event of one stream."""
+    """One alert event of one stream, and what the stream looked back on when it was decided."""
 
     characteristic: CharacteristicPlan
     stream: Stream
     event: AlertEvent
+    evidence: Evidence
 
 
 @dataclass(frozen=True, slots=True)
@@ -55,4 +63,12 @@ class SetAside:
     payload: bytes
 
 
-Output = Points | Alert | SetAside
+@dataclass(frozen=True, slots=True)
+class Gone:
+    """A stream left the configuration."""
+
+    characteristic: str
+    stream: Stream
+
+
+Output = Points | Alert | SetAside | Gone

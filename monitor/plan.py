@@ -192,6 +192,8 @@ class CharacteristicPlan:
     off_delay: int
     rejoin: int
     specification: Specification | None = None
+    resolution: float | None = None
+    """The gauge's smallest step, for the advice of ``check``; None where nobody said."""
     by_stream: Mapping[Stream, Judgement] = field(default_factory=dict)
 
     def judgement_of(self, stream: Stream) -> Judgement | None:
@@ -214,10 +216,17 @@ class Plan:
 
     characteristics: tuple[CharacteristicPlan, ...]
 
+    def topics(self) -> frozenset[str]:
+        """The filters to subscribe to."""
+        return frozenset(each.source.topic for each in self.characteristics)
+
 
 @dataclass(frozen=True, slots=True)
 class TlsPlan:
-    """Files in PEM: whose signature the broker must show, and what we show it (both or neither)."""
+    """Files in PEM: whose signature the broker must show, and what we show it, if anything.
+
+    ``key`` is None where the certificate's file holds it too.
+    """
 
     ca: str
     certificate: str | None = None
@@ -243,6 +252,15 @@ class BrokerPlan:
 
 
 @dataclass(frozen=True, slots=True)
+class RetentionPlan:
+    """How long the journal keeps entries and alerts (µs), and how large it may become (bytes)."""
+
+    keep: int = 30 * 86_400_000_000
+    keep_alerts: int = 1_096 * 86_400_000_000
+    max_size: int = 20_000_000_000
+
+
+@dataclass(frozen=True, slots=True)
 class Settings:
     """All that the daemon needs: the plan, and where its words come from and go to."""
 
@@ -251,3 +269,4 @@ class Settings:
     root: str
     points: bool
     journal: str
+    retention: RetentionPlan = RetentionPlan()

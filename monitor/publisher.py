@@ -11,9 +11,10 @@ from typing import Protocol
 from monitor import health, messages, times
 from monitor.engine import Engine
 from monitor.health import EVERY, Health, SetAsideNotices
+from monitor.journal import AlertRow
 from monitor.messages import SCHEMA, PointMessage, RowField
 from monitor.outbox import Outbox
-from monitor.outputs import Alert, Output, Points, SetAside
+from monitor.outputs import Alert, Gone, Output, Points, SetAside
 from monitor.stream import StreamState
 from monitor.throttle import Throttle
 
@@ -55,24 +56,31 @@ class Publisher:
         """(topic, payload) of what the broker says when we are gone without a word."""
         return f"{self._root}/health", messages.encode(health.will(now))
 
-    def alerts(self, outputs: Sequence[Output]) -> list[tuple[str, bytes]]:
-        """(topic, payload) of the alerts among the outputs: to be durable before they are sent."""
-        return [
-            (
-                f"{self._root}/alert/{messages.path(output.characteristic.name, output.stream)}",
-                messages.encode(output.event),
-            )
-            for output in outputs
-            if isinstance(output, Alert)
-        ]
+    def alert(self, output: Alert, entry: int) -> AlertRow:
+        """What is to be durable of an alert before it is sent; ``entry`` of the batch caused it."""
+        path = messages.path(output.characteristic.name, output.stream)
+        return AlertRow(
+            f"{self._root}/alert/{path}",
+            output.event["id"],
+            messages.encode(output.event),
+            messages.encode(output.evidence._asdict()),
+            entry,
+        )
+
+    def clear(self, output: Gone) -> str:
+        """The topic whose retained message is to go with a stream."""
+        return f"{self._root}/standing/{messages.path(output.characteristic, output.stream)}"
 
     def publish(self, link: Link, outputs: Sequence[Output], now: int) -> None:
         """Publish what the outbox holds, and what outputs and the passing of time make due."""
         if not link.accepted:
             return
         for alert in self._outbox.to_send(_IN_FLIGHT):
-            stamped = messages.published(alert.payload, times.format_time(now))
-            self._outbox.sent(link.publish(alert.topic, stamped))
+            if alert.payload:
+                stamped = messages.published(alert.payload, times.format_time(now))
+                self._outbox.sent(link.publish(alert.topic, stamped))
+            else:
+                self._outbox.sent(link.publish(alert.topic, b"", retain=True))
         for output in outputs:
             if isinstance(output, Points):
                 self._point(link, output)

@@ -11,7 +11,8 @@ from typing import IO
 
 import orjson
 
-from monitor.entries import Connected, Disconnected, Message, Recorded, Started, Tick
+from monitor import plan_json
+from monitor.entries import Configured, Connected, Disconnected, Message, Recorded, Started, Tick
 from monitor.times import format_time
 
 
@@ -26,6 +27,9 @@ def encode_line(entry: Recorded) -> bytes:
             return _control_line(entry.time, "disconnected")
         case Started():
             return _control_line(entry.time, "started")
+        case Configured():
+            plan = orjson.loads(plan_json.encode(entry.plan))
+            return _control_line(entry.time, "config", plan=plan)
         case Tick():
             return _control_line(entry.time, "tick")
 

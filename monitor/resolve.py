@@ -14,13 +14,14 @@ from typing import Any
 
 import rfc8785
 
-from monitor import filters, pointers, times
-from monitor.config import Config, load
+from monitor import filters, pointers, stream_names, times
+from monitor.config import Config, load, load_measured
 from monitor.plan import (
     BaselinePlan,
     BrokerPlan,
     ByCount,
     ByDirection,
+    ByWindow,
     CharacteristicPlan,
     Chart,
     CusumPlan,
@@ -36,11 +37,14 @@ from monitor.plan import (
     ShewhartPlan,
     SourcePlan,
     Specification,
+    SubgroupPlan,
+    TlsPlan,
 )
 from monitor.presets import OUTSIDE_LIMITS, as_written, preset
 from monitor.sections.base import Section
+from monitor.sections.baseline import StreamBaseline
 from monitor.sections.characteristic import Characteristic
-from monitor.sections.daemon import Alerts
+from monitor.sections.daemon import Alerts, Tls
 from monitor.sections.detectors import (
     AnyDetector,
     CusumDetector,
@@ -49,15 +53,24 @@ from monitor.sections.detectors import (
     ShewhartDetector,
     default_chart,
 )
+from monitor.sections.document import Measured
 from monitor.sections.source import Source
+from monitor.sections.subgroup import Subgroup
 
+PORT, TLS_PORT = 1883, 8883
 WIDTH = 3.0
 _URGENCY: tuple[Priority, ...] = ("low", "medium", "high")
 
 
-def read_settings(path: Path, environ: Mapping[str, str], *, secrets: bool = True) -> Settings:
-    """The settings in a file or folder; arguments and errors are those of ``load``."""
-    return resolve(load(path, environ, secrets=secrets))
+def read_settings(path: Path, environ: Mapping[str, str]) -> Settings:
+    """The daemon's settings in a file or folder; arguments and errors are those of ``load``."""
+    return resolve(load(path, environ))
+
+
+def read_plan(path: Path, environ: Mapping[str, str]) -> Plan:
+    """What a replay needs of a file or folder: broker, outputs and journal may be missing, and are
+    not looked at. Arguments and errors are those of ``load``."""
+    return _plan(load_measured(path, environ))
 
 
 def resolve(config: Config) -> Settings:
@@ -65,19 +78,17 @@ def resolve(config: Config) -> Settings:
     document = config.document
     broker, root = document.broker, document.outputs.root
     return Settings(
-        plan=Plan(
-            tuple(
-                _characteristic(name, each, document.alerts)
-                for name, each in document.characteristics.items()
-            )
-        ),
+        plan=_plan(document),
         broker=BrokerPlan(
             host=broker.host,
-            port=broker.port,
+            port=broker.port or (PORT if broker.tls is None else TLS_PORT),
             client_id=broker.client_id or "driftbell-" + re.sub(r"[^A-Za-z0-9_-]", "-", root),
             keepalive=broker.keepalive // times.SECOND,
             username=broker.username,
             password=config.password,
+            protocol=broker.protocol,
+            session_expiry=broker.session_expiry // times.SECOND,
+            tls=None if broker.tls is None else _tls(broker.tls, config.folder),
         ),
         root=root,
         points=document.outputs.points,
@@ -85,33 +96,50 @@ def resolve(config: Config) -> Settings:
     )
 
 
+def _tls(section: Tls, folder: Path) -> TlsPlan:
+    certificate, key = (
+        None if path is None else str(folder / path) for path in (section.certificate, section.key)
+    )
+    return TlsPlan(str(folder / section.ca), certificate, key)
+
+
+def _plan(document: Measured) -> Plan:
+    return Plan(
+        tuple(
+            _characteristic(name, each, document.alerts)
+            for name, each in document.characteristics.items()
+        )
+    )
+
+
 def _characteristic(name: str, section: Characteristic, alerts: Alerts) -> CharacteristicPlan:
-    baseline, specification = section.baseline, section.specification
-    declared = {
-        "source": _declared(section.source),
-        "subgroup": _declared(section.subgroup),
-        "baseline": _declared(baseline),
-    }
+    judge, baseline = _Judge(section), section.baseline.given
+    specification = section.specification
     return CharacteristicPlan(
         name=name,
         title=section.title or name,
         unit=section.unit,
         source=_source(section.source),
-        subgroup=ByCount(section.subgroup.size, section.subgroup.max_gap),
-        judgement=Judgement(
-            BaselinePlan(
-                baseline.mean, baseline.sigma, baseline.sigma_between, _digest(declared["baseline"])
-            ),
-            tuple(_detector(each, section.subgroup.size, declared) for each in section.detectors),
-        ),
+        subgroup=_subgroup(section.subgroup),
+        judgement=None if baseline.common is None else judge(baseline.common),
+        by_stream={
+            stream_names.parse(stream): judge(own) for stream, own in baseline.by_stream.items()
+        },
         priority=_priority(section),
         reaction=_reaction(section),
         off_delay=alerts.off_delay,
         rejoin=alerts.rejoin,
+        resolution=section.resolution,
         specification=None
         if specification is None
         else Specification(specification.nominal, specification.lower, specification.upper),
     )
+
+
+def _subgroup(section: Subgroup) -> SubgroupPlan:
+    if section.window is not None:
+        return ByWindow(section.window, section.min_size)
+    return ByCount(section.size, section.max_gap, section.every)
 
 
 def _source(section: Source) -> SourcePlan:
@@ -138,14 +166,12 @@ def _source(section: Source) -> SourcePlan:
     )
 
 
-def _detector(section: AnyDetector, size: int, declared: Mapping[str, Any]) -> DetectorPlan:
-    chart = section.chart or default_chart(size)
-    scheme: Scheme
+def _scheme(section: AnyDetector, chart: Chart) -> Scheme:
     match section:
         case ShewhartDetector():
-            scheme = _shewhart(section, chart)
+            return _shewhart(section, chart)
         case CusumDetector():
-            scheme = CusumPlan(
+            return CusumPlan(
                 chart,
                 section.k,
                 section.h,
@@ -155,7 +181,7 @@ def _detector(section: AnyDetector, size: int, declared: Mapping[str, Any]) -> D
                 section.direction,
             )
         case EwmaDetector():
-            scheme = EwmaPlan(
+            return EwmaPlan(
                 chart,
                 section.lam,
                 section.width,
@@ -164,9 +190,6 @@ def _detector(section: AnyDetector, size: int, declared: Mapping[str, Any]) -> D
                 section.after_signal == "hold",
                 section.direction,
             )
-    name = section.name or (f"{section.kind}-{section.chart}" if section.chart else section.kind)
-    revision = _digest({**declared, "detector": _judging(section, scheme, size)})
-    return DetectorPlan(name, section.kind, scheme, revision)
 
 
 def _shewhart(section: ShewhartDetector, chart: Chart) -> ShewhartPlan:
@@ -202,11 +225,50 @@ def _reaction(section: Characteristic) -> ByDirection[tuple[str, ...]]:
 # writing the default down changes nothing; names, titles and reactions decide nothing.
 
 
-def _judging(section: AnyDetector, scheme: Scheme, size: int) -> dict[str, Any]:
+class _Judge:
+    """Gives each stream's baseline the characteristic's detectors, with their revisions.
+
+    A revision hashes {baseline, detector, source, subgroup}. Only the baseline differs between ten
+    thousand streams, and its key sorts first, so the rest of the canonical text is made once.
+    """
+
+    def __init__(self, section: Characteristic) -> None:
+        usual = default_chart(section.subgroup)
+        source, subgroup = _declared(section.source), _declared(section.subgroup)
+        self._detectors: list[tuple[str, str, Scheme, bytes]] = []
+        self._known: dict[StreamBaseline, Judgement] = {}
+        for each in section.detectors:
+            scheme = _scheme(each, each.chart or usual)
+            name = each.name or (f"{each.kind}-{each.chart}" if each.chart else each.kind)
+            decides = {
+                "detector": _judging(each, scheme, usual),
+                "source": source,
+                "subgroup": subgroup,
+            }
+            self._detectors.append((name, each.kind, scheme, _canonical(decides)))
+
+    def __call__(self, baseline: StreamBaseline) -> Judgement:
+        """The judgement by that baseline; equal baselines share one."""
+        known = self._known.get(baseline)
+        if known is not None:
+            return known
+        declared = _canonical(_declared(baseline))
+        before = b'{"baseline":' + declared + b","
+        judgement = self._known[baseline] = Judgement(
+            BaselinePlan(baseline.mean, baseline.sigma, baseline.sigma_between, _sha256(declared)),
+            tuple(
+                DetectorPlan(name, kind, scheme, _sha256(before + decides[1:]))
+                for name, kind, scheme, decides in self._detectors
+            ),
+        )
+        return judgement
+
+
+def _judging(section: AnyDetector, scheme: Scheme, usual: Chart) -> dict[str, Any]:
     """What of a detector decides."""
     detector = _declared(section)
     detector.pop("name", None)
-    if section.chart == default_chart(size):
+    if section.chart == usual:
         detector.pop("chart", None)
     if isinstance(scheme, ShewhartPlan):
         # Several spellings (a preset, a list, a width here or there) say the same.
@@ -222,5 +284,9 @@ def _declared(section: Section) -> dict[str, Any]:
     return section.model_dump(mode="json", by_alias=True, exclude_defaults=True)
 
 
-def _digest(value: object) -> str:
-    return hashlib.sha256(rfc8785.dumps(value)).hexdigest()[:32]  # type: ignore[arg-type]
+def _canonical(value: dict[str, Any]) -> bytes:
+    return rfc8785.dumps(value)
+
+
+def _sha256(text: bytes) -> str:
+    return hashlib.sha256(text).hexdigest()[:32]

@@ -9,7 +9,9 @@ from collections.abc import Iterable
 from typing import Any
 
 from monitor import filters
+from monitor.alerts import Sequence
 from monitor.decode import Decoder, RowDecoder, judge_sequence
+from monitor.gauge import GaugeAlerts
 from monitor.plan import CharacteristicPlan, SequencePlan
 from monitor.seen import TopicCounter
 from monitor.stream import Counts, StreamState
@@ -23,12 +25,20 @@ _MAX_TOPICS = 20_000
 class Characteristic:
     """A characteristic's plan, its decoder and its streams, by their values in key order."""
 
-    __slots__ = ("decoder", "plan", "streams")
+    __slots__ = ("decoder", "gauge", "plan", "sequence", "streams")
 
     def __init__(self, plan: CharacteristicPlan) -> None:
         self.plan = plan
         self.decoder = Decoder(plan.source)
         self.streams: dict[tuple[str, ...], StreamState] = {}
+        self.sequence = Sequence()
+        self.gauge = GaugeAlerts(plan, self.sequence)
+
+    def adopt(self, before: Characteristic) -> None:
+        """Go on with the streams and gauge alerts of the same characteristic under another plan."""
+        self.streams, self.gauge = before.streams, before.gauge
+        self.sequence = before.sequence
+        self.gauge.reconfigure(self.plan)
 
     def may_open(self, keys: tuple[str, ...]) -> bool:
         """Whether the stream is there, or there is room for it."""
@@ -37,7 +47,9 @@ class Characteristic:
     def open(self, keys: tuple[str, ...], since: int, counts: Counts) -> StreamState:
         """A new stream, first heard of at arrival ``since``."""
         stream = tuple(zip(self.decoder.keys, keys, strict=True))
-        state = self.streams[keys] = StreamState(self.plan, stream, since, counts)
+        # Where there is but one stream, its events and the gauge's are counted together.
+        sequence = Sequence() if keys else self.sequence
+        state = self.streams[keys] = StreamState(self.plan, stream, since, counts, sequence)
         return state
 
 
@@ -73,28 +85,43 @@ class Routes:
 
     __slots__ = ("_characteristics", "_counters", "known", "tables")
 
-    def __init__(self, characteristics: Iterable[Characteristic]) -> None:
+    def __init__(
+        self, characteristics: Iterable[Characteristic], before: Routes | None = None
+    ) -> None:
         self._characteristics = tuple(characteristics)
         self.known: dict[str, tuple[Route, ...]] = {}
         self.tables = {
             c.plan.name: Route(c, RowDecoder(c.plan.source)) for c in self._characteristics
         }
-        self._counters: dict[tuple[str, SequencePlan], TopicCounter] = {}
+        self._counters: dict[tuple[str, SequencePlan], TopicCounter] = (
+            {} if before is None else before._counters
+        )
 
     def find(self, topic: str) -> tuple[Route, ...]:
         """Where messages on ``topic`` lead, in the order of the configuration; known from now."""
         if len(self.known) >= _MAX_TOPICS:
             self.known.clear()
-            self._counters.clear()
-        found = []
         wild = "+" in topic or "#" in topic  # a recording may hold what no broker delivers
-        for each in self._characteristics:
-            source = each.plan.source
-            if not wild and filters.overlap(source.topic, topic):
-                sequence = source.sequence
-                counter = None if sequence is None else self._counter(topic, sequence)
-                found.append(Route(each, each.decoder, each.decoder.levels(topic), counter))
-        routes = self.known[topic] = tuple(found)
+        found = [
+            each
+            for each in self._characteristics
+            if not wild and filters.overlap(each.plan.source.topic, topic)
+        ]
+        counted = {(topic, c.plan.source.sequence) for c in found if c.plan.source.sequence}
+        new = sum(key not in self._counters for key in counted)
+        if new and len(self._counters) + new > _MAX_TOPICS:
+            # Decided by what is in the state alone: a restored engine counts on as any other.
+            self.known.clear()
+            self._counters.clear()
+        routes = self.known[topic] = tuple(
+            Route(
+                each,
+                each.decoder,
+                each.decoder.levels(topic),
+                self._counter(topic, each.plan.source.sequence),
+            )
+            for each in found
+        )
         return routes
 
     def state(self) -> list[Any]:
@@ -108,8 +135,11 @@ class Routes:
         """Take back what ``state`` gave."""
         for topic, pointer, wraps, remembered in state:
             plan = SequencePlan(tuple(pointer), wraps)
-            self._counter(topic, plan).restore(remembered)
+            counter = self._counters[topic, plan] = TopicCounter(wraps)
+            counter.restore(remembered)
 
-    def _counter(self, topic: str, plan: SequencePlan) -> TopicCounter:
+    def _counter(self, topic: str, plan: SequencePlan | None) -> TopicCounter | None:
         # Characteristics that read one counter of a topic miss a number together.
+        if plan is None:
+            return None
         return self._counters.setdefault((topic, plan), TopicCounter(plan.wraps))

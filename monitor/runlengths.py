@@ -7,13 +7,22 @@ in standard errors of the charted statistic, run lengths in subgroups, from the 
 from __future__ import annotations
 
 import math
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import Literal
 
+from monitor.methods import medians
+from monitor.methods.constants import median_se
+from monitor.methods.normal import upper_quantile
 from monitor.methods.runlength import cusum, ewma, rules, shewhart, simulation, spread
 from monitor.plan import CusumPlan, EwmaPlan, RulePlan, Scheme, ShewhartPlan, Side
 
 Kind = Literal["shewhart", "cusum", "ewma"]
+
+_NARROWEST = 150.0
+"""Of an EWMA: width over its standard error in that of the points; some seconds to compute."""
+
+_FARTHEST = 30
+"""Points that zone rules may look back at in a simulation; some seconds as well."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -28,7 +37,8 @@ def run_length(scheme: Scheme, shift: float = 0.0, *, size: int = 1) -> RunLengt
     """Average run length of ``scheme`` on subgroups of ``size`` after a ``shift`` of the mean.
 
     A chart of spread does not see the shift. The clip of an EWMA, which lengthens its run length a
-    little, is left out. Raises ValueError for a CUSUM too long to compute.
+    little, is left out. Raises ValueError for what takes too long to compute: a CUSUM of an h, an
+    EWMA of a lambda or zone rules of a reach beyond use.
     """
     match scheme:
         case CusumPlan():
@@ -43,6 +53,8 @@ def run_length(scheme: Scheme, shift: float = 0.0, *, size: int = 1) -> RunLengt
                 )
             )
         case EwmaPlan():
+            if scheme.width**2 > _NARROWEST**2 * scheme.lam * (2 - scheme.lam):
+                raise ValueError(f"lambda {scheme.lam:g} is too small to compute a run length for")
             return RunLength(
                 ewma.run_length(
                     scheme.lam,
@@ -52,22 +64,44 @@ def run_length(scheme: Scheme, shift: float = 0.0, *, size: int = 1) -> RunLengt
                     asymptotic=scheme.asymptotic,
                 )
             )
-        case ShewhartPlan(chart="range"):
-            width = _outermost(scheme)
-            return RunLength(spread.run_length("range", size, width, direction=scheme.direction))
+        case ShewhartPlan(chart="range" | "sd" as statistic):
+            width = _narrowest(scheme)
+            return RunLength(spread.run_length(statistic, size, width, direction=scheme.direction))
         case ShewhartPlan(chart="moving_range"):
             never = scheme.direction == "down"  # its lower limit is 0 at any width worth having
-            width = _outermost(scheme)
+            width = _narrowest(scheme)
             return RunLength(math.inf if never else spread.moving_range_run_length(width))
+        case ShewhartPlan(chart="median"):
+            if all(rule.rule == "outside" for rule in scheme.rules):
+                width = _narrowest(scheme)
+                return RunLength(
+                    shewhart.median_run_length(size, width, shift, direction=scheme.direction)
+                )
+            patterns = tuple(_as_normal(rule, size) for rule in scheme.rules)
+            return _patterns(patterns, shift, scheme.direction)
         case ShewhartPlan():
-            if rules.exact(scheme.rules):
-                return RunLength(rules.run_length(scheme.rules, shift, direction=scheme.direction))
-            simulated = simulation.run_length(scheme.rules, shift, direction=scheme.direction)
-            return RunLength(simulated.run_length, simulated.standard_error)
+            return _patterns(scheme.rules, shift, scheme.direction)
 
 
-def _outermost(scheme: ShewhartPlan) -> float:
-    """Charts of spread take rules outside only: the narrowest decides."""
+def _patterns(planned: tuple[RulePlan, ...], shift: float, direction: Side) -> RunLength:
+    if rules.exact(planned):
+        return RunLength(rules.run_length(planned, shift, direction=direction))
+    if sum(rule.of for rule in planned) > _FARTHEST:
+        raise ValueError("zone rules that look back so far are too much to compute")
+    simulated = simulation.run_length(planned, shift, direction=direction)
+    return RunLength(simulated.run_length, simulated.standard_error)
+
+
+def _as_normal(rule: RulePlan, size: int) -> RulePlan:
+    """A rule on medians as the rule on normal values that is met as often: rules compare points
+    with each other, the centre and their widths, so mapping the median's distribution onto the
+    normal one changes none of them. Exact in control; a shift is taken as one of the normal."""
+    tail = medians.median_sf(rule.width * median_se(size), size)
+    return replace(rule, width=upper_quantile(tail)) if rule.width and tail > 0 else rule
+
+
+def _narrowest(scheme: ShewhartPlan) -> float:
+    """Of rules outside only, the narrowest decides."""
     return min(rule.width for rule in scheme.rules)
 
 

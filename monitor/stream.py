@@ -8,11 +8,12 @@ from __future__ import annotations
 from dataclasses import dataclass, field
 from typing import Any
 
-from monitor.alerts import StreamAlerts
+from monitor.alerts import Sequence, StreamAlerts
 from monitor.detectors import Detector, Signal, detector
 from monitor.detectors.charts import standard_error
 from monitor.lookback import LookBack
-from monitor.outputs import Alert, Output, Points, Row
+from monitor.messages import AlertEvent
+from monitor.outputs import Alert, Gone, Output, Points, Row
 from monitor.plan import ByWindow, CharacteristicPlan, DetectorPlan, Judged, Judgement, Stream
 from monitor.seen import StreamSeen
 from monitor.subgroups import Subgroup, gatherer
@@ -51,13 +52,19 @@ class StreamState:
         "lookback",
         "plan",
         "seen",
+        "sequence",
         "since",
         "stream",
         "windowed",
     )
 
     def __init__(
-        self, plan: CharacteristicPlan, stream: Stream, since: int, counts: Counts
+        self,
+        plan: CharacteristicPlan,
+        stream: Stream,
+        since: int,
+        counts: Counts,
+        numbers: Sequence,
     ) -> None:
         sequence = plan.source.sequence
         self.plan = plan
@@ -70,10 +77,11 @@ class StreamState:
         self.windowed = isinstance(plan.subgroup, ByWindow)
         self.detectors: list[tuple[DetectorPlan, Detector]] = []
         self.alerts: StreamAlerts | None = None
+        self.sequence = numbers
         if self.judgement is not None:
             baseline = self.judgement.baseline
             self.detectors += [(p, detector(p, baseline)) for p in self.judgement.detectors]
-            self.alerts = StreamAlerts(Judged(plan, stream, baseline))
+            self.alerts = StreamAlerts(Judged(plan, stream, baseline), self.sequence)
         self.lookback = LookBack()
         self.last: Subgroup | None = None
         self._size = 0
@@ -93,11 +101,58 @@ class StreamState:
         for _, each in self.detectors:
             each.restart()
         self.lookback.clear()
+        return self._withdraw(time, "gauge-restart", counts)
+
+    def leave(self, time: int, counts: Counts) -> list[Output]:
+        """The stream is no longer in the configuration."""
+        return [
+            *self._withdraw(time, "configuration", counts),
+            Gone(self.plan.name, self.stream),
+        ]
+
+    def reconfigure(self, plan: CharacteristicPlan, time: int, counts: Counts) -> list[Output]:
+        """Another plan is in force from now on; what decides as before goes on as before."""
+        before, self.plan = self.plan, plan
+        judgement, self.judgement = self.judgement, plan.judgement_of(self.stream)
+        if plan.source != before.source or plan.subgroup != before.subgroup:
+            self.gatherer.abandon()
+            number, self.gatherer = self.gatherer.number, gatherer(plan.subgroup, counts.abandon)
+            self.gatherer.number = number
+            self.windowed = isinstance(plan.subgroup, ByWindow)
+        if plan.source.sequence != before.source.sequence:
+            sequence = plan.source.sequence
+            self.seen = StreamSeen(sequence.wraps if sequence else None)
+        same_baseline = (
+            judgement is not None
+            and self.judgement is not None
+            and judgement.baseline.revision == self.judgement.baseline.revision
+        )
+        if not same_baseline:
+            self.lookback.clear()
+            self._size = 0
+        kept = {(each.name, each.revision): found for each, found in self.detectors}
+        self.detectors = []
+        if self.judgement is None:
+            outputs = self._withdraw(time, "configuration", counts)
+            self.alerts = None
+            return outputs
+        for each in self.judgement.detectors:
+            found = kept.get((each.name, each.revision))
+            self.detectors.append((each, found or detector(each, self.judgement.baseline)))
+        judged = Judged(plan, self.stream, self.judgement.baseline)
         if self.alerts is None:
+            self.alerts = StreamAlerts(judged, self.sequence)
+        return self._told(self.alerts.reconfigure(judged, time), counts)
+
+    def _withdraw(self, time: int, reason: str, counts: Counts) -> list[Output]:
+        return [] if self.alerts is None else self._told(self.alerts.withdraw(time, reason), counts)
+
+    def _told(self, events: list[AlertEvent], counts: Counts) -> list[Output]:
+        if not events:
             return []
-        events = self.alerts.withdraw(time, "gauge-restart")
         counts.alerts += len(events)
-        return [Alert(self.plan, self.stream, event) for event in events]
+        evidence = self.lookback.evidence()
+        return [Alert(self.plan, self.stream, event, evidence) for event in events]
 
     def judge(self, subgroup: Subgroup, counts: Counts, points: bool) -> list[Output]:
         """What a finished subgroup causes."""
@@ -123,10 +178,8 @@ class StreamState:
         outputs: list[Output] = []
         if points:
             outputs.append(Points(self.plan, self.stream, subgroup, rows))
-        for event in self.alerts.judge(subgroup, z, signals, self.lookback):
-            counts.alerts += 1
-            outputs.append(Alert(self.plan, self.stream, event))
-        return outputs
+        events = self.alerts.judge(subgroup, z, signals, self.lookback)
+        return outputs + self._told(events, counts) if events else outputs
 
     def state(self) -> dict[str, Any]:
         """Everything remembered, as JSON values; detectors by name."""
@@ -139,6 +192,7 @@ class StreamState:
             "gatherer": self.gatherer.state(),
             "detectors": {plan.name: each.state() for plan, each in self.detectors},
             "lookback": self.lookback.state(),
+            "sequence": self.sequence.value,
             "alerts": None if self.alerts is None else self.alerts.state(),
             "last": None if last is None else last.state(),
         }
@@ -150,6 +204,7 @@ class StreamState:
         for plan, each in self.detectors:
             each.restore(state["detectors"][plan.name])
         self.lookback.restore(state["lookback"])
+        self.sequence.value = state["sequence"]
         if self.alerts is not None:
             self.alerts.restore(state["alerts"], {plan.name: plan for plan, _ in self.detectors})
         self.last = None if state["last"] is None else Subgroup.restored(state["last"])

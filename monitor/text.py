@@ -22,7 +22,10 @@ CAUTION = (
 
 _MOST_PLACES = 12
 _PLAIN_BELOW = 1e12  # from there up a string of digits tells less than an exponent
-_WITHDRAWN = {"gauge-restart": "the gauge restarted"}
+_WITHDRAWN = {
+    "gauge-restart": "the gauge restarted",
+    "configuration": "its configuration changed",
+}
 
 
 def subject(judged: Judged) -> str:

@@ -139,6 +139,23 @@ def child_of(node: Node, step: str | int) -> Node | None:
     return None
 
 
+def put(node: Node, path: Path, child: Node) -> Node:
+    """The tree with ``child`` at ``path``, which holds something now; nothing is changed in place,
+    since aliases share what they stand for."""
+    if not path:
+        return child
+    step, rest = path[0], path[1:]
+    if isinstance(node.value, dict) and isinstance(step, str):
+        return replace(node, value={**node.value, step: put(node.value[step], rest, child)})
+    raise KeyError(step)
+
+
+def without(node: Node, keys: Collection[str]) -> Node:
+    """A mapping without those keys."""
+    assert isinstance(node.value, dict)
+    return replace(node, value={k: v for k, v in node.value.items() if k not in keys})
+
+
 def walk(node: Node, path: Path = ()) -> Iterator[tuple[Path, Node]]:
     """Every node with its path, parents first."""
     yield path, node

@@ -9,6 +9,7 @@ from monitor import commandline
 
 COMMANDS = {
     "play": ("replay.commands.play", "run the engine over recordings"),
+    "send": ("replay.commands.send", "publish a recording, with its own timing"),
     "design": ("replay.commands.design", "run lengths of a detector, or the one for a run length"),
     "scene": ("replay.commands.scene", "write a story of the demo line as a recording"),
 }

@@ -8,20 +8,28 @@ from __future__ import annotations
 
 import base64
 import json
-from collections.abc import Callable, Iterable, Iterator
-from typing import Any
+from collections.abc import Callable, Iterator
+from datetime import datetime, timedelta
+from typing import IO, Any
 
 import orjson
 
-from monitor import numbers, times
+from monitor import numbers
 from monitor.commandline import CommandError
-from monitor.entries import Connected, Disconnected, Entry, Message, Started
+from monitor.decode import MAX_PAYLOAD
+from monitor.entries import Connected, Disconnected, Entry, Message, Parsed, Started, Tick
+from monitor.times import EPOCH
 from replay.moments import FIRST, LAST, arrival
 
 OnUnreadable = Callable[[int, str], None]
 """Told the number of a line that is no entry, and what is wrong with it."""
 
-_LATER = ("tick", "config", "command", "state")
+_LATER = ("config", "command", "state")
+_CHUNK = 1 << 16  # bytes
+_MICROSECOND = timedelta(microseconds=1)
+
+_SHORT = 512
+"""In so few bytes no payload is too large, or nested too deeply for orjson to write it again."""
 
 
 class LineError(ValueError):
@@ -33,45 +41,62 @@ class ControlError(ValueError):
 
 
 def read_lines(
-    name: str, file: Iterable[bytes], unreadable: OnUnreadable
-) -> Iterator[tuple[int, Entry]]:
-    """Line numbers from 1, and entries, of the file that people know as ``name``.
+    name: str, file: IO[bytes], unreadable: OnUnreadable
+) -> Iterator[tuple[int, list[Entry | None]]]:
+    """Chunks of the file that people know as ``name``: the number of the first line, from 1, and
+    what each line holds, None where it is no entry.
 
     Raises CommandError at a control line that cannot be followed: leaving it out would give other
     alerts than the line gave.
     """
-    loads, dumps, parse_iso_time = orjson.loads, orjson.dumps, times.parse_iso_time
-    for number, line in enumerate(file, 1):
-        # The plain line, by far the most frequent, without a call or a question too many; whatever
-        # is unusual about one is left to ``decode_line``, which would say the same of a plain one.
-        try:
-            document = loads(line)
-            time = parse_iso_time(document["time"])
-            topic, payload = document["topic"], dumps(document["payload"])
-            plain = topic.isascii() and len(document) == 3 and FIRST <= time <= LAST
-        except (ValueError, KeyError, TypeError, AttributeError):
-            plain = False
-        if plain:
-            yield number, Message(time, topic, payload)
-            continue
-        try:
-            yield number, decode_line(line)
-        except LineError as error:
-            if not line.isspace():
-                unreadable(number, str(error))
-        except ControlError as error:
-            raise CommandError(f"{name}:{number}: {error}") from None
+    loads, fromisoformat = orjson.loads, datetime.fromisoformat
+    first = 1
+    while lines := file.readlines(_CHUNK):
+        entries: list[Entry | None] = []
+        append = entries.append
+        for number, line in enumerate(lines, first):
+            # The plain line, by far the most frequent, without a call or a question too many;
+            # whatever is unusual about one is left to ``decode_line``, which would say the same of
+            # a plain one.
+            try:
+                document = loads(line)
+                stamp = document["time"]
+                if type(stamp) is str:
+                    time: Any = (fromisoformat(stamp) - EPOCH) // _MICROSECOND
+                else:
+                    time = arrival(stamp)
+                topic, payload = document["topic"], document["payload"]
+                if (
+                    len(document) == 3
+                    and len(line) < _SHORT
+                    and topic.isascii()
+                    and FIRST <= time <= LAST
+                ):
+                    append(Parsed(time, topic, payload))
+                    continue
+            except (ValueError, KeyError, TypeError, AttributeError):
+                pass
+            try:
+                append(decode_line(line))
+            except LineError as error:
+                append(None)
+                if not line.isspace():
+                    unreadable(number, str(error))
+            except ControlError as error:
+                raise CommandError(f"{name}:{number}: {error}") from None
+        yield first, entries
+        first += len(lines)
 
 
 def decode_line(line: bytes) -> Entry:
     """The entry that a line holds. Raises LineError or ControlError."""
-    write: Callable[[object], bytes] = orjson.dumps
     try:
         document: Any = orjson.loads(line)
+        strict = True
     except orjson.JSONDecodeError:
         # NaN, 1e999 or half a surrogate pair: still a line, and the payload's to answer for.
         document = numbers.parse(line)
-        write = _dumps
+        strict = False
     if type(document) is not dict:
         raise LineError("not a JSON object")
     time = arrival(document.get("time"))
@@ -84,16 +109,15 @@ def decode_line(line: bytes) -> Entry:
         raise LineError('neither "topic" nor "control"')
     if not topic.isascii():
         _check_topic(topic)
-    if "payload" in document:
-        try:
-            payload = write(document["payload"])
-        except TypeError:  # nested deeper than orjson writes
-            payload = _dumps(document["payload"])
-    else:
-        payload = _from_base64(document.get("payload_base64"))
-    if len(document) == 3:
-        return Message(time, topic, payload)
-    return Message(time, topic, payload, *_flags(document))
+    retain, qos = _flags(document)
+    if "payload" not in document:
+        return Message(time, topic, _from_base64(document.get("payload_base64")), retain, qos)
+    written = _written(document["payload"]) if strict else None
+    if written is None:
+        return Message(time, topic, _dumps(document["payload"]), retain, qos)
+    if retain or qos != 1 or len(written) > MAX_PAYLOAD:
+        return Message(time, topic, written, retain, qos)
+    return Parsed(time, topic, document["payload"])
 
 
 def _check_topic(topic: str) -> None:
@@ -101,6 +125,14 @@ def _check_topic(topic: str) -> None:
         topic.encode()
     except UnicodeEncodeError:  # half of a surrogate pair
         raise LineError('"topic" is no text that MQTT can carry') from None
+
+
+def _written(payload: object) -> bytes | None:
+    """The payload as compact JSON; None where it is nested deeper than orjson writes."""
+    try:
+        return orjson.dumps(payload)
+    except TypeError:
+        return None
 
 
 def _dumps(payload: object) -> bytes:
@@ -131,6 +163,8 @@ def _control(time: int, document: dict[str, object]) -> Entry:
         return Started(time)
     if control == "disconnected":
         return Disconnected(time)
+    if control == "tick":
+        return Tick(time)
     if control == "connected":
         present = document.get("session_present", True)
         if type(present) is not bool:
@@ -138,4 +172,4 @@ def _control(time: int, document: dict[str, object]) -> Entry:
         return Connected(time, present)
     if control in _LATER:
         raise ControlError(f'control "{control}" is not built yet')
-    raise ControlError(f"control {control!r} is unknown: connected, disconnected or started")
+    raise ControlError(f"control {control!r} is unknown: connected, disconnected, started or tick")

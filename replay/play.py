@@ -7,30 +7,29 @@ from __future__ import annotations
 
 import itertools
 from collections import Counter
-from collections.abc import Callable, Iterable, Iterator, Sequence
+from collections.abc import Callable, Iterable, Sequence
 from dataclasses import dataclass, field
 from time import perf_counter
 from typing import IO
 
 from monitor import messages
 from monitor.engine import Engine
-from monitor.entries import Entry, Reading
 from monitor.messages import AlertEvent
 from monitor.outputs import Alert, Output, Points, SetAside
 from monitor.plan import Plan
 from monitor.stream import Counts
+from replay.merging import in_order
 from replay.points import HEADER, PointsTable, name_stream
-from replay.recordings import Recording
+from replay.recordings import Chunk, Recording
 from replay.tables import FIRST_ROW, Layout
 
-OnProgress = Callable[[Recording, int], None]
-"""Told the recording being read and the line it is at, every few thousand lines."""
+OnProgress = Callable[[Chunk], None]
+"""Told what has just been played, every few hundred lines."""
 
 KEPT = 20
 """Alert events kept for showing; the files have them all."""
 
 _EXAMPLES = 5
-_STRIDE = 8192
 
 
 @dataclass(slots=True)
@@ -68,9 +67,9 @@ def play(
     *,
     alerts: IO[bytes] | None = None,
     points: IO[bytes] | None = None,
-    progress: OnProgress | None = None,
+    progress: OnProgress,
 ) -> Played:
-    """Play recordings, one after another, as one stream.
+    """Play recordings as one stream, in order of arrival.
 
     ``layout`` says how tables are read, ``interval`` (µs) how far apart their rows are where they
     have no times. Alert events go to ``alerts`` as lines, points to ``points`` as a table. Raises
@@ -78,10 +77,12 @@ def play(
     """
     started = perf_counter()
     engine = Engine(plan, points=points is not None)
-    player = _Player(engine, alerts, points, progress)
+    player = _Player(engine, alerts, points)
     clock = itertools.count(FIRST_ROW, interval)
-    for recording in recordings:
-        player.play(recording, layout, clock)
+    opened = [recording.open(layout, clock, player.unreadable) for recording in recordings]
+    for chunk in in_order(opened):
+        player.play(chunk)
+        progress(chunk)
     played = player.played
     played.streams = sorted(
         (state.plan.name, name_stream(state.stream), state.last.number if state.last else 0)
@@ -94,52 +95,42 @@ def play(
 
 
 class _Player:
-    def __init__(
-        self,
-        engine: Engine,
-        alerts: IO[bytes] | None,
-        points: IO[bytes] | None,
-        progress: OnProgress | None,
-    ) -> None:
+    def __init__(self, engine: Engine, alerts: IO[bytes] | None, points: IO[bytes] | None) -> None:
         self.played = Played(engine.counts)
         self._engine = engine
         self._alerts = alerts
         self._points = points
-        self._progress = progress
         self._table = PointsTable()
         if points is not None:
             points.write(HEADER)
 
-    def play(self, recording: Recording, layout: Layout, clock: Iterator[int]) -> None:
-        path, played, progress = recording.path, self.played, self._progress
-        fold, take = self._engine.fold, self._take
-        last = played.last
-        look = _STRIDE
+    def unreadable(self, recording: Recording, number: int, wrong: str) -> None:
+        played = self.played
+        played.unreadable += 1
+        if len(played.unreadable_at) < _EXAMPLES:
+            played.unreadable_at.append(f"{recording.path}:{number}: {wrong}")
 
-        def unreadable(number: int, wrong: str) -> None:
-            played.unreadable += 1
-            if len(played.unreadable_at) < _EXAMPLES:
-                played.unreadable_at.append(f"{path}:{number}: {wrong}")
-
-        for number, entry in recording.entries(layout, clock, unreadable):
+    def play(self, chunk: Chunk) -> None:
+        played, fold = self.played, self._engine.fold
+        last, entries = played.last, 0
+        for number, entry in enumerate(chunk.entries, chunk.first):
+            if entry is None:
+                continue
+            entries += 1
             time = entry.time
             if last is None:
                 played.first = last = time
             elif time >= last:
                 last = time
             else:
-                self._note_backwards(entry, path, number)
+                self._note_backwards(time, chunk.recording, number)
             outputs = fold(entry)
             if outputs:
-                take(outputs, path, number)
-            played.entries += 1
-            if number >= look:
-                look = number + _STRIDE
-                if progress is not None:
-                    progress(recording, number)
+                self._take(outputs, chunk.recording, number)
+        played.entries += entries
         played.last = last
 
-    def _take(self, outputs: Sequence[Output], path: str, number: int) -> None:
+    def _take(self, outputs: Sequence[Output], recording: Recording, number: int) -> None:
         played = self.played
         for output in outputs:
             if type(output) is Points:
@@ -147,7 +138,7 @@ class _Player:
                     self._points.write(self._table.rows(output))
             elif type(output) is SetAside:
                 if output.reason not in played.set_aside_at:
-                    played.set_aside_at[output.reason] = f"{path}:{number}", output
+                    played.set_aside_at[output.reason] = f"{recording.path}:{number}", output
             elif type(output) is Alert:
                 self._alert(output)
 
@@ -162,11 +153,9 @@ class _Player:
             key = alert.characteristic.name, stream, event["detector"], event["rule"]
             self.played.raised[key] += 1
 
-    def _note_backwards(self, entry: Entry, path: str, number: int) -> None:
+    def _note_backwards(self, time: int, recording: Recording, number: int) -> None:
         played = self.played
-        if played.first is None or entry.time < played.first:
-            played.first = entry.time
-        # A row has no arrival of its own, and tables of one day may follow each other.
-        if not isinstance(entry, Reading):
-            played.backwards += 1
-            played.backwards_at = played.backwards_at or f"{path}:{number}"
+        if played.first is None or time < played.first:
+            played.first = time
+        played.backwards += 1
+        played.backwards_at = played.backwards_at or f"{recording.path}:{number}"

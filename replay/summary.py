@@ -62,7 +62,7 @@ def _read(played: Played, noun: str) -> Iterator[str]:
     if played.backwards:
         yield (
             f"  {played.backwards:,} arrived before one recorded earlier, first at "
-            f"{played.backwards_at}: are the recordings in order?"
+            f"{played.backwards_at}: is the recording in order?"
         )
     aside = sum(counts.set_aside.values())
     yield f"Used {counts.readings:,} readings; set aside {aside:,}{':' if aside else '.'}"

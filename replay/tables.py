@@ -43,51 +43,63 @@ class Layout:
     characteristic: str | None
 
 
-def read_table(
-    name: str,
-    file: Iterable[str],
-    layout: Layout,
-    clock: Iterator[int],
-    unreadable: OnUnreadable,
-) -> Iterator[tuple[int, Reading]]:
-    """Line numbers from 1, and readings, of the file that people know as ``name``.
+class Table:
+    """The table in ``file``, that people know as ``name``.
 
-    ``clock`` gives each row's moment (µs) where the table has no times; tables played one after
-    another share it. Raises CommandError where the table lacks a column it needs.
+    Raises CommandError, at once, where it lacks a column it needs.
     """
-    rows = _rows(csv.reader(file), unreadable)
-    header = [cell.strip() for cell in next(rows, (0, []))[1]]
-    columns = _columns(name, header, layout)
-    width = len(header)
-    value_at = columns["value"]
-    whose, when, count = (columns.get(word) for word in ("characteristic", "time", "sequence"))
-    streams = [(key, columns[key]) for key in layout.keys if key in columns]
-    characteristic = layout.characteristic or ""
-    time, timed = FIRST_ROW, False
-    at: object = None
-    sequence: object = None
-    for number, row in rows:
-        if when is None:
-            time = next(clock)
-            at = time / SECOND
-        if len(row) != width:
-            if any(row[width:]):
-                wrong = f"{len(row)} cells under {width} column names: a comma inside a value?"
-                unreadable(number, wrong)
-                continue
-            row += [""] * (width - len(row))
-        if when is not None:
-            at = row[when].strip() or None
-            # A table has no arrivals: a row counts as arriving no earlier than the rows above it.
-            moment = arrival(at)
-            if moment is not None and (moment > time or not timed):
-                time, timed = moment, True
-        if whose is not None:
-            characteristic = row[whose].strip()
-        if count is not None:
-            sequence = row[count].strip() or None
-        stream = {key: cell for key, index in streams if (cell := row[index].strip())}
-        yield number, Reading(time, characteristic, stream, _value(row[value_at]), at, sequence)
+
+    def __init__(
+        self, name: str, file: Iterable[str], layout: Layout, unreadable: OnUnreadable
+    ) -> None:
+        self._rows = _rows(csv.reader(file), unreadable)
+        self._header = [cell.strip() for cell in next(self._rows, (0, []))[1]]
+        self._columns = _columns(name, self._header, layout)
+        self._layout = layout
+        self._unreadable = unreadable
+
+    @property
+    def timed(self) -> bool:
+        """Whether it has a column of times."""
+        return "time" in self._columns
+
+    def readings(self, clock: Iterator[int]) -> Iterator[tuple[int, Reading]]:
+        """Line numbers from 1, and readings.
+
+        ``clock`` gives each row's moment (µs) where the table has no times; tables played one after
+        another share it.
+        """
+        columns, layout, unreadable = self._columns, self._layout, self._unreadable
+        width = len(self._header)
+        value_at = columns["value"]
+        whose, when, count = (columns.get(word) for word in ("characteristic", "time", "sequence"))
+        streams = [(key, columns[key]) for key in layout.keys if key in columns]
+        characteristic = layout.characteristic or ""
+        time, timed = FIRST_ROW, False
+        at: object = None
+        sequence: object = None
+        for number, row in self._rows:
+            if when is None:
+                time = next(clock)
+                at = time / SECOND
+            if len(row) != width:
+                if any(row[width:]):
+                    wrong = f"{len(row)} cells under {width} column names: a comma inside a value?"
+                    unreadable(number, wrong)
+                    continue
+                row += [""] * (width - len(row))
+            if when is not None:
+                at = row[when].strip() or None
+                # A table has no arrivals: a row counts as arriving no earlier than those above it.
+                moment = arrival(at)
+                if moment is not None and (moment > time or not timed):
+                    time, timed = moment, True
+            if whose is not None:
+                characteristic = row[whose].strip()
+            if count is not None:
+                sequence = row[count].strip() or None
+            stream = {key: cell for key, index in streams if (cell := row[index].strip())}
+            yield number, Reading(time, characteristic, stream, _value(row[value_at]), at, sequence)
 
 
 def _rows(table: Any, unreadable: OnUnreadable) -> Iterator[tuple[int, list[str]]]:

@@ -660,7 +660,7 @@ def test_a_password_file_that_will_not_do(write: Write, content: bytes | None, s
 
 
 def test_without_secrets_the_password_file_is_not_needed(write: Write) -> None:
-    assert load(with_password(write, None), {}, secrets=False).password is None
+    assert load(with_password(write, None), {}).password is None
 
 
 def test_a_password_written_where_its_file_should_be(write: Write) -> None:

@@ -13,7 +13,7 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from monitor import journal as module
-from monitor.entries import Connected, Disconnected, Message, Recorded, Started
+from monitor.entries import Connected, Disconnected, Message, Recorded, Started, Tick
 from monitor.journal import Journal, JournalError, open_reader, read_entries
 
 times = st.integers(0, 2**62)
@@ -23,6 +23,7 @@ recorded: st.SearchStrategy[Recorded] = st.one_of(
     st.builds(Started, times),
     st.builds(Connected, times, st.booleans()),
     st.builds(Disconnected, times),
+    st.builds(Tick, times),
 )
 alerts = st.tuples(topics, st.binary(max_size=20))
 batches = st.lists(

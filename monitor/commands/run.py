@@ -10,12 +10,17 @@ import os
 import sqlite3
 from pathlib import Path
 
+import structlog
+
 from monitor import logs
 from monitor.commandline import COULD_NOT, DONE, WRONG, CommandError
 from monitor.daemon import Daemon
 from monitor.journal import JournalError
+from monitor.plan import Settings
 from monitor.problems import ConfigurationError
 from monitor.resolve import read_settings
+
+log = structlog.get_logger()
 
 
 def configure(parser: argparse.ArgumentParser) -> None:
@@ -24,14 +29,18 @@ def configure(parser: argparse.ArgumentParser) -> None:
 
 
 def main(args: argparse.Namespace) -> int:
-    """Run until SIGTERM or SIGINT; 0 after a clean stop, 1 where it could not go on."""
+    """Run until SIGTERM or SIGINT; 0 after a clean stop, 1 where it could not go on.
+
+    SIGHUP reads the configuration again; one that is wrong changes nothing.
+    """
+    path = Path(args.config)
     try:
-        settings = read_settings(Path(args.config), os.environ)
+        settings = read_settings(path, os.environ)
     except ConfigurationError as error:
         raise CommandError(str(error), WRONG) from error
     logs.to_stderr()
     try:
-        Daemon(settings).run()
+        Daemon(settings, lambda: _again(path, settings)).run()
     except JournalError as error:
         raise CommandError(str(error), COULD_NOT) from error
     except sqlite3.Error as error:
@@ -41,3 +50,17 @@ def main(args: argparse.Namespace) -> int:
             COULD_NOT,
         ) from error
     return DONE
+
+
+def _again(path: Path, before: Settings) -> Settings | None:
+    try:
+        settings = read_settings(path, os.environ)
+    except ConfigurationError as error:
+        log.error("the changed configuration is not used", problems=str(error))
+        return None
+    for name in ("broker", "root", "points", "journal", "retention"):
+        if getattr(settings, name) != getattr(before, name):
+            log.error("the changed configuration is not used: restart for this", changed=name)
+            return None
+    log.info("the configuration was read again")
+    return settings

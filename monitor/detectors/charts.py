@@ -10,7 +10,7 @@ from collections.abc import Callable, Sequence
 from typing import Any, Protocol
 
 from monitor.memory import Remembers
-from monitor.methods.constants import median_se
+from monitor.methods.constants import c5, d3, median_se
 from monitor.methods.limits import Limits, moving_range_limits, range_limits, sd_limits
 from monitor.plan import BaselinePlan
 from monitor.subgroups import Subgroup
@@ -28,6 +28,9 @@ class Chart(Protocol):
 
     def value(self, subgroup: Subgroup) -> float | None:
         """The statistic; None where there is none to plot (the point is blank)."""
+
+    def error(self, size: int) -> float:
+        """Standard error of the statistic for a subgroup of ``size``."""
 
     def limits(self, size: int, width: float) -> Limits:
         """Limits ``width`` standard errors from the centre for a subgroup of ``size``."""
@@ -55,9 +58,13 @@ class Location(Remembers):
         """The mean."""
         return subgroup.mean
 
+    def error(self, size: int) -> float:
+        """√(sigma_between² + sigma²/n)."""
+        return standard_error(self._baseline, size)
+
     def limits(self, size: int, width: float) -> Limits:
         """Mean ± width · SE."""
-        reach = width * standard_error(self._baseline, size)
+        reach = width * self.error(size)
         return Limits(self._baseline.mean, self._baseline.mean - reach, self._baseline.mean + reach)
 
     def restart(self) -> None:
@@ -76,6 +83,10 @@ class Range(Remembers):
     def value(self, subgroup: Subgroup) -> float | None:
         """Largest less smallest."""
         return subgroup.range
+
+    def error(self, size: int) -> float:
+        """d3 σ."""
+        return d3(size) * self._sigma
 
     def limits(self, size: int, width: float) -> Limits:
         """d2 σ ± width · d3 σ, not below zero."""
@@ -98,6 +109,10 @@ class Sd(Remembers):
         """Sample standard deviation."""
         return subgroup.sd
 
+    def error(self, size: int) -> float:
+        """c5 σ."""
+        return c5(size) * self._sigma
+
     def limits(self, size: int, width: float) -> Limits:
         """c4 σ ± width · c5 σ, not below zero."""
         return sd_limits(size, self._sigma, width)
@@ -119,11 +134,14 @@ class Median(Remembers):
         """The median."""
         return subgroup.median
 
+    def error(self, size: int) -> float:
+        """√(sigma_between² + the median's own variance)."""
+        return math.hypot(self._baseline.sigma_between, median_se(size) * self._baseline.sigma)
+
     def limits(self, size: int, width: float) -> Limits:
-        """Mean ± width · √(sigma_between² + the median's own variance)."""
-        base = self._baseline
-        reach = width * math.hypot(base.sigma_between, median_se(size) * base.sigma)
-        return Limits(base.mean, base.mean - reach, base.mean + reach)
+        """Mean ± width · SE."""
+        reach = width * self.error(size)
+        return Limits(self._baseline.mean, self._baseline.mean - reach, self._baseline.mean + reach)
 
     def restart(self) -> None:
         """Nothing is remembered."""
@@ -145,6 +163,10 @@ class MovingRange(Remembers):
         previous = None if subgroup.broken else self._previous
         self._previous = subgroup.mean
         return None if previous is None else abs(subgroup.mean - previous)
+
+    def error(self, size: int) -> float:
+        """d3 σ of a range of two."""
+        return d3(2) * self._sigma
 
     def limits(self, size: int, width: float) -> Limits:
         """Limits of a range of two."""

@@ -9,7 +9,7 @@ from collections.abc import Sequence
 from typing import Any
 
 from monitor.detectors.base import NO_SIGNALS, Signal, met
-from monitor.detectors.charts import SPREAD, chart, standard_error
+from monitor.detectors.charts import SPREAD, chart
 from monitor.detectors.rules import rule, span
 from monitor.methods.limits import Limits
 from monitor.outputs import Row
@@ -33,7 +33,6 @@ class Shewhart:
 
     __slots__ = (
         "_at",
-        "_baseline",
         "_chart",
         "_limits",
         "_plan",
@@ -47,7 +46,6 @@ class Shewhart:
 
     def __init__(self, plan: ShewhartPlan, baseline: BaselinePlan) -> None:
         self._plan = plan
-        self._baseline = baseline
         self._chart = chart(plan.chart, baseline)
         self._spread = plan.chart in SPREAD
         self._rules = tuple(rule(r) for r in plan.rules)
@@ -98,7 +96,7 @@ class Shewhart:
         self._size = size
         self._limits = tuple(self._chart.limits(size, width) for width in self._widths)
         self._at = self._chart.limits(size, self._plan.width)
-        self._se = standard_error(self._baseline, size)
+        self._se = self._chart.error(size)
 
     def rows(self, name: str, signals: tuple[Signal, ...]) -> tuple[Row, ...]:
         """One row; none where the point is blank."""

@@ -10,48 +10,19 @@ from typing import Annotated
 
 from pydantic import AfterValidator, BeforeValidator, Field, ValidationInfo, field_validator
 
+from monitor import stream_names
 from monitor.plan import Priority
 from monitor.problems import Path
 from monitor.sections.base import Section, either, fault, faults
+from monitor.sections.baseline import Baseline
 from monitor.sections.detectors import AnyDetector, fits
-from monitor.sections.scalars import LINE, Duration, Line, Number, Positive, Whole
+from monitor.sections.scalars import LINE, Line, Number, Positive
 from monitor.sections.source import Source
+from monitor.sections.subgroup import Subgroup
 
 _BRACED = re.compile(r"\{([^{}]*)\}")
 _PRIORITY = "low, medium or high, or a mapping such as {down: high, up: medium}"
 _REACTION = "a list of texts, or a mapping of up, down and other to such lists"
-
-
-def _some_time(value: int) -> int:
-    if value == 0:
-        raise fault("is no time at all", "write a longer one, such as 30s, or leave the key out")
-    return value
-
-
-class Subgroup(Section):
-    """How readings of one stream are gathered."""
-
-    size: Whole = Field(
-        default=1, ge=1, le=10_000, description="how many readings, from 1 to 10000"
-    )
-    max_gap: Annotated[Duration, AfterValidator(_some_time)] | None = Field(
-        default=None,
-        description="the longest time between two readings of one subgroup, such as 30s",
-    )
-
-
-class Baseline(Section):
-    """The frozen centre and spread."""
-
-    mean: Number = Field(description="the centre in the gauge's unit, such as 341.2")
-    sigma: Positive = Field(
-        description="the standard deviation of single readings within a subgroup, such as 1.9"
-    )
-    sigma_between: Number = Field(
-        0.0,
-        ge=0,
-        description="the standard deviation between subgroup means beyond sigma, such as 0.4, or 0",
-    )
 
 
 class Specification(Section):
@@ -98,6 +69,9 @@ class Characteristic(Section):
 
     title: Line | None = Field(None, description="a title for people, such as Net weight")
     unit: Annotated[str, Field(pattern=LINE)] = Field("", description="the unit, such as g")
+    resolution: Positive | None = Field(
+        None, description="the gauge's smallest step in its unit, such as 0.1"
+    )
     specification: Specification | None = Field(
         None, description="the tolerance, such as {nominal: 340, lower: 331, upper: 352}"
     )
@@ -109,7 +83,7 @@ class Characteristic(Section):
         description="how readings are gathered, such as {size: 5, max_gap: 30s}",
     )
     baseline: Baseline = Field(
-        description="the frozen centre and spread, such as {mean: 341.2, sigma: 1.9}"
+        description="the frozen centre and spread, such as {mean: 341.2, sigma: 1.9}, or {file: …}"
     )
     detectors: list[Annotated[AnyDetector, Field(discriminator="kind"), AfterValidator(fits)]] = (
         Field(
@@ -123,6 +97,28 @@ class Characteristic(Section):
     reaction: Annotated[ReactionByDirection, BeforeValidator(_spread_sides)] = Field(
         ReactionByDirection(), description=_REACTION
     )
+
+    @field_validator("baseline")
+    @classmethod
+    def _of_its_streams(cls, value: Baseline, info: ValidationInfo) -> Baseline:
+        place: Path = ("file",) if value.file else ()
+        found: list[tuple[Path, str, str]] = []
+        unit = value.file and value.file.unit
+        if unit is not None and unit != info.data.get("unit", unit):
+            found.append(((*place, "unit"), "is not the characteristic's unit", "mend one of them"))
+        source: Source | None = info.data.get("source")
+        keys = sorted(source.keys()) if source else []
+        if source and not keys and value.given.by_stream:
+            wrong, instead = "needs stream keys in source", "write mean: and sigma: alone"
+            found.append(((*place, "by_stream"), wrong, instead))
+        for name in value.given.by_stream if keys else ():
+            if [key for key, _ in stream_names.parse(name)] != keys:
+                wrong = f"is no stream of this characteristic, whose keys are {', '.join(keys)}"
+                instead = f"write it as {';'.join(f'{key}=…' for key in keys)}"
+                found.append(((*place, "by_stream", name), wrong, instead))
+        if found:
+            raise faults(found)
+        return value
 
     @field_validator("reaction")
     @classmethod

@@ -37,13 +37,40 @@ def _whole_seconds(value: int) -> int:
     return value
 
 
+def _expiry(value: int) -> int:
+    if value % times.SECOND or value < times.SECOND:
+        raise fault("is not a whole number of seconds from 1s up", "write 7d")
+    return value
+
+
+class Tls(Section):
+    """Files for a connection that nobody can listen in on, in PEM."""
+
+    ca: Line = Field(description="the path of the certificate authority's file, such as ca.pem")
+    certificate: Line | None = Field(
+        None, description="the path of our own certificate's file, such as monitor.pem"
+    )
+    key: Line | None = Field(
+        None, description="the path of the file that holds our certificate's key"
+    )
+
+    @field_validator("key")
+    @classmethod
+    def _has_a_certificate(cls, value: str | None, info: ValidationInfo) -> str | None:
+        if value is not None and info.data.get("certificate", "") is None:
+            raise fault("has no certificate beside it", "write certificate: too")
+        return value
+
+
 class Broker(Section):
     """How to reach the broker."""
 
     host: Annotated[Line, AfterValidator(_host)] = Field(
         description="the broker's name or address, such as localhost"
     )
-    port: Whole = Field(1883, ge=1, le=65_535, description="a port from 1 to 65535, such as 1883")
+    port: Whole | None = Field(
+        None, ge=1, le=65_535, description="a port from 1 to 65535, such as 1883"
+    )
     client_id: Line | None = Field(
         None, description="a name that no other client of the broker has, such as line-2-monitor"
     )
@@ -54,13 +81,25 @@ class Broker(Section):
     password_file: Line | None = Field(
         None, description="the path of a file that holds the password and nothing else"
     )
-    protocol: Literal["3.1.1"] = Field("3.1.1", description='"3.1.1"')
+    protocol: Literal["3.1.1", "5"] = Field("3.1.1", description='"3.1.1" or "5", in quotes')
+    session_expiry: Annotated[Duration, AfterValidator(_expiry)] = Field(
+        7 * times.DAY,
+        description="how long the broker keeps messages while we are away, such as 7d",
+    )
+    tls: Tls | None = Field(None, description="{ca: ca.pem}, with certificate and key where asked")
 
     @field_validator("password_file")
     @classmethod
     def _has_a_user(cls, value: str | None, info: ValidationInfo) -> str | None:
         if value is not None and info.data.get("username", "") is None:
             raise fault("has no username beside it", "write username: too")
+        return value
+
+    @field_validator("session_expiry")
+    @classmethod
+    def _in_protocol_5(cls, value: int, info: ValidationInfo) -> int:
+        if info.data.get("protocol") == "3.1.1":
+            raise fault('needs protocol: "5"', 'write protocol: "5", or leave it out')
         return value
 
 

@@ -9,11 +9,13 @@ from typing import Annotated, Literal
 
 from pydantic import BeforeValidator, Field, ValidationInfo, field_validator
 
+from monitor.detectors.charts import SPREAD
 from monitor.plan import Side
 from monitor.presets import PRESETS, as_written, preset
 from monitor.problems import Path
 from monitor.sections.base import Section, either, fault, faults
 from monitor.sections.scalars import Name, Number, Positive, Whole
+from monitor.sections.subgroup import Subgroup
 
 _WIDTH = "a number of standard errors above 0, such as 3"
 
@@ -113,8 +115,8 @@ class ShewhartDetector(Detector):
     """A Shewhart chart."""
 
     kind: Literal["shewhart"]
-    chart: Literal["mean", "range", "individual", "moving_range"] | None = Field(
-        None, description="mean, range, individual or moving_range"
+    chart: Literal["mean", "median", "range", "sd", "individual", "moving_range"] | None = Field(
+        None, description="mean, median, range, sd, individual or moving_range"
     )
     rules: Annotated[list[Rule], BeforeValidator(_spelt_out)] = Field(
         [OutsideRule(rule="outside")],
@@ -182,23 +184,25 @@ class EwmaDetector(Detector):
 AnyDetector = ShewhartDetector | CusumDetector | EwmaDetector
 
 
-def default_chart(size: int) -> Literal["mean", "individual"]:
+def default_chart(subgroup: Subgroup) -> Literal["mean", "individual"]:
     """What is charted where no chart is named."""
-    return "individual" if size == 1 else "mean"
+    return "individual" if subgroup.single else "mean"
 
 
 def fits(detector: AnyDetector, info: ValidationInfo) -> AnyDetector:
-    """The chart must suit the subgroup size, and the rules the chart."""
-    size: int | None = getattr(info.data.get("subgroup"), "size", None)
+    """The chart must suit the subgroup, and the rules the chart."""
+    subgroup: Subgroup | None = info.data.get("subgroup")
     chart = detector.chart
     found: list[tuple[Path, str, str]] = []
-    if chart == "range" and size == 1:
+    if subgroup and chart in ("range", "sd") and subgroup.least < 2:
         instead = "write a larger subgroup size, or moving_range"
+        if subgroup.window is not None:
+            instead = "write min_size: 2 or more in subgroup"
         found.append((("chart",), "needs two readings or more", instead))
-    if chart in ("individual", "moving_range") and size not in (None, 1):
+    if subgroup and chart in ("individual", "moving_range") and not subgroup.single:
         instead = f"write {'mean' if chart == 'individual' else 'range'}, or subgroup size 1"
         found.append((("chart",), "needs subgroups of size 1", instead))
-    if isinstance(detector, ShewhartDetector) and chart in ("range", "moving_range"):
+    if isinstance(detector, ShewhartDetector) and chart in SPREAD:
         strange = sorted({rule.rule for rule in detector.rules} - {"outside"})
         if strange:
             wrong = f"holds {', '.join(strange)}, where a {chart} chart takes the rule outside only"

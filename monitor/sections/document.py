@@ -10,7 +10,8 @@ from typing import Annotated
 from pydantic import AfterValidator, Field
 
 from monitor.sections.base import Section, fault
-from monitor.sections.characteristic import Baseline, Characteristic, Subgroup
+from monitor.sections.baseline import Baseline
+from monitor.sections.characteristic import Characteristic
 from monitor.sections.daemon import Alerts, Broker, Journal, Outputs
 from monitor.sections.detectors import Detector
 from monitor.sections.scalars import Name, Whole
@@ -22,34 +23,39 @@ def _known_version(value: int) -> int:
     return value
 
 
-class Document(Section):
-    """The whole configuration."""
+class Measured(Section):
+    """What is measured and how it is judged: all that a replay needs."""
 
     version: Annotated[Whole, AfterValidator(_known_version)] = Field(description="version: 1")
-    broker: Broker = Field(description="how to reach the broker, such as {host: localhost}")
-    outputs: Outputs = Field(
-        description="where messages go, such as {root: plant/jar-line-2/monitor}"
-    )
-    journal: Journal = Field(description="where to keep the journal: {path: var/jar-line-2.db}")
     alerts: Alerts = Field(Alerts(), description="{off_delay: 2min, rejoin: 30min}")
     characteristics: dict[Name, Characteristic] = Field(
         min_length=1, description="a mapping of names to what is measured"
     )
 
 
+class Document(Measured):
+    """The whole configuration."""
+
+    broker: Broker = Field(description="how to reach the broker, such as {host: localhost}")
+    outputs: Outputs = Field(
+        description="where messages go, such as {root: plant/jar-line-2/monitor}"
+    )
+    journal: Journal = Field(description="where to keep the journal: {path: var/jar-line-2.db}")
+
+
+DAEMON = frozenset(Document.model_fields) - frozenset(Measured.model_fields)
+"""Keys that only the daemon needs."""
+
 NOT_BUILT_KEYS: dict[type[Section], frozenset[str]] = {
-    Document: frozenset({"budget", "instances"}),
-    Broker: frozenset({"tls", "session_expiry"}),
+    Measured: frozenset({"budget", "instances"}),
     Journal: frozenset({"keep", "max_size", "keep_alerts"}),
     Characteristic: frozenset({"promise", "gauge", "changeover", "by_stream"}),
-    Subgroup: frozenset({"window", "min_size", "every"}),
-    Baseline: frozenset({"file", "learn", "over_at_least", "by_stream"}),
+    Baseline: frozenset({"learn", "over_at_least"}),
     Detector: frozenset({"catch", "ignore", "catch_ratio", "share"}),
 }
 """Keys of the contract that are still to come; delete one here when its field is added."""
 
 NOT_BUILT_VALUES: dict[str, frozenset[str]] = {
-    "protocol": frozenset({"5", "5.0"}),
-    "chart": frozenset({"sd", "median", "variance", "fraction", "number", "count", "rate"}),
+    "chart": frozenset({"variance", "fraction", "number", "count", "rate"}),
 }
 """Values of the contract that are still to come, by key."""

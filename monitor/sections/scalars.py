@@ -6,7 +6,7 @@ Knows how each is written. Must not know which key takes which.
 from __future__ import annotations
 
 import re
-from typing import Annotated
+from typing import Annotated, Any
 
 from pydantic import AfterValidator, BeforeValidator, Field
 
@@ -58,6 +58,12 @@ def _pointer(value: str) -> str:
     return value
 
 
+def _plain(value: object) -> object:
+    if isinstance(value, dict | list) or value in (float("inf"), float("-inf")) or value != value:
+        raise fault("is not a text, number, true, false or null", "write such values only")
+    return str(value) if isinstance(value, Filled) else value
+
+
 Line = Annotated[str, Field(min_length=1, pattern=LINE)]
 Name = Annotated[
     str,
@@ -78,3 +84,4 @@ Flag = Annotated[bool, BeforeValidator(_typed)]
 Duration = Annotated[int, BeforeValidator(_duration)]
 Rate = Annotated[float, BeforeValidator(_rate)]
 Pointer = Annotated[str, AfterValidator(_pointer)]
+Scalar = Annotated[Any, AfterValidator(_plain)]

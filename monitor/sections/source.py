@@ -5,14 +5,13 @@ Knows topics, pointers and stream keys. Must not know what the readings mean.
 
 from __future__ import annotations
 
-from typing import Annotated, Any, Literal
+from typing import Annotated, Literal
 
 from pydantic import AfterValidator, BeforeValidator, Field, ValidationInfo, field_validator
 
 from monitor import filters
 from monitor.sections.base import Section, fault
-from monitor.sections.scalars import Number, Pointer, Rate, StreamKey, Whole
-from monitor.yamltree import Filled
+from monitor.sections.scalars import Number, Pointer, Rate, Scalar, StreamKey, Whole
 
 RESERVED = frozenset({"characteristic", "value", "time", "sequence"})
 """Columns of a table of readings, so no stream key can be called so."""
@@ -70,15 +69,7 @@ def _spread_values(value: object) -> object:
     return {key: each if isinstance(each, list) else [each] for key, each in value.items()}
 
 
-def _comparable(value: object) -> object:
-    if isinstance(value, dict | list) or value in (float("inf"), float("-inf")) or value != value:
-        raise fault("is not a text, number, true, false or null", "write such values only")
-    return str(value) if isinstance(value, Filled) else value
-
-
 _USE_IF = "values to compare with, such as {/verdict: [accept, reject]}"
-
-Comparable = Annotated[Any, AfterValidator(_comparable)]
 
 
 class Source(Section):
@@ -101,7 +92,7 @@ class Source(Section):
         {}, description="a mapping of names to places in the payload, such as {head: /head}"
     )
     use_if: Annotated[
-        dict[Pointer, Annotated[list[Comparable], Field(min_length=1, description=_USE_IF)]],
+        dict[Pointer, Annotated[list[Scalar], Field(min_length=1, description=_USE_IF)]],
         BeforeValidator(_spread_values),
     ] = Field({}, description=_USE_IF)
     plausible: Plausible | None = Field(

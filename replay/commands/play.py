@@ -12,7 +12,6 @@ import sys
 from collections.abc import Mapping, Sequence
 from contextlib import ExitStack
 from pathlib import Path
-from time import monotonic
 
 import orjson
 
@@ -20,10 +19,11 @@ from monitor import files
 from monitor.commandline import COULD_NOT, DONE, WRONG, CommandError
 from monitor.plan import Plan
 from monitor.problems import ConfigurationError
-from monitor.resolve import read_settings
+from monitor.resolve import read_plan
 from monitor.times import parse_duration
 from replay.play import Played, play
-from replay.recordings import Recording
+from replay.progress import Progress
+from replay.recordings import Chunk, Recording
 from replay.summary import summary
 from replay.tables import WORDS, Layout
 
@@ -35,7 +35,8 @@ def configure(parser: argparse.ArgumentParser) -> None:
         "recordings",
         metavar="RECORDING",
         nargs="+",
-        help="messages (.jsonl) or a table of readings (.csv), also .gz; several are one stream",
+        help="messages (.jsonl) or a table of readings (.csv), also .gz, or a journal (.db); "
+        "several are one stream, in order of arrival",
     )
     parser.add_argument(
         "--alerts", metavar="FILE.jsonl", help="write the alert events; - is stdout"
@@ -65,7 +66,13 @@ def main(args: argparse.Namespace) -> int:
     layout = Layout(_keys(plan), _headers(args.column, plan), _only(plan))
     interval = _interval(args.interval)
     recordings = [Recording(path) for path in args.recordings]
-    progress = _Progress(len(recordings)) if sys.stderr.isatty() else None
+    progress = Progress()
+    seen: dict[str, None] = {}
+
+    def tell(chunk: Chunk) -> None:
+        seen[chunk.recording.path] = None
+        progress(lambda: _how_far(chunk, len(seen), len(recordings)))
+
     with ExitStack() as stack:
         alerts, points = (
             None if path is None else stack.enter_context(files.replacing(path))
@@ -73,18 +80,18 @@ def main(args: argparse.Namespace) -> int:
         )
         try:
             played = play(
-                plan, recordings, layout, interval, alerts=alerts, points=points, progress=progress
+                plan, recordings, layout, interval, alerts=alerts, points=points, progress=tell
             )
         finally:
-            if progress is not None:
-                progress.clear()
+            progress.clear()
     _complain(played)
+    noun = "rows" if all(recording.rows for recording in recordings) else "messages"
     if args.json:
         sys.stdout.buffer.write(_json(played))
     elif files.STDOUT in (args.alerts, args.points):
-        sys.stderr.write(summary(played, _noun(args.recordings)))
+        sys.stderr.write(summary(played, noun))
     else:
-        sys.stdout.write(summary(played, _noun(args.recordings)))
+        sys.stdout.write(summary(played, noun))
     return COULD_NOT if played.unreadable and not played.entries else DONE
 
 
@@ -102,7 +109,7 @@ def _check_outputs(args: argparse.Namespace) -> None:
 
 def _plan(path: str) -> Plan:
     try:
-        return read_settings(Path(path), os.environ).plan
+        return read_plan(Path(path), os.environ)
     except ConfigurationError as error:
         raise CommandError(str(error), WRONG) from None
 
@@ -146,10 +153,6 @@ def _interval(text: str) -> int:
     return interval
 
 
-def _noun(paths: Sequence[str]) -> str:
-    return "rows" if all(p.lower().endswith((".csv", ".csv.gz")) for p in paths) else "messages"
-
-
 def _complain(played: Played) -> None:
     for line in played.unreadable_at:
         print(line, file=sys.stderr)
@@ -177,28 +180,8 @@ def _json(played: Played) -> bytes:
     )
 
 
-class _Progress:
-    """One line on stderr, from the second second on, a few times a second."""
-
-    def __init__(self, recordings: int) -> None:
-        self._recordings = recordings
-        self._seen: dict[str, None] = {}
-        self._next = monotonic() + 1.0
-        self._shown = False
-
-    def __call__(self, recording: Recording, number: int) -> None:
-        self._seen[recording.path] = None
-        now = monotonic()
-        if now < self._next:
-            return
-        self._next = now + 0.25
-        self._shown = True
-        which = f" ({len(self._seen)} of {self._recordings})" if self._recordings > 1 else ""
-        part = f" {recording.fraction():.0%}" if recording.fraction() else ""
-        line = f"{recording.path}{which}:{part} line {number:,}"
-        print(f"\r\x1b[K{line}", end="", file=sys.stderr, flush=True)
-
-    def clear(self) -> None:
-        """Take the line away."""
-        if self._shown:
-            print("\r\x1b[K", end="", file=sys.stderr, flush=True)
+def _how_far(chunk: Chunk, begun: int, recordings: int) -> str:
+    fraction = chunk.recording.fraction()
+    which = f" ({begun} of {recordings})" if recordings > 1 else ""
+    part = f" {fraction:.0%}" if fraction else ""
+    return f"{chunk.recording.path}{which}:{part} line {chunk.first + len(chunk.entries) - 1:,}"

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import io
 import json
 from contextlib import suppress
 
@@ -11,7 +12,16 @@ from hypothesis import strategies as st
 
 from monitor import numbers
 from monitor.commandline import CommandError
-from monitor.entries import Connected, Disconnected, Entry, Message, Started
+from monitor.decode import MAX_PAYLOAD
+from monitor.entries import (
+    Connected,
+    Disconnected,
+    Entry,
+    Message,
+    Parsed,
+    Started,
+    Tick,
+)
 from replay.lines import ControlError, LineError, decode_line, read_lines
 
 MOMENT = 1_772_433_672_350_000  # 2026-03-02T06:41:12.350Z, by `date -u -d @1772433672`
@@ -19,7 +29,14 @@ MOMENT = 1_772_433_672_350_000  # 2026-03-02T06:41:12.350Z, by `date -u -d @1772
 
 def read(*lines: bytes) -> tuple[list[tuple[int, Entry]], list[tuple[int, str]]]:
     wrong: list[tuple[int, str]] = []
-    entries = list(read_lines("a.jsonl", lines, lambda number, why: wrong.append((number, why))))
+    file = io.BytesIO(b"".join(line if line.endswith(b"\n") else line + b"\n" for line in lines))
+    chunks = read_lines("a.jsonl", file, lambda number, why: wrong.append((number, why)))
+    entries = [
+        (number, entry)
+        for first, held in chunks
+        for number, entry in enumerate(held, first)
+        if entry is not None
+    ]
     return entries, wrong
 
 
@@ -35,17 +52,38 @@ def read(*lines: bytes) -> tuple[list[tuple[int, Entry]], list[tuple[int, str]]]
 )
 def test_arrival_is_iso_or_epoch(time: bytes) -> None:
     line = b'{"time": %s, "topic": "a", "payload": 1}' % time
-    assert decode_line(line) == Message(MOMENT, "a", b"1")
+    assert decode_line(line) == Parsed(MOMENT, "a", 1)
 
 
 def test_names_may_stand_in_any_order_and_others_are_ignored() -> None:
     line = b'{"payload": {"net": 1}, "note": "x", "topic": "a", "time": 1772433672.35}\r\n'
-    assert decode_line(line) == Message(MOMENT, "a", b'{"net":1}')
+    assert decode_line(line) == Parsed(MOMENT, "a", {"net": 1})
 
 
 def test_retain_and_qos() -> None:
     line = b'{"time":1772433672.35,"topic":"a","retain":true,"qos":0,"payload":1}'
     assert decode_line(line) == Message(MOMENT, "a", b"1", True, 0)
+
+
+def test_flags_that_say_nothing_make_no_difference() -> None:
+    line = b'{"time":1772433672.35,"topic":"a","retain":false,"qos":1,"payload":[1]}'
+    assert decode_line(line) == Parsed(MOMENT, "a", [1])
+
+
+def test_an_oversized_payload_keeps_its_size() -> None:
+    line = b'{"time":1772433672.35,"topic":"a","payload":"%s"}'
+    just = b"x" * (MAX_PAYLOAD - 2)
+    entries, _ = read(line % just, line % (just + b"x"))
+    assert entries == [
+        (1, Parsed(MOMENT, "a", just.decode())),
+        (2, Message(MOMENT, "a", b'"%sx"' % just)),
+    ]
+
+
+def test_a_payload_too_deep_to_be_written_again_as_it_was_read_is_written_all_the_same() -> None:
+    payload = b"[" * 300 + b"]" * 300
+    line = b'{"time":1772433672.35,"topic":"a","payload":%s}' % payload
+    assert read(line) == ([(1, Message(MOMENT, "a", payload))], [])
 
 
 def test_base64() -> None:
@@ -76,16 +114,18 @@ def test_control_lines() -> None:
         b'{"time":1772433672.35,"control":"connected","session_present":false}',
         b'{"time":1772433672.35,"control":"connected"}',
         b'{"time":1772433672.35,"control":"disconnected"}',
+        b'{"time":1772433672.35,"control":"tick"}',
     ]
     assert [decode_line(line) for line in lines] == [
         Started(MOMENT),
         Connected(MOMENT, False),
         Connected(MOMENT, True),
         Disconnected(MOMENT),
+        Tick(MOMENT),
     ]
 
 
-@pytest.mark.parametrize("control", ["tick", "config", "command", "state"])
+@pytest.mark.parametrize("control", ["config", "command", "state"])
 def test_controls_of_later_versions_end_the_play(control: str) -> None:
     line = b'{"time":1,"control":"%s"}' % control.encode()
     with pytest.raises(CommandError, match=rf'^a\.jsonl:2: control "{control}" is not built yet$'):
@@ -94,7 +134,7 @@ def test_controls_of_later_versions_end_the_play(control: str) -> None:
 
 def test_an_unknown_control_ends_the_play() -> None:
     with pytest.raises(
-        CommandError, match=r"^a\.jsonl:1: control 'conected' is unknown: connected"
+        CommandError, match=r"^a\.jsonl:1: control 'conected' is unknown: connected, .* or tick$"
     ):
         read(b'{"time":1,"control":"conected"}')
 

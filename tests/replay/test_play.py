@@ -178,6 +178,37 @@ def test_several_recordings_are_one_stream(
     assert outputs[0].count(b"\n") == 1 + 4 * 3  # a Shewhart row and two sums a subgroup
 
 
+def test_recordings_of_one_day_are_played_as_the_day_was(
+    play: Play, write: Callable[[str, str], str], tmp_path: Path
+) -> None:
+    # A gauge that sends no time, caught by two clients in turn; only in order are there no gaps.
+    torque = TORQUE | {"subgroup": {"size": 5, "max_gap": "1s"}}
+    config = write(
+        "torque.yaml", json.dumps(DOCUMENT | {"characteristics": {"cap-torque": torque}})
+    )
+    day = [
+        json.dumps({"time": stamp(n), "topic": "plant/torque", "payload": 2 + n / 1000}) + "\n"
+        for n in range(100)
+    ]
+    halves = [write("odd.jsonl", "".join(day[1::2])), write("even.jsonl", "".join(day[::2]))]
+    whole = write("whole.jsonl", "".join(day))
+    outputs = []
+    for paths in ([whole], halves, halves[::-1]):
+        points = tmp_path / "points.csv"
+        assert play(config, *paths, "--points", str(points))[0] == 0
+        outputs.append(points.read_bytes())
+    assert outputs[0].count(b"\n") == 1 + 20
+    assert outputs[0] == outputs[1] == outputs[2]
+
+
+def test_no_password_is_needed_to_play(
+    play: Play, recording: str, write: Callable[[str, str], str]
+) -> None:
+    broker = {"host": "localhost", "username": "line", "password_file": "on-the-line-only"}
+    config = write("line-2.yaml", json.dumps(DOCUMENT | {"broker": broker}))
+    assert counted(play, config, recording)["readings"] == 4
+
+
 def test_tables_without_times_go_on_where_the_last_one_ended(
     play: Play, write: Callable[[str, str], str], tmp_path: Path
 ) -> None:
@@ -307,9 +338,10 @@ def test_what_a_payload_says_cannot_move_the_cursor(
 def test_messages_out_of_order_are_pointed_out(
     play: Play, config: str, write: Callable[[str, str], str]
 ) -> None:
-    late, early = write("b.jsonl", message(9, 340)), write("a.jsonl", message(1, 340, head=5))
-    _, out, _ = play(config, late, early)
-    assert f"1 arrived before one recorded earlier, first at {early}:1" in out
+    path = write("a.jsonl", message(9, 340) + message(1, 340, head=5) + message(10, 340))
+    _, out, _ = play(config, path)
+    assert f"1 arrived before one recorded earlier, first at {path}:2: is the recording in" in out
+    assert "2026-03-02 06:00:01Z to 2026-03-02 06:00:10Z (9 s)" in out
 
 
 def test_progress_is_shown_on_a_terminal_and_taken_away(config: str, tmp_path: Path) -> None:
@@ -370,12 +402,12 @@ def test_a_file_without_a_single_line_is_a_failure(
 def test_a_play_that_fails_leaves_no_results(
     play: Play, config: str, recording: str, write: Callable[[str, str], str], tmp_path: Path
 ) -> None:
-    broken = write("b.jsonl", '{"time":1,"control":"tick"}')
+    broken = write("b.jsonl", '{"time":1,"control":"config"}')
     points = tmp_path / "points.csv"
     points.write_text("old")
     status, out, err = play(config, recording, broken, "--points", str(points))
     assert (status, out) == (1, "")
-    assert err == f'driftbell-replay play: {broken}:1: control "tick" is not built yet\n'
+    assert err == f'driftbell-replay play: {broken}:1: control "config" is not built yet\n'
     assert points.read_text() == "old"
     assert not list(tmp_path.glob(".points*"))
 

@@ -5,6 +5,8 @@ from __future__ import annotations
 import gzip
 import itertools
 import os
+import sqlite3
+from collections.abc import Iterator
 from contextlib import suppress
 from pathlib import Path
 
@@ -12,19 +14,24 @@ import pytest
 from hypothesis import HealthCheck, given, settings
 from hypothesis import strategies as st
 
-from monitor.commandline import COULD_NOT, WRONG, CommandError
-from monitor.entries import Entry, Message, Reading
-from replay.recordings import Recording
+from monitor.commandline import COULD_NOT, CommandError
+from monitor.entries import Entry, Message, Parsed, Reading, Started
+from monitor.journal import Journal
+from replay.recordings import Chunk, Recording
 from replay.tables import Layout
 
 LINE = b'{"time":1772433672.35,"topic":"plant/a","payload":1}\n'
 TABLE = "characteristic,value,head\na,1,Düse 4\n".encode()
 
 
-def entries(path: Path) -> list[Entry]:
+def chunks(recording: Recording) -> Iterator[Chunk]:
     layout = Layout(("head",), {}, None)
-    recording = Recording(str(path))
-    return [entry for _, entry in recording.entries(layout, itertools.count(), lambda *_: None)]
+    return recording.open(layout, itertools.count(), lambda *_: None).chunks
+
+
+def entries(path: Path) -> list[Entry]:
+    held = [entry for chunk in chunks(Recording(str(path))) for entry in chunk.entries]
+    return [entry for entry in held if entry is not None]
 
 
 def write(path: Path, content: bytes) -> Path:
@@ -36,7 +43,7 @@ def write(path: Path, content: bytes) -> Path:
 @pytest.mark.parametrize("mark", [b"", b"\xef\xbb\xbf"])
 def test_messages(tmp_path: Path, name: str, mark: bytes) -> None:
     path = write(tmp_path / name, mark + LINE)
-    assert entries(path) == [Message(1_772_433_672_350_000, "plant/a", b"1")]
+    assert entries(path) == [Parsed(1_772_433_672_350_000, "plant/a", 1)]
 
 
 @pytest.mark.parametrize("name", ["a.csv", "a.csv.gz", "A.CSV"])
@@ -54,24 +61,25 @@ def test_an_older_encoding_stays_readable_and_what_differs_stays_different(tmp_p
 
 
 @pytest.mark.parametrize(
-    ("name", "content", "why", "code"),
+    ("name", "content", "why"),
     [
-        ("a.txt", b"", "a recording's name ends in .jsonl or .csv", COULD_NOT),
-        ("a", b"", "a recording's name ends in .jsonl or .csv", COULD_NOT),
-        ("a.gz", b"", "a recording's name ends in .jsonl or .csv", COULD_NOT),
-        ("a.db", b"", "playing a journal is not built yet; driftbell export", WRONG),
-        ("a.csv", "a,b".encode("utf-16"), "is UTF-16 text: save it as UTF-8", COULD_NOT),
+        ("a.txt", b"", "a recording's name ends in .jsonl or .csv"),
+        ("a", b"", "a recording's name ends in .jsonl or .csv"),
+        ("a.gz", b"", "a recording's name ends in .jsonl or .csv"),
+        ("a.db.gz", b"\x1f\x8b", "a recording's name ends in .jsonl or .csv"),
+        ("a.db", LINE, "file is not a database"),
+        ("a.csv", "a,b".encode("utf-16"), "is UTF-16 text: save it as UTF-8"),
     ],
 )
 def test_what_cannot_be_read_is_refused_before_anything_is_played(
-    tmp_path: Path, name: str, content: bytes, why: str, code: int
+    tmp_path: Path, name: str, content: bytes, why: str
 ) -> None:
     (tmp_path / name).write_bytes(content)
     with pytest.raises(CommandError) as error:
         Recording(str(tmp_path / name))
     assert str(tmp_path / name) in str(error.value)
     assert why in str(error.value)
-    assert error.value.code == code
+    assert error.value.code == COULD_NOT
 
 
 def test_a_plain_file_called_gz_is_refused(tmp_path: Path) -> None:
@@ -99,8 +107,8 @@ def test_compressed_data_that_ends_early_is_said(tmp_path: Path) -> None:
 
 
 def test_compressed_data_that_is_damaged_is_said(tmp_path: Path) -> None:
-    whole = bytearray(gzip.compress(LINE + os.urandom(5000)))
-    whole[2000] ^= 0xFF
+    whole = bytearray(gzip.compress(LINE * 1000 + os.urandom(500_000)))
+    whole[-2000] ^= 0xFF
     (tmp_path / "a.jsonl.gz").write_bytes(whole)
     with pytest.raises(CommandError, match="to its end"):
         entries(tmp_path / "a.jsonl.gz")
@@ -110,13 +118,60 @@ def test_it_knows_how_far_it_is(tmp_path: Path) -> None:
     path = write(tmp_path / "a.jsonl", LINE * 50_000)
     recording = Recording(str(path))
     assert recording.fraction() == 0.0
-    seen = [
-        recording.fraction()
-        for _ in recording.entries(Layout((), {}, None), itertools.count(), lambda *_: None)
-    ]
+    seen = [recording.fraction() for _ in chunks(recording)]
     assert seen == sorted(seen)
     assert 0.0 < seen[0] < 0.5
     assert seen[-1] == 1.0
+
+
+def test_every_line_keeps_its_number(tmp_path: Path) -> None:
+    lines = [LINE if number % 7 else b"\n" for number in range(1, 5001)]
+    path = write(tmp_path / "a.jsonl", b"".join(lines))
+    numbers = [
+        number
+        for chunk in chunks(Recording(str(path)))
+        for number, entry in enumerate(chunk.entries, chunk.first)
+        if entry is not None
+    ]
+    assert numbers == [number for number in range(1, 5001) if number % 7]
+
+
+def test_every_row_keeps_the_number_of_the_line_it_ends_on(tmp_path: Path) -> None:
+    rows = "".join(f'a,{number},"over\ntwo lines"\n' for number in range(2000))
+    path = write(tmp_path / "a.csv", f"characteristic,value,head\n{rows}".encode())
+    numbers = [
+        number
+        for chunk in chunks(Recording(str(path)))
+        for number, entry in enumerate(chunk.entries, chunk.first)
+        if entry is not None
+    ]
+    assert numbers == [*range(3, 4002, 2)]
+
+
+def test_a_journal_also_while_it_is_written(tmp_path: Path) -> None:
+    held = [Started(1), Message(2, "plant/a", b"\xff", True, 0), Message(3, "plant/a", b"1.0")]
+    journal = Journal(tmp_path / "a.db")
+    journal.commit(held, [])
+    reading = chunks(Recording(str(tmp_path / "a.db")))
+    first = next(reading)
+    journal.commit([Message(4, "plant/a", b"2")], [])
+    assert [*first.entries, *(entry for chunk in reading for entry in chunk.entries)] == held
+    journal.close()
+
+
+def test_a_missing_journal_is_named(tmp_path: Path) -> None:
+    with pytest.raises(CommandError, match=r"cannot read .*a\.db: No such file or directory"):
+        Recording(str(tmp_path / "a.db"))
+
+
+def test_a_journal_that_is_damaged_is_said(tmp_path: Path) -> None:
+    path = tmp_path / "a.db"
+    with sqlite3.connect(path) as db:
+        db.executescript(
+            "CREATE TABLE meta (name, value); INSERT INTO meta VALUES ('schema', '1');"
+        )
+    with pytest.raises(CommandError, match=r"cannot read .*a\.db to its end: no such table"):
+        entries(path)
 
 
 @settings(suppress_health_check=[HealthCheck.function_scoped_fixture])

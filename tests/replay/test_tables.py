@@ -14,7 +14,7 @@ from hypothesis import strategies as st
 
 from monitor.commandline import WRONG, CommandError
 from monitor.entries import Reading
-from replay.tables import FIRST_ROW, Layout, read_table
+from replay.tables import FIRST_ROW, Layout, Table
 
 SECOND = 1_000_000
 PLAIN = Layout(("head", "lane"), {}, None)
@@ -24,13 +24,9 @@ def read(
     text: str, layout: Layout = PLAIN, clock: itertools.count[int] | None = None
 ) -> tuple[list[tuple[int, Reading]], list[tuple[int, str]]]:
     wrong: list[tuple[int, str]] = []
-    rows = read_table(
-        "a.csv",
-        io.StringIO(text, newline=""),
-        layout,
-        itertools.count(FIRST_ROW, SECOND) if clock is None else clock,
-        lambda number, why: wrong.append((number, why)),
-    )
+    file = io.StringIO(text, newline="")
+    table = Table("a.csv", file, layout, lambda number, why: wrong.append((number, why)))
+    rows = table.readings(itertools.count(FIRST_ROW, SECOND) if clock is None else clock)
     return list(rows), wrong
 
 
