@@ -37,7 +37,7 @@ class Daemon:
         pipeline = self._pipeline = Pipeline(settings, self._wakeup.is_stopping)
         self._health = Health()
         self._publisher = Publisher(settings.root, pipeline.engine, self._health, pipeline.outbox)
-        self._dialler = Dialler(settings.broker.host, settings.broker.port, self._wakeup)
+        self._dialler = Dialler(settings.broker, self._wakeup)
         self._link: Link | None = None
         self._stale: frozenset[str] = frozenset()
         self._more = False

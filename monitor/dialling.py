@@ -1,16 +1,19 @@
 """Reaching the broker: one try at a time, and when the next is due.
 
-Knows addresses, sockets and backoff. Must not know MQTT, or what a connection is for.
+Knows addresses, sockets, certificates and backoff. Must not know MQTT, or what a connection is for.
 """
 
 from __future__ import annotations
 
 import math
 import socket
+import ssl
 import time
 from collections.abc import Callable
 from concurrent.futures import Future
 from threading import Thread
+
+from monitor.plan import BrokerPlan
 
 _TIMEOUT = 5.0  # seconds for each address a name stands for
 _BACKOFF = (0.05, 0.5, 1.0, 2.0, 5.0, 10.0, 30.0)
@@ -25,8 +28,9 @@ class Dialler:
     process that is told to stop must. ``wake`` is called from that thread when the try is over.
     """
 
-    def __init__(self, host: str, port: int, wake: Callable[[], object]) -> None:
-        self._address = host, port
+    def __init__(self, broker: BrokerPlan, wake: Callable[[], object]) -> None:
+        self._address = broker.host, broker.port
+        self._tls = broker.tls
         self._wake = wake
         self._trying: Future[socket.socket] | None = None
         self._failures = 0
@@ -84,9 +88,23 @@ class Dialler:
 
     def _try(self, result: Future[socket.socket]) -> None:
         try:
-            result.set_result(socket.create_connection(self._address, _TIMEOUT))
-        except OSError as error:
+            connection = socket.create_connection(self._address, _TIMEOUT)
+            result.set_result(connection if self._tls is None else self._secured(connection))
+        except OSError as error:  # those of TLS among them
             result.set_exception(error)
         except UnicodeError:  # from the codec of host names
             result.set_exception(OSError("no host can have this name"))
         self._wake()
+
+    def _secured(self, connection: socket.socket) -> socket.socket:
+        """The connection once both sides have shown the certificates they must."""
+        assert self._tls is not None
+        try:
+            # Read at each try: certificates are renewed while we run.
+            context = ssl.create_default_context(cafile=self._tls.ca)
+            if self._tls.certificate is not None:
+                context.load_cert_chain(self._tls.certificate, self._tls.key)
+            return context.wrap_socket(connection, server_hostname=self._address[0])
+        except OSError:
+            connection.close()
+            raise

@@ -8,15 +8,19 @@ from __future__ import annotations
 import contextlib
 import select
 import socket
+import ssl
 import struct
 import time
 from collections.abc import Callable, Iterable, Sequence
 from typing import Any, Protocol
 
 import paho.mqtt.client as paho
-from paho.mqtt.enums import CallbackAPIVersion
+from paho.mqtt.enums import CallbackAPIVersion, MQTTProtocolVersion
+from paho.mqtt.packettypes import PacketTypes
+from paho.mqtt.properties import Properties
 from paho.mqtt.reasoncodes import ReasonCode
 
+from monitor.messages import SCHEMA
 from monitor.plan import BrokerPlan
 
 _ANSWER = 10.0  # seconds a broker has to answer our CONNECT
@@ -80,7 +84,7 @@ class _Corked:
         while self._out:
             try:
                 sent = self._sock.send(self._out)
-            except BlockingIOError:
+            except (BlockingIOError, ssl.SSLWantWriteError, ssl.SSLWantReadError):
                 return
             del self._out[:sent]
 
@@ -145,18 +149,22 @@ class Link:
         self._session_present = False
         self._answer_by = time.monotonic() + _ANSWER
         connection.setsockopt(socket.IPPROTO_TCP, socket.TCP_NODELAY, 1)
+        five = broker.protocol == "5"
         client = self._client = _Client(
             CallbackAPIVersion.VERSION2,
             client_id=broker.client_id,
-            clean_session=False,
+            clean_session=None if five else False,
+            protocol=MQTTProtocolVersion.MQTTv5 if five else MQTTProtocolVersion.MQTTv311,
             manual_ack=True,
             reconnect_on_failure=False,
         )
+        self._described = _described(PacketTypes.PUBLISH) if five else None
         self._corked = client.corked = _Corked(connection)
         # Without a limit; with one, each word of the broker costs paho a search.
         client.max_inflight_messages_set(0)
         client.username_pw_set(broker.username, broker.password)
-        client.will_set(*will, qos=1, retain=True)
+        last_words = _described(PacketTypes.WILLMESSAGE) if five else None
+        client.will_set(*will, qos=1, retain=True, properties=last_words)
         # With this set paho leaves its packets in its queue until it is told to write.
         client.on_socket_register_write = _nothing
         client.on_connect = self._on_connect
@@ -164,7 +172,14 @@ class Link:
         client.on_subscribe = self._on_subscribe
         client.on_message = self._on_message
         client.on_publish = self._on_publish
-        client.connect(broker.host, broker.port, broker.keepalive)
+        if five:
+            session = _properties(PacketTypes.CONNECT)
+            session.SessionExpiryInterval = broker.session_expiry
+            client.connect(
+                broker.host, broker.port, broker.keepalive, clean_start=False, properties=session
+            )
+        else:
+            client.connect(broker.host, broker.port, broker.keepalive)
 
     def fileno(self) -> int:
         """For select."""
@@ -208,7 +223,9 @@ class Link:
     def publish(self, topic: str, payload: bytes, *, retain: bool = False) -> int:
         """Queue a message at QoS 1; the packet identifier that ``taken`` will name."""
         self.waiting += 1
-        self.last_packet = self._client.publish(topic, payload, qos=1, retain=retain).mid
+        self.last_packet = self._client.publish(
+            topic, payload, qos=1, retain=retain, properties=self._described
+        ).mid
         return self.last_packet
 
     def write(self) -> None:
@@ -291,6 +308,19 @@ class Link:
     ) -> None:
         self.waiting -= 1
         self._receiver.taken(mid)
+
+
+def _described(packet: int) -> Properties:
+    """What MQTT 5 tells of our payloads: the version of their schema, and that they are JSON."""
+    properties = _properties(packet)
+    properties.ContentType = "application/json"
+    properties.PayloadFormatIndicator = 1
+    properties.UserProperty = ("schema", str(SCHEMA))
+    return properties
+
+
+def _properties(packet: int) -> Properties:
+    return Properties(packet)  # type: ignore[no-untyped-call]
 
 
 def _nothing(client: object, userdata: object, sock: object) -> None:

@@ -200,6 +200,12 @@ class CharacteristicPlan:
         """The stream's own judgement, else the common one; None where it has neither."""
         return self.by_stream.get(stream, self.judgement)
 
+    def example(self) -> tuple[Stream | None, Judgement]:
+        """The common judgement, or that of the first stream: all have the same detectors."""
+        if self.judgement is not None:
+            return None, self.judgement
+        return next(iter(self.by_stream.items()))
+
 
 @dataclass(frozen=True, slots=True)
 class Judged:

@@ -24,7 +24,7 @@ from replay.moments import FIRST, LAST, arrival
 OnUnreadable = Callable[[int, str], None]
 """Told the number of a line that is no entry, and what is wrong with it."""
 
-_LATER = ("config", "command", "state")
+_LATER = ("command", "state")
 _CHUNK = 1 << 16  # bytes
 _MICROSECOND = timedelta(microseconds=1)
 
@@ -163,7 +163,8 @@ def _control(time: int, document: dict[str, object]) -> Entry:
         return Started(time)
     if control == "disconnected":
         return Disconnected(time)
-    if control == "tick":
+    if control in ("tick", "config"):
+        # Whoever plays a recording brings the configuration: of this one only the moment counts.
         return Tick(time)
     if control == "connected":
         present = document.get("session_present", True)
@@ -172,4 +173,5 @@ def _control(time: int, document: dict[str, object]) -> Entry:
         return Connected(time, present)
     if control in _LATER:
         raise ControlError(f'control "{control}" is not built yet')
-    raise ControlError(f"control {control!r} is unknown: connected, disconnected, started or tick")
+    known = "connected, disconnected, started, tick or config"
+    raise ControlError(f"control {control!r} is unknown: {known}")

@@ -18,7 +18,7 @@ from pathlib import Path
 from typing import cast
 
 from monitor.commandline import CommandError
-from monitor.entries import Entry
+from monitor.entries import Configured, Entry, Recorded, Tick
 from monitor.journal import JournalError, open_reader, read_entries
 from replay.lines import read_lines
 from replay.tables import Layout, Table
@@ -92,7 +92,8 @@ class Recording:
         with self._said_in_words():
             if self._kind == ".db":
                 journal = open_reader(Path(self.path))
-                return Opened(self._chunks(_gathered(enumerate(read_entries(journal), 1)), journal))
+                held = _without_configurations(read_entries(journal))
+                return Opened(self._chunks(_gathered(enumerate(held, 1)), journal))
             file = self._unpacked()
             if self._kind == ".jsonl":
                 return Opened(self._chunks(read_lines(self.path, file, say), file))
@@ -137,9 +138,14 @@ class Recording:
             raise CommandError(str(error)) from error
         except EOFError as error:
             raise CommandError(f"{self.path} ends in the middle of its compressed data") from error
-        except (OSError, zlib.error, sqlite3.Error) as error:
+        except (OSError, zlib.error, sqlite3.Error, ValueError) as error:
             why = getattr(error, "strerror", None) or error
             raise CommandError(f"cannot read {self.path}{how_far}: {why}") from error
+
+
+def _without_configurations(entries: Iterable[Recorded]) -> Iterator[Recorded]:
+    """Whoever plays a recording brings the configuration: of another only the moment counts."""
+    return (Tick(e.time) if isinstance(e, Configured) else e for e in entries)
 
 
 def _gathered(numbered: Iterable[tuple[int, Entry]]) -> Iterator[tuple[int, list[Entry | None]]]:

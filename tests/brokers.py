@@ -269,13 +269,17 @@ class Daemon:
         self.root = str(outputs["root"])
         self.process: subprocess.Popen[bytes] | None = None
 
+    def command(self) -> list[str]:
+        """What starts it."""
+        return [sys.executable, "-m", "monitor", "run", str(self.configuration)]
+
     def start(self) -> None:
         """Start it, and return once it has said ``online: true``, which it says when subscribed."""
         with Client(self._port) as watcher:
             watcher.subscribe(f"{self.root}/health")
             with self.log.open("ab") as log:
                 self.process = subprocess.Popen(
-                    [sys.executable, "-m", "monitor", "run", str(self.configuration)],
+                    self.command(),
                     stdin=subprocess.DEVNULL,
                     stdout=log,
                     stderr=log,

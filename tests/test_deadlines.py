@@ -64,7 +64,7 @@ steps = st.lists(
 )
 
 
-@settings(max_examples=300)
+@settings(max_examples=300, deadline=None)
 @given(steps)
 def test_they_fire_as_those_of_a_sorted_list_do(steps: list[tuple[str, Owner, int]]) -> None:
     deadlines, naive, now = Deadlines(), Naive(), 0

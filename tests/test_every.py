@@ -60,7 +60,7 @@ def expected_of(
         free = end
 
 
-@settings(max_examples=300)
+@settings(max_examples=300, deadline=None)
 @given(
     st.lists(st.integers(0, 7), max_size=50),
     st.integers(1, 4),

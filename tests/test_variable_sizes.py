@@ -120,7 +120,7 @@ LOCATION: dict[Chart, tuple[Statistic, Callable[[int], float]]] = {
 # Limits
 
 
-@settings(max_examples=50)
+@settings(max_examples=50, deadline=None)
 @pytest.mark.parametrize("chart", ["mean", "median"])
 @given(subgroups)
 def test_limits_of_a_centre_move_with_the_size(chart: Chart, sizes: list[list[float]]) -> None:
@@ -134,7 +134,7 @@ def test_limits_of_a_centre_move_with_the_size(chart: Chart, sizes: list[list[fl
         assert (row.lower, row.upper) == pytest.approx((MEAN - reach, MEAN + reach), rel=1e-6)
 
 
-@settings(max_examples=50)
+@settings(max_examples=50, deadline=None)
 @pytest.mark.parametrize("chart", ["range", "sd"])
 @given(subgroups)
 def test_limits_of_a_spread_move_with_the_size(chart: Chart, sizes: list[list[float]]) -> None:
@@ -155,7 +155,7 @@ def test_limits_of_a_spread_move_with_the_size(chart: Chart, sizes: list[list[fl
         assert list(row.rules) == beyond
 
 
-@settings(max_examples=50)
+@settings(max_examples=50, deadline=None)
 @given(subgroups, st.sampled_from([None, 1.5]), st.booleans())
 def test_a_cusum_adds_each_point_in_its_own_standard_errors(
     sizes: list[list[float]], clip: float | None, hold: bool
@@ -181,7 +181,7 @@ def test_a_cusum_adds_each_point_in_its_own_standard_errors(
             lower = start if lower > h else lower
 
 
-@settings(max_examples=50)
+@settings(max_examples=50, deadline=None)
 @given(subgroups, st.booleans(), st.booleans())
 def test_an_ewmas_limits_follow_the_variance_of_all_its_points(
     sizes: list[list[float]], asymptotic: bool, hold: bool
@@ -274,7 +274,7 @@ def expected_rules(
     return pattern(len(values), plan.length, met)
 
 
-@settings(max_examples=60)
+@settings(max_examples=60, deadline=None)
 @pytest.mark.parametrize("chart", ["mean", "median"])
 @pytest.mark.parametrize(
     "plan",

@@ -504,7 +504,7 @@ def seen_of(outputs: Sequence[Output]) -> list[tuple[object, ...]]:
     return found
 
 
-@settings(max_examples=400)
+@settings(max_examples=400, deadline=None)
 @given(ticked)
 def test_windows_are_those_of_the_reference_and_come_when_it_says(steps: list[Step]) -> None:
     watching, reference = engine(*PLANS), Reference(PLANS)
@@ -555,7 +555,7 @@ def with_ticks(entries: Sequence[Given], places: Sequence[tuple[int, float]]) ->
 tick_places = st.lists(st.tuples(st.integers(0, 49), st.floats(0, 1)), max_size=12)
 
 
-@settings(max_examples=400)
+@settings(max_examples=400, deadline=None)
 @given(st.one_of(undisturbed, disturbed), tick_places)
 def test_ticks_change_nothing_but_when_points_appear(
     steps: list[Step], places: list[tuple[int, float]]
@@ -570,7 +570,7 @@ def test_ticks_change_nothing_but_when_points_appear(
     assert standings(among) == standings(alone)
 
 
-@settings(max_examples=300)
+@settings(max_examples=300, deadline=None)
 @given(disturbed, st.lists(st.integers(1, 30), min_size=1, max_size=20))
 def test_what_a_daemon_did_is_what_its_journal_gives(steps: list[Step], naps: list[int]) -> None:
     """A daemon wakes now and then, ticks, and journals the ticks that did something."""

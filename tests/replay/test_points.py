@@ -5,37 +5,12 @@ from __future__ import annotations
 import csv
 import io
 
+import plans
 import pytest
 
 from monitor.outputs import Points, Row
-from monitor.plan import (
-    BaselinePlan,
-    ByDirection,
-    CharacteristicPlan,
-    Priority,
-    SourcePlan,
-    SubgroupPlan,
-)
 from monitor.subgroups import Subgroup
 from replay.points import HEADER, PointsTable, name_stream
-
-PRIORITY: ByDirection[Priority] = ByDirection("low", "low", "low")
-
-
-def characteristic(name: str) -> CharacteristicPlan:
-    return CharacteristicPlan(
-        name=name,
-        title=name,
-        unit="g",
-        source=SourcePlan("a", (), "number"),
-        subgroup=SubgroupPlan(2),
-        baseline=BaselinePlan(0.0, 1.0, 0.0, ""),
-        detectors=(),
-        priority=PRIORITY,
-        reaction=ByDirection((), (), ()),
-        off_delay=0,
-        rejoin=0,
-    )
 
 
 def subgroup(number: int) -> Subgroup:
@@ -49,7 +24,9 @@ def test_columns_and_cells() -> None:
         Row("mean", "mean", "mean", 0.1 + 0.2, 0.0, -1e-300, 1e22, ()),
         Row("slow, cusum", "mean", "upper_sum", 3.0, 0.0, None, 2.0, ("cusum-upper", 'a"b')),
     )
-    points = Points(characteristic("net-weight"), (("head", "4"), ("lane", "1")), subgroup(7), rows)
+    points = Points(
+        plans.characteristic(name="net-weight"), (("head", "4"), ("lane", "1")), subgroup(7), rows
+    )
     table = HEADER + PointsTable().rows(points)
     header, rows_below = table.split(b"\n", 1)
     assert header == (
@@ -81,6 +58,6 @@ def test_streams_that_need_quotes_get_them_each_time() -> None:
     table = PointsTable()
     row = Row("d", "mean", "mean", 1.0, 0.0, None, None, ())
     for head in ('a"b', "a,b", "a\nb", 'a"b'):
-        points = Points(characteristic("c"), (("head", head),), subgroup(1), (row,))
+        points = Points(plans.characteristic(name="c"), (("head", head),), subgroup(1), (row,))
         [cells] = csv.reader(io.StringIO(table.rows(points).decode(), newline=""))
         assert cells[1] == f"head={head}"

@@ -16,7 +16,7 @@ from hypothesis import strategies as st
 
 from monitor.commandline import COULD_NOT, CommandError
 from monitor.entries import Entry, Message, Parsed, Reading, Started
-from monitor.journal import Journal
+from monitor.journal import Batch, Journal
 from replay.recordings import Chunk, Recording
 from replay.tables import Layout
 
@@ -151,10 +151,10 @@ def test_every_row_keeps_the_number_of_the_line_it_ends_on(tmp_path: Path) -> No
 def test_a_journal_also_while_it_is_written(tmp_path: Path) -> None:
     held = [Started(1), Message(2, "plant/a", b"\xff", True, 0), Message(3, "plant/a", b"1.0")]
     journal = Journal(tmp_path / "a.db")
-    journal.commit(held, [])
+    journal.commit(Batch(held))
     reading = chunks(Recording(str(tmp_path / "a.db")))
     first = next(reading)
-    journal.commit([Message(4, "plant/a", b"2")], [])
+    journal.commit(Batch([Message(4, "plant/a", b"2")]))
     assert [*first.entries, *(entry for chunk in reading for entry in chunk.entries)] == held
     journal.close()
 
@@ -166,10 +166,9 @@ def test_a_missing_journal_is_named(tmp_path: Path) -> None:
 
 def test_a_journal_that_is_damaged_is_said(tmp_path: Path) -> None:
     path = tmp_path / "a.db"
+    Journal(path).close()
     with sqlite3.connect(path) as db:
-        db.executescript(
-            "CREATE TABLE meta (name, value); INSERT INTO meta VALUES ('schema', '1');"
-        )
+        db.execute("DROP TABLE entries")
     with pytest.raises(CommandError, match=r"cannot read .*a\.db to its end: no such table"):
         entries(path)
 

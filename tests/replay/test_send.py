@@ -21,7 +21,7 @@ from brokers import TIMEOUT, Broker, Client, Daemon, Mosquitto
 
 from monitor.demo.broker import HOST, free_port
 from monitor.entries import Connected, Message, Started, Tick
-from monitor.journal import Journal
+from monitor.journal import Batch, Journal
 from monitor.recording_lines import write_jsonl
 from replay import sending
 from replay.__main__ import main
@@ -110,7 +110,7 @@ def test_a_journal_is_sent_too_and_what_was_retained_is_retained_again(
 ) -> None:
     journal = Journal(tmp_path / "a.db")
     kept = Message(START, "line/kept", b"old news", retain=True)
-    journal.commit([Started(START), kept, Message(START + 1, "line/a", b"1.0")], [])
+    journal.commit(Batch([Started(START), kept, Message(START + 1, "line/a", b"1.0")]))
     journal.close()
     client.subscribe("line/#")
     status, out, _ = send(str(tmp_path / "a.db"), *at(broker.port))
