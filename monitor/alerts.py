@@ -9,6 +9,7 @@ from __future__ import annotations
 import math
 from collections.abc import Iterable, Mapping
 from dataclasses import dataclass, field, fields
+from functools import partial
 from hashlib import sha256
 from typing import Any
 
@@ -44,7 +45,7 @@ class Slot:
     text: str = ""
     last_signal: int = 0
     returned: int = 0
-    reference: float = math.inf
+    shift: float = math.inf
     towards: float = 0.0
     quiet: int = 0
     quiet_needed: int = 0
@@ -85,13 +86,13 @@ class Slot:
         self.quiet = 0
         self.quiet_needed = max(self.quiet_needed, 2 * finding.signal.span)
         shift = finding.shift
-        size = 0.0 if shift is None else shift.size * _sign(self.direction)
         # The smallest estimate so far: those at a signal are rather too large than too small, and a
         # shift that grew and is half repaired is not over.
-        self.reference = min(self.reference, max(_SMALLEST_REFERENCE, size / 2.0))
+        self.shift = min(self.shift, 0.0 if shift is None else shift.size * _sign(self.direction))
 
-    def is_back(self, z: float, time: int, off_delay: int) -> bool:
-        """Whether a subgroup without a signal, standardised mean ``z``, completes the return.
+    def is_back(self, z: float, error: float, time: int, off_delay: int) -> bool:
+        """Whether a subgroup without a signal completes the return: ``z`` is its mean in standard
+        errors of ``error`` each.
 
         With a direction: a CUSUM towards the baseline (E. S. Page 1954) whose reference lies
         half-way between the baseline and the shift. Without: twice the rule's span without a
@@ -101,9 +102,10 @@ class Slot:
             self.quiet += 1
             back = self.quiet >= self.quiet_needed
         else:
-            towards = self.towards + self.reference - z * _sign(self.direction)
+            reference = max(_SMALLEST_REFERENCE, self.shift / error / 2.0)
+            towards = self.towards + reference - z * _sign(self.direction)
             # Held just above the interval, so that what was gathered before off_delay can be lost.
-            self.towards = min(max(0.0, towards), RETURN_INTERVAL + self.reference)
+            self.towards = min(max(0.0, towards), RETURN_INTERVAL + reference)
             back = self.towards > RETURN_INTERVAL
         return back and time - self.last_signal >= off_delay
 
@@ -148,6 +150,7 @@ class StreamAlerts:
         if not signals and not self._slots:
             return []
         caused: list[AlertEvent] = []
+        error = standard_error(self._judged.baseline, subgroup.size)
         by_slot: dict[str, list[tuple[DetectorPlan, Signal]]] = {}
         for detector, signal in signals:
             key: str = signal.direction or detector.scheme.chart
@@ -155,13 +158,13 @@ class StreamAlerts:
         for name, slot in self._slots.items():
             if not slot.open or name in by_slot:
                 continue
-            if slot.is_back(z, subgroup.last, self._judged.plan.off_delay):
+            if slot.is_back(z, error, subgroup.last, self._judged.plan.off_delay):
                 slot.open, slot.returned = False, subgroup.last
                 caused.append(self._event(slot, "returned-to-normal", subgroup.last, subgroup))
                 if slot.direction is not None:
                     lookback.forget(slot.direction)
         for name, met in by_slot.items():
-            event = self._signalled(name, met, subgroup, lookback)
+            event = self._signalled(name, met, subgroup, error, lookback)
             if event is not None:
                 caused.append(event)
         return caused
@@ -171,12 +174,14 @@ class StreamAlerts:
         key: str,
         met: list[tuple[DetectorPlan, Signal]],
         subgroup: Subgroup,
+        error: float,
         lookback: LookBack,
     ) -> AlertEvent | None:
-        time, plan, baseline = subgroup.last, self._judged.plan, self._judged.baseline
+        time, plan = subgroup.last, self._judged.plan
         slot = self._slots.get(key)
-        shift = None if met[0][1].direction is None else lookback.shift(met[0][1].direction)
-        error = standard_error(baseline, subgroup.size)
+        direction = met[0][1].direction
+        errors = partial(standard_error, self._judged.baseline)
+        shift = None if direction is None else lookback.shift(direction, errors)
         findings = [(by, Finding(each, by.scheme.chart, shift, error)) for by, each in met]
         detector, telling = findings[0]
         kind: EventKind | None = None

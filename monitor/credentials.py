@@ -70,14 +70,17 @@ def certificates(tree: Node, folder: Path) -> Iterator[Complaint]:
             context.load_cert_chain(paths["certificate"], paths.get("key"), lambda: "")
         except ssl.SSLError as error:
             key = "key" if "key" in paths else "certificate"
-            yield _complaint(nodes[key], ("broker", "tls", key), *_unsuited(error))
+            yield _complaint(nodes[key], ("broker", "tls", key), *_unsuited(key, error))
 
 
-def _unsuited(error: ssl.SSLError) -> tuple[str, str]:
+def _unsuited(key: str, error: ssl.SSLError) -> tuple[str, str]:
     if error.reason == "KEY_VALUES_MISMATCH":
         return "holds the key of another certificate", "name the key that was made with it"
-    wrong = "and its certificate cannot be used together"
-    return wrong, "name PEM files of a certificate and of its key, not encrypted"
+    if key == "certificate":
+        wrong = "does not hold a certificate with its key"
+        return wrong, "name the key's file in key:, or write both into this one, in PEM"
+    instead = "name PEM files of a certificate and of its own key, without a pass phrase"
+    return "does not go with the certificate", instead
 
 
 def _complaint(node: Node, path: KeyPath, wrong: str, instead: str) -> Complaint:

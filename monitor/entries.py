@@ -8,6 +8,7 @@ from __future__ import annotations
 
 from collections.abc import Mapping
 from dataclasses import dataclass
+from typing import Any
 
 from monitor.plan import Plan
 
@@ -93,6 +94,20 @@ class Configured:
 
     time: int
     plan: Plan
+
+
+@dataclass(frozen=True, slots=True)
+class State:
+    """What an engine remembered under ``plan`` once it had folded all that came up to ``time``.
+
+    No entry, as it does not move an engine but makes one: with it begins a recording that is only a
+    part of what was folded. ``engine`` and ``streams`` are what ``Engine.restore`` takes.
+    """
+
+    time: int
+    plan: Plan
+    engine: dict[str, Any]
+    streams: tuple[dict[str, Any], ...]
 
 
 Recorded = Message | Started | Connected | Disconnected | Tick | Configured

@@ -100,7 +100,7 @@ def _shift_field(finding: Finding, unit: str) -> ShiftField | None:
         return None
     earliest = shift.earliest
     return ShiftField(
-        estimate=shift.size * finding.error,
+        estimate=shift.size,
         unit=unit,
         onset=times.format_time(shift.onset),
         onset_from=None if earliest is None else times.format_time(earliest),

@@ -34,7 +34,7 @@ def streams(plan: CharacteristicPlan) -> int | None:
 
 
 def least_streams(plan: CharacteristicPlan) -> int:
-    """How many there will be at least: a key that has one value only would not have been written."""
+    """How many there will be at least: nobody writes down a key that has one value only."""
     return streams(plan) or max(2 ** len(keys(plan)), len(plan.by_stream))
 
 
@@ -64,12 +64,15 @@ def takes(plan: CharacteristicPlan) -> float | None:
 
 def pace(plan: CharacteristicPlan) -> Pace | None:
     """How often subgroups come; None without an expected rate, a window or ``every``."""
-    subgroup, gathering, count = plan.subgroup, takes(plan), streams(plan)
-    if isinstance(subgroup, ByCount) and subgroup.every is None:
-        return None if gathering is None else Pace(gathering)
-    if isinstance(subgroup, ByWindow):
-        seconds = subgroup.window / times.SECOND
-    else:
-        # One that takes longer than that to gather is followed by the next at once.
-        seconds = max((subgroup.every or 0) / times.SECOND, (gathering or 0.0) * (count or 1))
-    return Pace(seconds, each=True) if count is None else Pace(seconds / count)
+    count, rate = streams(plan), plan.source.expected_rate
+    match plan.subgroup:
+        case ByCount() as subgroup:
+            least, planned = subgroup.size, subgroup.every
+        case ByWindow() as window:
+            least, planned = window.min_size, window.window
+    gathering = 0.0 if rate is None else least / rate  # they cannot come faster than readings do
+    if planned is None:
+        return Pace(gathering) if gathering else None
+    if count is None:
+        return Pace(planned / times.SECOND, each=True)
+    return Pace(max(planned / times.SECOND / count, gathering))

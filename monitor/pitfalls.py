@@ -10,6 +10,7 @@ from collections.abc import Iterator
 from dataclasses import dataclass
 
 from monitor import false_alarms, pace, spans, stream_names, times
+from monitor.false_alarms import DetectorRinging
 from monitor.plan import (
     ByCount,
     ByWindow,
@@ -18,6 +19,7 @@ from monitor.plan import (
     DetectorPlan,
     Judgement,
     Plan,
+    Scheme,
     ShewhartPlan,
     Stream,
 )
@@ -27,8 +29,9 @@ TRUNCATING = 4.0
 16,000 beyond four; a drift of one or two would already lose some of those it is to be known by."""
 
 COARSE = 0.5
-"""Of sigma. With steps that large, single readings cross three-sigma limits half or twice as often
-as normal ones, by where the grid lies; below, the difference is lost in what sigma is not known to."""
+"""Of sigma. Where readings move in steps as large, a limit three sigma away may lie anywhere from
+2.75 to 3.25 as it falls on the grid, and is crossed twice or half as often as it says; means of
+several readings suffer less, ranges and runs as much."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -162,24 +165,26 @@ def _charts(plan: CharacteristicPlan) -> set[str]:
 
 
 def _rings(plan: CharacteristicPlan, detector: DetectorPlan, key: str) -> Iterator[Found]:
-    ringing = false_alarms.of_detector(plan, detector).whole
-    often = ringing.in_a_shift
+    ringing = false_alarms.of_detector(plan, detector)
+    whole, often = ringing.whole, ringing.whole.in_a_shift
     if often is None or often <= 1.0:
         return
     coming = pace.pace(plan)
     each = " in each stream" if coming is not None and coming.each else ""
     wrong = (
-        f"({detector.name}) rings with nothing wrong once in {spans.long(ringing.seconds or 0.0)}"
+        f"({detector.name}) rings with nothing wrong once in {spans.long(whole.seconds or 0.0)}"
         f"{each}, {spans.number(often)} times in 8 h"
     )
-    yield key, wrong, _remedy(detector)
+    yield key, wrong, _remedy(detector.scheme, ringing)
 
 
-def _remedy(detector: DetectorPlan) -> str:
-    match detector.scheme:
-        case CusumPlan():
-            return "write a larger h"
-        case ShewhartPlan() as scheme if len(scheme.rules) > 1:
-            return "write fewer rules and a larger width, or take subgroups less often (every)"
-        case _:
-            return "write a larger width"
+def _remedy(scheme: Scheme, ringing: DetectorRinging) -> str:
+    if isinstance(scheme, CusumPlan):
+        return "write a larger h"
+    if not isinstance(scheme, ShewhartPlan) or len(scheme.rules) == 1:
+        return "write a larger width"
+    rates = [
+        (each.in_a_shift or 0.0, rule.rule)
+        for each, rule in zip(ringing.rules, scheme.rules, strict=True)
+    ]
+    return f"its rule {max(rates)[1]} rings most: leave it out, or take subgroups less often"

@@ -12,11 +12,21 @@ from typing import IO
 import orjson
 
 from monitor import plan_json
-from monitor.entries import Configured, Connected, Disconnected, Message, Recorded, Started, Tick
+from monitor.entries import (
+    Configured,
+    Connected,
+    Disconnected,
+    Message,
+    Recorded,
+    Started,
+    State,
+    Tick,
+)
+from monitor.plan import Plan
 from monitor.times import format_time
 
 
-def encode_line(entry: Recorded) -> bytes:
+def encode_line(entry: Recorded | State) -> bytes:
     """One entry as a line, newline included; reading it gives an equal entry."""
     match entry:
         case Message():
@@ -28,19 +38,26 @@ def encode_line(entry: Recorded) -> bytes:
         case Started():
             return _control_line(entry.time, "started")
         case Configured():
-            plan = orjson.loads(plan_json.encode(entry.plan))
-            return _control_line(entry.time, "config", plan=plan)
+            return _control_line(entry.time, "config", plan=_json(entry.plan))
         case Tick():
             return _control_line(entry.time, "tick")
+        case State(time, plan, engine, streams):
+            return _control_line(
+                time, "state", plan=_json(plan), engine=engine, streams=list(streams)
+            )
 
 
-def write_jsonl(file: IO[bytes], entries: Iterable[Recorded]) -> int:
+def write_jsonl(file: IO[bytes], entries: Iterable[Recorded | State]) -> int:
     """Write entries to an open file (``files.replacing`` opens one); returns how many."""
     count = 0
     for entry in entries:
         file.write(encode_line(entry))
         count += 1
     return count
+
+
+def _json(plan: Plan) -> object:
+    return orjson.loads(plan_json.encode(plan))
 
 
 def _message_line(message: Message) -> bytes:

@@ -11,7 +11,7 @@ _YEAR = 365.25 * _DAY
 
 
 def number(value: float) -> str:
-    """Two digits, or all of a larger number's that can be trusted: ``0.17``, ``14``, ``1,050,000``."""
+    """Two digits, three of larger numbers: ``0.17``, ``14``, ``1,050,000``."""
     if value == 0 or 0.001 <= abs(value) < 100:
         return f"{value:.2g}"
     if abs(value) < 0.001:

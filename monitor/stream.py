@@ -165,7 +165,7 @@ class StreamState:
             self._size = subgroup.size
             self._error = standard_error(baseline, subgroup.size)
         z = (subgroup.mean - baseline.mean) / self._error
-        self.lookback.append(z, subgroup.first)
+        self.lookback.append(z, subgroup.first, subgroup.size)
         signals: list[tuple[DetectorPlan, Signal]] = []
         rows: tuple[Row, ...] = ()
         for plan, each in self.detectors:

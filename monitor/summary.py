@@ -1,33 +1,44 @@
 """What a plan will do, as data: the figures an engineer wants before it goes on the line.
 
-Knows plans and the engine's own limits. Must not know how the figures are printed.
+Knows plans, the engine's own limits and what is foreseen of them. Must not know how figures are
+printed.
 """
 
 from __future__ import annotations
 
 import math
+from dataclasses import asdict
 from typing import Any
 
-from monitor import times
+from monitor import false_alarms, pace, stream_names, times
+from monitor.config import Config
 from monitor.detectors.charts import chart, standard_error
+from monitor.false_alarms import SHIFT, Ringing
+from monitor.pitfalls import pitfalls
 from monitor.plan import (
     BaselinePlan,
     ByCount,
     ByDirection,
+    ByWindow,
     CharacteristicPlan,
     CusumPlan,
     DetectorPlan,
     EwmaPlan,
+    Judgement,
     RulePlan,
     Settings,
     ShewhartPlan,
     SourcePlan,
 )
+from monitor.sections.characteristic import Characteristic
 
 
-def summary(settings: Settings) -> dict[str, Any]:
-    """The whole of it; limits in each characteristic's unit, durations in seconds. No secrets."""
-    broker = settings.broker
+def summary(config: Config, settings: Settings) -> dict[str, Any]:
+    """The whole of it; limits in each characteristic's unit, durations in seconds. No secrets.
+
+    ``settings`` are what ``config`` resolves to.
+    """
+    broker, plans = settings.broker, settings.plan.characteristics
     return {
         "broker": {
             "host": broker.host,
@@ -35,53 +46,91 @@ def summary(settings: Settings) -> dict[str, Any]:
             "client_id": broker.client_id,
             "keepalive": broker.keepalive,
             "username": broker.username,
+            "protocol": broker.protocol,
+            "session_expiry": broker.session_expiry if broker.protocol == "5" else None,
+            "tls": broker.tls and asdict(broker.tls),
         },
         "outputs": {"root": settings.root, "points": settings.points},
         "journal": settings.journal,
         "characteristics": [
-            _characteristic(each, settings.root) for each in settings.plan.characteristics
+            _characteristic(each, settings.root)
+            | {"origin": _origin(config.document.characteristics[each.name])}
+            for each in plans
         ],
+        "false_alarms": {"seconds": SHIFT, **asdict(false_alarms.total(plans))},
+        "warnings": [asdict(each) for each in pitfalls(settings.plan)],
     }
 
 
+def _origin(section: Characteristic) -> dict[str, Any] | None:
+    """What a baseline file says of where it came from."""
+    file = section.baseline.file
+    return None if file is None else file.origin.model_dump(exclude_defaults=True)
+
+
 def _characteristic(plan: CharacteristicPlan, root: str) -> dict[str, Any]:
-    subgroup, judgement = plan.subgroup, plan.judgement
-    assert isinstance(subgroup, ByCount)
-    assert judgement is not None
-    size, gap, rate = subgroup.size, subgroup.max_gap, plan.source.expected_rate
-    baseline, specification = judgement.baseline, plan.specification
-    keys = sorted([k for _, k in plan.source.captures] + [k for k, _ in plan.source.stream])
+    specification, (example, judgement) = plan.specification, plan.example()
     return {
         "name": plan.name,
         "title": plan.title,
         "unit": plan.unit,
-        "specification": specification
-        and {
-            "nominal": specification.nominal,
-            "lower": specification.lower,
-            "upper": specification.upper,
-        },
+        "resolution": plan.resolution,
+        "specification": specification and asdict(specification),
         "source": _source(plan.source),
-        "subgroup": {
-            "size": size,
-            "max_gap": None if gap is None else gap / times.SECOND,
-            # Of all streams together; how many there are only the readings can tell.
-            "seconds": None if rate is None else size / rate,
+        "subgroup": _subgroup(plan),
+        "baseline": plan.judgement and _baseline(plan, plan.judgement),
+        "by_stream": {
+            stream_names.name(stream): _baseline(plan, own)
+            for stream, own in plan.by_stream.items()
         },
-        "baseline": {
-            "mean": baseline.mean,
-            "sigma": baseline.sigma,
-            "sigma_between": baseline.sigma_between,
-            "standard_error": standard_error(baseline, size),
-            "revision": baseline.revision,
-        },
-        "detectors": [_detector(each, baseline, size) for each in judgement.detectors],
+        # Limits are those of the common baseline, or of one stream where there is none.
+        "limits_of": example and stream_names.name(example),
+        "detectors": [_detector(plan, each, judgement.baseline) for each in judgement.detectors],
         "priority": _sides(plan.priority),
         "reaction": _sides(plan.reaction),
         "off_delay": plan.off_delay / times.SECOND,
         "rejoin": plan.rejoin / times.SECOND,
-        "alert_topic": "/".join([root, "alert", plan.name, *(f"<{key}>" for key in keys)]),
+        "alert_topic": "/".join(
+            [root, "alert", plan.name, *(f"<{key}>" for key in pace.keys(plan))]
+        ),
     }
+
+
+def _subgroup(plan: CharacteristicPlan) -> dict[str, Any]:
+    subgroup, coming = plan.subgroup, pace.pace(plan)
+    common = {
+        # What the limits are for; windows hold more or less.
+        "readings": pace.size(plan),
+        # In which all streams together send one subgroup's readings.
+        "takes": pace.takes(plan),
+        # From one subgroup to the next, of all streams together or of each.
+        "seconds": coming and coming.seconds,
+        "each_stream": coming is not None and coming.each,
+    }
+    match subgroup:
+        case ByCount():
+            return {
+                "size": subgroup.size,
+                "max_gap": _seconds(subgroup.max_gap),
+                "every": _seconds(subgroup.every),
+                **common,
+            }
+        case ByWindow():
+            return {
+                "window": _seconds(subgroup.window),
+                "min_size": subgroup.min_size,
+                "expected": pace.in_window(plan),
+                **common,
+            }
+
+
+def _seconds(microseconds: int | None) -> float | None:
+    return None if microseconds is None else microseconds / times.SECOND
+
+
+def _baseline(plan: CharacteristicPlan, judgement: Judgement) -> dict[str, Any]:
+    baseline = judgement.baseline
+    return asdict(baseline) | {"standard_error": standard_error(baseline, pace.size(plan))}
 
 
 def _source(plan: SourcePlan) -> dict[str, Any]:
@@ -115,29 +164,42 @@ def _sides(plan: ByDirection[Any]) -> dict[str, Any]:
     return {"up": plan.up, "down": plan.down, "other": plan.other}
 
 
-def _detector(plan: DetectorPlan, baseline: BaselinePlan, size: int) -> dict[str, Any]:
-    scheme = plan.scheme
+def _detector(
+    plan: CharacteristicPlan, detector: DetectorPlan, baseline: BaselinePlan
+) -> dict[str, Any]:
+    scheme, size = detector.scheme, pace.size(plan)
+    ringing = false_alarms.of_detector(plan, detector)
     common = {
-        "name": plan.name,
-        "kind": plan.kind,
+        "name": detector.name,
+        "kind": detector.kind,
         "chart": scheme.chart,
         "direction": scheme.direction,
-        "revision": plan.revision,
+        "revision": detector.revision,
+        "false_alarm": _ringing(ringing.whole),
     }
     match scheme:
         case ShewhartPlan():
-            return common | _shewhart(scheme, baseline, size)
+            return common | {
+                "width": scheme.width,
+                **_limits(scheme, baseline, size, scheme.width),
+                "rules": [
+                    _rule(rule, scheme, baseline, size) | {"false_alarm": _ringing(each)}
+                    for rule, each in zip(scheme.rules, ringing.rules, strict=True)
+                ],
+            }
         case CusumPlan():
             return common | _cusum(scheme, baseline, size)
         case EwmaPlan():
             return common | _ewma(scheme, baseline, size)
 
 
-def _shewhart(plan: ShewhartPlan, baseline: BaselinePlan, size: int) -> dict[str, Any]:
+def _ringing(ringing: Ringing) -> dict[str, Any]:
+    """Once in so many subgroups, so many seconds; null where it never is, or nobody knows."""
+    never = ringing.subgroups == math.inf
     return {
-        "width": plan.width,
-        **_limits(plan, baseline, size, plan.width),
-        "rules": [_rule(rule, plan, baseline, size) for rule in plan.rules],
+        "never": never,
+        "subgroups": None if never else ringing.subgroups,
+        "seconds": None if never else ringing.seconds,
     }
 
 
@@ -165,6 +227,7 @@ def _cusum(plan: CusumPlan, baseline: BaselinePlan, size: int) -> dict[str, Any]
         "h": plan.h,
         "head_start": plan.head_start,
         "clip": plan.clip,
+        "standard_error": error,
         "after_signal": "hold" if plan.hold else "restart",
         "slack": plan.k * error,
         "limit": plan.h * error,
@@ -182,6 +245,7 @@ def _ewma(plan: EwmaPlan, baseline: BaselinePlan, size: int) -> dict[str, Any]:
         "width": plan.width,
         "limits": "asymptotic" if plan.asymptotic else "exact",
         "clip": plan.clip,
+        "standard_error": error,
         "after_signal": "hold" if plan.hold else "restart",
         "centre": centre,
         "first": {"lower": centre - first, "upper": centre + first},

@@ -11,7 +11,7 @@ import textwrap
 from collections.abc import Iterator
 from typing import Any
 
-from monitor import times
+from monitor import spans, times
 from monitor.sections.base import either
 
 _WIDTH = 100
@@ -23,28 +23,59 @@ Summary = dict[str, Any]
 
 def lines(plan: Summary) -> Iterator[str]:
     """What the whole plan does, line by line."""
-    broker, outputs = plan["broker"], plan["outputs"]
-    user = "" if broker["username"] is None else f", user {broker['username']}"
+    outputs = plan["outputs"]
     points = "every subgroup's points included" if outputs["points"] else "without points"
     yield ""
-    yield from _entry(
-        "Broker", f"{broker['host']}:{broker['port']}, client id {broker['client_id']}{user}"
-    )
+    yield from _entry("Broker", *_broker(plan["broker"]))
     yield from _entry("Publishes", f"under {outputs['root']}/, {points}")
     yield from _entry("Journal", plan["journal"])
     for each in plan["characteristics"]:
         yield ""
         yield from _Speaker(each).lines()
+    yield ""
+    yield from _entry("False alarms", *_false_alarms(plan["false_alarms"]))
+    for warning in plan["warnings"]:
+        yield ""
+        wrong, instead = warning["wrong"], warning["instead"]
+        yield from _entry("Warning", f"{warning['key']} {wrong}", instead)
+
+
+def _broker(broker: Summary) -> Iterator[str]:
+    user = "" if broker["username"] is None else f", user {broker['username']}"
+    yield f"{broker['host']}:{broker['port']}, client id {broker['client_id']}{user}"
+    if broker["session_expiry"] is not None:
+        kept = _duration(broker["session_expiry"])
+        yield f"MQTT 5: it keeps messages for us while we are away, up to {kept}"
+    if (tls := broker["tls"]) is not None:
+        ours = tls["certificate"]
+        shows = f"; we show {ours}" if ours else "; we show no certificate of our own"
+        yield f"TLS: it must show a certificate signed by {tls['ca']}{shows}"
+
+
+def _false_alarms(total: Summary) -> Iterator[str]:
+    hours = f"{total['seconds'] / 3_600:g} h"
+    if total["together"] or not (total["each_stream"] or total["unknown"]):
+        yield f"with nothing wrong, about {spans.number(total['together'])} in {hours} altogether"
+    for name, rate in total["each_stream"].items():
+        yield f"about {spans.number(rate)} in {hours} in each stream of {name}"
+    for name, why in total["unknown"].items():
+        yield f"not counted: {name}, which {why}"
+    yield (
+        "by the textbook, as above: for independent, normal readings that keep exactly to the "
+        "baseline; most real ones ring more often"
+    )
 
 
 def _entry(label: str, *sentences: str) -> Iterator[str]:
-    """A label, and sentences beside it: each on lines of its own, wrapped where it is long."""
+    """A label, and sentences beside it: each on lines of its own, wrapped where it is long, and
+    indented as it begins."""
     for index, sentence in enumerate(sentences):
+        inner = len(sentence) - len(sentence.lstrip(" "))
         wrapped = textwrap.fill(
             sentence,
             _WIDTH,
             initial_indent=(label if index == 0 else "").ljust(_LABEL),
-            subsequent_indent=" " * (_LABEL + 2),
+            subsequent_indent=" " * (_LABEL + 2 + inner),
             break_long_words=False,
             break_on_hyphens=False,
         )
@@ -56,7 +87,8 @@ class _Speaker:
 
     def __init__(self, plan: Summary) -> None:
         self._plan = plan
-        error = plan["baseline"]["standard_error"]
+        baselines = [*plan["by_stream"].values(), *filter(None, [plan["baseline"]])]
+        error = min(baseline["standard_error"] for baseline in baselines)
         self._places = max(0, 1 - math.floor(math.log10(error)))
         self._unit = f"{_BOUND}{plan['unit']}" if plan["unit"] else ""
 
@@ -122,43 +154,75 @@ class _Speaker:
         return f"one for each {each}, each judged on its own"
 
     def _subgroups(self) -> Iterator[str]:
-        subgroup, rate = self._plan["subgroup"], self._plan["source"]["expected_rate"]
-        size, gap = subgroup["size"], subgroup["max_gap"]
-        longest = None if gap is None else times.format_duration(round(gap * times.SECOND))
+        subgroup = self._plan["subgroup"]
+        rate = self._plan["source"]["expected_rate"]
+        yield from self._window() if "window" in subgroup else self._count()
+        if rate is None:
+            if subgroup["seconds"] is None:
+                yield "without expected_rate nobody can say how long one takes"
+            return
+        at, takes = f"at {rate * 60:.6g} readings a minute", spans.short(subgroup["takes"])
+        one_stream, every = not self._plan["source"]["stream"], subgroup.get("every")
+        if "window" in subgroup:
+            expected = subgroup["expected"]
+            if expected is not None:
+                yield f"{at}: about {spans.number(expected)} of one stream in each window"
+        elif every is not None:
+            takes = takes if one_stream else f"N × {takes} where N streams share the readings"
+            yield f"{at} one takes {takes}"
+        elif one_stream:
+            yield f"{at}: one every {takes}"
+        else:
+            yield (
+                f"{at} over all streams: one every {takes} in all, "
+                f"every N × {takes} in each of N equally busy streams"
+            )
+
+    def _window(self) -> Iterator[str]:
+        subgroup = self._plan["subgroup"]
+        window, least, readings = (subgroup[key] for key in ("window", "min_size", "readings"))
+        yield f"all readings of one stream in each {_duration(window)} of UTC"
+        if least > 1:
+            yield f"given up where they are fewer than {least}"
+        yield f"the limits below are for {readings} readings: more narrow them, fewer widen them"
+
+    def _count(self) -> Iterator[str]:
+        subgroup = self._plan["subgroup"]
+        size, gap, every = (subgroup[key] for key in ("size", "max_gap", "every"))
+        longest = None if gap is None else _duration(gap)
         if size == 1:
-            yield "every reading is judged by itself"
-            if longest and any(d["chart"] == "moving_range" for d in self._plan["detectors"]):
-                yield f"no moving range reaches across more than {longest}"
-            elif longest:
-                yield f"max_gap {longest} has nothing to break up"
+            what = "every reading" if every is None else "one reading"
+            yield f"{what} is judged by itself"
         else:
             yield f"{size} consecutive readings of one stream"
-            if longest:
-                yield f"given up unfinished where two readings lie more than {longest} apart"
-        if rate is None:
-            yield "without expected_rate nobody can say how long one takes"
-            return
-        every = _span(subgroup["seconds"])
-        if not self._plan["source"]["stream"]:
-            yield f"at {rate * 60:.6g} readings a minute: one every {every}"
-            return
-        yield (
-            f"at {rate * 60:.6g} readings a minute over all streams: one every {every} in all, "
-            f"every N × {every} in each of N equally busy streams"
-        )
+        if every is not None:
+            yield f"at most one every {_duration(every)}: readings between are counted, not judged"
+        if size > 1 and longest:
+            yield f"given up unfinished where two readings lie more than {longest} apart"
+        elif longest and any(d["chart"] == "moving_range" for d in self._plan["detectors"]):
+            yield f"no moving range reaches across more than {longest}"
+        elif longest:
+            yield f"max_gap {longest} has nothing to break up"
 
     # How it is judged
 
     def _baseline(self) -> Iterator[str]:
-        baseline, size = self._plan["baseline"], self._plan["subgroup"]["size"]
-        between = baseline["sigma_between"]
-        extra = f", sigma_between {self._as_given(between)}" if between else ""
-        of = "one reading" if size == 1 else f"a mean of {size}"
-        yield (
-            f"mean {self._as_given(baseline['mean'])}, sigma {self._as_given(baseline['sigma'])}"
-            f"{extra}; standard error of {of}: {self._amount(baseline['standard_error'])}"
-        )
-        if specification := self._plan["specification"]:
+        plan = self._plan
+        common, own, size = plan["baseline"], plan["by_stream"], plan["subgroup"]["readings"]
+        if own:
+            yield from self._own(list(own.values()), plan["limits_of"])
+        if common:
+            between = common["sigma_between"]
+            extra = f", sigma_between {self._as_given(between)}" if between else ""
+            of = "one reading" if size == 1 else f"a mean of {size}"
+            yield (
+                f"{'all other streams: ' if own else ''}mean {self._as_given(common['mean'])}, "
+                f"sigma {self._as_given(common['sigma'])}{extra}; "
+                f"standard error of {of}: {self._amount(common['standard_error'])}"
+            )
+        if plan["origin"]:
+            yield from self._origin(plan["origin"])
+        if specification := plan["specification"]:
             given = [
                 f"{key} {self._as_given(value)}"
                 for key, value in specification.items()
@@ -166,12 +230,36 @@ class _Speaker:
             ]
             yield f"specification {', '.join(given)}: shown with alerts, it moves no limit"
 
+    def _own(self, own: list[Summary], limits_of: str | None) -> Iterator[str]:
+        means, sigmas = ([each[key] for each in own] for key in ("mean", "sigma"))
+        have = "one stream has its" if len(own) == 1 else f"{len(own):,} streams have their"
+        yield f"{have} own: mean {self._range(means)}, sigma {self._range(sigmas)}"
+        if limits_of is not None:
+            yield f"no other stream is judged; the limits below are those of {limits_of}"
+        else:
+            yield "the limits below are those of all other streams"
+
+    def _range(self, values: list[float]) -> str:
+        low, high = min(values), max(values)
+        return self._as_given(low) if low == high else f"{low:.12g} to {self._as_given(high)}"
+
+    def _origin(self, origin: Summary) -> Iterator[str]:
+        names = [recording["name"] for recording in origin.get("recordings", ())]
+        counts = [f"{n:,} {key.replace('_', ' ')}" for key, n in origin.get("counts", {}).items()]
+        span = [f"{key} {origin[key]}" for key in ("first", "last") if key in origin]
+        if said := ", ".join([*names, *counts, *span]):
+            yield f"estimated from {said}"
+        if note := origin.get("note"):
+            yield f"its file says: {note}"
+
     def _detector(self, detector: Summary) -> Iterator[str]:
         only = {"both": "", "up": "; rises only", "down": "; falls only"}[detector["direction"]]
-        size = self._plan["subgroup"]["size"]
+        size = self._plan["subgroup"]["readings"]
         charted = {
             "mean": f"mean of {size}",
+            "median": f"median of {size}",
             "range": f"range of {size}",
+            "sd": f"standard deviation of {size}",
             "individual": "single reading",
             "moving_range": "moving range",
         }[detector["chart"]]
@@ -179,14 +267,30 @@ class _Speaker:
         first, *more = say[detector["kind"]](detector, charted)
         yield f"{detector['name']}: {first}{only}"
         yield from (f"  {sentence}" for sentence in more)
+        once = self._once(detector["false_alarm"])
+        yield f"  with nothing wrong it {'never rings' if once == 'never' else f'rings {once}'}"
+
+    def _once(self, false_alarm: Summary) -> str:
+        subgroups, seconds = false_alarm["subgroups"], false_alarm["seconds"]
+        if false_alarm["never"]:
+            return "never"
+        if subgroups is None:
+            return "at intervals that are too much to compute"
+        count = f"once in {spans.number(subgroups)} subgroups"
+        if seconds is None:
+            return count
+        each = " in each stream" if self._plan["subgroup"]["each_stream"] else ""
+        return f"once in {spans.long(seconds)}{each} ({count.removeprefix('once in ')})"
 
     def _shewhart(self, detector: Summary, charted: str) -> Iterator[str]:
         yield (
             f"Shewhart chart of the {charted}, centre {self._amount(detector['centre'])}, "
             f"limits {self._between(detector)}"
         )
-        for rule in detector["rules"]:
-            yield f"{rule['rule']}: {self._rule(rule, detector['centre'])}"
+        rules = detector["rules"]
+        for rule in rules:
+            once = f": {self._once(rule['false_alarm'])}" if len(rules) > 1 else ""
+            yield f"{rule['rule']}: {self._rule(rule, detector['centre'])}{once}"
 
     def _rule(self, rule: Summary, centre: float) -> str:
         band = (
@@ -230,7 +334,7 @@ class _Speaker:
 
     def _clip_and_after(self, detector: Summary, what: str) -> Iterator[str]:
         if detector["clip"] is not None:
-            reach = detector["clip"] * self._plan["baseline"]["standard_error"]
+            reach = detector["clip"] * detector["standard_error"]
             yield f"no single point counts for more than {self._amount(reach)} off the centre"
         goes = "starts again" if detector["after_signal"] == "restart" else "goes on as it is"
         yield f"after a signal {what} {goes}"
@@ -261,9 +365,3 @@ class _Speaker:
 
 def _duration(seconds: float) -> str:
     return times.format_duration(round(seconds * times.SECOND))
-
-
-def _span(seconds: float) -> str:
-    if seconds < 120:
-        return f"{seconds:.3g} s"
-    return f"{seconds / 60:.3g} min" if seconds < 7_200 else f"{seconds / 3_600:.3g} h"

@@ -67,7 +67,7 @@ def sentence(
 
 
 def _change(finding: Finding, unit: str, time: int, again: str) -> str:
-    signal, chart, shift, error = finding
+    signal, chart, shift, _ = finding
     if chart in SPREAD:
         more = "more" if signal.rule.endswith("upper") else "less"
         return f"varies {more} than usual{again}"
@@ -78,7 +78,7 @@ def _change(finding: Finding, unit: str, time: int, again: str) -> str:
             "mixture": f"keeps away from its centre{again}, as if two sources were mixed",
         }[signal.rule]
     moved, sign = ("risen", 1) if signal.direction == "up" else ("fallen", -1)
-    size = sign * shift.size * error if shift else 0.0
+    size = sign * shift.size if shift else 0.0
     if shift is None or size <= 0.0:
         return f"has {moved}{again}"
     comma = "," if again else ""

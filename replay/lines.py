@@ -14,17 +14,28 @@ from typing import IO, Any
 
 import orjson
 
-from monitor import numbers
+from monitor import numbers, plan_json
 from monitor.commandline import CommandError
 from monitor.decode import MAX_PAYLOAD
-from monitor.entries import Connected, Disconnected, Entry, Message, Parsed, Started, Tick
+from monitor.entries import (
+    Configured,
+    Connected,
+    Disconnected,
+    Entry,
+    Message,
+    Parsed,
+    Started,
+    State,
+    Tick,
+)
+from monitor.plan import Plan
 from monitor.times import EPOCH
 from replay.moments import FIRST, LAST, arrival
 
 OnUnreadable = Callable[[int, str], None]
 """Told the number of a line that is no entry, and what is wrong with it."""
 
-_LATER = ("command", "state")
+_LATER = ("command",)
 _CHUNK = 1 << 16  # bytes
 _MICROSECOND = timedelta(microseconds=1)
 
@@ -42,7 +53,7 @@ class ControlError(ValueError):
 
 def read_lines(
     name: str, file: IO[bytes], unreadable: OnUnreadable
-) -> Iterator[tuple[int, list[Entry | None]]]:
+) -> Iterator[tuple[int, list[Entry | State | None]]]:
     """Chunks of the file that people know as ``name``: the number of the first line, from 1, and
     what each line holds, None where it is no entry.
 
@@ -52,7 +63,7 @@ def read_lines(
     loads, fromisoformat = orjson.loads, datetime.fromisoformat
     first = 1
     while lines := file.readlines(_CHUNK):
-        entries: list[Entry | None] = []
+        entries: list[Entry | State | None] = []
         append = entries.append
         for number, line in enumerate(lines, first):
             # The plain line, by far the most frequent, without a call or a question too many;
@@ -88,7 +99,7 @@ def read_lines(
         first += len(lines)
 
 
-def decode_line(line: bytes) -> Entry:
+def decode_line(line: bytes) -> Entry | State:
     """The entry that a line holds. Raises LineError or ControlError."""
     try:
         document: Any = orjson.loads(line)
@@ -157,15 +168,21 @@ def _flags(document: dict[str, object]) -> tuple[bool, int]:
     return retain, qos
 
 
-def _control(time: int, document: dict[str, object]) -> Entry:
+def _control(time: int, document: dict[str, object]) -> Entry | State:
     control = document["control"]
     if control == "started":
         return Started(time)
     if control == "disconnected":
         return Disconnected(time)
-    if control in ("tick", "config"):
-        # Whoever plays a recording brings the configuration: of this one only the moment counts.
+    if control == "tick":
         return Tick(time)
+    if control == "config":
+        try:
+            return Configured(time, _plan(document))
+        except ValueError:
+            raise LineError("a configuration of another version") from None
+    if control == "state":
+        return _state(time, document)
     if control == "connected":
         present = document.get("session_present", True)
         if type(present) is not bool:
@@ -173,5 +190,20 @@ def _control(time: int, document: dict[str, object]) -> Entry:
         return Connected(time, present)
     if control in _LATER:
         raise ControlError(f'control "{control}" is not built yet')
-    known = "connected, disconnected, started, tick or config"
+    known = "connected, disconnected, started, tick, config or state"
     raise ControlError(f"control {control!r} is unknown: {known}")
+
+
+def _state(time: int, document: dict[str, object]) -> State:
+    engine, streams = document.get("engine"), document.get("streams")
+    try:
+        plan = _plan(document)
+    except ValueError:
+        plan = None
+    if plan is None or type(engine) is not dict or type(streams) is not list:
+        raise ControlError('a "state" of another version: let that version play it')
+    return State(time, plan, engine, tuple(streams))
+
+
+def _plan(document: dict[str, object]) -> Plan:
+    return plan_json.decode(orjson.dumps(document.get("plan")))

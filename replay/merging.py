@@ -38,7 +38,7 @@ def _merged(sources: Sequence[Iterator[Chunk]]) -> Iterator[Chunk]:
     heapq.heapify(heap)
     while heap:
         feed = heap[0][1]
-        yield feed.take(min((place for place, _ in heap[1:3]), default=None))
+        yield feed.take(min(heap[1:3])[0] if len(heap) > 1 else None)  # the next is one of two
         if feed.next is None:
             heapq.heappop(heap)
         else:

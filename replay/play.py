@@ -8,18 +8,20 @@ from __future__ import annotations
 import itertools
 from collections import Counter
 from collections.abc import Callable, Iterable, Sequence
-from dataclasses import dataclass, field
+from dataclasses import asdict, dataclass, field
 from time import perf_counter
 from typing import IO
 
-from monitor import messages
+from monitor import messages, stream_names
+from monitor.commandline import CommandError
 from monitor.engine import Engine
+from monitor.entries import Configured, Parsed, State
 from monitor.messages import AlertEvent
 from monitor.outputs import Alert, Output, Points, SetAside
 from monitor.plan import Plan
 from monitor.stream import Counts
 from replay.merging import in_order
-from replay.points import HEADER, PointsTable, name_stream
+from replay.points import HEADER, PointsTable
 from replay.recordings import Chunk, Recording
 from replay.tables import FIRST_ROW, Layout
 
@@ -56,6 +58,8 @@ class Played:
     """Every stream that had a reading: characteristic, stream, subgroups."""
     unread: list[str] = field(default_factory=list)
     """Characteristics without one."""
+    notes: list[str] = field(default_factory=list)
+    """What else is to be known of the recordings, each with its file and line."""
     seconds: float = 0.0
 
 
@@ -76,18 +80,14 @@ def play(
     CommandError where a recording cannot be read.
     """
     started = perf_counter()
-    engine = Engine(plan, points=points is not None)
-    player = _Player(engine, alerts, points)
+    player = _Player(plan, alerts, points)
     clock = itertools.count(FIRST_ROW, interval)
     opened = [recording.open(layout, clock, player.unreadable) for recording in recordings]
     for chunk in in_order(opened):
         player.play(chunk)
         progress(chunk)
     played = player.played
-    played.streams = sorted(
-        (state.plan.name, name_stream(state.stream), state.last.number if state.last else 0)
-        for state in engine.streams()
-    )
+    played.streams = player.streams()
     read = {characteristic for characteristic, _, _ in played.streams}
     played.unread = [c.name for c in plan.characteristics if c.name not in read]
     played.seconds = perf_counter() - started
@@ -95,14 +95,28 @@ def play(
 
 
 class _Player:
-    def __init__(self, engine: Engine, alerts: IO[bytes] | None, points: IO[bytes] | None) -> None:
-        self.played = Played(engine.counts)
-        self._engine = engine
+    def __init__(self, plan: Plan, alerts: IO[bytes] | None, points: IO[bytes] | None) -> None:
+        self._plan = plan
+        self._engine = Engine(plan, points=points is not None)
+        self.played = Played(self._engine.counts)
+        self._before: dict[tuple[str, str], int] = {}
+        self._compared = False
         self._alerts = alerts
         self._points = points
         self._table = PointsTable()
         if points is not None:
             points.write(HEADER)
+
+    def streams(self) -> list[tuple[str, str, int]]:
+        """Every stream there is: characteristic, stream, subgroups played."""
+        numbers = self._numbers()
+        return sorted((*key, number - self._before.get(key, 0)) for key, number in numbers.items())
+
+    def _numbers(self) -> dict[tuple[str, str], int]:
+        return {
+            (each.plan.name, stream_names.name(each.stream)): each.last.number if each.last else 0
+            for each in self._engine.streams()
+        }
 
     def unreadable(self, recording: Recording, number: int, wrong: str) -> None:
         played = self.played
@@ -114,8 +128,15 @@ class _Player:
         played, fold = self.played, self._engine.fold
         last, entries = played.last, 0
         for number, entry in enumerate(chunk.entries, chunk.first):
-            if entry is None:
-                continue
+            if type(entry) is not Parsed:  # by far the most frequent, and never any of these
+                if entry is None:
+                    continue
+                if isinstance(entry, State):
+                    self._resume(entry, chunk.recording, number)
+                    fold = self._engine.fold
+                    continue
+                if isinstance(entry, Configured):
+                    entry = self._ours(entry, chunk.recording, number)
             entries += 1
             time = entry.time
             if last is None:
@@ -129,6 +150,42 @@ class _Player:
                 self._take(outputs, chunk.recording, number)
         played.entries += entries
         played.last = last
+
+    def _ours(self, configured: Configured, recording: Recording, number: int) -> Configured:
+        """Another configuration than ours counts only as something that was heard then."""
+        self._compare(configured.plan, recording, number, "")
+        return Configured(configured.time, self._plan)
+
+    def _resume(self, state: State, recording: Recording, number: int) -> None:
+        """Go on from what was remembered; what we judge otherwise starts afresh."""
+        played, where = self.played, f"{recording.path}:{number}"
+        if played.first is not None:
+            played.notes.append(f"{where}: a state that is passed over, as it is not the beginning")
+            return
+        engine = self._engine = Engine(state.plan, points=self._points is not None)
+        try:
+            # Counted is what is played.
+            engine.restore({**state.engine, "counts": asdict(Counts())}, state.streams)
+        except (ValueError, KeyError, TypeError) as error:
+            raise CommandError(
+                f"{where}: a state that this version cannot read: export the journal again"
+            ) from error
+        played.counts = engine.counts
+        self._before = self._numbers()
+        if state.plan != self._plan:
+            self._compare(state.plan, recording, number, ", and what it judges otherwise afresh")
+            outputs = engine.fold(Configured(state.time, self._plan))
+            self._take(outputs, recording, number)
+
+    def _compare(self, theirs: Plan, recording: Recording, number: int, afresh: str) -> None:
+        ours = self._plan.characteristics
+        other = [each.name for each in theirs.characteristics if each not in ours]
+        if other and not self._compared:
+            self._compared = True
+            self.played.notes.append(
+                f"{recording.path}:{number}: recorded under another configuration of "
+                f"{', '.join(other)}: CONFIG is used instead{afresh}"
+            )
 
     def _take(self, outputs: Sequence[Output], recording: Recording, number: int) -> None:
         played = self.played
@@ -149,7 +206,7 @@ class _Player:
         if len(self.played.events) < KEPT:
             self.played.events.append(event)
         if event["event"] == "raised":
-            stream = name_stream(alert.stream)
+            stream = stream_names.name(alert.stream)
             key = alert.characteristic.name, stream, event["detector"], event["rule"]
             self.played.raised[key] += 1
 

@@ -5,6 +5,7 @@ Knows the columns and CSV. Must not know files or where points come from.
 
 from __future__ import annotations
 
+from monitor import stream_names
 from monitor.outputs import Points, Row
 from monitor.plan import CharacteristicPlan, Stream
 from monitor.times import format_time
@@ -41,7 +42,7 @@ class PointsTable:
         return lines.encode()
 
     def _name_stream(self, characteristic: CharacteristicPlan, stream: Stream) -> str:
-        text = f"{_cell(characteristic.name)},{_cell(name_stream(stream))}"
+        text = f"{_cell(characteristic.name)},{_cell(stream_names.name(stream))}"
         self._whose[characteristic.name, stream] = text
         return text
 
@@ -49,13 +50,6 @@ class PointsTable:
         text = ",".join(map(_cell, row[:3]))
         self._what[row[:3]] = text
         return text
-
-
-def name_stream(stream: Stream) -> str:
-    """``head=4;lane=1``, with ``;`` and ``%`` inside a value percent-encoded."""
-    return ";".join(
-        f"{key}={value.replace('%', '%25').replace(';', '%3B')}" for key, value in stream
-    )
 
 
 def _cell(text: str) -> str:

@@ -18,8 +18,9 @@ from pathlib import Path
 from typing import cast
 
 from monitor.commandline import CommandError
-from monitor.entries import Configured, Entry, Recorded, Tick
-from monitor.journal import JournalError, open_reader, read_entries
+from monitor.entries import Entry, State
+from monitor.history import recorded
+from monitor.journal import JournalError, open_reader
 from replay.lines import read_lines
 from replay.tables import Layout, Table
 
@@ -40,7 +41,7 @@ class Chunk:
 
     recording: Recording
     first: int
-    entries: list[Entry | None]
+    entries: list[Entry | State | None]
 
 
 @dataclass(frozen=True, slots=True)
@@ -92,8 +93,8 @@ class Recording:
         with self._said_in_words():
             if self._kind == ".db":
                 journal = open_reader(Path(self.path))
-                held = _without_configurations(read_entries(journal))
-                return Opened(self._chunks(_gathered(enumerate(held, 1)), journal))
+                held = enumerate(recorded(journal), 1)
+                return Opened(self._chunks(_gathered(held), journal))
             file = self._unpacked()
             if self._kind == ".jsonl":
                 return Opened(self._chunks(read_lines(self.path, file, say), file))
@@ -104,7 +105,7 @@ class Recording:
 
     def _chunks(
         self,
-        chunks: Iterator[tuple[int, list[Entry | None]]],
+        chunks: Iterator[tuple[int, list[Entry | State | None]]],
         source: sqlite3.Connection | io.IOBase,
     ) -> Iterator[Chunk]:
         with self._said_in_words(" to its end"), closing(source):
@@ -143,14 +144,11 @@ class Recording:
             raise CommandError(f"cannot read {self.path}{how_far}: {why}") from error
 
 
-def _without_configurations(entries: Iterable[Recorded]) -> Iterator[Recorded]:
-    """Whoever plays a recording brings the configuration: of another only the moment counts."""
-    return (Tick(e.time) if isinstance(e, Configured) else e for e in entries)
-
-
-def _gathered(numbered: Iterable[tuple[int, Entry]]) -> Iterator[tuple[int, list[Entry | None]]]:
+def _gathered(
+    numbered: Iterable[tuple[int, Entry | State]],
+) -> Iterator[tuple[int, list[Entry | State | None]]]:
     first = 1
-    entries: list[Entry | None] = []
+    entries: list[Entry | State | None] = []
     for number, entry in numbered:
         entries.extend(repeat(None, number - first - len(entries)))
         entries.append(entry)

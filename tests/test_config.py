@@ -8,14 +8,16 @@ import random
 import re
 from collections.abc import Callable
 from pathlib import Path
-from typing import Any
+from typing import Any, get_args
 
 import pytest
 import yaml
 from hypothesis import HealthCheck, given, settings
 from hypothesis import strategies as st
+from pem import make, needs_openssl
 
-from monitor.config import Config, ConfigurationError, load
+from monitor.config import Config, ConfigurationError, load, load_measured
+from monitor.plan import Chart
 from monitor.problems import Problem
 from monitor.sections.base import Section
 from monitor.sections.document import NOT_BUILT_KEYS, NOT_BUILT_VALUES, Document
@@ -126,6 +128,17 @@ MISTAKES = [
     ("host: localhost", "host: a\n  keepalive: [1]", 4, "broker.keepalive", "duration", "30s"),
     ("host: localhost", 'host: a\n  client_id: "a\\tb"', 4, "broker.client_id", "char", "name"),
     ("host: localhost", "host: a\n  protocol: 3.1", 4, "broker.protocol", "3.1 is not", "3.1.1"),
+    ("host: localhost", "host: a\n  protocol: 5", 4, "broker.protocol", "5 is not", "in quotes"),
+    ("host: localhost", "host: a\n  session_expiry: 7d", 4, "broker.session_expiry", "needs", "5"),
+    (
+        "host: localhost",
+        'host: a\n  protocol: "5"\n  session_expiry: 0s',
+        5,
+        "broker.session_expiry",
+        "'0s' is not a whole number of seconds from 1s up",
+        "7d",
+    ),
+    ("host: localhost", "host: a\n  tls: true", 4, "broker.tls", "not a mapping", "ca.pem"),
     ("host: localhost", "host: a\n  password: x", 4, "broker.password", "known", "password_file"),
     ("root: watch/out", "root: plant/+", 5, "outputs.root", "wildcard", "plain topic"),
     ("root: watch/out", "root: /plant", 5, "outputs.root", "begins or ends with /", "write"),
@@ -228,6 +241,15 @@ MISTAKES = [
     ("size: 5", "max_gap: 30 seconds", 17, "W.subgroup.max_gap", "not a duration", "30s"),
     ("size: 5", "max_gap: -5s", 17, "W.subgroup.max_gap", "not a duration", "30s"),
     ("size: 5", f"max_gap: {'9' * 400}d", 17, "W.subgroup.max_gap", "not a duration", "30s"),
+    ("size: 5", "size: 5\n      every: 0s", 18, "W.subgroup.every", "no time at all", "30s"),
+    ("size: 5", "min_size: 5", 17, "W.subgroup.min_size", "no window beside it", "window: too"),
+    ("size: 5", "window: 0s", 17, "W.subgroup.window", "not from 1ms to 1d", "60s"),
+    ("size: 5", "window: 2d", 17, "W.subgroup.window", "not from 1ms to 1d", "60s"),
+    ("size: 5", "window: 60", 17, "W.subgroup.window", "60 has no unit", "30s"),
+    ("size: 5", "window: 9s\n      min_size: 0", 18, "W.subgroup.min_size", "below 1", "from 1"),
+    ("size: 5", "size: 5\n      window: 9s", 17, "W.subgroup.size", "beside window", "or size"),
+    ("size: 5", "window: 9s\n      every: 9s", 18, "W.subgroup.every", "beside window", "keep"),
+    ("size: 5", "window: 9s\n      max_gap: 9s", 18, "W.subgroup.max_gap", "beside win", "keep"),
     ("size: 5", "max_gap: 99999999d", 17, "W.subgroup.max_gap", "hundred years", "shorter"),
     ("mean: 340", "mean: heavy", 19, "W.baseline.mean", "'heavy' is not a number", "341.2"),
     ("mean: 340", "mean: '340'", 19, "W.baseline.mean", "stands in quotes", "without quotes"),
@@ -238,6 +260,27 @@ MISTAKES = [
     ("sigma: 2", "sigma: -1.9", 20, "W.baseline.sigma", "-1.9 is not above 0", "1.9"),
     ("sigma: 2", "sigma: 1e-300", 20, "W.baseline.sigma", "is below 1e-100", "1.9"),
     ("sigma: 2", "sigm: 2", 20, "W.baseline.sigm", "not a known key", "did you mean sigma?"),
+    ("mean: 340\n", "\n", 18, "W.baseline.mean", "is missing", "341.2"),
+    ("sigma: 2\n", "\n", 18, "W.baseline.sigma", "is missing", "1.9"),
+    ("mean: 340\n      sigma: 2", "by_stream: {}", 19, "W.baseline.by_stream", "empty", "head=4"),
+    ("mean: 340\n      sigma: 2", "by_stream: 5", 19, "W.baseline.by_stream", "not a map", "head"),
+    (
+        "mean: 340\n",
+        "by_stream: {head=1;lane=1: {mean: 1, sigma: 1}}\n",
+        20,
+        "W.baseline.sigma",
+        "2 has no mean beside it",
+        "write mean: too",
+    ),
+    (
+        "mean: 340\n      sigma: 2",
+        "by_stream: {head=1: {mean: 1, sigma: 1}}",
+        19,
+        "W.baseline.by_stream.head=1",
+        "is no stream of this characteristic, whose keys are head, lane",
+        "head=…;lane=…",
+    ),
+    ("unit: g", "resolution: 0", 10, "W.resolution", "0 is not above 0", "smallest step"),
     (
         "sigma: 2\n",
         "sigma: 2\n      sigma_between: -1\n",
@@ -253,7 +296,14 @@ MISTAKES = [
     ("kind: shewhart", "{kind: shewhart, width: 0}", 22, "D[0].width", "0 is not above", "3"),
     ("kind: shewhart", "{kind: shewhart, name: a b}", 22, "D[0].name", "character", "letters"),
     ("kind: shewhart", "{kind: shewhart, direction: u}", 22, "D[0].direction", "'u'", "both, up"),
-    ("kind: shewhart", "{kind: shewhart, chart: maen}", 22, "D[0].chart", "'maen'", "mean, range"),
+    (
+        "kind: shewhart",
+        "{kind: shewhart, chart: maen}",
+        22,
+        "D[0].chart",
+        "'maen'",
+        "median, range",
+    ),
     (
         "kind: shewhart",
         "{kind: shewhart, chart: individual}",
@@ -278,6 +328,16 @@ MISTAKES = [
         "holds run, where a range chart takes the rule outside only",
         "outside-limits",
     ),
+    (
+        "kind: shewhart",
+        "{kind: shewhart, chart: sd, rules: nelson-1984}",
+        22,
+        "D[0].rules",
+        "holds alternation, mixture, run, stratification, trend, zone, where a sd chart takes",
+        "outside-limits",
+    ),
+    ("size: 5", "size: 1", 22, "D[0].chart", "'sd' needs two readings or more", "larger subgroup"),
+    ("size: 5", "window: 9s", 22, "D[0].chart", "'sd' needs two readings or more", "min_size: 2"),
     ("kind: shewhart", "{kind: shewhart, rules: nelson}", 22, "D[0].rules", "'nelson' is no", "or"),
     ("kind: shewhart", "{kind: shewhart, rules: []}", 22, "D[0].rules", "is empty", "preset"),
     ("kind: shewhart", "{kind: shewhart, rules: 5}", 22, "D[0].rules", "not a list", "preset"),
@@ -290,6 +350,7 @@ MISTAKES = [
     ("h: 5", "h: 5\n        clip: 0.5", 26, "D[1].clip", "is not above k", "larger clip"),
     ("h: 5", "h: 5\n        after_signal: stop", 26, "D[1].after_signal", "'stop'", "restart or"),
     ("h: 5", "h: 5\n        chart: range", 26, "D[1].chart", "'range' is not known", "mean or"),
+    ("h: 5", "h: 5\n        chart: median", 26, "D[1].chart", "'median' is not known", "mean or"),
     ("kind: shewhart", "{kind: cusum, k: 1, h: 4}", 23, "D[1]", "line 22 (cusum)", "name:"),
     ("lambda: 0.2", "lambda: 0", 30, "G[0].lambda", "0 is not above 0", "0.2"),
     ("lambda: 0.2", "lambda: 1.01", 30, "G[0].lambda", "1.01 is above 1", "0.2"),
@@ -350,7 +411,10 @@ def full(key: str) -> str:
 def test_a_mistake(
     write: Write, old: str, new: str, line: int, key: str, wrong: str, instead: str
 ) -> None:
-    found = problems(write(edited(old, new)))
+    text = edited(old, new)
+    if "'sd' needs" in wrong:
+        text = text.replace("kind: shewhart", "{kind: shewhart, chart: sd}", 1)
+    found = problems(write(text))
     assert len(found) == 1, found
     start = f"line.yaml:{line}: {full(key)}: "
     assert found[0].startswith(start)
@@ -438,19 +502,10 @@ NOT_BUILT = [
     # every example of the contract that is still to come
     ("version: 1", "version: 1\nbudget: {alerts: 2, per: 8h}", "budget"),
     ("version: 1", "version: 1\ninstances: [a, b]", "instances"),
-    ("host: localhost", "host: a\n  protocol: '5'", "broker.protocol"),
-    ("host: localhost", "host: a\n  protocol: 5", "broker.protocol"),
-    ("host: localhost", "host: a\n  session_expiry: 7d", "broker.session_expiry"),
-    ("host: localhost", "host: a\n  tls: {ca: ca.pem}", "broker.tls"),
     ("path: var/j.db", "path: var/j.db\n  keep: 30d", "journal.keep"),
     ("path: var/j.db", "path: var/j.db\n  max_size: 20GB", "journal.max_size"),
     ("path: var/j.db", "path: var/j.db\n  keep_alerts: 3y", "journal.keep_alerts"),
-    ("size: 5", "window: 60s", "characteristics.weight.subgroup.window"),
-    ("size: 5", "min_size: 3", "characteristics.weight.subgroup.min_size"),
-    ("size: 5", "size: 5\n      every: 60s", "characteristics.weight.subgroup.every"),
-    ("mean: 340\n      sigma: 2\n", "file: b.json\n", "characteristics.weight.baseline.file"),
     ("mean: 340\n      sigma: 2\n", "learn: 14d\n", "characteristics.weight.baseline.learn"),
-    ("mean: 340\n      sigma: 2\n", "by_stream: {}\n", "characteristics.weight.baseline.by_stream"),
     ("unit: g", "promise: {false_alarm_every: 14d}", "characteristics.weight.promise"),
     ("unit: g", "gauge: {silent: 5min}", "characteristics.weight.gauge"),
     ("unit: g", "changeover: {topic: x}", "characteristics.weight.changeover"),
@@ -463,7 +518,7 @@ NOT_BUILT = [
             f"{{kind: shewhart, chart: {chart}}}",
             "characteristics.weight.detectors[0].chart",
         )
-        for chart in ("sd", "median", "variance", "fraction", "number", "count", "rate")
+        for chart in ("variance", "fraction", "number", "count", "rate")
     ),
     ("h: 5", "h: 5\n        chart: variance", "characteristics.weight.detectors[1].chart"),
 ]
@@ -486,7 +541,8 @@ def test_nothing_is_both_built_and_not() -> None:
     for section, keys in NOT_BUILT_KEYS.items():
         sections = [section, *section.__subclasses__()]
         assert not keys & {key for each in sections for key in fields(each)}
-    assert "5" in NOT_BUILT_VALUES["protocol"]
+    assert list(NOT_BUILT_VALUES) == ["chart"]
+    assert not NOT_BUILT_VALUES["chart"] & set(get_args(Chart))
 
 
 def fields(section: type[Section]) -> set[str]:
@@ -659,8 +715,31 @@ def test_a_password_file_that_will_not_do(write: Write, content: bytes | None, s
     assert SECRET not in found
 
 
-def test_without_secrets_the_password_file_is_not_needed(write: Write) -> None:
-    assert load(with_password(write, None), {}).password is None
+def test_a_replay_needs_nothing_of_the_daemon(write: Write) -> None:
+    """Neither the keys, nor the variables and the files in them, nor that they are right."""
+    path = with_password(write, None)
+    text = path.read_text().replace("host: b", "host: ${BROKER}\n  prot: 1")
+    replayed = load_measured(write(text), {})
+    assert replayed == load_measured(write(GOOD), {})
+    alone = "version: 1\n" + GOOD[GOOD.index("characteristics:") :]
+    assert load_measured(write(alone), {}) == replayed
+    assert list(replayed.characteristics) == ["weight", "glue"]
+
+
+def test_the_daemon_needs_what_a_replay_does_not(write: Write) -> None:
+    alone = "version: 1\n" + GOOD[GOOD.index("characteristics:") :]
+    assert [problem.split(";")[0] for problem in problems(write(alone))] == [
+        "line.yaml:1: broker: is missing",
+        "line.yaml:1: journal: is missing",
+        "line.yaml:1: outputs: is missing",
+    ]
+
+
+def test_a_replay_finds_the_other_mistakes(write: Write) -> None:
+    with pytest.raises(ConfigurationError) as caught:
+        load_measured(write(edited("sigma: 2", "sigma: -2").replace("host: local", "hots: l")), {})
+    (problem,) = caught.value.problems
+    assert problem.key == "characteristics.weight.baseline.sigma"
 
 
 def test_a_password_written_where_its_file_should_be(write: Write) -> None:
@@ -769,23 +848,49 @@ README = (HERE / "README.md").read_text()
 BLOCKS = re.findall(r"```yaml\n(.*?)```", README, re.DOTALL)
 
 
-@pytest.mark.parametrize("block", BLOCKS)
+def belongs(block: str) -> Any:
+    """An example that needs certificates is left out where none can be made."""
+    return pytest.param(block, marks=needs_openssl if "tls:" in block else ())
+
+
+@pytest.mark.parametrize("block", [belongs(block) for block in BLOCKS])
 def test_every_example_of_the_readme_loads(tmp_path: Path, block: str) -> None:
+    """Each in place of what it is an example of; names of files in them are those of this test."""
     shown = yaml.safe_load(block)
     whole = yaml.safe_load(GOOD)
-    if set(shown) <= fields(Document):
+    weight = whole["characteristics"]["weight"]
+    if "characteristic" in shown:
+        whole["characteristics"] = {"net-weight": weight}
+        (tmp_path / "b.yaml").write_text(block)
+        weight["baseline"] = {"file": "b.yaml"}
+    elif set(shown) <= fields(Document):
         whole |= shown
     else:
-        whole["characteristics"]["weight"] |= shown
-    (tmp_path / "password").write_text("x")
+        weight |= shown
+    prepare(tmp_path, tls="tls:" in block, file="baselines/" in block)
     path = tmp_path / "line.yaml"
     path.write_text(yaml.safe_dump(whole, allow_unicode=True))
     assert load(path, {}).document.version == 1
+
+
+def prepare(folder: Path, *, tls: bool, file: bool) -> None:
+    """The files that the readme's examples name."""
+    (folder / "password").write_text("x")
+    if tls:
+        make(folder)
+        (folder / "ca.pem").rename(folder / "monitor.pem")
+        (folder / "ca.key").rename(folder / "monitor.key")
+        (folder / "both.pem").rename(folder / "ca.pem")
+    if file:
+        (folder / "baselines").mkdir()
+        (baseline,) = (block for block in BLOCKS if "origin:" in block)
+        text = baseline.replace("characteristic: net-weight", "characteristic: weight")
+        (folder / "baselines" / "net-weight.yaml").write_text(text)
 
 
 def test_the_readme_shows_every_key() -> None:
     sections: list[type[Section]] = list(Section.__subclasses__())
     for section in sections:
         sections += section.__subclasses__()
-    shown = set(re.findall(r"[a-z_]+", " ".join([*BLOCKS, *re.findall(r"`([^`]+)`", README)])))
+    shown = set(re.findall(r"[a-z_0-9]+", " ".join([*BLOCKS, *re.findall(r"`([^`]+)`", README)])))
     assert {key for section in sections for key in fields(section)} <= shown

@@ -17,6 +17,7 @@ from monitor.plan import (
     BaselinePlan,
     ByCount,
     ByDirection,
+    ByWindow,
     CharacteristicPlan,
     CusumPlan,
     DetectorPlan,
@@ -196,6 +197,11 @@ def test_the_daemon(read: Read, tmp_path: Path) -> None:
     assert (only(settings).off_delay, only(settings).rejoin) == (0, 3_600_000_000)
 
 
+def test_resolution(read: Read) -> None:
+    assert only(read()).resolution is None
+    assert only(read(characteristics={"glue": GLUE | {"resolution": 0.1}})).resolution == 0.1
+
+
 @pytest.mark.parametrize(
     ("given", "up", "down", "other"),
     [
@@ -224,6 +230,42 @@ def test_priority(read: Read, given: object, up: str, down: str, other: str) -> 
 def test_reaction(read: Read, given: object, up: object, down: object, other: object) -> None:
     plan = only(read(characteristics={"glue": GLUE | {"reaction": given}}))
     assert plan.reaction == ByDirection(up, down, other)
+
+
+@pytest.mark.parametrize(
+    ("given", "plan"),
+    [
+        ({}, ByCount(1)),
+        ({"size": 5}, ByCount(5)),
+        ({"size": 5, "every": "60s"}, ByCount(5, None, 60_000_000)),
+        ({"every": "60s", "max_gap": "5s"}, ByCount(1, 5_000_000, 60_000_000)),
+        ({"window": "60s"}, ByWindow(60_000_000, 1)),
+        ({"window": "1ms", "min_size": 3}, ByWindow(1_000, 3)),
+    ],
+)
+def test_subgroups(read: Read, given: object, plan: object) -> None:
+    assert only(read(characteristics={"glue": GLUE | {"subgroup": given}})).subgroup == plan
+
+
+@pytest.mark.parametrize(
+    ("subgroup", "chart"),
+    [({"size": 1}, "individual"), ({"size": 2}, "mean"), ({"window": "1s"}, "mean")],
+)
+def test_what_is_charted(read: Read, subgroup: object, chart: str) -> None:
+    plan = only(read(characteristics={"glue": GLUE | {"subgroup": subgroup}}))
+    assert {each.scheme.chart for each in plan.judgement.detectors} == {chart}
+
+
+@pytest.mark.parametrize("chart", ["mean", "median", "range", "sd"])
+def test_charts(read: Read, chart: str) -> None:
+    detectors = [{"kind": "shewhart", "chart": chart}]
+    subgroup = {"window": "1s", "min_size": 2}
+    plan = only(
+        read(characteristics={"glue": GLUE | {"subgroup": subgroup, "detectors": detectors}})
+    )
+    (found,) = plan.judgement.detectors
+    assert found.name == f"shewhart-{chart}"
+    assert found.scheme == ShewhartPlan(chart, 3.0, (RulePlan("outside", width=3.0),))
 
 
 def rules(read: Read, **detector: object) -> tuple[float, tuple[RulePlan, ...]]:
@@ -300,9 +342,11 @@ def revisions(settings: Settings) -> tuple[str, ...]:
     return (plan.judgement.baseline.revision, *(each.revision for each in plan.judgement.detectors))
 
 
-def edited(path: str, value: object) -> dict[str, Any]:
-    """WEIGHT with the value at a dotted path replaced."""
+def edited(path: str, value: object, *, shewhart: bool = False) -> dict[str, Any]:
+    """WEIGHT with the value at a dotted path replaced; with its first detector only."""
     changed = copy.deepcopy(WEIGHT)
+    if shewhart:
+        changed["detectors"] = changed["detectors"][:1]
     *parents, last = [int(step) if step.isdigit() else step for step in path.split(".")]
     section: Any = changed
     for step in parents:
@@ -341,6 +385,7 @@ def test_a_revision_is_what_it_says_it_is(read: Read) -> None:
     [
         ("title", "Weight"),
         ("unit", "kg"),
+        ("resolution", 0.1),
         ("specification.nominal", 341),
         ("priority", "low"),
         ("reaction", ["nothing"]),
@@ -380,12 +425,16 @@ def test_what_changes_nothing_that_is_judged(read: Read, path: str, value: objec
         ("source.sequence", "/n", [1, 2, 3, 4]),
         ("subgroup.size", 4, [1, 2, 3, 4]),
         ("subgroup.max_gap", "31s", [1, 2, 3, 4]),
+        ("subgroup.every", "1min", [1, 2, 3, 4]),
+        ("subgroup", {"window": "1min", "min_size": 2}, [1, 2, 3, 4]),
         ("baseline.sigma_between", 0, [0, 1, 2, 3, 4]),
         ("baseline.mean", 341.3, [0, 1, 2, 3, 4]),
         ("detectors.0.width", 3.1, [1]),
         ("detectors.0.rules", "nelson-1984", [1]),
         ("detectors.0.rules", [{"rule": "outside", "width": 2}], [1]),
         ("detectors.0.direction", "up", [1]),
+        ("detectors.0.chart", "median", [1]),
+        ("detectors.1.chart", "sd", [2]),
         ("detectors.1.direction", "both", [2]),
         ("detectors.2.head_start", 0, [3]),
         ("detectors.2.after_signal", "restart", [3]),
@@ -397,6 +446,15 @@ def test_what_changes_what_is_judged(
     read: Read, path: str, value: object, changed: list[int]
 ) -> None:
     assert changed_by(read, path, value) == changed
+
+
+def test_a_window_written_in_full_is_the_same(read: Read) -> None:
+    """Its smallest size is 1, and a mean is what is charted."""
+    brief = revisions(read(characteristics=edited("subgroup", {"window": "60s"}, shewhart=True)))
+    spelt = {"window": "PT1M", "min_size": 1}
+    full = edited("subgroup", spelt, shewhart=True)
+    full["weight"]["detectors"][0]["chart"] = "mean"
+    assert revisions(read(characteristics=full)) == brief
 
 
 def test_a_width_is_one_thing_wherever_it_is_written(read: Read) -> None:

@@ -32,6 +32,40 @@ def test_each_plan_reaches_its_method() -> None:
     )
 
 
+def test_charts_of_medians_and_standard_deviations() -> None:
+    outside = (RulePlan("outside", width=2.5), RulePlan("outside", width=3.0))
+    assert run_length(ShewhartPlan("sd", 3, outside, "up"), size=5) == RunLength(
+        spread.run_length("sd", 5, 2.5, direction="up")
+    )
+    assert run_length(ShewhartPlan("median", 3, outside, "up"), 1, size=5) == RunLength(
+        shewhart.median_run_length(5, 2.5, 1, direction="up")
+    )
+
+
+@pytest.mark.parametrize("size", [3, 5, 12])
+def test_rules_on_medians_see_their_own_distribution(size: int) -> None:
+    """A pattern that never comes leaves the outer limit alone, whose run length is exact; and what
+    asks for the side only comes as often as on means."""
+    rare = (RulePlan("outside", width=3.0), RulePlan("run", length=300))
+    assert run_length(ShewhartPlan("median", 3, rare), size=size).subgroups == pytest.approx(
+        shewhart.median_run_length(size, 3.0), rel=1e-6
+    )
+    sides = (RulePlan("run", length=8),)
+    assert run_length(ShewhartPlan("median", 3, sides), size=size).subgroups == pytest.approx(255)
+
+
+def test_what_would_take_too_long_is_refused() -> None:
+    """Rather than keep somebody waiting for hours."""
+    far = (RulePlan("zone", width=2, count=9, of=900),)
+    for plan in (
+        EwmaPlan("mean", 1e-6, 3.0),
+        CusumPlan("mean", 0, 400),
+        ShewhartPlan("mean", 3, far),
+    ):
+        with pytest.raises(ValueError, match=r"beyond|too small|too much"):
+            run_length(plan)
+
+
 def test_only_what_must_be_simulated_has_an_error() -> None:
     exact = run_length(ShewhartPlan("mean", 3, preset("western-electric-1956", 3)))
     assert exact.standard_error == 0

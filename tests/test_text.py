@@ -56,6 +56,7 @@ HEAD_4 = (("head", "4"), ("lane", "1"))
 SINCE = START - 24 * SECOND
 RISE = Shift(1.7, SINCE, SINCE - 9 * SECOND, SINCE + 9 * SECOND)
 FALL = Shift(-2.5, SINCE, SINCE - 9 * SECOND, SINCE + 9 * SECOND)
+# Their sizes are in standard errors here, which differ from plan to plan; a finding's are in units.
 
 
 def say(
@@ -82,6 +83,8 @@ def finding(
 ) -> text.Finding:
     assert isinstance(plan.subgroup, ByCount)
     error = standard_error(judged(plan).baseline, plan.subgroup.size)
+    if shift is not None:
+        shift = shift._replace(size=shift.size * error)
     return text.Finding(signal, chart, shift, error)
 
 

@@ -16,7 +16,7 @@ import numpy as np
 import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
-from plans import GAUGE, START, characteristic, engine, events, fold, message, points, shewhart
+from plans import START, characteristic, engine, events, fold, message, points, shewhart
 from scipy.integrate import simpson
 from scipy.special import gammaln
 from scipy.stats import norm
@@ -328,3 +328,40 @@ def test_an_alert_shows_the_limits_of_its_own_point() -> None:
     raised = events(fold(watching, entries_of(sizes)))
     assert [e["event"] for e in raised] == ["raised"]
     assert raised[0]["statistic"]["upper"] == pytest.approx(MEAN + 2 * mean_error(4))
+
+
+@pytest.mark.parametrize("last", [1, 8])
+def test_a_shift_is_told_in_units_whatever_the_sizes(last: int) -> None:
+    sizes = [[MEAN] * n for n in (8, 1, 1, 8) * 5] + [[MEAN + 4.0] * n for n in (1, 8, 1, 1, 8, 1)]
+    sizes += [[MEAN + 12.0] * last]  # which signals
+    plan = characteristic(
+        shewhart(chart="mean", width=5.0), mean=MEAN, sigma=SIGMA, sigma_between=BETWEEN
+    )
+    watching = engine(replace(plan, subgroup=ByWindow(WINDOW * SECOND)))
+    (raised,) = events(fold(watching, entries_of(sizes)))
+    ns = [1, 8, 1, 1, 8, 1, last]
+    shifts = [4.0] * 6 + [12.0]
+    weights = [1 / mean_error(n) ** 2 for n in ns]
+    estimate = sum(w * x for w, x in zip(weights, shifts, strict=True)) / sum(weights)
+    assert raised["shift"] is not None
+    assert raised["shift"]["estimate"] == pytest.approx(estimate)
+    assert f"has risen by about {estimate:.2g} g" in raised["text"]
+
+
+def test_a_shift_that_lasts_is_not_over_since_sizes_vary() -> None:
+    still = [[MEAN + 1.5] * n for n in (1, 1, 1, 8) * 10]
+    plan = characteristic(
+        CusumPlan("mean", 0.5, 4.0), mean=MEAN, sigma=SIGMA, sigma_between=BETWEEN
+    )
+    watching = engine(replace(plan, subgroup=ByWindow(WINDOW * SECOND)))
+    over = [[MEAN] * n for n in (1, 1, 1, 8) * 3]
+    caused = events(fold(watching, entries_of(still + over)))
+    assert [e["event"] for e in caused] == ["raised", "returned-to-normal"]
+    # Towards the baseline by half the shift, in standard errors of each, until past 5.
+    towards, needed = 0.0, 0
+    while towards <= 5.0:
+        towards += max(0.5, 0.75 / mean_error(len(over[needed])))
+        needed += 1
+    returned = caused[1]["subgroup"]
+    assert returned is not None
+    assert returned["number"] == len(still) + needed

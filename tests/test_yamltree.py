@@ -12,7 +12,18 @@ from hypothesis import given
 from hypothesis import strategies as st
 
 from monitor import yamltree
-from monitor.yamltree import EXACT, Filled, Flaw, UnreadableError, at, merged, plain, read
+from monitor.yamltree import (
+    EXACT,
+    Filled,
+    Flaw,
+    UnreadableError,
+    at,
+    merged,
+    plain,
+    put,
+    read,
+    without,
+)
 
 
 @pytest.fixture(params=["CSafeLoader", "SafeLoader"], autouse=True)
@@ -210,6 +221,21 @@ def test_a_variable_is_not_read_as_yaml_or_filled_again() -> None:
     value, flaws = tree("a: ${X}", X="{b: 1}\n${Y}")
     assert value == {"a": "{b: 1}\n${Y}"}
     assert flaws == []
+
+
+def test_put_changes_what_is_named_and_nothing_an_alias_shares() -> None:
+    flaws: list[Flaw] = []
+    whole = read(b"a: &a {b: 1, c: 2}\nd: *a\n", "x.yaml", {}, flaws)
+    other = read(b"[9]", "y.yaml", {}, flaws)
+    assert whole is not None
+    assert other is not None
+    changed = put(whole, ("d", "b"), other)
+    assert plain(changed) == {"a": {"b": 1, "c": 2}, "d": {"b": [9], "c": 2}}
+    assert plain(whole) == {"a": {"b": 1, "c": 2}, "d": {"b": 1, "c": 2}}
+    found = at(changed, ("d", "b", 0))
+    assert found is not None
+    assert (found.file, found.line) == ("y.yaml", 1)
+    assert plain(without(changed, {"a", "x"})) == {"d": {"b": [9], "c": 2}}
 
 
 def test_merging_names_both_places() -> None:

@@ -9,15 +9,22 @@ import argparse
 import json
 import os
 import sys
+import threading
+from collections.abc import Iterator
+from contextlib import contextmanager
 from dataclasses import asdict
 from pathlib import Path
 from typing import Any
 
 from monitor.commandline import DONE, WRONG, CommandError
+from monitor.config import load
 from monitor.problems import ConfigurationError
-from monitor.resolve import read_settings
+from monitor.resolve import resolve
 from monitor.summary import summary
 from monitor.summary_words import lines
+
+PATIENCE = 1.0
+"""Seconds after which somebody at a terminal is told what takes so long."""
 
 
 def configure(parser: argparse.ArgumentParser) -> None:
@@ -29,18 +36,36 @@ def configure(parser: argparse.ArgumentParser) -> None:
 def main(args: argparse.Namespace) -> int:
     """Print what the configuration will do; every problem to stderr and 2 where it is wrong."""
     try:
-        settings = read_settings(Path(args.config), os.environ)
+        config = load(Path(args.config), os.environ)
     except ConfigurationError as error:
         for problem in error.problems:
             print(problem, file=sys.stderr)
         if args.json:
             _print_json({"valid": False, "problems": [asdict(each) for each in error.problems]})
         raise CommandError(error.count, WRONG) from None
+    with _patience():
+        found = summary(config, resolve(config))
     if args.json:
-        _print_json({"valid": True, **summary(settings)})
-    else:
-        print("\n".join([f"{args.config} is valid.", *lines(summary(settings))]))
+        _print_json({"valid": True, **found})
+        return DONE
+    warnings = len(found["warnings"])
+    but = f", with {warnings} warning{'s'[: warnings > 1]} at the end" if warnings else ""
+    print("\n".join([f"{args.config} is valid{but}.", *lines(found)]))
     return DONE
+
+
+@contextmanager
+def _patience() -> Iterator[None]:
+    """Says what takes long, to whoever watches a terminal: some rules must be simulated."""
+    text = "working out how often each rule rings with nothing wrong…"
+    timer = threading.Timer(PATIENCE, print, [text], {"end": "", "file": sys.stderr, "flush": True})
+    if sys.stderr.isatty():
+        timer.start()
+    yield
+    if sys.stderr.isatty():
+        timer.cancel()
+        timer.join()
+        print("\r\x1b[K", end="", file=sys.stderr)
 
 
 def _print_json(value: dict[str, Any]) -> None:

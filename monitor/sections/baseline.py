@@ -42,7 +42,9 @@ def _told_apart(value: dict[str, StreamBaseline]) -> dict[str, StreamBaseline]:
     first: dict[object, str] = {}
     again = [n for n in value if first.setdefault(stream_names.parse(n), n) != n]
     if again:
-        raise faults([((n,), "is a stream that stands above", "keep one of the two") for n in again])
+        raise faults(
+            [((n,), "is a stream that stands above", "keep one of the two") for n in again]
+        )
     return value
 
 
@@ -70,10 +72,10 @@ class Values(Section):
     @classmethod
     def _given(cls, value: float | None, info: ValidationInfo) -> float | None:
         # What failed its own checks is not in the data, and is not missing.
-        instead = [key for key in ("file", "by_stream") if key in cls.model_fields]
-        elsewhere = any(info.data.get(key, True) for key in instead)
-        no_mean = info.data.get("mean", 0.0) is None or info.field_name == "mean"
-        if value is None and not (elsewhere and no_mean):
+        in_file = "file" in cls.model_fields and info.data.get("file", True)
+        no_mean = info.field_name == "mean" or info.data.get("mean", 0.0) is None
+        in_streams = info.data.get("by_stream", True) and no_mean
+        if value is None and not in_file and not in_streams:
             hint = cls.model_fields[info.field_name or ""].description
             raise fault("is missing", f"write {hint}", absent=True)
         return value

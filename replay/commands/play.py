@@ -159,6 +159,8 @@ def _complain(played: Played) -> None:
     more = played.unreadable - len(played.unreadable_at)
     if more:
         print(f"… and {more:,} more lines that could not be read", file=sys.stderr)
+    for note in played.notes:
+        print(note, file=sys.stderr)
 
 
 def _json(played: Played) -> bytes:

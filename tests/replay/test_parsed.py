@@ -8,9 +8,11 @@ from dataclasses import replace
 
 import orjson
 import plans
+import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
+from monitor.decode import MAX_PAYLOAD
 from monitor.entries import Entry, Message, Parsed
 from monitor.outputs import Output
 from monitor.plan import SourcePlan
@@ -64,9 +66,8 @@ def test_equal_outputs_and_counts(said: list[tuple[str, object]]) -> None:
         Message(e.time, e.topic, orjson.dumps(e.document)) if isinstance(e, Parsed) else e
         for e in read
     ]
-    # As text, what was set aside is shown as it was written: spaces apart, the same.
     assert outcome(read) == outcome(written)
-    assert outcome(read)[1] == outcome(messages)[1]
+    assert outcome(read)[1] == outcome(messages)[1]  # set aside, these are shown with their spaces
 
 
 def test_what_was_set_aside_is_shown_as_its_text() -> None:
@@ -74,4 +75,14 @@ def test_what_was_set_aside_is_shown_as_its_text() -> None:
     entry = decode_line(line(plans.START, "line/other", payload))
     assert isinstance(entry, Parsed)
     assert plans.reasons(outcome([entry])[0]) == ["no-topic"]
+    assert outcome([entry]) == outcome([Message(plans.START, "line/other", payload)])
+
+
+@pytest.mark.parametrize(
+    ("size", "reason"), [(MAX_PAYLOAD, "no-topic"), (MAX_PAYLOAD + 1, "oversized")]
+)
+def test_what_is_too_large_is_so_in_a_recording_too(size: int, reason: str) -> None:
+    payload = b'"%s"' % (b"x" * (size - 2))
+    entry = decode_line(line(plans.START, "line/other", payload))
+    assert plans.reasons(outcome([entry])[0]) == [reason]
     assert outcome([entry]) == outcome([Message(plans.START, "line/other", payload)])

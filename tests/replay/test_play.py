@@ -402,12 +402,12 @@ def test_a_file_without_a_single_line_is_a_failure(
 def test_a_play_that_fails_leaves_no_results(
     play: Play, config: str, recording: str, write: Callable[[str, str], str], tmp_path: Path
 ) -> None:
-    broken = write("b.jsonl", '{"time":1,"control":"state"}')
+    broken = write("b.jsonl", '{"time":1,"control":"command"}')
     points = tmp_path / "points.csv"
     points.write_text("old")
     status, out, err = play(config, recording, broken, "--points", str(points))
     assert (status, out) == (1, "")
-    assert err == f'driftbell-replay play: {broken}:1: control "state" is not built yet\n'
+    assert err == f'driftbell-replay play: {broken}:1: control "command" is not built yet\n'
     assert points.read_text() == "old"
     assert not list(tmp_path.glob(".points*"))
 

@@ -9,8 +9,9 @@ import plans
 import pytest
 
 from monitor.outputs import Points, Row
+from monitor.plan import Stream
 from monitor.subgroups import Subgroup
-from replay.points import HEADER, PointsTable, name_stream
+from replay.points import HEADER, PointsTable
 
 
 def subgroup(number: int) -> Subgroup:
@@ -50,8 +51,11 @@ def test_columns_and_cells() -> None:
         ((("head", "4;5"), ("lane", "50%")), "head=4%3B5;lane=50%25"),
     ],
 )
-def test_streams_can_be_read_back(stream: tuple[tuple[str, str], ...], text: str) -> None:
-    assert name_stream(stream) == text
+def test_streams_can_be_read_back(stream: Stream, text: str) -> None:
+    row = Row("d", "mean", "mean", 1.0, 0.0, None, None, ())
+    points = Points(plans.characteristic(name="c"), stream, subgroup(1), (row,))
+    [cells] = csv.reader(io.StringIO(PointsTable().rows(points).decode()))
+    assert cells[1] == text
 
 
 def test_streams_that_need_quotes_get_them_each_time() -> None:

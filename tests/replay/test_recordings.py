@@ -15,7 +15,7 @@ from hypothesis import HealthCheck, given, settings
 from hypothesis import strategies as st
 
 from monitor.commandline import COULD_NOT, CommandError
-from monitor.entries import Entry, Message, Parsed, Reading, Started
+from monitor.entries import Entry, Message, Parsed, Reading, Started, State
 from monitor.journal import Batch, Journal
 from replay.recordings import Chunk, Recording
 from replay.tables import Layout
@@ -29,7 +29,7 @@ def chunks(recording: Recording) -> Iterator[Chunk]:
     return recording.open(layout, itertools.count(), lambda *_: None).chunks
 
 
-def entries(path: Path) -> list[Entry]:
+def entries(path: Path) -> list[Entry | State]:
     held = [entry for chunk in chunks(Recording(str(path))) for entry in chunk.entries]
     return [entry for entry in held if entry is not None]
 
