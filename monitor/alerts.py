@@ -61,7 +61,7 @@ class Slot:
         return values | {
             "detector": self.detector.name,
             "finding": [list(signal), chart, None if shift is None else list(shift), error],
-            "signals": list(self.signals.values()),
+            "signals": [dict(known) for known in self.signals.values()],
         }
 
     @classmethod
@@ -75,7 +75,7 @@ class Slot:
             finding=Finding(
                 Signal(*signal), chart, None if shift is None else Shift(*shift), error
             ),
-            signals={(known["detector"], known["rule"]): known for known in met},
+            signals={(known["detector"], known["rule"]): SignalField(**known) for known in met},
         )
 
     def signalled(self, finding: Finding, time: int) -> None:
@@ -115,7 +115,7 @@ _PLAIN = tuple(
 )
 
 
-class Sequence:
+class Numbering:
     """Counts the events of one characteristic and stream, from 1."""
 
     __slots__ = ("value",)
@@ -134,7 +134,7 @@ class StreamAlerts:
 
     __slots__ = ("_judged", "_sequence", "_slots")
 
-    def __init__(self, judged: Judged, sequence: Sequence) -> None:
+    def __init__(self, judged: Judged, sequence: Numbering) -> None:
         self._judged = judged
         self._sequence = sequence
         self._slots: dict[str, Slot] = {}

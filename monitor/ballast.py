@@ -34,11 +34,12 @@ class Ballast:
             self._path.unlink()
 
     def has_room(self) -> bool:
-        """Whether there is room to go on."""
+        """Whether there is room to go on; a small disk never has room for ballast."""
         try:
-            return self._free() > SIZE
+            found = os.statvfs(self._path.parent)
         except OSError:
             return False
+        return found.f_bavail * found.f_frsize > min(SIZE, found.f_blocks * found.f_frsize // 4)
 
     def _free(self) -> int:
         found = os.statvfs(self._path.parent)

@@ -10,7 +10,6 @@ from collections.abc import Callable
 import structlog
 
 from monitor.dialling import Dialler
-from monitor.entries import Connected
 from monitor.health import Health
 from monitor.mqtt import Link
 from monitor.pipeline import Pipeline
@@ -39,7 +38,7 @@ class Daemon:
         self._publisher = Publisher(settings.root, pipeline.engine, self._health, pipeline.outbox)
         self._dialler = Dialler(settings.broker, self._wakeup)
         self._link: Link | None = None
-        self._stale: frozenset[str] = frozenset()
+        self._stale = pipeline.filters
         self._more = False
         # mqtt.Receiver; bound, as they are called for each reading and each publication
         self.message = pipeline.intake.message
@@ -57,9 +56,8 @@ class Daemon:
 
     def subscribed(self, session_present: bool) -> None:
         """Readings reach us (mqtt.Receiver)."""
-        now = self._pipeline.now()
-        self._pipeline.note(Connected(now, session_present))
-        self._health.connected(now)
+        self._pipeline.subscribed(session_present)
+        self._health.connected(self._pipeline.now())
         self._dialler.holds()
         log.info("connected", session_present=session_present)
 
@@ -67,7 +65,9 @@ class Daemon:
         timeout = 0.0 if self._more else self._pipeline.seconds_to_next()
         if self._link is None:
             timeout = min(timeout, self._dialler.delay())
-        self._wakeup.wait(self._link, min(timeout, _LONGEST_WAIT))
+        # A connection that is not read while nothing more can be taken would end each wait at once.
+        link = None if self._pipeline.intake.full() else self._link
+        self._wakeup.wait(link, min(timeout, _LONGEST_WAIT))
 
     def _turn(self) -> None:
         pipeline = self._pipeline
@@ -88,8 +88,8 @@ class Daemon:
             self._let_go_if_lost(link)
 
     def _configure(self, settings: Settings) -> None:
-        before = self._pipeline.engine.plan.topics() | self._settings.plan.topics()
-        self._stale = (self._stale | before) - settings.plan.topics()
+        before = self._stale | self._settings.plan.topics()
+        self._stale = before - settings.plan.topics()
         self._settings = settings
         self._pipeline.configure(settings.plan)
         if self._link is not None:
@@ -127,6 +127,7 @@ class Daemon:
     def _farewell(self) -> None:
         if self._link is not None:
             self._publisher.farewell(self._link, self._pipeline.now())
+            self._pipeline.resends.proof(self._link.last_packet, self._pipeline.position)
             self._link.close(_FAREWELL)
         self._pipeline.close()
         log.info("stopped")

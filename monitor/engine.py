@@ -27,16 +27,17 @@ from monitor.entries import (
 from monitor.messages import AlertEvent, StandingMessage
 from monitor.outputs import Alert, Evidence, Output, SetAside
 from monitor.plan import Plan
+from monitor.quick import quick
 from monitor.routes import Characteristic, Route, Routes
 from monitor.seen import Verdict
 from monitor.standing import standing
 from monitor.stream import Counts, StreamState
+from monitor.subgroups import Subgroup
 
 STATE_VERSION = 1
 
 _NOTHING: Sequence[Output] = ()
 _GRACE = times.SECOND
-_UNHEARD = (Started, Disconnected, Tick)  # that they came says nothing of the line
 
 
 class Engine:
@@ -52,8 +53,6 @@ class Engine:
         """Streams whose standing changed since the caller last cleared it, in order."""
         self.changed: dict[StreamState, None] = {}
         """Streams that remember something else since the caller last cleared it."""
-        self.lag: int | None = None
-        """Microseconds from the latest reading's own time to its arrival."""
         self.plan = plan
         self.sessions_lost = 0
         self._points = points
@@ -71,9 +70,12 @@ class Engine:
         time = entry.time
         if time > self._arrival:
             self._arrival = time
-        if isinstance(entry, _UNHEARD):
-            if isinstance(entry, Tick):
-                return self._close_due()
+        kind = type(entry)
+        if kind is Parsed or kind is Message:
+            pass  # what nearly every entry is
+        elif isinstance(entry, Tick):
+            return self._close_due()
+        elif isinstance(entry, Started | Disconnected):
             self._blinded(entry)
             return _NOTHING
         self._heard = self._arrival
@@ -90,6 +92,11 @@ class Engine:
         elif isinstance(entry, Configured):
             outputs = self._configure(entry.plan)
         return (*due, *outputs) if due else outputs
+
+    @property
+    def lag(self) -> int | None:
+        """Microseconds from the latest reading's own time to its arrival."""
+        return self.counts.lag
 
     def next_deadline(self) -> int | None:
         """The arrival at which a ``Tick`` is due unless another entry comes first."""
@@ -118,7 +125,6 @@ class Engine:
             "heard": self._heard,
             "blind": self._blind,
             "watching_since": self._watching_since,
-            "lag": self.lag,
             "counts": asdict(self.counts),
             "deadlines": self._deadlines.state(),
             "counters": self._routes.state(),
@@ -137,17 +143,17 @@ class Engine:
         self._arrival, self._heard = state["arrival"], state["heard"]
         self._blind = None if state["blind"] is None else tuple(state["blind"])
         self._watching_since = state["watching_since"]
-        self.lag = state["lag"]
         self.counts = Counts(**state["counts"])
         self._deadlines.restore(state["deadlines"])
         self._routes.restore(state["counters"])
         self._had_session, self.sessions_lost = state["had_session"], state["sessions_lost"]
-        for name, remembered in state["gauges"].items():
-            self._characteristics[name].gauge.restore(remembered)
         for each in streams:
             characteristic = self._characteristics[each["characteristic"]]
             keys = tuple(each["stream"][key] for key in characteristic.decoder.keys)
             characteristic.open(keys, each["since"], self.counts).restore(each)
+        # After the streams: what they count together is newest here.
+        for name, remembered in state["gauges"].items():
+            self._characteristics[name].gauge.restore(remembered)
 
     # Time
 
@@ -179,24 +185,31 @@ class Engine:
         before, self._characteristics = self._characteristics, {}
         outputs: list[Output] = []
         for each in plan.characteristics:
-            old, new = before.get(each.name), Characteristic(each)
-            if old is not None and old.decoder.keys == new.decoder.keys:
-                del before[each.name]
+            old, new = before.pop(each.name, None), Characteristic(each)
+            if old is not None:
                 new.adopt(old)
                 for state in new.streams.values():
                     outputs += state.reconfigure(each, time, counts)
                     if state.gatherer.closes() is None:
                         self._deadlines.cancel((each.name, state.keys))
+                outputs += self._leave(old)
             self._characteristics[each.name] = new
         for old in before.values():
-            for state in old.streams.values():
-                outputs += state.leave(time, counts)
-                self._deadlines.cancel((old.plan.name, state.keys))
-                self.touched.pop(state, None)
-                self.changed.pop(state, None)
+            outputs += self._leave(old)
+            outputs += [self._told(old, event) for event in old.gauge.withdraw(time)]
         self._routes = Routes(self._characteristics.values(), self._routes)
         self._touch_all()
         self.changed.update(self.touched)
+        return outputs
+
+    def _leave(self, old: Characteristic) -> list[Output]:
+        """The streams that no other plan took over are no more."""
+        outputs: list[Output] = []
+        for state in old.streams.values():
+            outputs += state.leave(self._arrival, self.counts)
+            self._deadlines.cancel((old.plan.name, state.keys))
+            self.touched.pop(state, None)
+            self.changed.pop(state, None)
         return outputs
 
     def _blinded(self, entry: Started | Disconnected) -> None:
@@ -233,11 +246,17 @@ class Engine:
         self, topic: str, document: object, payload: bytes | None, arrival: int
     ) -> Sequence[Output]:
         """``payload`` is None where it is only the document's own text."""
-        self.counts.messages += 1
-        outputs = _NOTHING
         routes = self._routes.known.get(topic)
         if routes is None:
             routes = self._routes.find(topic)
+            if len(routes) == 1:
+                routes[0].quick = quick(routes[0], self.counts, self.changed, self._judge)
+        elif len(routes) == 1 and routes[0].quick is not None:
+            usual = routes[0].quick(document, arrival)
+            if usual is not None:
+                return usual
+        self.counts.messages += 1
+        outputs = _NOTHING
         for route in routes:
             result = self._read(route, document, arrival)
             if isinstance(result, str):
@@ -303,22 +322,36 @@ class Engine:
         if sequence is not None and route.counter is not None:
             counts.missing += route.counter.advance(sequence, verdict is Verdict.RESTART)
         if timed:
-            self.lag = arrival - moment
+            counts.lag = arrival - moment
             subgroup = state.gatherer.add(value, moment, (sequence, moment, None, None))
         elif sequence is not None:
             subgroup = state.gatherer.add(value, moment, (sequence, None, None, None))
         else:
             subgroup = state.gatherer.add(value, moment, (None, None, moment, seen.place))
         if subgroup is not None:
-            judged = state.judge(subgroup, counts, self._points)
+            judged = self._judge(route, state, subgroup, arrival)
             outputs = (*outputs, *judged) if outputs else judged
-            self.touched[state] = None
-            if route.characteristic.gauge.is_open:
-                ended = route.characteristic.gauge.ended(arrival)
-                outputs = (*outputs, *(self._told(route.characteristic, e) for e in ended))
+        elif state.windowed:
+            outputs = (*outputs, *self._gauge_ended(route, arrival))
         if state.windowed:
             self._await_close(state, moment)
         return outputs
+
+    def _judge(
+        self, route: Route, state: StreamState, subgroup: Subgroup, arrival: int
+    ) -> Sequence[Output]:
+        self.touched[state] = None
+        judged = state.judge(subgroup, self.counts, self._points)
+        ended = self._gauge_ended(route, arrival)
+        return (*judged, *ended) if ended else judged
+
+    def _gauge_ended(self, route: Route, arrival: int) -> Sequence[Output]:
+        # Windows close by themselves, mostly: there a reading is all that tells.
+        characteristic = route.characteristic
+        if not characteristic.gauge.is_open:
+            return _NOTHING
+        ended = characteristic.gauge.ended(arrival)
+        return [self._told(characteristic, each) for each in ended]
 
     def _await_close(self, state: StreamState, moment: int) -> None:
         closes = state.gatherer.closes()

@@ -11,7 +11,7 @@ from typing import Any
 import rfc8785
 
 from monitor import text, times
-from monitor.alerts import Sequence
+from monitor.alerts import Numbering
 from monitor.messages import SCHEMA, AlertEvent, EventKind, OpenField
 from monitor.plan import CharacteristicPlan
 
@@ -23,6 +23,8 @@ _WORDS = {
         "readings arrive again",
     ),
 }
+RULES = tuple(_WORDS)
+_LEFT = "no longer watched, because the configuration changed"
 _FIRST = {
     "session-lost": "See whether the broker was restarted without its store, or expires sessions.",
 }
@@ -33,7 +35,7 @@ class GaugeAlerts:
 
     __slots__ = ("_open", "_plan", "_sequence")
 
-    def __init__(self, plan: CharacteristicPlan, sequence: Sequence) -> None:
+    def __init__(self, plan: CharacteristicPlan, sequence: Numbering) -> None:
         self._plan = plan
         self._sequence = sequence
         self._open: dict[str, tuple[str, int]] = {}
@@ -57,6 +59,12 @@ class GaugeAlerts:
         events = [self._event(rule, "returned-to-normal", time) for rule in over]
         for rule in over:
             del self._open[rule]
+        return events
+
+    def withdraw(self, time: int) -> list[AlertEvent]:
+        """The characteristic leaves the configuration: all that is open is closed."""
+        events = [self._event(rule, "withdrawn", time) for rule in self._open]
+        self._open.clear()
         return events
 
     def reconfigure(self, plan: CharacteristicPlan) -> None:
@@ -89,7 +97,8 @@ class GaugeAlerts:
     def _text(self, rule: str, kind: EventKind) -> str:
         during, after = _WORDS[rule]
         name = self._plan.title.split(",")[0].strip() or self._plan.name
-        return f"{name}: {during if kind == 'raised' else after}."
+        said = {"raised": during, "withdrawn": _LEFT}.get(kind, after)
+        return f"{name}: {said}."
 
     def _event(self, rule: str, kind: EventKind, time: int) -> AlertEvent:
         known, since = self._open[rule]
@@ -118,5 +127,5 @@ class GaugeAlerts:
             baseline=None,
             reaction=[_FIRST[rule]],
             caution=text.CAUTION,
-            reason=None,
+            reason="configuration" if kind == "withdrawn" else None,
         )

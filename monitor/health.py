@@ -36,6 +36,7 @@ class Health:
         self.unsafe = 0
         self.dropped_points = 0
         self._due = 0
+        self._said_frozen = False
 
     def connected(self, now: int) -> None:
         """Subscribed: readings reach us."""
@@ -46,12 +47,15 @@ class Health:
         self.online, self.since, self.last_error = False, now, why
 
     def is_due(self, now: int) -> bool:
-        """Whether it is time to say how we are."""
-        return now >= self._due
+        """Whether it is time to say how we are: in turn, or since that has changed."""
+        return now >= self._due or self._said_frozen is (self.frozen is None)
 
-    def message(self, now: int, counts: Counts, lag: int | None, waiting: int) -> HealthMessage:
+    def message(
+        self, now: int, counts: Counts, lag: int | None, waiting: int, sessions_lost: int
+    ) -> HealthMessage:
         """How we are now; the next is due ``EVERY`` later."""
         self._due = now + EVERY
+        self._said_frozen = self.frozen is not None
         return HealthMessage(
             schema=SCHEMA,
             online=self.online,
@@ -71,6 +75,7 @@ class Health:
             waiting=waiting,
             last_error=self.frozen or self.last_error,
             qos_0=self.unsafe,
+            sessions_lost=sessions_lost,
             points_dropped=self.dropped_points,
         )
 
@@ -88,6 +93,7 @@ def will(now: int) -> HealthMessage:
         waiting=None,
         last_error="the connection to the broker ended without a word",
         qos_0=None,
+        sessions_lost=None,
         points_dropped=None,
     )
 

@@ -8,13 +8,15 @@ from __future__ import annotations
 import math
 from collections.abc import Callable
 
-from monitor.entries import Message, Recorded
+from monitor.entries import Connected, Message, Recorded
 from monitor.resends import Resends
 from monitor.times import SECOND
 
 NANOSECONDS = 1_000
 _MOST = 2_000
 _MOST_BYTES = 8 << 20
+_PATIENCE = 2 * SECOND
+"""How long nothing comes from a broker that has nothing more to send again."""
 
 
 class Arrival:
@@ -44,7 +46,17 @@ class Arrival:
 class Intake:
     """Entries in order, and the acknowledgements that their commit will allow."""
 
-    __slots__ = ("_acknowledge", "_bytes", "_came", "_entries", "_now", "_resends", "unsafe")
+    __slots__ = (
+        "_acknowledge",
+        "_bytes",
+        "_came",
+        "_entries",
+        "_heard",
+        "_now",
+        "_resends",
+        "holding",
+        "unsafe",
+    )
 
     def __init__(self, now: Callable[[], int], resends: Resends) -> None:
         self._now = now
@@ -53,6 +65,9 @@ class Intake:
         self._acknowledge: list[int] = []
         self._came: list[tuple[Message, bool]] = []
         self._bytes = 0
+        self._heard: float = math.inf
+        self.holding = False
+        """Whether it takes more messages, or quiet, to tell what is new of those that came."""
         self.unsafe = 0
         """Messages that came at QoS 0: no broker keeps those for us."""
 
@@ -67,12 +82,16 @@ class Intake:
             self._acknowledge.append(packet)
             if self._resends.matching:
                 self._came.append((message, dup))
+                if self._resends.expects(topic):
+                    self._heard = message.time
         elif not retain:
             self.unsafe += 1
 
     def note(self, entry: Recorded) -> None:
         """Something else happened that moves state."""
         self._entries.append(entry)
+        if isinstance(entry, Connected):
+            self._heard = entry.time
 
     def full(self) -> bool:
         """Whether the batch is large enough: brokers differ in whether they bound it."""
@@ -81,13 +100,17 @@ class Intake:
     def take(self) -> tuple[list[Recorded], list[int]]:
         """The batch and its acknowledgements; both start again empty.
 
-        What was journaled before is only acknowledged.
+        What was journaled before is only acknowledged. Nothing is given while ``holding``.
         """
-        entries, acknowledge, came = self._entries, self._acknowledge, self._came
+        again = self._sent_again()
+        self.holding = again is None
+        if again is None:
+            return [], []
+        entries, acknowledge = self._entries, self._acknowledge
         self._entries, self._acknowledge, self._came, self._bytes = [], [], [], 0
-        if came:
-            again = {id(message) for message, _ in came[: self._resends.again(came)]}
-            entries = [each for each in entries if id(each) not in again]
+        if again:
+            known = {id(message) for message in again}
+            entries = [each for each in entries if id(each) not in known]
         return entries, acknowledge
 
     def connection_lost(self) -> None:
@@ -95,3 +118,13 @@ class Intake:
         self._acknowledge.clear()
         self._came.clear()
         self._entries = [e for e in self._entries if not (isinstance(e, Message) and e.qos)]
+        self._bytes = sum(len(e.payload) for e in self._entries if isinstance(e, Message))
+        self._heard, self.holding = math.inf, False
+
+    def _sent_again(self) -> list[Message] | None:
+        if not self._resends.matching:
+            return []
+        quiet = self._now() - self._heard >= _PATIENCE
+        if not (self._came or quiet):
+            return []
+        return self._resends.again(self._came, quiet=quiet, full=self.full())

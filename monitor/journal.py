@@ -5,6 +5,7 @@ Knows SQLite. Must not know what entries mean, how alerts are decided or when to
 
 from __future__ import annotations
 
+import contextlib
 import fcntl
 import os
 import sqlite3
@@ -13,7 +14,7 @@ from dataclasses import dataclass, field
 from pathlib import Path
 from typing import NamedTuple
 
-from monitor import rows
+from monitor import plan_json, rows
 from monitor.entries import Recorded
 
 SCHEMA = 2
@@ -44,6 +45,7 @@ CREATE TABLE alerts (
     evidence BLOB NOT NULL
 );
 CREATE INDEX alerts_by_id ON alerts (id);
+CREATE INDEX configurations ON entries (position) WHERE kind = 5;
 CREATE TABLE state (owner TEXT PRIMARY KEY, value BLOB NOT NULL) WITHOUT ROWID;
 CREATE TABLE bases (
     position INTEGER NOT NULL,
@@ -136,6 +138,11 @@ class Journal:
             raise
 
     @property
+    def proven(self) -> int:
+        """The position up to which the broker is known to have our acknowledgements."""
+        return meta(self.db, "proven")
+
+    @property
     def unsettled(self) -> bool:
         """Whether an alert was delivered that a crash would make us send again."""
         return bool(self._gone)
@@ -198,14 +205,23 @@ class Journal:
         ).fetchall()
 
     def unproven(self) -> Iterator[tuple[int, Recorded]]:
-        """(position, entry) after the last that the broker is known to have our word for."""
-        proven = max(meta(self.db, "proven"), self.position - _MOST_UNPROVEN)
-        return numbered_entries(self.db, after=proven)
+        """(position, message) after the last that the broker is known to have our word for."""
+        proven = max(self.proven, self.position - _MOST_UNPROVEN)
+        return numbered_entries(self.db, after=proven, kind=rows.MESSAGE)
+
+    def filters(self) -> frozenset[str]:
+        """Every filter that was configured in the time that entries are kept."""
+        found: set[str] = set()
+        for (plan,) in self.db.execute("SELECT DISTINCT payload FROM entries WHERE kind = 5"):
+            with contextlib.suppress(ValueError):  # of another version
+                found |= plan_json.decode(plan).topics()
+        return frozenset(found)
 
     def close(self) -> None:
         """Let go of the file, once what the broker acknowledged is noted."""
         if self._gone:
-            self.commit(Batch(()))
+            with contextlib.suppress(sqlite3.OperationalError):  # then it is sent again
+                self.commit(Batch(()))
         self.db.close()
         os.close(self._lock)
 
@@ -237,7 +253,9 @@ class Journal:
         db.executemany("DELETE FROM state WHERE owner = ?", [(name,) for name in batch.forgotten])
         set_meta(db, "snapshot", position)
         if batch.base:
-            db.execute("INSERT INTO bases SELECT ?, owner, value FROM state", (position,))
+            db.execute(
+                "INSERT OR REPLACE INTO bases SELECT ?, owner, value FROM state", (position,)
+            )
 
     def owners(self) -> set[str]:
         """Whose memory the newest snapshot holds."""
@@ -311,9 +329,12 @@ def base(db: sqlite3.Connection, at: int) -> Snapshot:
 
 def bases_between(db: sqlite3.Connection, time: int) -> tuple[int, int]:
     """(position of the newest base that old or older, time of the newest base); 0 for none."""
+    # From each base to the next: there may be thousands of rows between.
     found = db.execute(
-        "SELECT b.position, e.time FROM (SELECT DISTINCT position FROM bases) b"
-        " JOIN entries e ON e.position = b.position ORDER BY b.position"
+        "WITH RECURSIVE places (position) AS (SELECT min(position) FROM bases UNION ALL"
+        " SELECT (SELECT min(b.position) FROM bases b WHERE b.position > places.position)"
+        " FROM places WHERE position IS NOT NULL)"
+        " SELECT position, time FROM places JOIN entries USING (position) ORDER BY position"
     ).fetchall()
     old = [position for position, at in found if at <= time]
     return (old[-1] if old else 0), (found[-1][1] if found else 0)
@@ -327,7 +348,9 @@ def base_after(db: sqlite3.Connection, position: int) -> int:
 
 def alerts_before(db: sqlite3.Connection, time: int) -> int:
     """The position of the last alert older than a time; 0 for none."""
-    return _single(db, "SELECT coalesce(max(position), 0) FROM alerts WHERE time < ?", time)
+    # Found from the oldest on, and few are older: those that are go soon.
+    young = "SELECT position - 1 FROM alerts WHERE time >= ? ORDER BY position LIMIT 1"
+    return _single(db, f"SELECT coalesce(({young}), (SELECT max(position) FROM alerts), 0)", time)
 
 
 def read_entries(db: sqlite3.Connection, after: int = 0) -> Iterator[Recorded]:
@@ -335,12 +358,18 @@ def read_entries(db: sqlite3.Connection, after: int = 0) -> Iterator[Recorded]:
     return (each for _, each in numbered_entries(db, after))
 
 
-def numbered_entries(db: sqlite3.Connection, after: int = 0) -> Iterator[tuple[int, Recorded]]:
-    """The same with their positions."""
+def numbered_entries(
+    db: sqlite3.Connection, after: int = 0, kind: int | None = None
+) -> Iterator[tuple[int, Recorded]]:
+    """The same with their positions; of one kind where that is given.
+
+    ValueError where one was written by another version.
+    """
     cursor = db.execute(
         "SELECT e.position, e.time, e.kind, t.topic, e.payload, e.flags FROM entries e"
-        " LEFT JOIN topics t ON t.id = e.topic WHERE e.position > ? ORDER BY e.position",
-        (after,),
+        " LEFT JOIN topics t ON t.id = e.topic WHERE e.position > ? AND e.kind = ifnull(?, e.kind)"
+        " ORDER BY e.position",
+        (after, kind),
     )
     for position, *row in cursor:
         yield position, rows.entry(*row)

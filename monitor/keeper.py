@@ -15,7 +15,7 @@ from monitor.ballast import Ballast
 from monitor.engine import Engine
 from monitor.folding import Folded
 from monitor.journal import Batch, Journal
-from monitor.plan import RetentionPlan
+from monitor.plan import Plan, RetentionPlan
 from monitor.retention import Retention
 
 log = structlog.get_logger()
@@ -37,7 +37,8 @@ class Keeper:
         self._ballast.take()
         self._since_snapshot = behind
         self._snapshot_at = 0
-        self._noted = -1
+        self._plan: Plan | None = None
+        self._noted = journal.proven
         self._try_at = 0.0
 
     def keep(self, folded: Folded, proven: int, now: int) -> list[tuple[int, str, bytes]] | None:
@@ -65,24 +66,26 @@ class Keeper:
         leaving += [(topic, b"") for topic in folded.clears]
         return [(place, *each) for place, each in zip(places, leaving, strict=True)]
 
-    def settle(self) -> None:
+    def settle(self, proven: int) -> None:
         """Take down what is remembered, so that the next start has little to fold."""
-        if self.frozen is None and self._since_snapshot:
+        if self.frozen is None:
+            batch = Batch((), proven=proven)
+            if self._since_snapshot:
+                self._take_down(batch)
             try:
-                self._journal.commit(Batch((), remembered=recovery.remembered(self._engine)))
+                self._journal.commit(batch)
             except sqlite3.OperationalError as error:
                 log.warning("stopped without a snapshot", why=str(error))
 
     def _commit(self, batch: Batch, proven: int, now: int) -> list[int]:
         retention = self._retention
         retention.look(self._journal, now)
-        batch.pruning = retention.few()
+        batch.pruning = retention.few(len(batch.entries))
         if proven != self._noted:
             batch.proven = proven
         since = self._since_snapshot + len(batch.entries)
         if since >= _SNAPSHOT_AFTER or now - self._snapshot_at >= _SNAPSHOT_EVERY:
-            batch.remembered = recovery.remembered(self._engine)
-            batch.forgotten = list(self._journal.owners() - recovery.owners(self._engine))
+            self._take_down(batch)
             batch.base = retention.wants_base()
         try:
             places = self._journal.commit(batch)
@@ -90,12 +93,21 @@ class Keeper:
             # What was taken down is not in the file: take all of it down next time.
             if batch.remembered:
                 self._engine.changed.update(dict.fromkeys(self._engine.streams()))
+                self._plan = None
             raise
         self._noted = proven
         self._since_snapshot = since
         if batch.remembered:
             self._since_snapshot, self._snapshot_at = 0, now
         return places
+
+    def _take_down(self, batch: Batch) -> None:
+        engine = self._engine
+        batch.remembered = recovery.remembered(engine)
+        if engine.plan is not self._plan:
+            # Only with a configuration does a stream leave.
+            batch.forgotten = list(self._journal.owners() - recovery.owners(engine))
+            self._plan = engine.plan
 
     def _freeze(self, why: str) -> None:
         if self.frozen is None:

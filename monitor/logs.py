@@ -19,7 +19,7 @@ class _Stderr:
         with contextlib.suppress(OSError):
             os.write(sys.stderr.fileno(), f"{line}\n".encode(errors="backslashreplace"))
 
-    info = warning = msg
+    info = warning = error = msg
 
 
 def to_stderr() -> None:

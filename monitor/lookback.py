@@ -84,6 +84,7 @@ class LookBack:
         """Take back what ``state`` gave."""
         count, rise_over, fall_over, *held = state
         self._count = count - len(held[0])
+        self._size = next(iter(held[2]), 0)
         for each in zip(*held, strict=True):
             self.append(*each)
         self._rise_over, self._fall_over = rise_over, fall_over

@@ -18,9 +18,14 @@ class Remembers:
 
     def state(self) -> list[Any]:
         """What is remembered, as JSON values."""
-        return [getattr(self, name) for name in self._memory]
+        return [_own(getattr(self, name)) for name in self._memory]
 
     def restore(self, state: Sequence[Any]) -> None:
         """Remember what ``state`` gave; ValueError where it is not of this kind."""
         for name, value in zip(self._memory, state, strict=True):
-            setattr(self, name, value)
+            setattr(self, name, _own(value))
+
+
+def _own(value: Any) -> Any:
+    # What is remembered goes on changing; what was given out or taken in does not.
+    return list(value) if isinstance(value, list) else value

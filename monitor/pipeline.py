@@ -5,13 +5,14 @@ Knows the order: match what is sent again, fold, commit. Must not know MQTT or w
 
 from __future__ import annotations
 
+import math
 import time
 from collections.abc import Callable
 from pathlib import Path
 
 import structlog
 
-from monitor.entries import Configured, Disconnected, Recorded, Started, Tick
+from monitor.entries import Configured, Connected, Disconnected, Recorded, Started, Tick
 from monitor.folding import Addresses, Folded, fold
 from monitor.intake import Arrival, Intake
 from monitor.journal import Journal
@@ -35,13 +36,17 @@ class Pipeline:
         journal = self._journal = Journal(Path(settings.journal))
         recovered = recover(journal.db, settings.plan, settings.points, stopping)
         self.engine = recovered.engine
+        self.filters = journal.filters() | self.engine.plan.topics()
+        """All that the broker's session may be subscribed to."""
         self.outbox = Outbox(journal.waiting())
-        self.resends = Resends(journal.unproven())
+        self.resends = Resends(journal.unproven(), journal.proven)
         self._arrival = Arrival(time.time_ns, time.monotonic_ns, journal.last_time)
         self.intake = Intake(self.now, self.resends)
         self._keeper = Keeper(journal, self.engine, settings.retention, recovered.folded)
         self._folded: Folded | None = None
-        log.info("started", entries=recovered.folded, waiting=len(self.outbox))
+        self._whole = recovered.whole
+        if recovered.whole:
+            log.info("started", entries=recovered.folded, waiting=len(self.outbox))
         self.note(Started(self.now()))
 
     @property
@@ -60,6 +65,8 @@ class Pipeline:
 
     def seconds_to_next(self) -> float:
         """Until there is something to do, though nothing comes."""
+        if self.frozen is not None or self.intake.holding:
+            return math.inf  # nothing is folded: what is due waits
         return self._arrival.until(self.engine.next_deadline())
 
     def note(self, entry: Recorded) -> None:
@@ -93,6 +100,12 @@ class Pipeline:
         """A new connection is made: what comes first may have come before."""
         self.resends.reconnected(self._folded.entries if self._folded else ())
 
+    def subscribed(self, session_present: bool) -> None:
+        """Readings reach us from now on."""
+        if not session_present:
+            self.resends.session_gone()
+        self.note(Connected(self.now(), session_present))
+
     def connection_lost(self, was_online: bool) -> None:
         """What was not acknowledged will be sent again."""
         if self._folded is not None:
@@ -104,7 +117,8 @@ class Pipeline:
 
     def close(self) -> None:
         """Let go of the journal, with what is remembered taken down."""
-        self._keeper.settle()
+        if self._whole:
+            self._keeper.settle(self.resends.proven)
         self._journal.close()
 
     def _fold(self, addresses: Addresses) -> Folded:

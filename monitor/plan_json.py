@@ -45,7 +45,9 @@ def _plain(value: Any) -> Any:
     if isinstance(value, tuple):
         return [_plain(each) for each in value]
     if isinstance(value, Mapping):
-        return {_PAIRS: [[_plain(key), _plain(each)] for key, each in value.items()]}
+        # In one order: mappings that differ only in theirs are equal.
+        pairs = [[_plain(key), _plain(each)] for key, each in value.items()]
+        return {_PAIRS: sorted(pairs, key=lambda pair: orjson.dumps(pair[0]))}
     return value
 
 

@@ -101,7 +101,9 @@ class Publisher:
 
     def _publish_health(self, link: Link, now: int) -> None:
         engine = self._engine
-        message = self._health.message(now, engine.counts, engine.lag, len(self._outbox))
+        message = self._health.message(
+            now, engine.counts, engine.lag, len(self._outbox), engine.sessions_lost
+        )
         link.publish(f"{self._root}/health", messages.encode(message), retain=True)
 
     def _publish_standings(self, link: Link, now: int) -> None:
@@ -112,6 +114,8 @@ class Publisher:
                 due[state] = None
         engine.touched.clear()
         for state in due:
+            if state.has_left:
+                continue  # what is kept of it is cleared, and is to stay so
             link.publish(
                 f"{self._root}/standing/{messages.path(state.plan.name, state.stream)}",
                 messages.encode(engine.standing(state)),

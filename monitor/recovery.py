@@ -6,14 +6,15 @@ Knows snapshots, their owners and what to fall back on. Must not know files, or 
 from __future__ import annotations
 
 import sqlite3
-from collections.abc import Callable
+from collections.abc import Callable, Iterator
 from dataclasses import dataclass
 
 import orjson
 
 from monitor import journal, messages, plan_json
 from monitor.engine import Engine
-from monitor.entries import Configured
+from monitor.entries import Recorded
+from monitor.journal import JournalError
 from monitor.plan import Plan
 from monitor.stream import StreamState
 
@@ -22,11 +23,13 @@ _ENGINE, _PLAN = "", "/"  # no stream's path is empty or begins with a slash
 
 @dataclass(frozen=True, slots=True)
 class Recovered:
-    """An engine that has folded all that its journal holds after ``position``."""
+    """An engine that has folded ``folded`` entries after the one at ``position``: all that its
+    journal holds, unless it is not ``whole`` because we were told to stop."""
 
     engine: Engine
     position: int
     folded: int
+    whole: bool
 
 
 def owner(state: StreamState) -> str:
@@ -76,20 +79,35 @@ def recover(
     """The newest snapshot with the entries after it folded in.
 
     A snapshot of another version is passed over for the last base, a base for the journal's start,
-    under the configuration in force there, or ``plan`` where none is noted.
+    under the configuration in force there, or ``plan`` where none is noted. JournalError where an
+    entry is of another version.
     """
-    for kept in (journal.snapshot(db), journal.base(db, journal.NEWEST)):
+    newest = journal.snapshot(db)
+    for kept in (newest, journal.base(db, journal.NEWEST)):
         engine = restored(kept, points) if kept.values else None
         if engine is not None:
             break
     else:
         kept = journal.Snapshot(0, {})
-        first = next(journal.read_entries(db), None)
-        engine = Engine(first.plan if isinstance(first, Configured) else plan, points=points)
-    folded = 0
-    for entry in journal.read_entries(db, kept.position):
+        engine = Engine(plan, points=points)
+    folded, whole = 0, True
+    for entry in _readable(journal.read_entries(db, kept.position)):
         if stopping():
+            whole = False
             break
         engine.fold(entry)
         folded += 1
-    return Recovered(engine, kept.position, folded)
+    if kept is not newest:
+        # What the unreadable snapshot holds of streams that stayed as they are is to go, too.
+        engine.changed.update(dict.fromkeys(engine.streams()))
+    return Recovered(engine, kept.position, folded, whole)
+
+
+def _readable(entries: Iterator[Recorded]) -> Iterator[Recorded]:
+    try:
+        yield from entries
+    except ValueError as error:
+        raise JournalError(
+            f"the journal was written by another version: {error}; "
+            "use that version, or give this one a new file"
+        ) from error

@@ -1,43 +1,50 @@
 """Which of the messages that come after a reconnect were journaled before.
 
 Knows the messages whose acknowledgement the broker may not have, in order. Must not know sockets,
-files or readings. What the broker sends again it sends first, all of it, and in its old order (MQTT
-3.1.1, section 4.6), so what is to be recognised is a run: the longest end of what was journaled
-that equals the beginning of what comes.
+files or readings. What the broker sends again it sends first, all of it, and in the order of its
+topic (MQTT 3.1.1, section 4.6), so what is to be recognised of a topic is a run: the longest end of
+what was journaled that equals the beginning of what comes.
 """
 
 from __future__ import annotations
 
 from collections import deque
-from collections.abc import Hashable, Iterable, Sequence
-from itertools import takewhile
+from collections.abc import Iterable, Sequence
 
 from monitor.entries import Message, Recorded
 
 _MOST = 65_535  # unacknowledged messages differ in their packet identifiers, of 16 bits
 
-Came = Sequence[tuple[Message, bool]]
-"""Messages, each with its DUP."""
+Came = tuple[Message, bool]
+"""A message and its DUP."""
 
 
 class Resends:
     """Recognises what is sent again.
 
-    A broker that sets DUP promises the old packet identifier with it (section 3.3.1). One that
-    never does may send again under new ones; then only topics and payloads tell.
+    ``unproven`` are the journaled entries after position ``proven``, each with its own.
     """
 
-    __slots__ = ("_begun", "_expected", "_probed", "_probes", "_unproven", "marks_them", "proven")
+    __slots__ = (
+        "_by_packet",
+        "_keeps",
+        "_newest",
+        "_probed",
+        "_probes",
+        "_runs",
+        "_unproven",
+        "proven",
+    )
 
-    def __init__(self, unproven: Iterable[tuple[int, Recorded]] = ()) -> None:
+    def __init__(self, unproven: Iterable[tuple[int, Recorded]] = (), proven: int = 0) -> None:
         self._unproven: deque[tuple[int, Message]] = deque(maxlen=_MOST)
-        self._expected: list[Message] = []
-        self._begun = False
+        self._runs: dict[str, list[bytes]] = {}
+        self._by_packet: dict[int, tuple[int, Message]] = {}
+        self._newest = 0
+        self._keeps: bool | None = None
         self._probes: dict[int, int] = {}
         self._probed = 0
-        self.marks_them = False
-        """Whether this broker was seen to set DUP: then what comes without is new."""
-        self.proven = 0
+        self.proven = proven
         """The journal position up to which the broker has our acknowledgements."""
         for position, entry in unproven:
             self.journaled(position, (entry,))
@@ -45,7 +52,11 @@ class Resends:
     @property
     def matching(self) -> bool:
         """Whether what comes next may have come before."""
-        return bool(self._expected)
+        return bool(self._runs)
+
+    def expects(self, topic: str) -> bool:
+        """Whether what comes next on this topic may have come before."""
+        return topic in self._runs
 
     def journaled(self, position: int, entries: Iterable[Recorded]) -> None:
         """Entries became durable, the first at ``position``; the broker may not know yet."""
@@ -54,8 +65,8 @@ class Resends:
                 self._unproven.append((at, entry))
 
     def proof(self, packet: int, position: int) -> None:
-        """The latest publication is ``packet``; it left after the acknowledgements up to
-        ``position``, unless it is the same as before.
+        """The latest publication is ``packet``; unless it was before, it left after the
+        acknowledgements up to ``position``.
 
         The broker reads in order: when it has taken over the one, it has the others. Not while some
         may still be sent again: of those it has no acknowledgement yet.
@@ -74,92 +85,118 @@ class Resends:
             self._unproven.popleft()
 
     def reconnected(self, folded: Iterable[Recorded] = ()) -> None:
-        """From now on messages may be sent again, until one is new.
+        """From now on messages may be sent again, until they are new.
 
         ``folded`` are to be durable before anything else is.
         """
-        self._expected = [message for _, message in self._unproven]
-        self._expected += [e for e in folded if isinstance(e, Message) and e.qos]
-        self._begun, self._probed = False, 0
+        expected = [message for _, message in self._unproven]
+        expected += [e for e in folded if isinstance(e, Message) and e.qos]
+        self._new_from_now_on()
+        for place, message in enumerate(expected):
+            self._runs.setdefault(message.topic, []).append(message.payload)
+            self._by_packet[message.packet] = place, message
+        self._newest = expected[-1].packet if expected else 0
+        self._keeps, self._probed = None, 0
         self._probes.clear()
 
-    def session_lost(self) -> None:
-        """The broker has forgotten what it sent: nothing comes again."""
-        self._expected = []
+    def session_gone(self) -> None:
+        """The broker remembers nothing of ours: whatever comes is new."""
+        self._new_from_now_on()
         self._unproven.clear()
 
-    def again(self, came: Came, *, quiet: bool, full: bool) -> int | None:
-        """How many of the messages that came next were journaled before.
+    def again(self, came: Sequence[Came], *, quiet: bool, full: bool) -> list[Message] | None:
+        """Those of the messages that came next which were journaled before.
 
         None where only what follows can tell: then ask again with it. ``quiet`` says that nothing
         follows, ``full`` that no more can be waited for.
         """
-        self.marks_them = self.marks_them or any(dup for _, dup in came)
-        sure = self.marks_them or full  # by packet identifiers, or by the length of the run
-        ours = [self._key(message, marked=self.marks_them) for message in self._expected]
-        theirs = [
-            self._key(message, marked=dup) if dup or not self.marks_them else None
-            for message, dup in came
-        ]
-        if self._begun:
-            begin, count = 0, sum(1 for _ in takewhile(_equal, zip(ours, theirs, strict=False)))
-            goes_on = count == len(theirs) < len(ours)
-        else:
-            count, within = _end_that_begins(ours, theirs)
-            begin, goes_on = within or 0, within is not None
-            if goes_on and sure:
-                count = len(theirs)
-        if quiet or not goes_on:
-            self._expected = []
-            return count
-        if not sure:
-            return None
-        self._expected = self._expected[begin + count :]
-        self._begun = self._begun or count > 0
-        return count
+        if self._keeps is None and came:
+            self._keeps = self._keeps_identifiers(*came[0])
+        found = self._by_identifier(came) if self._keeps else self._by_content(came, quiet, full)
+        if quiet:
+            self._new_from_now_on()
+        return found
 
-    @staticmethod
-    def _key(message: Message, *, marked: bool) -> Hashable:
-        return message.topic, message.payload, message.packet if marked else None
+    def _new_from_now_on(self) -> None:
+        self._runs.clear()
+        self._by_packet.clear()
+
+    def _keeps_identifiers(self, first: Message, dup: bool) -> bool:
+        """Whether this broker sends again as MQTT demands: with DUP, under the old identifiers
+        (section 3.3.1). Others send again as if it were new; then only order and payload tell.
+
+        So one does whose first message has an identifier of ours, or the very next one.
+        """
+        known = dup and self._place(first) is not None
+        return known or first.packet == self._newest % _MOST + 1
+
+    def _place(self, message: Message) -> int | None:
+        """Where among the expected it stands, under its identifier."""
+        place, known = self._by_packet.get(message.packet, (0, None))
+        same = known and (known.topic, known.payload) == (message.topic, message.payload)
+        return place if same else None
+
+    def _by_identifier(self, came: Sequence[Came]) -> list[Message]:
+        last = -1
+        for count, (message, dup) in enumerate(came):
+            place = self._place(message) if dup else None
+            if place is None or place <= last:
+                self._new_from_now_on()
+                return [each for each, _ in came[:count]]
+            last = place
+        return [each for each, _ in came]
+
+    def _by_content(self, came: Sequence[Came], quiet: bool, full: bool) -> list[Message] | None:
+        by_topic: dict[str, list[Message]] = {}
+        for message, _ in came:
+            if message.topic in self._runs:
+                by_topic.setdefault(message.topic, []).append(message)
+        found: list[Message] = []
+        left: dict[str, list[bytes]] = {}
+        for topic, messages in by_topic.items():
+            run = self._runs[topic]
+            count, within = _end_that_begins(run, [each.payload for each in messages])
+            if within is not None and not quiet:
+                if not full:
+                    return None
+                count = len(messages)  # so many do not agree by chance
+                left[topic] = run[within + count :]
+            found += messages[:count]
+        for topic in by_topic:
+            del self._runs[topic]
+        self._runs |= left
+        return found
 
 
-def _equal(pair: tuple[Hashable, Hashable]) -> bool:
-    return pair[0] == pair[1]
-
-
-def _end_that_begins(
-    ours: Sequence[Hashable], theirs: Sequence[Hashable]
-) -> tuple[int, int | None]:
+def _end_that_begins(ours: Sequence[bytes], theirs: Sequence[bytes]) -> tuple[int, int | None]:
     """The length of the longest end of ``ours`` with which ``theirs`` begins, and the first place
     in ``ours`` where all of ``theirs`` stands with more after it, or None.
 
     By D. E. Knuth, J. H. Morris & V. R. Pratt 1977, SIAM J. Computing 6: payloads that repeat cost
     no more than others.
     """
-    if not theirs:
-        return 0, 0 if ours else None
     borders = _borders(theirs)
     length, within = 0, None
-    for place, key in enumerate(ours):
+    for place, payload in enumerate(ours):
         if length == len(theirs):
             length = borders[-1]
-        while length and key != theirs[length]:
+        while length and payload != theirs[length]:
             length = borders[length - 1]
-        if key == theirs[length]:
+        if payload == theirs[length]:
             length += 1
         if length == len(theirs) and within is None and place + 1 < len(ours):
             within = place + 1 - length
     return length, within
 
 
-def _borders(keys: Sequence[Hashable]) -> list[int]:
-    """For each beginning of ``keys``, the longest shorter one that also ends it."""
-    borders = [0] * len(keys)
+def _borders(payloads: Sequence[bytes]) -> list[int]:
+    """For each beginning of ``payloads``, the longest shorter one that also ends it."""
+    borders = [0] * len(payloads)
     length = 0
-    for place in range(1, len(keys)):
-        while length and keys[place] != keys[length]:
+    for place in range(1, len(payloads)):
+        while length and payloads[place] != payloads[length]:
             length = borders[length - 1]
-        if keys[place] == keys[length]:
+        if payloads[place] == payloads[length]:
             length += 1
         borders[place] = length
     return borders

@@ -49,6 +49,6 @@ class Retention:
         wanted, self._wants_base = self._wants_base, False
         return wanted
 
-    def few(self) -> Pruning:
-        """What the next commit may drop."""
-        return Pruning(self._entries_to, self._alerts_to, _FEW)
+    def few(self, coming: int) -> Pruning:
+        """What the next commit may drop: more than it brings, or the file would only grow."""
+        return Pruning(self._entries_to, self._alerts_to, max(_FEW, 2 * coming))

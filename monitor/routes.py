@@ -5,13 +5,14 @@ Knows filters, stream values and how many of each there may be. Must not know pa
 
 from __future__ import annotations
 
-from collections.abc import Iterable
+from collections.abc import Callable, Iterable, Sequence
 from typing import Any
 
 from monitor import filters
-from monitor.alerts import Sequence
+from monitor.alerts import Numbering
 from monitor.decode import Decoder, RowDecoder, judge_sequence
 from monitor.gauge import GaugeAlerts
+from monitor.outputs import Output
 from monitor.plan import CharacteristicPlan, SequencePlan
 from monitor.seen import TopicCounter
 from monitor.stream import Counts, StreamState
@@ -31,14 +32,16 @@ class Characteristic:
         self.plan = plan
         self.decoder = Decoder(plan.source)
         self.streams: dict[tuple[str, ...], StreamState] = {}
-        self.sequence = Sequence()
+        self.sequence = Numbering()
         self.gauge = GaugeAlerts(plan, self.sequence)
 
     def adopt(self, before: Characteristic) -> None:
-        """Go on with the streams and gauge alerts of the same characteristic under another plan."""
-        self.streams, self.gauge = before.streams, before.gauge
-        self.sequence = before.sequence
+        """Go on with the gauge alerts of the same characteristic under another plan, and take its
+        streams over where their keys are still the same."""
+        self.gauge, self.sequence = before.gauge, before.sequence
         self.gauge.reconfigure(self.plan)
+        if before.decoder.keys == self.decoder.keys:
+            self.streams, before.streams = before.streams, {}
 
     def may_open(self, keys: tuple[str, ...]) -> bool:
         """Whether the stream is there, or there is room for it."""
@@ -48,15 +51,19 @@ class Characteristic:
         """A new stream, first heard of at arrival ``since``."""
         stream = tuple(zip(self.decoder.keys, keys, strict=True))
         # Where there is but one stream, its events and the gauge's are counted together.
-        sequence = Sequence() if keys else self.sequence
+        sequence = Numbering() if keys else self.sequence
         state = self.streams[keys] = StreamState(self.plan, stream, since, counts, sequence)
         return state
+
+
+Quick = Callable[[Any, int], Sequence[Output] | None]
+"""(document, arrival) → outputs; None where it is not the usual, and nothing was touched."""
 
 
 class Route:
     """One characteristic on one topic; ``known`` finds streams by what ``decoder.find`` gave."""
 
-    __slots__ = ("characteristic", "counter", "decoder", "known", "levels")
+    __slots__ = ("characteristic", "counter", "decoder", "known", "levels", "quick")
 
     def __init__(
         self,
@@ -70,6 +77,7 @@ class Route:
         self.levels = levels
         self.counter = counter
         self.known: dict[object, StreamState] = {}
+        self.quick: Quick | None = None
 
     def note(self, document: object) -> None:
         """The document was set aside; its number is not missing."""

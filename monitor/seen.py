@@ -18,7 +18,7 @@ NEVER = -(2**63)
 """Before every instant."""
 
 _RECENT_TIMES = 64
-_UNSETTLED = 32
+UNSETTLED = 32
 
 
 class Verdict(Enum):
@@ -47,14 +47,14 @@ class StreamSeen:
     """
 
     __slots__ = (
-        "_ahead_of",
         "_bits",
-        "_closed",
-        "_last",
-        "_near",
         "_times",
         "_wraps",
+        "ahead_of",
+        "closed",
+        "last",
         "mark",
+        "near",
         "place",
     )
 
@@ -64,11 +64,11 @@ class StreamSeen:
         self.place = 0
         """How many readings before it, all without a number, were of that same time."""
         self._wraps = wraps
-        self._closed = NEVER
-        self._near = WINDOW - 1 if wraps is None else min(WINDOW - 1, wraps // 2)
-        self._last: int | None = None
+        self.closed = NEVER
+        self.near = WINDOW - 1 if wraps is None else min(WINDOW - 1, wraps // 2)
+        self.last: int | None = None
         self._bits = 0
-        self._ahead_of: list[int] = []
+        self.ahead_of: list[int] = []
         """The numbers before the newest that the bits do not show yet."""
         self._times: deque[int] | None = None
 
@@ -80,25 +80,25 @@ class StreamSeen:
         """
         if sequence is None:
             return self._admit_by_time(time) if timed else self._advance(time)
-        last, mark = self._last, self.mark
+        last, mark = self.last, self.mark
         if (
             last is not None
-            and 0 < sequence - last <= self._near
-            and (not timed or (time > mark and time >= self._closed))
+            and 0 < sequence - last <= self.near
+            and (not timed or (time > mark and time >= self.closed))
         ):
             # The next, or one soon after it: what nearly every reading is.
             self.mark = time
-            self._last = sequence
-            ahead_of = self._ahead_of
+            self.last = sequence
+            ahead_of = self.ahead_of
             ahead_of.append(last)
-            if len(ahead_of) >= _UNSETTLED:
+            if len(ahead_of) >= UNSETTLED:
                 self._settle()
             return Verdict.NEW
         self._settle()
         if last is None:
             verdict = Verdict.NEW
             distance = WINDOW
-            if timed and time < max(mark, self._closed):
+            if timed and time < max(mark, self.closed):
                 return Verdict.LATE
         else:
             distance = ahead(sequence, last, self._wraps)
@@ -111,7 +111,7 @@ class StreamSeen:
                         return Verdict.LATE
                     # Equal time, new number: accepted, also where it fills a hole.
                     verdict = Verdict.NEW
-                if time < self._closed:
+                if time < self.closed:
                     return Verdict.LATE
             elif self._has(distance):
                 return Verdict.REPEATED
@@ -120,9 +120,9 @@ class StreamSeen:
         self.mark = time
         if verdict is Verdict.RESTART or not -WINDOW < distance < WINDOW:
             # Out of the window's reach, whichever way: the window goes there.
-            self._last, self._bits = sequence, 1
+            self.last, self._bits = sequence, 1
         elif distance >= 0:
-            self._last = sequence
+            self.last = sequence
             self._bits = (self._bits << distance | 1) & _MASK
         else:
             self._bits |= 1 << -distance
@@ -135,7 +135,7 @@ class StreamSeen:
             # A message that lacks its number has only its time to be known by.
             known = time == self.mark or time in self._times
             return Verdict.REPEATED if known else Verdict.LATE
-        if time < self._closed:
+        if time < self.closed:
             return Verdict.LATE
         self._times.append(time)
         return self._advance(time)
@@ -147,30 +147,30 @@ class StreamSeen:
 
     def close(self, before: int) -> None:
         """What was gathered is done with: readings from before this event time are late now."""
-        self._closed = before
+        self.closed = before
 
     def state(self) -> list[Any]:
         """What is remembered, as JSON values."""
         self._settle()
         times = None if self._times is None else list(self._times)
-        return [self.mark, self._closed, self._last, hex(self._bits), times, self.place]
+        return [self.mark, self.closed, self.last, hex(self._bits), times, self.place]
 
     def restore(self, state: Sequence[Any]) -> None:
         """Take back what ``state`` gave."""
-        self.mark, self._closed, self._last, bits, times, self.place = state
+        self.mark, self.closed, self.last, bits, times, self.place = state
         self._bits = int(bits, 16)
         self._times = None if times is None else deque(times, maxlen=_RECENT_TIMES)
 
     def _settle(self) -> None:
         """Move the window of bits to the newest number, which it may lag behind by a few."""
-        if not self._ahead_of or self._last is None:
+        if not self.ahead_of or self.last is None:
             return
-        oldest = self._ahead_of[0]
-        bits = self._bits << (self._last - oldest) | 1
-        for number in self._ahead_of:
-            bits |= 1 << (self._last - number)
+        oldest = self.ahead_of[0]
+        bits = self._bits << (self.last - oldest) | 1
+        for number in self.ahead_of:
+            bits |= 1 << (self.last - number)
         self._bits = bits & _MASK
-        self._ahead_of.clear()
+        self.ahead_of.clear()
 
     def _has(self, distance: int) -> bool:
         return -WINDOW < distance <= 0 and bool(self._bits >> -distance & 1)
@@ -186,26 +186,26 @@ class TopicCounter:
     A number whose message was set aside was not lost on the way, so it does not count as missing.
     """
 
-    __slots__ = ("_last", "_noted", "_wraps")
+    __slots__ = ("_wraps", "last", "noted")
 
     def __init__(self, wraps: int | None) -> None:
         self._wraps = wraps
-        self._last: int | None = None
-        self._noted: set[int] = set()
+        self.last: int | None = None
+        self.noted: set[int] = set()
 
     def state(self) -> list[Any]:
         """What is remembered, as JSON values."""
-        return [self._last, sorted(self._noted)]
+        return [self.last, sorted(self.noted)]
 
     def restore(self, state: Sequence[Any]) -> None:
         """Take back what ``state`` gave."""
-        self._last, noted = state
-        self._noted = set(noted)
+        self.last, noted = state
+        self.noted = set(noted)
 
     def note(self, sequence: int) -> None:
         """A message with this number came, and was set aside."""
-        if self._last is not None and 0 < ahead(sequence, self._last, self._wraps) <= WINDOW:
-            self._noted.add(sequence)
+        if self.last is not None and 0 < ahead(sequence, self.last, self._wraps) <= WINDOW:
+            self.noted.add(sequence)
 
     def advance(self, sequence: int, restarted: bool) -> int:
         """A reading with this number was accepted; how many numbers the gap before it lost.
@@ -213,20 +213,20 @@ class TopicCounter:
         ``restarted``: its stream saw the counter fall. Where another stream saw that first, the
         number is ahead already and its gap counts like any other.
         """
-        last = self._last
-        if last is not None and sequence - last == 1 and not self._noted:
-            self._last = sequence
+        last = self.last
+        if last is not None and sequence - last == 1 and not self.noted:
+            self.last = sequence
             return 0
         distance = 0 if last is None else ahead(sequence, last, self._wraps)
         if last is None or (restarted and distance < 0):
-            self._last = sequence
-            self._noted.clear()
+            self.last = sequence
+            self.noted.clear()
             return 0
         if distance <= 0:
             return 0
-        self._last = sequence
-        if not self._noted:
+        self.last = sequence
+        if not self.noted:
             return distance - 1
-        passed = {n for n in self._noted if ahead(n, sequence, self._wraps) <= 0}
-        self._noted -= passed
+        passed = {n for n in self.noted if ahead(n, sequence, self._wraps) <= 0}
+        self.noted -= passed
         return distance - 1 - len(passed - {sequence})

@@ -8,7 +8,7 @@ from __future__ import annotations
 from dataclasses import dataclass, field
 from typing import Any
 
-from monitor.alerts import Sequence, StreamAlerts
+from monitor.alerts import Numbering, StreamAlerts
 from monitor.detectors import Detector, Signal, detector
 from monitor.detectors.charts import standard_error
 from monitor.lookback import LookBack
@@ -30,6 +30,8 @@ class Counts:
     missing: int = 0
     signals: int = 0
     alerts: int = 0
+    lag: int | None = None
+    """Microseconds from the latest reading's own time to its arrival."""
     set_aside: dict[str, int] = field(default_factory=dict)
 
     def abandon(self) -> None:
@@ -46,6 +48,7 @@ class StreamState:
         "alerts",
         "detectors",
         "gatherer",
+        "has_left",
         "judgement",
         "keys",
         "last",
@@ -64,13 +67,15 @@ class StreamState:
         stream: Stream,
         since: int,
         counts: Counts,
-        numbers: Sequence,
+        numbers: Numbering,
     ) -> None:
         sequence = plan.source.sequence
         self.plan = plan
         self.stream = stream
         self.keys = tuple(value for _, value in stream)
         self.since = since
+        self.has_left = False
+        """Whether it is no longer in the configuration."""
         self.judgement: Judgement | None = plan.judgement_of(stream)
         self.seen = StreamSeen(sequence.wraps if sequence else None)
         self.gatherer = gatherer(plan.subgroup, counts.abandon)
@@ -105,6 +110,7 @@ class StreamState:
 
     def leave(self, time: int, counts: Counts) -> list[Output]:
         """The stream is no longer in the configuration."""
+        self.has_left = True
         return [
             *self._withdraw(time, "configuration", counts),
             Gone(self.plan.name, self.stream),
@@ -114,7 +120,8 @@ class StreamState:
         """Another plan is in force from now on; what decides as before goes on as before."""
         before, self.plan = self.plan, plan
         judgement, self.judgement = self.judgement, plan.judgement_of(self.stream)
-        if plan.source != before.source or plan.subgroup != before.subgroup:
+        same_readings = plan.source == before.source and plan.subgroup == before.subgroup
+        if not same_readings:
             self.gatherer.abandon()
             number, self.gatherer = self.gatherer.number, gatherer(plan.subgroup, counts.abandon)
             self.gatherer.number = number
@@ -127,7 +134,7 @@ class StreamState:
             and self.judgement is not None
             and judgement.baseline.revision == self.judgement.baseline.revision
         )
-        if not same_baseline:
+        if not (same_baseline and same_readings):
             self.lookback.clear()
             self._size = 0
         kept = {(each.name, each.revision): found for each, found in self.detectors}
@@ -137,8 +144,10 @@ class StreamState:
             self.alerts = None
             return outputs
         for each in self.judgement.detectors:
-            found = kept.get((each.name, each.revision))
-            self.detectors.append((each, found or detector(each, self.judgement.baseline)))
+            goes_on = detector(each, self.judgement.baseline)
+            if (each.name, each.revision) in kept:
+                goes_on.restore(kept[each.name, each.revision].state())
+            self.detectors.append((each, goes_on))
         judged = Judged(plan, self.stream, self.judgement.baseline)
         if self.alerts is None:
             self.alerts = StreamAlerts(judged, self.sequence)

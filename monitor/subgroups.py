@@ -105,20 +105,20 @@ class CountGatherer(Remembers):
         "_broken",
         "_first",
         "_given_up",
-        "_last",
-        "_plan",
         "_started",
-        "_values",
+        "last",
         "number",
+        "plan",
+        "values",
     )
-    _memory = ("_values", "_first", "_last", "_started", "_broken", "number")
+    _memory = ("values", "_first", "last", "_started", "_broken", "number")
 
     def __init__(self, plan: ByCount, given_up: Callable[[], None]) -> None:
-        self._plan = plan
+        self.plan = plan
         self._given_up = given_up
-        self._values: list[float] = []
+        self.values: list[float] = []
         self._first = 0
-        self._last: int | None = None
+        self.last: int | None = None
         self._started: int | None = None
         self._broken = False
         self.number = 0
@@ -126,11 +126,11 @@ class CountGatherer(Remembers):
     def add(self, value: float, time: int, identity: Identity) -> Subgroup | None:
         """A gap longer than ``max_gap`` since the reading before abandons what was gathered. With
         ``every``, a subgroup starts at the first reading that long after the last one started."""
-        plan, last, values = self._plan, self._last, self._values
+        plan, last, values = self.plan, self.last, self.values
         if plan.max_gap is not None and last is not None and time - last > plan.max_gap:
             self.abandon()
-            values = self._values
-        self._last = time
+            values = self.values
+        self.last = time
         if not values:
             if plan.every is not None:
                 if self._started is not None and time < self._started + plan.every:
@@ -141,7 +141,7 @@ class CountGatherer(Remembers):
         if len(values) < plan.size:
             return None
         self.number += 1
-        self._values = []
+        self.values = []
         broken, self._broken = self._broken, False
         return _subgroup(self.number, values, self._first, time, identity, broken)
 
@@ -155,9 +155,9 @@ class CountGatherer(Remembers):
 
     def abandon(self) -> None:
         """Count what was gathered as abandoned."""
-        if self._values:
+        if self.values:
             self._given_up()
-            self._values = []
+            self.values = []
         self._broken = True
 
 

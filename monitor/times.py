@@ -11,6 +11,7 @@ from datetime import UTC, datetime, timedelta
 SECOND = 1_000_000
 DAY = 86_400 * SECOND
 EPOCH = datetime(1970, 1, 1, tzinfo=UTC)
+MICROSECOND = timedelta(microseconds=1)
 
 _UNITS = {"us": 1, "ms": 1_000, "s": SECOND, "min": 60 * SECOND, "h": 3_600 * SECOND, "d": DAY}
 _SHORT = re.compile(r"(\d+(?:\.\d+)?)\s*(us|ms|s|min|h|d)", re.ASCII)
@@ -61,8 +62,8 @@ def parse_iso_time(text: str) -> int:
     Raises ValueError where the text is no such instant, or carries no offset (its moment would be a
     guess).
     """
-    moment = datetime.fromisoformat(text)
-    if moment.tzinfo is None:
-        raise ValueError("no offset from UTC")
-    since = moment - EPOCH
-    return since.days * DAY + since.seconds * SECOND + since.microseconds
+    try:
+        since = datetime.fromisoformat(text) - EPOCH
+    except TypeError:
+        raise ValueError("no offset from UTC") from None
+    return since // MICROSECOND

@@ -17,6 +17,7 @@ from jsonschema import Draft7Validator, Draft202012Validator
 from plans import fresh, rules, shewhart, steps
 
 from monitor import describe, messages, times
+from monitor.gauge import RULES as GAUGE_RULES
 from monitor.plan import CusumPlan, EwmaPlan
 from monitor.presets import preset
 
@@ -333,7 +334,7 @@ def test_the_rules_are_those_that_detectors_name() -> None:
     ):
         for signals in steps(fresh(scheme), values):
             met |= set(rules(signals))
-    assert met == {*SCHEMAS["alert"]["properties"]["rule"]["enum"]}
+    assert met | {*GAUGE_RULES} == {*SCHEMAS["alert"]["properties"]["rule"]["enum"]}
 
 
 def test_who_only_sends_messages_does_without_pydantic() -> None:

@@ -10,8 +10,13 @@ import pytest
 
 from monitor import dialling
 from monitor.dialling import Dialler
+from monitor.plan import BrokerPlan
 
 PATIENCE = 20.0
+
+
+def plan(host: str = "127.0.0.1", port: int = 1) -> BrokerPlan:
+    return BrokerPlan(host, port, "dialler", 60)
 
 
 def dial(dialler: Dialler, woken: Event) -> socket.socket:
@@ -29,7 +34,7 @@ def dial(dialler: Dialler, woken: Event) -> socket.socket:
 def test_connects() -> None:
     woken = Event()
     with socket.create_server(("127.0.0.1", 0)) as server:
-        dialler = Dialler(*server.getsockname(), woken.set)
+        dialler = Dialler(plan(*server.getsockname()), woken.set)
         with dial(dialler, woken) as connection:
             accepted, _ = server.accept()
             with accepted:
@@ -42,7 +47,7 @@ def test_says_what_is_wrong_and_tries_again(host: str) -> None:
     woken = Event()
     with socket.socket() as unused:
         unused.bind(("127.0.0.1", 0))  # bound, but not listening
-        dialler = Dialler(host, unused.getsockname()[1], woken.set)
+        dialler = Dialler(plan(host, unused.getsockname()[1]), woken.set)
         for _ in range(2):
             with pytest.raises(OSError, match=r"."):
                 dial(dialler, woken)
@@ -57,14 +62,14 @@ def test_does_not_wait_for_a_connection_that_never_comes() -> None:
         first.connect(listener.getsockname())
         second.setblocking(False)
         second.connect_ex(listener.getsockname())  # now its queue is full
-        dialler = Dialler(*listener.getsockname(), lambda: None)
+        dialler = Dialler(plan(*listener.getsockname()), lambda: None)
         assert dialler.ask() is None
         assert dialler.ask() is None
         assert dialler.delay() == math.inf
 
 
 def test_tries_at_once_and_then_ever_more_seldom() -> None:
-    dialler = Dialler("127.0.0.1", 1, lambda: None)
+    dialler = Dialler(plan(), lambda: None)
     delays = [dialler.lost() for _ in range(20)]
     assert delays[0] <= 0.1
     assert delays == sorted(delays)
@@ -74,7 +79,7 @@ def test_tries_at_once_and_then_ever_more_seldom() -> None:
 
 
 def test_only_a_connection_that_held_makes_it_eager_again(monkeypatch: pytest.MonkeyPatch) -> None:
-    dialler = Dialler("127.0.0.1", 1, lambda: None)
+    dialler = Dialler(plan(), lambda: None)
     dialler.lost()
     dialler.holds()
     assert dialler.lost() > 0.1, "ended at once: two clients under one name, perhaps"
@@ -82,3 +87,22 @@ def test_only_a_connection_that_held_makes_it_eager_again(monkeypatch: pytest.Mo
     dialler.holds()
     assert dialler.lost() <= 0.1
     assert dialler.lost() > 0.1, "a try that fails is no connection that held"
+
+
+def test_connections_that_end_at_once_one_after_the_other_look_like_two_of_a_name(
+    monkeypatch: pytest.MonkeyPatch,
+) -> None:
+    dialler = Dialler(plan(), lambda: None)
+    for _ in range(10):
+        dialler.lost()
+    assert not dialler.is_contended, "nobody is there: that is something else"
+    for count in range(1, 4):
+        dialler.holds()
+        dialler.lost()
+        assert dialler.is_contended is (count == 3)
+    assert dialler.lost() == 30.0, "and makes way"
+    assert dialler.is_contended
+    monkeypatch.setattr(dialling, "_STEADY", 0.0)
+    dialler.holds()
+    dialler.lost()
+    assert not dialler.is_contended

@@ -14,7 +14,7 @@ def test_is_due_when_connected_and_then_every_so_often() -> None:
     health = Health()
     health.connected(NOW)
     assert health.is_due(NOW)
-    said = health.message(NOW, Counts(messages=3, set_aside={"late": 1}), 1_500_000, 2)
+    said = health.message(NOW, Counts(messages=3, set_aside={"late": 1}), 1_500_000, 2, 1)
     assert not health.is_due(NOW + EVERY - 1)
     assert health.is_due(NOW + EVERY)
     assert said["online"] is True
@@ -24,6 +24,7 @@ def test_is_due_when_connected_and_then_every_so_often() -> None:
     assert said["counts"] is not None
     assert (said["counts"]["messages"], said["counts"]["set_aside"]) == (3, {"late": 1})
     assert (said["lag"], said["waiting"], said["last_error"]) == (1.5, 2, None)
+    assert said["sessions_lost"] == 1
     health.connected(NOW + 1)
     assert health.is_due(NOW + 1), "who has just subscribed says so at once"
 
@@ -31,14 +32,25 @@ def test_is_due_when_connected_and_then_every_so_often() -> None:
 def test_promises_nothing_while_it_is_away() -> None:
     health = Health()
     health.disconnected(NOW, "gone")
-    said = health.message(NOW, Counts(), None, 0)
+    said = health.message(NOW, Counts(), None, 0, 0)
     assert (said["online"], said["next_by"], said["last_error"]) == (False, None, "gone")
     health.connected(NOW + 1)
-    assert health.message(NOW + 1, Counts(), None, 0)["last_error"] == "gone", "it did happen"
+    assert health.message(NOW + 1, Counts(), None, 0, 0)["last_error"] == "gone", "it did happen"
+
+
+def test_what_stands_still_now_comes_before_what_was() -> None:
+    health = Health()
+    health.disconnected(NOW, "gone")
+    health.connected(NOW + 1)
+    health.frozen, health.unsafe = "the disk is full", 3
+    said = health.message(NOW + 1, Counts(), None, 0, 0)
+    assert (said["last_error"], said["qos_0"]) == ("the disk is full", 3)
+    health.frozen = None
+    assert health.message(NOW + 2, Counts(), None, 0, 0)["last_error"] == "gone"
 
 
 def test_the_will_has_the_fields_of_any_other_word() -> None:
-    said = Health().message(NOW, Counts(), None, 0)
+    said = Health().message(NOW, Counts(), None, 0, 0)
     assert will(NOW).keys() == said.keys()
     assert will(NOW)["online"] is False
 

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import math
 
+import orjson
 import pytest
 from hypothesis import given
 from hypothesis import strategies as st
@@ -111,3 +112,29 @@ def test_each_subgroup_counts_by_how_much_it_tells() -> None:
     lookback.append(8.0 / error(1), 10, 1)
     # With nothing between subgroups that is the mean of all readings.
     assert lookback.shift("up", error).size == pytest.approx((100 * 2.0 + 8.0) / 101)
+
+
+@given(st.lists(st.integers(1, 3), max_size=12), st.sampled_from([0, LOOK_BACK, 350]))
+def test_a_restored_ring_goes_on_as_the_other(sizes: list[int], earlier: int) -> None:
+    kept, restored = LookBack(), LookBack()
+    series = [4] * earlier + sizes + [2, 2]
+    for index, size in enumerate(series[:-1]):
+        kept.append(1.0 + index % 3, 10 * index, size)
+        if index == earlier // 2:
+            kept.forget("up")
+    restored.restore(orjson.loads(orjson.dumps(kept.state())))
+    for each in (kept, restored):
+        each.append(9.0, 10 * len(series), series[-1])
+    assert restored.state() == kept.state()
+    assert restored.evidence() == kept.evidence()
+    assert restored.shift("up", error) == kept.shift("up", error)
+    assert restored.shift("down", error) == kept.shift("down", error)
+
+
+def test_evidence_is_all_that_is_held_the_newest_last() -> None:
+    lookback = LookBack()
+    for index in range(LOOK_BACK + 3):
+        lookback.append(float(index), 10 * index, 4)
+    first, values = lookback.evidence()
+    assert values == tuple(float(index) for index in range(3, LOOK_BACK + 3))
+    assert first == tuple(10 * index for index in range(3, LOOK_BACK + 3))

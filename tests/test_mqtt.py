@@ -12,7 +12,7 @@ from dataclasses import dataclass, field
 from itertools import pairwise
 
 import pytest
-from brokers import TIMEOUT, Broker, Client
+from brokers import TIMEOUT, Broker, Client, Mosquitto
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
@@ -31,11 +31,15 @@ class Heard:
     """What a link told its receiver."""
 
     messages: list[tuple[str, bytes, bool, int, int]] = field(default_factory=list)
+    again: list[bool] = field(default_factory=list)
     sessions: list[bool] = field(default_factory=list)
     packets: list[int] = field(default_factory=list)
 
-    def message(self, topic: str, payload: bytes, retain: bool, qos: int, packet: int) -> None:
+    def message(
+        self, topic: str, payload: bytes, retain: bool, qos: int, packet: int, dup: bool
+    ) -> None:
         self.messages.append((topic, payload, retain, qos, packet))
+        self.again.append(dup)
 
     def subscribed(self, session_present: bool) -> None:
         self.sessions.append(session_present)
@@ -48,12 +52,12 @@ class Heard:
 
 
 def plan(port: int, keepalive: int = 60) -> BrokerPlan:
-    return BrokerPlan(HOST, port, "link", keepalive, None, None)
+    return BrokerPlan(HOST, port, "link", keepalive)
 
 
-def link_to(port: int, heard: Heard, *filters: str) -> Link:
+def link_to(port: int, heard: Heard, *filters: str, stale: Iterable[str] = ()) -> Link:
     connection = socket.create_connection((HOST, port))
-    return Link(connection, plan(port), filters or ["in/#"], WILL, heard)
+    return Link(connection, plan(port), filters or ["in/#"], stale, WILL, heard)
 
 
 def pump(link: Link, condition: Callable[[], object], full: Callable[[], bool] = bool) -> None:
@@ -104,6 +108,50 @@ def test_what_was_not_acknowledged_comes_again(broker: Broker, client: Client) -
     with subscribed(broker.port, third) as link:
         pump(link, third.payloads)
     assert third.payloads() == [b"last"]
+    assert not any(first.again)
+    # MQTT 3.1.1, section 3.3.1: again is with DUP, under the old identifier. The embedded broker
+    # sends again as if it were new.
+    known = [packet for *_, packet in first.messages[5:]]
+    again = [packet for *_, packet in second.messages[: len(known)]]
+    assert (all(second.again[: len(known)]), again == known) == (
+        (True, True) if isinstance(broker, Mosquitto) else (False, False)
+    )
+
+
+def only_the_new_filter_reaches(link: Link, heard: Heard, client: Client) -> None:
+    """Publish on both until what is asked for has taken effect."""
+    acknowledged = [0]
+
+    def changed() -> bool:
+        client.publish_all([("in/a", b"old"), ("more/a", b"new")])
+        pump(link, lambda: not link.wants_write and not link.read(bool))
+        link.acknowledge([packet for *_, packet in heard.messages[acknowledged[-1] :]])
+        acknowledged.append(len(heard.messages))
+        return heard.payloads()[-2:] == [b"new", b"new"]
+
+    pump(link, changed)
+
+
+def test_filters_are_changed_while_it_is_connected(broker: Broker, client: Client) -> None:
+    heard = Heard()
+    with subscribed(broker.port, heard) as link:
+        link.subscribe(["more/#"], ["in/#"])
+        only_the_new_filter_reaches(link, heard, client)
+    assert heard.sessions == [False], "that it reaches us is said once"
+
+
+def test_filters_of_an_earlier_connection_are_given_up(
+    mosquitto: Callable[..., Mosquitto],
+) -> None:
+    # The embedded broker only gives up filters of the same connection.
+    port = mosquitto().port
+    with subscribed(port, Heard()) as link:
+        link.close(TIMEOUT)
+    heard = Heard()
+    link = link_to(port, heard, "more/#", stale=["in/#"])
+    with Client(port) as client:
+        only_the_new_filter_reaches(link, heard, client)
+    link.drop()
 
 
 def test_says_when_there_is_more_to_read(broker: Broker, client: Client) -> None:

@@ -28,7 +28,7 @@ class OutboxMachine(RuleBasedStateMachine):
     @rule()
     def add(self) -> None:
         place = next(self.places)
-        self.outbox.add(place, f"topic/{place}", str(place).encode())
+        self.outbox.extend([(place, f"topic/{place}", str(place).encode())])
         self.open.append(place)
 
     @rule()

@@ -6,12 +6,25 @@ import base64
 import io
 import json
 
+import journals
 import orjson
 import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
-from monitor.entries import Connected, Disconnected, Entry, Message, Parsed, Recorded, Started, Tick
+from monitor.entries import (
+    Configured,
+    Connected,
+    Disconnected,
+    Entry,
+    Message,
+    Parsed,
+    Recorded,
+    Started,
+    State,
+    Tick,
+)
+from monitor.plan import Plan
 from monitor.recording_lines import encode_line, write_jsonl
 from replay.lines import decode_line
 
@@ -35,10 +48,11 @@ entries: st.SearchStrategy[Recorded] = st.one_of(
     st.builds(Connected, moments, st.booleans()),
     st.builds(Disconnected, moments),
     st.builds(Tick, moments),
+    st.builds(Configured, moments, st.sampled_from([journals.PLAN, Plan(())])),
 )
 
 
-def read(line: bytes) -> Entry:
+def read(line: bytes) -> Entry | State:
     """The entry; one that was parsed with its line as the message it was, to the byte."""
     entry = decode_line(line)
     if isinstance(entry, Parsed):
@@ -123,12 +137,26 @@ def test_control_lines() -> None:
             Connected(MOMENT, False),
             Disconnected(MOMENT + 1_000_000),
             Tick(MOMENT + 2_000_000),
+            Configured(MOMENT + 3_000_000, Plan(())),
+            State(MOMENT + 4_000_000, Plan(()), {"version": 1}, ({"stream": {}},)),
         ],
     )
-    assert count == 4
+    assert count == 6
     assert [json.loads(line) for line in file.getvalue().splitlines()] == [
         {"time": "2026-03-02T06:41:12.350Z", "control": "started"},
         {"time": "2026-03-02T06:41:12.350Z", "control": "connected", "session_present": False},
         {"time": "2026-03-02T06:41:13.350Z", "control": "disconnected"},
         {"time": "2026-03-02T06:41:14.350Z", "control": "tick"},
+        {
+            "time": "2026-03-02T06:41:15.350Z",
+            "control": "config",
+            "plan": {"is": "Plan", "characteristics": []},
+        },
+        {
+            "time": "2026-03-02T06:41:16.350Z",
+            "control": "state",
+            "plan": {"is": "Plan", "characteristics": []},
+            "engine": {"version": 1},
+            "streams": [{"stream": {}}],
+        },
     ]

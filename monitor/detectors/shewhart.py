@@ -6,6 +6,7 @@ Knows one chart and the rules on it. Must not know streams or alerts.
 from __future__ import annotations
 
 from collections.abc import Sequence
+from functools import lru_cache
 from typing import Any
 
 from monitor.detectors.base import NO_SIGNALS, Signal, met
@@ -28,11 +29,23 @@ _SIDES: dict[str, Direction] = {
 }
 
 
+@lru_cache(maxsize=1024)
+def _limits(
+    plan: ShewhartPlan, baseline: BaselinePlan, size: int
+) -> tuple[tuple[Limits, ...], Limits, float]:
+    """Each rule's limits, the chart's own, and the standard error, for subgroups of ``size``:
+    shared by the streams of one baseline."""
+    judged = chart(plan.chart, baseline)
+    rules = tuple(judged.limits(size, each.width) for each in plan.rules)
+    return rules, judged.limits(size, plan.width), judged.error(size)
+
+
 class Shewhart:
     """One Shewhart chart of one stream."""
 
     __slots__ = (
         "_at",
+        "_baseline",
         "_chart",
         "_limits",
         "_plan",
@@ -41,15 +54,14 @@ class Shewhart:
         "_size",
         "_spread",
         "_value",
-        "_widths",
     )
 
     def __init__(self, plan: ShewhartPlan, baseline: BaselinePlan) -> None:
         self._plan = plan
+        self._baseline = baseline
         self._chart = chart(plan.chart, baseline)
         self._spread = plan.chart in SPREAD
         self._rules = tuple(rule(r) for r in plan.rules)
-        self._widths = tuple(r.width for r in plan.rules)
         self._size = 0
         self._limits: tuple[Limits, ...] = ()
         self._at = Limits(0.0, 0.0, 0.0)
@@ -94,9 +106,7 @@ class Shewhart:
 
     def _resize(self, size: int) -> None:
         self._size = size
-        self._limits = tuple(self._chart.limits(size, width) for width in self._widths)
-        self._at = self._chart.limits(size, self._plan.width)
-        self._se = self._chart.error(size)
+        self._limits, self._at, self._se = _limits(self._plan, self._baseline, size)
 
     def rows(self, name: str, signals: tuple[Signal, ...]) -> tuple[Row, ...]:
         """One row; none where the point is blank."""

@@ -11,13 +11,14 @@ import pty
 import sys
 from pathlib import Path
 
+import journals
 import pytest
 from daemons import driftbell
 
 from monitor.commands import export
 from monitor.entries import Connected, Disconnected, Message, Recorded, Started
-from monitor.journal import Journal
-from monitor.times import SECOND, parse_iso_time
+from monitor.journal import Batch, Journal, read_entries
+from monitor.times import SECOND, format_time, parse_iso_time
 
 START = 1_772_433_672 * SECOND
 
@@ -37,7 +38,7 @@ ENTRIES: list[Recorded] = [
 def journal(tmp_path: Path) -> Path:
     path = tmp_path / "journal.db"
     journal = Journal(path)
-    journal.commit(ENTRIES, [("alert", b"{}")])
+    journal.commit(Batch(ENTRIES))
     journal.close()
     return path
 
@@ -71,7 +72,8 @@ def read(lines: bytes) -> list[Recorded]:
 def test_every_entry_comes_back(journal: Path, tmp_path: Path, name: str) -> None:
     to = name if name == "-" else tmp_path / name
     done = driftbell("export", journal, "--to", to)
-    assert (done.returncode, done.stderr) == (0, b"8 entries\n")
+    said = b"8 entries, 2026-03-02T06:41:12.000Z to 2026-03-02T06:41:12.000007Z\n"
+    assert (done.returncode, done.stderr) == (0, said)
     if name == "-":
         lines = done.stdout
     else:
@@ -89,7 +91,7 @@ def test_every_entry_comes_back(journal: Path, tmp_path: Path, name: str) -> Non
 
 def test_a_journal_in_use_can_be_exported(journal: Path) -> None:
     held = Journal(journal)
-    held.commit([Started(START + 9)], [])
+    held.commit(Batch([Started(START + 9)]))
     done = driftbell("export", journal)
     assert read(done.stdout) == [*ENTRIES, Started(START + 9)]
 
@@ -102,19 +104,23 @@ def test_says_what_is_wrong(journal: Path, tmp_path: Path) -> None:
         ([garbage], 1, "file is not a database"),
         ([journal, "--to", tmp_path / "no" / "x.jsonl"], 1, "cannot write"),
         ([journal, "--to", journal], 2, "is the journal itself"),
+        ([journal, "--json"], 2, "both want stdout: add --to FILE"),
+        ([journal, "--since", "2026-03-02T06:41"], 2, "is no moment: write 2026-03-02T06:41:12Z"),
+        ([journal, "--since", "noon"], 2, "'noon' is no moment"),
+        ([journal, "--since", "12", "--until", "12"], 2, "--until must be later than --since"),
         ([], 2, "JOURNAL"),
     ):
         done = driftbell("export", *words)
         said = done.stderr.decode()
         assert (done.returncode, text in said, "Traceback" in said) == (code, True, False), said
     held = Journal(journal)
-    assert list(held.entries()) == ENTRIES
+    assert list(read_entries(held.db)) == ENTRIES
 
 
 def test_a_damaged_journal_leaves_no_half_recording(tmp_path: Path) -> None:
     path = tmp_path / "j.db"
     journal = Journal(path)
-    journal.commit([Message(START + n, "a", b"x" * 500) for n in range(5_000)], [])
+    journal.commit(Batch([Message(START + n, "a", b"x" * 500) for n in range(5_000)]))
     journal.close()
     content = bytearray(path.read_bytes())
     middle = len(content) // 2 // 4096 * 4096
@@ -129,17 +135,57 @@ def test_a_damaged_journal_leaves_no_half_recording(tmp_path: Path) -> None:
 def test_shows_how_far_it_is_on_a_terminal(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
     path = tmp_path / "j.db"
     journal = Journal(path)
-    journal.commit([Message(START, "a", b"{}")] * 3_000, [])
+    journal.commit(Batch([Message(START, "a", b"{}")] * 3_000))
     journal.close()
     ours, theirs = pty.openpty()
     with open(theirs, "w") as terminal:
         monkeypatch.setattr(sys, "stderr", terminal)
         monkeypatch.setattr(export, "_QUIET", 0.0)
-        words = argparse.Namespace(journal=str(path), to=str(tmp_path / "x.jsonl"))
-        assert export.main(words) == 0
+        parser = argparse.ArgumentParser()
+        export.configure(parser)
+        words = [str(path), "--to", str(tmp_path / "x.jsonl")]
+        assert export.main(parser.parse_args(words)) == 0
         terminal.flush()
         seen = ""
         while not seen.endswith("\n"):
             seen += os.read(ours, 4096).decode()
     os.close(ours)
-    assert seen == "\r\x1b[K1,024 entries\r\x1b[K3000 entries\r\n"
+    at = "2026-03-02T06:41:12.000Z"
+    assert seen == f"\r\x1b[K1,024 entries\r\x1b[K3,000 entries, {at} to {at}\r\n"
+
+
+def test_a_stretch_says_what_it_begins_with(tmp_path: Path) -> None:
+    day = journals.day(seed=1)
+    path = journals.write(tmp_path / "j.db", day, (100,))
+    to = tmp_path / "x.jsonl"
+    since, until = format_time(day[150].time), str(day[200].time / SECOND)
+    done = driftbell("export", path, "--since", since, "--until", until, "--to", to, "--json")
+    lines = [json.loads(line) for line in to.read_bytes().splitlines()]
+    assert json.loads(done.stdout) == {
+        "entries": 50,
+        "messages": sum(isinstance(each, Message) for each in day[150:200]),
+        "first": since,
+        "last": format_time(day[199].time),
+        "state": format_time(day[149].time),
+    }
+    assert (lines[0]["control"], lines[0]["time"]) == ("state", format_time(day[149].time))
+    assert lines[1]["time"] == since
+    assert len(lines) == 51
+    done = driftbell("export", path, "--since", "2030-01-01T00:00Z", "--to", to)
+    assert done.stderr.decode() == (
+        f"0 entries; before them, what was remembered of all that came until "
+        f"{format_time(day[-1].time)}\n"
+    )
+
+
+def test_one_characteristic(tmp_path: Path) -> None:
+    day = journals.day(seed=1)
+    path = journals.write(tmp_path / "j.db", day)
+    lines = driftbell("export", path, "--characteristic", "glue").stdout.splitlines()
+    read = list(map(json.loads, lines))
+    assert {each["topic"] for each in read if "topic" in each} == {"line/glue"}
+    plan = next(each["plan"] for each in read if each.get("control") == "config")
+    assert [each["name"] for each in plan["characteristics"]] == ["glue"]
+    done = driftbell("export", path, "--characteristic", "glu", "--to", tmp_path / "x.jsonl")
+    assert (done.returncode, (tmp_path / "x.jsonl").exists()) == (1, False)
+    assert done.stderr.decode().endswith("only weight, glue, torque\n")

@@ -93,9 +93,7 @@ PLACES: dict[str, Callable[[list[int]], None]] = {
     "commit-to-acknowledgement": lambda left: _before(Link, "acknowledge", _acknowledges, left),
     "commit-to-publication": lambda left: _before(Link, "publish", _is_alert, left),
     "acknowledgement-to-publication": lambda left: _before(Link, "publish", _has_written, left),
-    "publication-to-its-acknowledgement": lambda left: _before(
-        Pipeline, "taken", _was_alert, left
-    ),
+    "publication-to-its-acknowledgement": lambda left: _before(Pipeline, "taken", _was_alert, left),
     "farewell": lambda left: _before(Keeper, "settle", lambda _: True, left),
 }
 

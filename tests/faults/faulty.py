@@ -191,26 +191,31 @@ class Watcher:
     def __exit__(self, *_: object) -> None:
         self._client.disconnect()
 
-    def await_health(self, condition: Callable[[dict[str, Any]], bool]) -> dict[str, Any]:
+    def await_health(
+        self, daemon: Faulty, condition: Callable[[dict[str, Any]], bool]
+    ) -> dict[str, Any]:
         """Wait for a health message, said since we watch, that meets the condition."""
+        return self._await(daemon, condition, HEALTH)
+
+    def await_alert(
+        self, daemon: Faulty, condition: Callable[[dict[str, Any]], bool]
+    ) -> dict[str, Any]:
+        """Wait for an alert event that meets the condition."""
+        return self._await(daemon, condition, ALERTS)
+
+    def _await(
+        self, daemon: Faulty, condition: Callable[[dict[str, Any]], bool], topic: str
+    ) -> dict[str, Any]:
         found: list[dict[str, Any]] = []
 
         def came(messages: Sequence[Received]) -> bool:
             found[:] = [m.body for m in messages if not m.retained and condition(m.body)]
             return bool(found)
 
-        self._client.wait_for(came, HEALTH)
-        return found[0]
-
-    def await_alert(self, condition: Callable[[dict[str, Any]], bool]) -> dict[str, Any]:
-        """Wait for an alert event that meets the condition."""
-        found: list[dict[str, Any]] = []
-
-        def came(messages: Sequence[Received]) -> bool:
-            found[:] = [m.body for m in messages if condition(m.body)]
-            return bool(found)
-
-        self._client.wait_for(came, ALERTS)
+        try:
+            self._client.wait_for(came, topic, daemon.is_running)
+        except AssertionError as error:
+            raise AssertionError(f"{error}\n{daemon.tail()}") from None
         return found[0]
 
     def alerts_until_farewell(self) -> list[bytes]:

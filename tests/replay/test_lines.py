@@ -20,6 +20,7 @@ from monitor.entries import (
     Message,
     Parsed,
     Started,
+    State,
     Tick,
 )
 from replay.lines import ControlError, LineError, decode_line, read_lines
@@ -27,7 +28,7 @@ from replay.lines import ControlError, LineError, decode_line, read_lines
 MOMENT = 1_772_433_672_350_000  # 2026-03-02T06:41:12.350Z, by `date -u -d @1772433672`
 
 
-def read(*lines: bytes) -> tuple[list[tuple[int, Entry]], list[tuple[int, str]]]:
+def read(*lines: bytes) -> tuple[list[tuple[int, Entry | State]], list[tuple[int, str]]]:
     wrong: list[tuple[int, str]] = []
     file = io.BytesIO(b"".join(line if line.endswith(b"\n") else line + b"\n" for line in lines))
     chunks = read_lines("a.jsonl", file, lambda number, why: wrong.append((number, why)))
