@@ -139,6 +139,11 @@ class StreamAlerts:
         self._sequence = sequence
         self._slots: dict[str, Slot] = {}
 
+    @property
+    def is_quiet(self) -> bool:
+        """Whether nothing is open or may rejoin, so that a subgroup without a signal is nothing."""
+        return not self._slots
+
     def judge(
         self,
         subgroup: Subgroup,
@@ -147,8 +152,6 @@ class StreamAlerts:
         lookback: LookBack,
     ) -> list[AlertEvent]:
         """The events that a subgroup and its signals cause; most subgroups cause none."""
-        if not signals and not self._slots:
-            return []
         caused: list[AlertEvent] = []
         error = standard_error(self._judged.baseline, subgroup.size)
         by_slot: dict[str, list[tuple[DetectorPlan, Signal]]] = {}
@@ -167,6 +170,8 @@ class StreamAlerts:
             event = self._signalled(name, met, subgroup, error, lookback)
             if event is not None:
                 caused.append(event)
+        time = subgroup.last
+        self._slots = {n: slot for n, slot in self._slots.items() if not self._is_past(slot, time)}
         return caused
 
     def _signalled(
@@ -177,7 +182,7 @@ class StreamAlerts:
         error: float,
         lookback: LookBack,
     ) -> AlertEvent | None:
-        time, plan = subgroup.last, self._judged.plan
+        time = subgroup.last
         slot = self._slots.get(key)
         direction = met[0][1].direction
         errors = partial(standard_error, self._judged.baseline)
@@ -185,7 +190,7 @@ class StreamAlerts:
         findings = [(by, Finding(each, by.scheme.chart, shift, error)) for by, each in met]
         detector, telling = findings[0]
         kind: EventKind | None = None
-        if slot is None or (not slot.open and time - slot.returned > plan.rejoin):
+        if slot is None or self._is_past(slot, time):
             kind = "raised"
             self._slots.pop(key, None)  # the new one takes its place at the end
             slot = self._slots[key] = Slot(
@@ -213,6 +218,10 @@ class StreamAlerts:
             slot.signalled(finding, time)
         slot.finding = telling
         return None if kind is None else self._event(slot, kind, time, subgroup)
+
+    def _is_past(self, slot: Slot, time: int) -> bool:
+        """Whether it has returned for so long that a signal would begin another."""
+        return not slot.open and time - slot.returned > self._judged.plan.rejoin
 
     def withdraw(self, time: int, reason: str) -> list[AlertEvent]:
         """Close all that is open, for a reason that is not the process's."""

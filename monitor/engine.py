@@ -70,12 +70,13 @@ class Engine:
         time = entry.time
         if time > self._arrival:
             self._arrival = time
-        kind = type(entry)
-        if kind is Parsed or kind is Message:
-            pass  # what nearly every entry is
-        elif isinstance(entry, Tick):
+        if type(entry) is Parsed and not self._deadlines.heap:
+            # What nearly every entry of a recording is.
+            self._heard = self._arrival
+            return self._document(entry.topic, entry.document, None, time)
+        if isinstance(entry, Tick):
             return self._close_due()
-        elif isinstance(entry, Started | Disconnected):
+        if isinstance(entry, Started | Disconnected):
             self._blinded(entry)
             return _NOTHING
         self._heard = self._arrival

@@ -18,27 +18,26 @@ from monitor.times import format_time
 
 def excerpt(recorded: Iterable[State | Recorded], name: str) -> Iterator[State | Recorded]:
     """What concerns the characteristic of that name: messages on its topics, and all that is no
-    message; states and plans without the others.
-
-    CommandError where the first plan does not have it.
-    """
+    message; states and plans without the others."""
     part = _Part(name)
-    found = False
     for entry in recorded:
-        if isinstance(entry, Configured | State) and not found:
-            _check(name, entry)
-            found = True
         yield from part.of(entry)
     yield from part.unsaid()
 
 
-def _check(name: str, entry: Configured | State) -> None:
-    names = [each.name for each in entry.plan.characteristics]
-    if names and name not in names:
-        raise CommandError(
-            f"there was no characteristic {name!r} at {format_time(entry.time)}, "
-            f"only {', '.join(names)}"
-        )
+def having(recorded: Iterable[State | Recorded], name: str) -> Iterator[State | Recorded]:
+    """The same as it comes; CommandError where its first plan lacks the characteristic."""
+    checked = False
+    for entry in recorded:
+        if isinstance(entry, Configured | State) and not checked:
+            names = [each.name for each in entry.plan.characteristics]
+            if name not in names:
+                raise CommandError(
+                    f"there was no characteristic {name!r} at {format_time(entry.time)}, "
+                    f"only {', '.join(names)}"
+                )
+            checked = True
+        yield entry
 
 
 class _Part:

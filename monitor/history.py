@@ -14,7 +14,7 @@ from typing import NamedTuple
 
 import orjson
 
-from monitor import journal
+from monitor import journal, plan_json
 from monitor.engine import Engine
 from monitor.entries import Recorded, State
 from monitor.journal import JournalError, Snapshot
@@ -126,6 +126,17 @@ def position_of(db: sqlite3.Connection, time: int) -> int:
         else:
             high = middle
     return low
+
+
+def plan_in_force(db: sqlite3.Connection) -> Plan | None:
+    """The newest configuration that the journal tells of, where this version can read it."""
+    noted = "SELECT payload FROM entries WHERE kind = 5 ORDER BY position DESC LIMIT 1"
+    kept = "SELECT value FROM state WHERE owner = '/'"
+    found = db.execute(noted).fetchone() or db.execute(kept).fetchone()
+    try:
+        return None if found is None else plan_json.decode(found[0])
+    except ValueError:
+        return None
 
 
 def _ends(db: sqlite3.Connection) -> tuple[int, int]:

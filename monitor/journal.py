@@ -119,23 +119,22 @@ class Journal:
         self.path = path
         self._gone: list[int] = []
         self._topics: dict[str, int] = {}
-        self._lock = _locked(path)
-        try:
-            self.db = sqlite3.connect(path, isolation_level=None)
-            _prepare(self.db, path)
-            self._outbox = max(
-                _single(self.db, f"SELECT coalesce(max(position), 0) FROM {table}")
-                for table in ("outbox", "alerts")
-            )
-            self.position = _single(self.db, "SELECT coalesce(max(position), 0) FROM entries")
-            self.position = max(self.position, meta(self.db, "snapshot"))
-            self.oldest = _single(self.db, "SELECT coalesce(min(position), 0) FROM entries")
-        except sqlite3.Error as error:
-            os.close(self._lock)
-            raise JournalError(f"cannot use the journal {path}: {error}") from error
-        except JournalError:
-            os.close(self._lock)
-            raise
+        with contextlib.ExitStack() as held:
+            held.callback(os.close, _locked(path))
+            try:
+                self.db = sqlite3.connect(path, isolation_level=None)
+                held.callback(self.db.close)
+                _prepare(self.db, path)
+                self._outbox = max(
+                    _single(self.db, f"SELECT coalesce(max(position), 0) FROM {table}")
+                    for table in ("outbox", "alerts")
+                )
+                self.position = _single(self.db, "SELECT coalesce(max(position), 0) FROM entries")
+                self.position = max(self.position, meta(self.db, "snapshot"))
+                self.oldest = _single(self.db, "SELECT coalesce(min(position), 1) FROM entries")
+            except sqlite3.Error as error:
+                raise JournalError(f"cannot use the journal {path}: {error}") from error
+            self._held = held.pop_all()
 
     @property
     def proven(self) -> int:
@@ -222,8 +221,7 @@ class Journal:
         if self._gone:
             with contextlib.suppress(sqlite3.OperationalError):  # then it is sent again
                 self.commit(Batch(()))
-        self.db.close()
-        os.close(self._lock)
+        self._held.close()
 
     def _write_alert(
         self, place: int, alert: AlertRow, first: int, entries: Sequence[Recorded]

@@ -72,8 +72,8 @@ class LookBack:
 
     def evidence(self) -> Evidence:
         """All of it, the newest last."""
-        values, first, _ = self._held()
-        return Evidence(tuple(first), tuple(values))
+        values, first, sizes = self._held()
+        return Evidence(tuple(first), tuple(values), tuple(sizes))
 
     def state(self) -> list[Any]:
         """What is remembered, as JSON values."""

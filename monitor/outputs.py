@@ -14,10 +14,11 @@ from monitor.subgroups import Subgroup
 
 
 class Evidence(NamedTuple):
-    """The last subgroups of a stream: event time of the first reading, standardised mean."""
+    """The last subgroups of a stream: event time of the first reading, standardised mean, size."""
 
-    first: tuple[int, ...]
-    z: tuple[float, ...]
+    first: tuple[int, ...] = ()
+    z: tuple[float, ...] = ()
+    size: tuple[int, ...] = ()
 
 
 class Row(NamedTuple):

@@ -8,7 +8,7 @@ from __future__ import annotations
 from collections.abc import Sequence
 from typing import Protocol
 
-from monitor import health, messages, times
+from monitor import evidence, health, messages, times
 from monitor.engine import Engine
 from monitor.health import EVERY, Health, SetAsideNotices
 from monitor.journal import AlertRow
@@ -63,7 +63,7 @@ class Publisher:
             f"{self._root}/alert/{path}",
             output.event["id"],
             messages.encode(output.event),
-            messages.encode(output.evidence._asdict()),
+            evidence.encode(output),
             entry,
         )
 

@@ -5,6 +5,7 @@ Knows subgroups, detectors, alerts and their order. Must not know topics, payloa
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import dataclass, field
 from typing import Any
 
@@ -92,7 +93,7 @@ class StreamState:
         self._size = 0
         self._error = 1.0
 
-    def close(self, counts: Counts, points: bool) -> list[Output]:
+    def close(self, counts: Counts, points: bool) -> Sequence[Output]:
         """The time of what was gathered has come; a reading from before it is late from now on."""
         end = self.gatherer.closes()
         if end is not None:
@@ -163,7 +164,7 @@ class StreamState:
         evidence = self.lookback.evidence()
         return [Alert(self.plan, self.stream, event, evidence) for event in events]
 
-    def judge(self, subgroup: Subgroup, counts: Counts, points: bool) -> list[Output]:
+    def judge(self, subgroup: Subgroup, counts: Counts, points: bool) -> Sequence[Output]:
         """What a finished subgroup causes."""
         counts.subgroups += 1
         self.last = subgroup
@@ -183,12 +184,14 @@ class StreamState:
                 signals += [(plan, signal) for signal in met]
             if points:
                 rows += each.rows(plan.name, met)
-        counts.signals += len(signals)
-        outputs: list[Output] = []
+        outputs: Sequence[Output] = ()
         if points:
-            outputs.append(Points(self.plan, self.stream, subgroup, rows))
+            outputs = (Points(self.plan, self.stream, subgroup, rows),)
+        if not signals and self.alerts.is_quiet:
+            return outputs
+        counts.signals += len(signals)
         events = self.alerts.judge(subgroup, z, signals, self.lookback)
-        return outputs + self._told(events, counts) if events else outputs
+        return [*outputs, *self._told(events, counts)] if events else outputs
 
     def state(self) -> dict[str, Any]:
         """Everything remembered, as JSON values; detectors by name."""

@@ -207,6 +207,11 @@ class WindowGatherer(Remembers):
             self._given_up()
             self._values = []
 
+    def restore(self, state: Sequence[Any]) -> None:
+        """Take back what ``state`` gave."""
+        *rest, identity, number = state
+        super().restore([*rest, tuple(identity), number])
+
 
 def gatherer(plan: SubgroupPlan, given_up: Callable[[], None]) -> Gatherer:
     """A fresh gatherer as planned; it calls ``given_up`` for each subgroup it abandons."""

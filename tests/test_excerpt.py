@@ -13,7 +13,7 @@ from hypothesis import strategies as st
 from monitor.commandline import CommandError
 from monitor.engine import Engine
 from monitor.entries import Configured, Message, Recorded, Started, State, Tick
-from monitor.excerpt import excerpt
+from monitor.excerpt import excerpt, having
 from monitor.history import taken
 from monitor.outputs import Points
 from monitor.plan import Plan
@@ -105,4 +105,5 @@ def test_topics_follow_the_configuration_in_force() -> None:
 def test_an_unknown_characteristic_is_answered_with_those_there_are() -> None:
     recorded: list[Recorded] = [Tick(1), Configured(2, journals.PLAN)]
     with pytest.raises(CommandError, match=r"no characteristic 'glu' at 1970-.*weight, glue, torq"):
-        list(excerpt(recorded, "glu"))
+        list(having(recorded, "glu"))
+    assert list(having(recorded, "glue")) == recorded

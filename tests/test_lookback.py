@@ -135,6 +135,7 @@ def test_evidence_is_all_that_is_held_the_newest_last() -> None:
     lookback = LookBack()
     for index in range(LOOK_BACK + 3):
         lookback.append(float(index), 10 * index, 4)
-    first, values = lookback.evidence()
+    first, values, sizes = lookback.evidence()
     assert values == tuple(float(index) for index in range(3, LOOK_BACK + 3))
     assert first == tuple(10 * index for index in range(3, LOOK_BACK + 3))
+    assert sizes == (4,) * LOOK_BACK

@@ -7,7 +7,7 @@ of gathering, every detector and every rule.
 from __future__ import annotations
 
 import random
-from collections.abc import Sequence
+from collections.abc import Iterable, Sequence
 from dataclasses import replace
 from typing import Any, NamedTuple
 
@@ -37,6 +37,7 @@ from monitor.plan import (
     SourcePlan,
     SubgroupPlan,
 )
+from monitor.stream import StreamState
 from monitor.times import SECOND
 
 HEADS = replace(GAUGE, stream=(("head", ("head",)),), plausible_upper=50.0)
@@ -179,6 +180,10 @@ def plain(outputs: Sequence[Output]) -> list[object]:
     return [(messages.encode(o.event), o.evidence) if isinstance(o, Alert) else o for o in outputs]
 
 
+def names(streams: Iterable[StreamState]) -> list[object]:
+    return [(state.plan.name, state.stream) for state in streams]
+
+
 def shown(watching: Engine) -> list[object]:
     """What else anyone can see of an engine."""
     standings = [watching.standing(state) for state in watching.streams()]
@@ -205,27 +210,31 @@ steps = st.lists(
 )
 
 
-@settings(max_examples=60, deadline=None)
-@given(steps, st.data())
-def test_a_restored_engine_folds_on_as_the_other(steps: list[Step], data: st.DataObject) -> None:
+@settings(max_examples=250, deadline=None)
+@given(steps, st.sampled_from([PLANS, *((plan,) for plan in PLANS)]), st.data())
+def test_a_restored_engine_folds_on_as_the_other(
+    steps: list[Step], plans: Sequence[CharacteristicPlan], data: st.DataObject
+) -> None:
     entries = entries_of(steps)
     at = data.draw(st.integers(0, len(entries)))
-    kept = engine(*PLANS)
+    kept = engine(*plans)
     for entry in entries[:at]:
         kept.fold(entry)
-    again = restored(snapshot(kept))
+    again = restored(snapshot(kept), plans)
     assert snapshot(again) == snapshot(kept)
     assert shown(again) == shown(kept)
     for entry in entries[at:]:
-        kept.touched.clear()
-        again.touched.clear()
+        for each in (kept, again):
+            each.touched.clear()
+            each.changed.clear()
         assert plain(again.fold(entry)) == plain(kept.fold(entry))
-        assert [s.stream for s in again.touched] == [s.stream for s in kept.touched]
+        assert names(again.touched) == names(kept.touched)
+        assert names(again.changed) == names(kept.changed)
     assert snapshot(again) == snapshot(kept)
     assert shown(again) == shown(kept)
 
 
-@settings(max_examples=40, deadline=None)
+@settings(max_examples=150, deadline=None)
 @given(steps)
 def test_so_does_one_that_is_restored_after_every_entry(steps: list[Step]) -> None:
     kept = again = engine(*PLANS)
@@ -277,7 +286,7 @@ def test_a_long_run_goes_on_from_anywhere() -> None:
         ("rejoined", False),
         ("withdrawn", True),
     }
-    assert min(state.last.number for state in kept.streams() if state.last) > 60
+    assert min(state.last.number for state in kept.streams() if state.last) > 30
     assert kept.counts.missing
     assert kept.counts.abandoned
     assert {"late", "repeated", "not-json"} <= kept.counts.set_aside.keys()

@@ -10,7 +10,6 @@ import json
 import os
 import sqlite3
 import sys
-import time
 from collections.abc import Iterable, Iterator
 from contextlib import closing
 from dataclasses import dataclass
@@ -19,14 +18,14 @@ from pathlib import Path
 from monitor.commandline import DONE, WRONG, CommandError
 from monitor.decode import judge_time
 from monitor.entries import Message, Recorded, State
-from monitor.excerpt import excerpt
+from monitor.excerpt import excerpt, having
 from monitor.files import STDOUT, replacing
 from monitor.history import recorded
 from monitor.journal import JournalError, open_reader
+from monitor.progress import Counter
 from monitor.recording_lines import write_jsonl
 from monitor.times import DAY, format_time
 
-_QUIET = 1.0  # seconds; who waits longer wants to see that it goes on
 _LATEST = 2_932_896 * DAY  # the year 10000
 
 
@@ -65,14 +64,14 @@ def main(args: argparse.Namespace) -> int:
         raise CommandError("--json and the recording both want stdout: add --to FILE", WRONG)
     if None not in (args.since, args.until) and args.until <= args.since:
         raise CommandError("--until must be later than --since", WRONG)
-    progress = _Progress()
+    progress = Counter("earlier entries folded")
     told = _Told()
     try:
         with closing(open_reader(Path(args.journal))) as db, replacing(args.to) as file:
-            found = recorded(db, args.since, args.until, progress.folding)
+            found = recorded(db, args.since, args.until, progress)
             if args.characteristic is not None:
-                found = excerpt(found, args.characteristic)
-            write_jsonl(file, progress.writing(told.of(found)))
+                found = excerpt(having(found, args.characteristic), args.characteristic)
+            write_jsonl(file, progress.through(told.of(found), "entries"))
     except JournalError as error:
         raise CommandError(str(error)) from error
     except sqlite3.Error as error:
@@ -133,31 +132,3 @@ class _Told:
             at = format_time(self.state)
             parts.append(f"before them, what was remembered of all that came until {at}")
         return "; ".join(parts)
-
-
-class _Progress:
-    """The number of entries on a terminal, where it takes long."""
-
-    def __init__(self) -> None:
-        self._following = time.monotonic() + _QUIET if sys.stderr.isatty() else float("inf")
-        self._folded = 0
-        self._shown = False
-
-    def folding(self) -> None:
-        self._folded += 1
-        self._show(self._folded, "entries before the first, folded")
-
-    def writing(self, found: Iterable[State | Recorded]) -> Iterator[State | Recorded]:
-        for number, entry in enumerate(found, 1):
-            yield entry
-            self._show(number, "entries")
-
-    def clear(self) -> None:
-        if self._shown:
-            print("\r\x1b[K", end="", file=sys.stderr, flush=True)
-
-    def _show(self, number: int, what: str) -> None:
-        if number % 1024 == 0 and time.monotonic() >= self._following:
-            self._following = time.monotonic() + 0.25
-            self._shown = True
-            print(f"\r\x1b[K{number:,} {what}", end="", file=sys.stderr, flush=True)

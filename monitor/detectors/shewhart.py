@@ -48,6 +48,7 @@ class Shewhart:
         "_baseline",
         "_chart",
         "_limits",
+        "_plain",
         "_plan",
         "_rules",
         "_se",
@@ -61,6 +62,7 @@ class Shewhart:
         self._baseline = baseline
         self._chart = chart(plan.chart, baseline)
         self._spread = plan.chart in SPREAD
+        self._plain = [each.rule for each in plan.rules] == ["outside"]
         self._rules = tuple(rule(r) for r in plan.rules)
         self._size = 0
         self._limits: tuple[Limits, ...] = ()
@@ -75,6 +77,11 @@ class Shewhart:
             return NO_SIGNALS
         if subgroup.size != self._size:
             self._resize(subgroup.size)
+        if self._plain:
+            # Only the rule ``outside``, and the point inside: nothing is met, nothing remembered.
+            at = self._limits[0]
+            if at.lower <= value <= at.upper:
+                return NO_SIGNALS
         z = (value - self._at.centre) / self._se
         signals = NO_SIGNALS
         for index, decide in enumerate(self._rules):

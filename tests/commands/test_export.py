@@ -15,6 +15,7 @@ import journals
 import pytest
 from daemons import driftbell
 
+from monitor import progress
 from monitor.commands import export
 from monitor.entries import Connected, Disconnected, Message, Recorded, Started
 from monitor.journal import Batch, Journal, read_entries
@@ -140,7 +141,7 @@ def test_shows_how_far_it_is_on_a_terminal(tmp_path: Path, monkeypatch: pytest.M
     ours, theirs = pty.openpty()
     with open(theirs, "w") as terminal:
         monkeypatch.setattr(sys, "stderr", terminal)
-        monkeypatch.setattr(export, "_QUIET", 0.0)
+        monkeypatch.setattr(progress, "_QUIET", 0.0)
         parser = argparse.ArgumentParser()
         export.configure(parser)
         words = [str(path), "--to", str(tmp_path / "x.jsonl")]

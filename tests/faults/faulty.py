@@ -23,7 +23,7 @@ import orjson
 from brokers import TIMEOUT, Client, Received
 from daemons import ALERTS, CONFIGURATION, HEALTH, ROOT, Launched, events, recording, until
 
-from monitor.entries import Message
+from monitor.journal import open_reader
 
 CUTS = Path(__file__).with_name("cuts.py")
 TORQUE = "line-2/capper/torque"
@@ -218,6 +218,10 @@ class Watcher:
             raise AssertionError(f"{error}\n{daemon.tail()}") from None
         return found[0]
 
+    def last_health(self) -> dict[str, Any]:
+        """The latest that was said of the daemon's health."""
+        return self._client.received(HEALTH)[-1].body
+
     def alerts_until_farewell(self) -> list[bytes]:
         """Every alert event, each (id, sequence) once, in order, without ``published``.
 
@@ -288,6 +292,7 @@ def check_same_as_published(daemon: Faulty, alerts: list[bytes], published: Publ
     assert alerts == undisturbed(daemon.configuration, recorded)
 
 
-def messages_of(daemon: Launched) -> list[Message]:
-    """The journal's messages."""
-    return [entry for entry in daemon.entries() if isinstance(entry, Message)]
+def journaled_alerts(daemon: Launched) -> list[bytes]:
+    """The alert events in the journal, in order: for when a broker may have lost some."""
+    with contextlib.closing(open_reader(daemon.journal)) as db:
+        return [event for (event,) in db.execute("SELECT event FROM alerts ORDER BY position")]

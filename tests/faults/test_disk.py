@@ -33,12 +33,12 @@ PING = "Received PINGREQ from driftbell-test"
 ALIVE = {"keepalive": "1s"}
 
 
-@pytest.fixture
-def small_disk(tmp_path: Path) -> Iterator[Path]:
-    """A file system of 48 MB in memory; whoever cannot mount one has the test skipped."""
+@pytest.fixture(params=[48])
+def small_disk(request: pytest.FixtureRequest, tmp_path: Path) -> Iterator[Path]:
+    """A file system of so many megabytes in memory; who cannot mount one has the test skipped."""
     folder = tmp_path / "disk"
     folder.mkdir()
-    mount = ["mount", "-t", "tmpfs", "-o", "size=48m", "tmpfs", folder]
+    mount = ["mount", "-t", "tmpfs", "-o", f"size={request.param}m", "tmpfs", folder]
     if os.geteuid() or subprocess.run(mount, capture_output=True, check=False).returncode:
         pytest.skip("a small disk takes root, and the right to mount")
     yield folder
@@ -74,6 +74,7 @@ def check_frozen(daemon: Faulty, watcher: Watcher, broker: Mosquitto, published:
     assert acknowledged(broker) == before <= daemon.count() < len(published)
 
 
+@pytest.mark.parametrize("small_disk", [48, 12], indirect=True)
 @pytest.mark.parametrize("killed", [False, True], ids=["", "killed-meanwhile"])
 def test_a_full_disk(
     killed: bool, small_disk: Path, mosquitto: Callable[..., Mosquitto], tmp_path: Path
@@ -97,11 +98,10 @@ def test_a_full_disk(
         check_frozen(daemon, watcher, broker, messages)
         if killed:
             daemon.kill()
-        filler.unlink()
-        if killed:
             daemon.online()
-        else:
-            daemon.await_logged("the journal takes entries again")
+            check_frozen(daemon, watcher, broker, messages)
+        filler.unlink()
+        daemon.await_logged("the journal takes entries again")
         alerts = check_complete(daemon, watcher, messages)
         check_same_as_published(daemon, alerts, messages)
     assert len(alerts) > 10
