@@ -1,7 +1,7 @@
 """The arithmetic behind an alert: how the statistic came to break its limit, subgroup by subgroup.
 
-Knows charts, sums and averages, from points that the engine made again or from what an alert kept.
-Must not know journals, or how it is told.
+Knows charts, sums and averages, from points that the engine made again. Must not know journals, or
+how it is told.
 """
 
 from __future__ import annotations
@@ -11,10 +11,9 @@ from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass, replace
 from functools import partial
 
-from monitor import times
 from monitor.detectors.charts import chart, standard_error
 from monitor.messages import AlertEvent, StatisticField, SubgroupField
-from monitor.outputs import Evidence, Points, Row
+from monitor.outputs import Points, Row
 from monitor.plan import (
     BaselinePlan,
     CusumPlan,
@@ -24,8 +23,7 @@ from monitor.plan import (
     ShewhartPlan,
 )
 
-_OF_MEANS = ("mean", "individual")
-_CLOSE = 1e-9  # of a standard error: what is left of a mean that was kept standardised
+CLOSE = 1e-9  # of a standard error: so far off is a mean that was kept standardised
 
 
 @dataclass(frozen=True, slots=True)
@@ -106,12 +104,9 @@ def agreement(working: Working, rung: Rung) -> str:
     )
     if all(ours == theirs for ours, theirs in pairs):
         return "exactly"
-    close = partial(math.isclose, rel_tol=_CLOSE, abs_tol=_CLOSE * rung.error(1))
+    close = partial(math.isclose, rel_tol=CLOSE, abs_tol=CLOSE * rung.error(1))
     both = [(a, b) for a, b in pairs if a is not None and b is not None]
     return "to rounding" if len(both) > 1 and all(close(a, b) for a, b in both) else "no"
-
-
-# ── from points that the engine made again ───────────────────────────────────────────────────────
 
 
 def from_points(points: Sequence[Points], rung: Rung) -> Working | None:
@@ -121,7 +116,7 @@ def from_points(points: Sequence[Points], rung: Rung) -> Working | None:
     number = rung.subgroup["number"]
     if number not in numbers:
         return None
-    return Working(tuple(_counted(steps, numbers.index(number), rung)), numbers.index(number))
+    return Working(tuple(counted(steps, numbers.index(number), rung)), numbers.index(number))
 
 
 def _step(points: Points, rung: Rung) -> Step | None:
@@ -146,10 +141,10 @@ def _step(points: Points, rung: Rung) -> Step | None:
     )
     match scheme:
         case CusumPlan():
-            added = _clipped(z, scheme.clip) * rung.sign - scheme.k
+            added = clipped(z, scheme.clip) * rung.sign - scheme.k
             return replace(step, terms={"added": added, "sum": row.value / error})
         case EwmaPlan():
-            x = rung.baseline.mean + _clipped(z, scheme.clip) * error
+            x = rung.baseline.mean + clipped(z, scheme.clip) * error
             weighted = scheme.lam * (subgroup.mean if scheme.clip is None else x)
             return replace(step, terms={"weighted": weighted, "kept": row.value - weighted})
         case ShewhartPlan():
@@ -158,158 +153,14 @@ def _step(points: Points, rung: Rung) -> Step | None:
 
 def _at_the_rule(step: Step, row: Row, size: int, rung: Rung) -> Step:
     """With the limits at the width of the rule that rang, where it has one."""
-    rule = _rule(rung)
+    rule = rule_of(rung)
     if rule is None or not rule.width:
         return step
     limits = chart(row.chart, rung.baseline).limits(size, rule.width)
     return replace(step, lower=limits.lower, upper=limits.upper)
 
 
-# ── from what the alert kept ─────────────────────────────────────────────────────────────────────
-
-
-def from_evidence(evidence: Evidence, rung: Rung) -> Working:
-    """The same from the stream's last subgroups, of which only the means are kept: of a chart of
-    anything else, the one point that rang."""
-    scheme = rung.detector.scheme
-    steps: list[Step] = []
-    carried: float | None = None
-    if scheme.chart in _OF_MEANS and evidence.z:
-        match scheme:
-            case CusumPlan():
-                steps, carried = _summed(evidence, scheme, rung)
-            case EwmaPlan():
-                steps, carried = _averaged(evidence, scheme, rung)
-            case ShewhartPlan():
-                steps = [_charted(step, rung) for step in _kept(evidence, rung)]
-    if not steps:
-        said, subgroup = rung.statistic, rung.subgroup
-        first = times.parse_iso_time(subgroup["first"])
-        steps = [Step(first, said["value"], said["lower"], said["upper"])]
-    subgroup = rung.subgroup
-    steps[-1] = replace(
-        steps[-1],
-        number=subgroup["number"],
-        last=times.parse_iso_time(subgroup["last"]),
-        size=subgroup["size"],
-        mean=subgroup["mean"],
-        signalled=True,
-    )
-    return Working(tuple(_counted(steps, len(steps) - 1, rung)), len(steps) - 1, carried)
-
-
-def _kept(evidence: Evidence, rung: Rung) -> list[Step]:
-    """Steps of which the value is the mean, and no limit is known yet."""
-    centre = rung.baseline.mean
-    return [
-        Step(first, mean, None, None, size=size, mean=mean, z=z)
-        for first, z, size in zip(*evidence, strict=True)
-        for mean in (centre + z * rung.error(size),)
-    ]
-
-
-def _charted(step: Step, rung: Rung) -> Step:
-    scheme, rule = rung.detector.scheme, _rule(rung)
-    assert isinstance(scheme, ShewhartPlan) and step.size is not None
-    width = rule.width if rule is not None and rule.width else scheme.width
-    limits = chart(scheme.chart, rung.baseline).limits(step.size, width)
-    return replace(step, lower=limits.lower, upper=limits.upper)
-
-
-def _summed(evidence: Evidence, scheme: CusumPlan, rung: Rung) -> tuple[list[Step], float | None]:
-    """A sum forgets all that was before its last zero, so that it is found again to the last digit
-    where that, or a restart, lies within what was kept."""
-    added = [_clipped(z, scheme.clip) * rung.sign - scheme.k for z in evidence.z]
-    head, said = scheme.head_start * scheme.h, rung.statistic["value"]
-    newest = rung.error(rung.subgroup["size"])
-    starts = [(0, 0.0), *((start, head) for start in range(len(added)))]
-    carried = None
-    for start, before in starts:
-        sums = _sums(added[start:], before, scheme)
-        if sums[-1] * newest == said:
-            break
-    else:
-        start, before = 0, max(0.0, said / newest - math.fsum(added))
-        sums = _sums(added, before, scheme)
-        carried = before * newest
-    return [
-        replace(
-            step,
-            value=sums[index] * rung.error(step.size or 1),
-            upper=scheme.h * rung.error(step.size or 1),
-            terms={"added": added[start + index], "sum": sums[index]},
-            signalled=sums[index] > scheme.h,
-        )
-        for index, step in enumerate(_kept(evidence, rung)[start:])
-    ], carried
-
-
-def _sums(added: Sequence[float], before: float, scheme: CusumPlan) -> list[float]:
-    sums = []
-    for each in added:
-        before = max(0.0, before + each)
-        sums.append(before)
-        if before > scheme.h and not scheme.hold:
-            before = scheme.head_start * scheme.h
-    return sums
-
-
-def _averaged(evidence: Evidence, scheme: EwmaPlan, rung: Rung) -> tuple[list[Step], float | None]:
-    """An average forgets by the factor 1 − λ at each step: what it was before those that were kept
-    follows from where it ended, unless it started afresh among them."""
-    steps, centre = _kept(evidence, rung), rung.baseline.mean
-    said = rung.statistic
-    run = partial(_averages, scheme=scheme, rung=rung)
-    close = partial(math.isclose, rel_tol=_CLOSE, abs_tol=_CLOSE * rung.error(1))
-    upper = said["upper"] if said["upper"] is not None else math.inf
-    for start in range(len(steps)):
-        found = run(steps[start:], centre, 0.0)
-        if close(found[-1].value, said["value"]) and close(found[-1].upper or 0.0, upper):
-            return found, None
-    left = (1.0 - scheme.lam) ** len(steps)
-    fresh = replace(scheme, hold=True)  # it ran through, else it were found above
-    ended = _averages(steps, centre, 0.0, scheme=fresh, rung=rung)[-1]
-    before = centre + (said["value"] - ended.value) / left
-    spread = [((each - centre) / scheme.width) ** 2 for each in (upper, ended.upper or 0.0)]
-    variance = max(0.0, (spread[0] - spread[1]) / left**2)
-    return _averages(steps, before, variance, scheme=fresh, rung=rung), before
-
-
-def _averages(
-    steps: Sequence[Step], average: float, variance: float, *, scheme: EwmaPlan, rung: Rung
-) -> list[Step]:
-    centre, lam = rung.baseline.mean, scheme.lam
-    done = []
-    for step in steps:
-        error = rung.error(step.size or 1)
-        weighted = lam * (centre + _clipped(step.z or 0.0, scheme.clip) * error)
-        kept = (1.0 - lam) * average
-        average = weighted + kept
-        if scheme.asymptotic:
-            variance = lam / (2.0 - lam) * error * error
-        else:
-            variance = (lam * error) ** 2 + (1.0 - lam) ** 2 * variance
-        reach = scheme.width * math.sqrt(variance)
-        outside = abs(average - centre) > reach
-        done.append(
-            replace(
-                step,
-                value=average,
-                lower=centre - reach,
-                upper=centre + reach,
-                terms={"weighted": weighted, "kept": kept},
-                signalled=outside,
-            )
-        )
-        if outside and not scheme.hold:
-            average, variance = centre, 0.0
-    return done
-
-
-# ── what made it ring ────────────────────────────────────────────────────────────────────────────
-
-
-def _counted(steps: Sequence[Step], at: int, rung: Rung) -> list[Step]:
+def counted(steps: Sequence[Step], at: int, rung: Rung) -> list[Step]:
     """The steps, those marked that made it ring at ``steps[at]``."""
     match rung.detector.scheme:
         case CusumPlan():
@@ -331,7 +182,7 @@ def _since(steps: Sequence[Step], at: int, is_over: Callable[[Step], bool]) -> i
 
 
 def _met(steps: Sequence[Step], at: int, rung: Rung) -> list[Step]:
-    rule = _rule(rung)
+    rule = rule_of(rung)
     span = 1 if rule is None else rule.length or rule.of or 1
 
     def counts(index: int, step: Step) -> bool:
@@ -347,7 +198,7 @@ def _beyond(step: Step, sign: int) -> bool:
     return limit is not None and (step.value - limit) * sign > 0.0
 
 
-def _rule(rung: Rung) -> RulePlan | None:
+def rule_of(rung: Rung) -> RulePlan | None:
     """The rule of a Shewhart chart that rang: of its kind, with the limits that the alert names."""
     scheme, said = rung.detector.scheme, rung.statistic
     if not isinstance(scheme, ShewhartPlan):
@@ -365,5 +216,5 @@ def _rule(rung: Rung) -> RulePlan | None:
 _SIDELESS = ("alternation", "stratification", "mixture")
 
 
-def _clipped(z: float, clip: float | None) -> float:
+def clipped(z: float, clip: float | None) -> float:
     return z if clip is None else min(max(z, -clip), clip)

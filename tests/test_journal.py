@@ -2,13 +2,13 @@
 
 from __future__ import annotations
 
-import re
 import signal
 import sqlite3
 import subprocess
 import sys
 from dataclasses import replace
 from pathlib import Path
+from typing import Any
 
 import pytest
 from hypothesis import given, settings
@@ -31,7 +31,6 @@ from monitor.journal import (
     Journal,
     JournalError,
     Pruning,
-    numbered_entries,
     open_reader,
     read_entries,
 )
@@ -427,45 +426,57 @@ def test_an_empty_file_is_made_a_journal(tmp_path: Path) -> None:
         Journal(tmp_path / "other.db")
 
 
-def test_what_is_asked_at_a_start_and_at_each_commit_takes_no_scan(tmp_path: Path) -> None:
-    journal = Journal(tmp_path / "j.db")
-    statements: list[str] = []
-    journal.db.set_trace_callback(statements.append)
-    state = {"": b"x", "a": b"x"}
-    pruning = Pruning(1, 1, 200)
-    journal.commit(Batch([Started(1)], [alert("a", b"1")], state, ["b"], True, 1, pruning, ["c"]))
-    module.bases_between(journal.db, 1)
-    module.base_after(journal.db, 1)
-    module.base(journal.db, 1)
-    module.alerts_before(journal.db, 1)
-    journal.filters()
-    assert journal.last_time == 1
-    list(numbered_entries(journal.db, 5))
-    list(journal.unproven())
+def filled(path: Path, count: int) -> None:
+    """A journal of so many entries, alerts and a hundred rows of state, with ten bases."""
+    journal = Journal(path)
+    entries: list[Recorded] = [Message(n, "a", b"1") for n in range(count)]
+    state = {str(n): b"x" for n in range(count // 100)}
+    said = [AlertRow("t", "id", b"{}", b"{}", n) for n in range(0, count, 10)]
+    for place in journal.commit(Batch(entries, said, remembered=state)):
+        journal.delivered(place)
+    for n in range(10):
+        journal.commit(Batch([Started(count + n)], remembered={"0": b"y"}, base=True))
+    journal.commit(Batch([Configured(count + 10, Plan(()))], proven=journal.position))
     journal.close()
-    again = sqlite3.connect(tmp_path / "j.db")
-    again.set_trace_callback(statements.append)
-    opened = [
-        "SELECT coalesce(max(position), 0) FROM outbox",
-        "SELECT coalesce(max(position), 0) FROM alerts",
-        "SELECT coalesce(max(position), 0) FROM entries",
-        "SELECT coalesce(min(position), 0) FROM entries",
-    ]
-    source = Path(module.__file__).read_text()
-    assert all(each.split(" FROM ")[0] in source for each in opened)
-    for statement in [*statements, *opened]:
-        if not statement.startswith(("SELECT", "WITH", "DELETE", "INSERT")):
-            continue
-        plan = [row[3] for row in again.execute(f"EXPLAIN QUERY PLAN {statement}")]
-        # A scan is of what a snapshot copies, of few rows, or of one place at an end.
-        scans = [
-            step
-            for step in plan
-            if step.startswith("SCAN")
-            and not re.match(r"SCAN (CONSTANT|places|state|\d+ CONST)", step)
-            and not re.search(r"(min|max)\(position\)|LIMIT", statement)
-            and "USING COVERING INDEX configurations" not in step
-            and "INDEX configurations" not in step
-        ]
-        assert not scans, (statement, plan)
-    again.close()
+
+
+def test_neither_a_start_nor_a_commit_costs_more_in_a_large_journal(
+    tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    steps = 0
+    connect = sqlite3.connect
+
+    def counting(*args: Any, **named: Any) -> sqlite3.Connection:
+        def step() -> int:
+            nonlocal steps
+            steps += 1
+            return 0
+
+        db = connect(*args, **named)
+        db.set_progress_handler(step, 1)  # each instruction of SQLite's virtual machine
+        return db
+
+    taken = []
+    for count in (1_000, 20_000):
+        path = tmp_path / f"{count}.db"
+        filled(path, count)
+        with monkeypatch.context() as patched:
+            patched.setattr(module.sqlite3, "connect", counting)
+            steps = 0
+            journal = Journal(path)
+            assert journal.last_time == count + 10
+            assert list(journal.unproven()) == []
+            assert journal.filters() == frozenset()
+            assert module.bases_between(journal.db, count + 3)[1] == count + 9
+            assert module.base_after(journal.db, 1) == count + 1
+            assert module.alerts_before(journal.db, 5) == 1
+            assert journal.used_bytes() > 0
+            assert list(read_entries(journal.db, journal.position - 1)) == [
+                Configured(count + 10, Plan(()))
+            ]
+            pruning = Pruning(count, 0, 10)
+            journal.commit(Batch([Started(count + 11)], [alert("a", b"1")], pruning=pruning))
+            journal.close()
+        taken.append(steps)
+    assert taken[0] > 500, "nothing was counted"
+    assert taken[1] < 1.2 * taken[0]

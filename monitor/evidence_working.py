@@ -1,0 +1,158 @@
+"""The arithmetic behind an alert from what was kept with it, once its readings are gone.
+
+Knows how sums and averages are found again from their last subgroups' means. Must not know
+journals, or how it is told.
+"""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Sequence
+from dataclasses import replace
+from functools import partial
+
+from monitor import times
+from monitor.detectors.charts import chart
+from monitor.outputs import Evidence
+from monitor.plan import CusumPlan, EwmaPlan, ShewhartPlan
+from monitor.working import CLOSE, Rung, Step, Working, clipped, counted, rule_of
+
+_OF_MEANS = ("mean", "individual")
+
+
+def from_evidence(evidence: Evidence, rung: Rung) -> Working:
+    """The working up to the point that rang, which is the last; of a chart of anything but means,
+    that point alone."""
+    scheme = rung.detector.scheme
+    steps: list[Step] = []
+    carried: float | None = None
+    if scheme.chart in _OF_MEANS and evidence.z:
+        match scheme:
+            case CusumPlan():
+                steps, carried = _summed(evidence, scheme, rung)
+            case EwmaPlan():
+                steps, carried = _averaged(evidence, scheme, rung)
+            case ShewhartPlan():
+                steps = [_charted(step, rung) for step in _kept(evidence, rung)]
+    if not steps:
+        said, subgroup = rung.statistic, rung.subgroup
+        first = times.parse_iso_time(subgroup["first"])
+        steps = [Step(first, said["value"], said["lower"], said["upper"])]
+    subgroup = rung.subgroup
+    steps[-1] = replace(
+        steps[-1],
+        number=subgroup["number"],
+        last=times.parse_iso_time(subgroup["last"]),
+        size=subgroup["size"],
+        mean=subgroup["mean"],
+        signalled=True,
+    )
+    return Working(tuple(counted(steps, len(steps) - 1, rung)), len(steps) - 1, carried)
+
+
+def _kept(evidence: Evidence, rung: Rung) -> list[Step]:
+    """Steps of which the value is the mean, and no limit is known yet."""
+    centre = rung.baseline.mean
+    return [
+        Step(first, mean, None, None, size=size, mean=mean, z=z)
+        for first, z, size in zip(*evidence, strict=True)
+        for mean in (centre + z * rung.error(size),)
+    ]
+
+
+def _charted(step: Step, rung: Rung) -> Step:
+    scheme, rule = rung.detector.scheme, rule_of(rung)
+    assert isinstance(scheme, ShewhartPlan)
+    width = rule.width if rule is not None and rule.width else scheme.width
+    limits = chart(scheme.chart, rung.baseline).limits(step.size or 1, width)
+    return replace(step, lower=limits.lower, upper=limits.upper)
+
+
+def _summed(evidence: Evidence, scheme: CusumPlan, rung: Rung) -> tuple[list[Step], float | None]:
+    """A sum forgets all that was before its last zero, so that it is found again to the last digit
+    where that, or a restart, lies within what was kept."""
+    added = [clipped(z, scheme.clip) * rung.sign - scheme.k for z in evidence.z]
+    head, said = scheme.head_start * scheme.h, rung.statistic["value"]
+    newest = rung.error(rung.subgroup["size"])
+    starts = [(0, 0.0), *((start, head) for start in range(len(added)))]
+    carried = None
+    for start, before in starts:
+        sums = _sums(added[start:], before, scheme)
+        if sums[-1] * newest == said:
+            break
+    else:
+        start, before = 0, max(0.0, said / newest - math.fsum(added))
+        sums = _sums(added, before, scheme)
+        carried = before * newest
+    return [
+        replace(
+            step,
+            value=sums[index] * rung.error(step.size or 1),
+            upper=scheme.h * rung.error(step.size or 1),
+            terms={"added": added[start + index], "sum": sums[index]},
+            signalled=sums[index] > scheme.h,
+        )
+        for index, step in enumerate(_kept(evidence, rung)[start:])
+    ], carried
+
+
+def _sums(added: Sequence[float], before: float, scheme: CusumPlan) -> list[float]:
+    sums = []
+    for each in added:
+        before = max(0.0, before + each)
+        sums.append(before)
+        if before > scheme.h and not scheme.hold:
+            before = scheme.head_start * scheme.h
+    return sums
+
+
+def _averaged(evidence: Evidence, scheme: EwmaPlan, rung: Rung) -> tuple[list[Step], float | None]:
+    """An average forgets by the factor 1 − λ at each step: what it was before those that were kept
+    follows from where it ended, unless it started afresh among them."""
+    steps, centre = _kept(evidence, rung), rung.baseline.mean
+    said = rung.statistic
+    run = partial(_averages, scheme=scheme, rung=rung)
+    close = partial(math.isclose, rel_tol=CLOSE, abs_tol=CLOSE * rung.error(1))
+    upper = said["upper"] if said["upper"] is not None else math.inf
+    for start in range(len(steps)):
+        found = run(steps[start:], centre, 0.0)
+        if close(found[-1].value, said["value"]) and close(found[-1].upper or 0.0, upper):
+            return found, None
+    left = (1.0 - scheme.lam) ** len(steps)
+    fresh = replace(scheme, hold=True)  # it ran through, else it were found above
+    ended = _averages(steps, centre, 0.0, scheme=fresh, rung=rung)[-1]
+    before = centre + (said["value"] - ended.value) / left
+    spread = [((each - centre) / scheme.width) ** 2 for each in (upper, ended.upper or 0.0)]
+    variance = max(0.0, (spread[0] - spread[1]) / left**2)
+    return _averages(steps, before, variance, scheme=fresh, rung=rung), before
+
+
+def _averages(
+    steps: Sequence[Step], average: float, variance: float, *, scheme: EwmaPlan, rung: Rung
+) -> list[Step]:
+    centre, lam = rung.baseline.mean, scheme.lam
+    done = []
+    for step in steps:
+        error = rung.error(step.size or 1)
+        weighted = lam * (centre + clipped(step.z or 0.0, scheme.clip) * error)
+        kept = (1.0 - lam) * average
+        average = weighted + kept
+        if scheme.asymptotic:
+            variance = lam / (2.0 - lam) * error * error
+        else:
+            variance = (lam * error) ** 2 + (1.0 - lam) ** 2 * variance
+        reach = scheme.width * math.sqrt(variance)
+        outside = abs(average - centre) > reach
+        done.append(
+            replace(
+                step,
+                value=average,
+                lower=centre - reach,
+                upper=centre + reach,
+                terms={"weighted": weighted, "kept": kept},
+                signalled=outside,
+            )
+        )
+        if outside and not scheme.hold:
+            average, variance = centre, 0.0
+    return done
