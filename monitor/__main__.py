@@ -12,6 +12,7 @@ COMMANDS = {
     "check": ("monitor.commands.check", "validate CONFIG and say what it will do"),
     "demo": ("monitor.commands.demo", "a simulated jar line with its own broker, watched live"),
     "export": ("monitor.commands.export", "write a journal as a recording"),
+    "explain": ("monitor.commands.explain", "why one alert rang: its points and arithmetic"),
     "describe": ("monitor.commands.describe", "JSON Schema of all messages, or AsyncAPI"),
 }
 

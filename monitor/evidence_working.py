@@ -47,7 +47,12 @@ def from_evidence(evidence: Evidence, rung: Rung) -> Working:
         mean=subgroup["mean"],
         signalled=True,
     )
-    return Working(tuple(counted(steps, len(steps) - 1, rung)), len(steps) - 1, carried)
+    marked = counted(steps, len(steps) - 1, rung)
+    first = next(index for index, step in enumerate(marked) if step.counts)
+    if not isinstance(scheme, ShewhartPlan):
+        # Of a sum or an average, what was before it came to zero or crossed the centre is a guess.
+        marked = marked[max(0, first - 1) :]
+    return Working(tuple(marked), len(marked) - 1, None if first else carried)
 
 
 def _kept(evidence: Evidence, rung: Rung) -> list[Step]:
@@ -71,35 +76,36 @@ def _charted(step: Step, rung: Rung) -> Step:
 def _summed(evidence: Evidence, scheme: CusumPlan, rung: Rung) -> tuple[list[Step], float | None]:
     """A sum forgets all that was before its last zero, so that it is found again to the last digit
     where that, or a restart, lies within what was kept."""
-    added = [clipped(z, scheme.clip) * rung.sign - scheme.k for z in evidence.z]
+    towards = [clipped(z, scheme.clip) * rung.sign for z in evidence.z]
     head, said = scheme.head_start * scheme.h, rung.statistic["value"]
     newest = rung.error(rung.subgroup["size"])
-    starts = [(0, 0.0), *((start, head) for start in range(len(added)))]
+    starts = [(0, 0.0), *((start, head) for start in range(len(towards)))]
     carried = None
     for start, before in starts:
-        sums = _sums(added[start:], before, scheme)
+        sums = _sums(towards[start:], before, scheme)
         if sums[-1] * newest == said:
             break
     else:
-        start, before = 0, max(0.0, said / newest - math.fsum(added))
-        sums = _sums(added, before, scheme)
+        start, gone = 0, math.fsum(towards) - len(towards) * scheme.k
+        before = max(0.0, said / newest - gone)
+        sums = _sums(towards, before, scheme)
         carried = before * newest
     return [
         replace(
             step,
             value=sums[index] * rung.error(step.size or 1),
             upper=scheme.h * rung.error(step.size or 1),
-            terms={"added": added[start + index], "sum": sums[index]},
+            terms={"added": towards[start + index] - scheme.k, "sum": sums[index]},
             signalled=sums[index] > scheme.h,
         )
         for index, step in enumerate(_kept(evidence, rung)[start:])
     ], carried
 
 
-def _sums(added: Sequence[float], before: float, scheme: CusumPlan) -> list[float]:
+def _sums(towards: Sequence[float], before: float, scheme: CusumPlan) -> list[float]:
     sums = []
-    for each in added:
-        before = max(0.0, before + each)
+    for each in towards:
+        before = max(0.0, before + each - scheme.k)  # in the detector's order, to the last digit
         sums.append(before)
         if before > scheme.h and not scheme.hold:
             before = scheme.head_start * scheme.h

@@ -87,7 +87,7 @@ class GaugeAlerts:
 
     def state(self) -> list[Any]:
         """What is remembered, as JSON values."""
-        return [self._sequence.value, self._open]
+        return [self._sequence.value, dict(self._open)]
 
     def restore(self, state: list[Any]) -> None:
         """Take back what ``state`` gave."""

@@ -413,8 +413,8 @@ class HealthMessage(TypedDict):
     qos_0: Count | None
     """Messages that came at QoS 0 since the daemon started: such are lost while we are away."""
     sessions_lost: Count | None
-    """How often, since the journal began, the broker had forgotten what it kept for us while we were
-    away."""
+    """How often, since the journal began, the broker had forgotten what it kept for us while we
+    were away."""
     points_dropped: Count | None
     """Points not sent since the daemon started, because the broker took them too slowly."""
 

@@ -8,7 +8,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Callable, Mapping, Sequence
-from dataclasses import dataclass, replace
+from dataclasses import dataclass, field, replace
 from functools import partial
 
 from monitor.detectors.charts import chart, standard_error
@@ -43,7 +43,8 @@ class Step:
     size: int | None = None
     mean: float | None = None
     z: float | None = None
-    terms: Mapping[str, float] | None = None
+    terms: Mapping[str, float] = field(default_factory=dict)
+    readings: tuple[float, ...] = ()
     counts: bool = False
     signalled: bool = False
 
@@ -137,6 +138,7 @@ def _step(points: Points, rung: Rung) -> Step | None:
         subgroup.size,
         subgroup.mean,
         z,
+        readings=subgroup.values,
         signalled=rung.rule in row.rules,
     )
     match scheme:
@@ -217,4 +219,5 @@ _SIDELESS = ("alternation", "stratification", "mixture")
 
 
 def clipped(z: float, clip: float | None) -> float:
+    """What of a standardised value counts."""
     return z if clip is None else min(max(z, -clip), clip)

@@ -115,18 +115,20 @@ def write(
     bases: Collection[int] = (),
     *,
     dropped: int = 0,
+    batch: int = 1,
 ) -> Path:
     """A journal of these entries with a base after each of these positions, the first ``dropped``
-    entries and all older bases gone."""
+    entries and all older bases gone. They are committed ``batch`` at a time, or one by one; bases
+    stand at the end of a batch."""
     engine = Engine(Plan(()), points=False)
     publisher = Publisher("line-2/monitor", engine, Health(), Outbox([]))
     journal = Journal(path)
-    for position, entry in enumerate(entries, 1):
-        folded = fold(engine, publisher, [entry], ())
-        batch = Batch(folded.entries, folded.alerts, clears=folded.clears)
-        if position in bases:
-            batch.remembered, batch.base = remembered(engine), True
-        journal.commit(batch)
+    for start in range(0, len(entries), batch):
+        folded = fold(engine, publisher, entries[start : start + batch], ())
+        made = Batch(folded.entries, folded.alerts, clears=folded.clears)
+        if start + batch in bases:
+            made.remembered, made.base = remembered(engine), True
+        journal.commit(made)
     journal.db.execute("DELETE FROM entries WHERE position <= ?", (dropped,))
     journal.db.execute("DELETE FROM bases WHERE position < ?", (dropped,))
     journal.close()

@@ -29,7 +29,7 @@ def certificates(tmp_path_factory: pytest.TempPathFactory) -> Path:
     """An authority, and a server's and a client's certificate that it signed."""
     folder = tmp_path_factory.mktemp("certificates")
     openssl(
-        folder, *"req -x509 -newkey rsa:2048 -nodes -days 2 -subj /CN=authority".split(),
+        folder, *["req", "-x509", "-newkey", "rsa:2048", "-nodes", "-days", "2", "-subj", "/CN=authority"],
         "-keyout", "ca.key", "-out", "ca.pem",
     )  # fmt: skip
     (folder / "names").write_text("subjectAltName=DNS:localhost,IP:127.0.0.1\n")
@@ -39,7 +39,7 @@ def certificates(tmp_path_factory: pytest.TempPathFactory) -> Path:
             "-keyout", f"{name}.key", "-out", f"{name}.csr",
         )  # fmt: skip
         openssl(
-            folder, *"x509 -req -days 2 -CA ca.pem -CAkey ca.key -CAcreateserial".split(),
+            folder, *["x509", "-req", "-days", "2", "-CA", "ca.pem", "-CAkey", "ca.key", "-CAcreateserial"],
             "-extfile", "names", "-in", f"{name}.csr", "-out", f"{name}.pem",
         )  # fmt: skip
     return folder
@@ -121,7 +121,7 @@ def test_a_broker_that_another_authority_vouches_for_is_refused(
         }
     )
     openssl(
-        tmp_path, *"req -x509 -newkey rsa:2048 -nodes -days 2 -subj /CN=stranger".split(),
+        tmp_path, *["req", "-x509", "-newkey", "rsa:2048", "-nodes", "-days", "2", "-subj", "/CN=stranger"],
         "-keyout", "x.key", "-out", "stranger.pem",
     )  # fmt: skip
     tls = {"ca": str(tmp_path / "stranger.pem")}

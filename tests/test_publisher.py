@@ -12,10 +12,12 @@ import yaml
 from daemons import CONFIGURATION, ROOT, weighing, with_
 
 from monitor.engine import Engine
-from monitor.entries import Connected, Message
+from monitor.entries import Configured, Connected, Message, Recorded
+from monitor.folding import Folded, fold
 from monitor.health import EVERY, Health
 from monitor.outbox import Outbox
-from monitor.outputs import Output
+from monitor.outputs import Gone, Output
+from monitor.plan import Plan
 from monitor.publisher import Publisher
 from monitor.resolve import read_settings
 from monitor.times import SECOND, format_time
@@ -33,7 +35,8 @@ class Notes:
 
     def publish(self, topic: str, payload: bytes, *, retain: bool = False) -> int:
         self.waiting += 1
-        self.said.append((topic.removeprefix(f"{ROOT}/"), json.loads(payload), retain))
+        body = json.loads(payload) if payload else {}
+        self.said.append((topic.removeprefix(f"{ROOT}/"), body, retain))
         return len(self.said)
 
     def topics(self, first: str) -> list[str]:
@@ -60,16 +63,22 @@ class Bench:
         self.engine.fold(Connected(self.now, True))
         self.health.connected(self.now)
 
+    def fold(self, *entries: Recorded) -> Folded:
+        """Fold entries; what must not be lost goes to the outbox, as after a commit."""
+        folded = fold(self.engine, self.publisher, entries, ())
+        leaving = [(alert.topic, alert.event) for alert in folded.alerts]
+        leaving += [(topic, b"") for topic in folded.clears]
+        for each in leaving:
+            self.places += 1
+            self.outbox.extend([(self.places, *each)])
+        return folded
+
     def weigh(self, *nets: float) -> list[Output]:
-        """Fold weighings; alerts go to the outbox, as after a commit."""
+        """Fold weighings, one a second."""
         outputs: list[Output] = []
         for net in nets:
             self.now += SECOND
-            topic, payload = weighing(self.now, self.now, net)
-            outputs += self.engine.fold(Message(self.now, topic, payload))
-        for alert in self.publisher.alerts(outputs):
-            self.places += 1
-            self.outbox.add(self.places, *alert)
+            outputs += self.fold(Message(self.now, *weighing(self.now, self.now, net))).outputs
         return outputs
 
     def publish(self, outputs: Sequence[Output] = ()) -> None:
@@ -98,12 +107,18 @@ def test_what_needs_no_subscription_does_not_wait_for_one(bench: Bench) -> None:
 
 
 def test_alerts_carry_when_they_were_published(bench: Bench) -> None:
-    outputs = bench.weigh(350, 350)
-    ((topic, payload),) = bench.publisher.alerts(outputs)
+    entries = [Message(START, *weighing(n, START + n, 350)) for n in (1, 2)]
+    folded = bench.fold(*entries)
+    ((topic, known, payload, evidence, cause),) = folded.alerts
     assert topic == f"{ROOT}/alert/net-weight/1/1"
     assert "published" not in json.loads(payload)
+    assert known == json.loads(payload)["id"]
+    shown = json.loads(evidence)
+    assert shown["first"] == [START + 1]
+    assert shown["z"] == [pytest.approx(10 / (2 / 2**0.5))]
+    assert cause == 1, "the second completed the subgroup"
     bench.now += 5 * SECOND
-    bench.publish(outputs)
+    bench.publish(folded.outputs)
     (alert,) = [body for topic, body, _ in bench.link.said if topic.startswith("alert")]
     assert alert.pop("published") == format_time(bench.now)
     assert alert == json.loads(payload)
@@ -111,7 +126,7 @@ def test_alerts_carry_when_they_were_published(bench: Bench) -> None:
 
 def test_only_so_many_alerts_are_under_way(bench: Bench) -> None:
     for place in range(3_000):
-        bench.outbox.add(place, f"{ROOT}/alert/{place}", b'{"time": "x"}')
+        bench.outbox.extend([(place, f"{ROOT}/alert/{place}", b'{"time": "x"}')])
     bench.publish()
     bench.publish()
     assert bench.link.topics("alert") == [f"alert/{n}" for n in range(1_000)]
@@ -172,3 +187,26 @@ def test_the_farewell_and_the_will_say_that_nobody_watches(bench: Bench) -> None
     bench.link.accepted = False
     bench.publisher.farewell(bench.link, bench.now)
     assert len(bench.link.said) == 1, "who was never let in says nothing"
+
+
+def test_what_is_kept_of_a_stream_goes_with_it(bench: Bench) -> None:
+    bench.connect()
+    bench.publish(bench.weigh(340, 340, 350, 350, 350, 350))  # more to say, but not at once
+    bench.link.said.clear()
+    folded = bench.fold(Configured(bench.now, Plan(())))
+    assert Gone("net-weight", (("head", "1"), ("lane", "1"))) in folded.outputs
+    bench.publish(folded.outputs)
+    (withdrawn, clear) = bench.link.said
+    assert (withdrawn[0], withdrawn[1]["event"]) == ("alert/net-weight/1/1", "withdrawn")
+    assert clear == ("standing/net-weight/1/1", {}, True)
+    bench.now += 2 * EVERY
+    bench.publish()
+    assert bench.link.topics("standing") == ["standing/net-weight/1/1"], "it came back"
+
+
+def test_health_tells_of_lost_sessions(bench: Bench) -> None:
+    bench.connect()
+    bench.fold(Connected(bench.now, False))
+    bench.publish()
+    (health,) = [body for topic, body, _ in bench.link.said if topic == "health"]
+    assert health["sessions_lost"] == 1

@@ -125,9 +125,7 @@ LOCATION: dict[Chart, tuple[Statistic, Callable[[int], float]]] = {
 @given(subgroups)
 def test_limits_of_a_centre_move_with_the_size(chart: Chart, sizes: list[list[float]]) -> None:
     statistic, error = LOCATION[chart]
-    for values, (row,) in zip(
-        sizes, rows_of(shewhart(chart=chart, width=2.5), sizes), strict=True
-    ):
+    for values, (row,) in zip(sizes, rows_of(shewhart(chart=chart, width=2.5), sizes), strict=True):
         reach = 2.5 * error(len(values))
         assert (row.chart, row.statistic, row.centre) == (chart, chart, MEAN)
         assert row.value == pytest.approx(statistic(values), abs=1e-9)
@@ -196,9 +194,7 @@ def test_an_ewmas_limits_follow_the_variance_of_all_its_points(
         average = MEAN + sum(
             w * (statistics.fmean(v) - MEAN) for w, v in zip(weights, since, strict=True)
         )
-        variance = sum(
-            (w * mean_error(len(v))) ** 2 for w, v in zip(weights, since, strict=True)
-        )
+        variance = sum((w * mean_error(len(v))) ** 2 for w, v in zip(weights, since, strict=True))
         if asymptotic:
             variance = mean_error(len(values)) ** 2 * lam / (2 - lam)
         reach = width * math.sqrt(variance)
@@ -227,9 +223,7 @@ def pattern(points: int, length: int, met: Callable[[int, int], str | None]) -> 
     return found
 
 
-def expected_rules(
-    plan: RulePlan, values: list[float], errors: list[float]
-) -> list[str | None]:
+def expected_rules(plan: RulePlan, values: list[float], errors: list[float]) -> list[str | None]:
     """The rule at every point, from all points at once."""
     z = [(value - MEAN) / error for value, error in zip(values, errors, strict=True)]
     sides = [(value > MEAN) - (value < MEAN) for value in values]
@@ -242,7 +236,7 @@ def expected_rules(
 
     def trend(start: int, end: int) -> str | None:
         steps = {(b > a) - (b < a) for a, b in pairwise(values[start:end])}
-        return {(1,): "trend-up", (-1,): "trend-down"}.get(tuple(steps))
+        return "trend-up" if steps == {1} else "trend-down" if steps == {-1} else None
 
     def alternation(start: int, end: int) -> str | None:
         steps = [(b > a) - (b < a) for a, b in pairwise(z[start:end])]
@@ -327,7 +321,9 @@ def test_an_alert_shows_the_limits_of_its_own_point() -> None:
     watching = engine(replace(plan, subgroup=ByWindow(WINDOW * SECOND)))
     raised = events(fold(watching, entries_of(sizes)))
     assert [e["event"] for e in raised] == ["raised"]
-    assert raised[0]["statistic"]["upper"] == pytest.approx(MEAN + 2 * mean_error(4))
+    statistic = raised[0]["statistic"]
+    assert statistic is not None
+    assert statistic["upper"] == pytest.approx(MEAN + 2 * mean_error(4))
 
 
 @pytest.mark.parametrize("last", [1, 8])

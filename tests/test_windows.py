@@ -256,7 +256,7 @@ def test_a_window_is_given_its_time_by_the_gauges_own_clock(skew: int) -> None:
 def test_what_an_outage_held_back_is_not_cut_short() -> None:
     watching = engine(windowed(10 * SECOND))
     before = [taken(at, float(at)) for at in range(0, 30, 5)]
-    outage = [Disconnected(START + 40 * TENTH), Connected(START + 6_000 * TENTH, True)]
+    outage: list[Entry] = [Disconnected(START + 40 * TENTH), Connected(START + 6_000 * TENTH, True)]
     backlog = [taken(at, float(at), arrival=6_000 + at // 100) for at in range(30, 6_000, 5)]
     outputs = fold(watching, [*before, *outage, *backlog])
     assert [o for o in outputs if isinstance(o, SetAside)] == []
@@ -293,7 +293,10 @@ def test_a_tick_that_did_nothing_is_no_word_from_the_line() -> None:
     closed = []
     for ticks in ([], [tick(75)]):
         watching = engine(windowed(10 * SECOND))
-        outage = [Disconnected(START + 78 * TENTH), Connected(START + 500 * TENTH, True)]
+        outage: list[Entry] = [
+            Disconnected(START + 78 * TENTH),
+            Connected(START + 500 * TENTH, True),
+        ]
         fold(watching, [taken(70), *ticks, *outage])
         closed.append(watching.next_deadline())
     assert closed == [START + 520 * TENTH] * 2
