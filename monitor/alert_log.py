@@ -74,11 +74,12 @@ def _only(db: sqlite3.Connection, wanted: str) -> str:
     known = [str(each) for (each,) in db.execute(recent, (_RECENT,))]
     if not known:
         raise NoSuchAlertError("the journal holds no alerts")
-    short = {each[: len(digits)]: each for each in reversed(known)}
-    close = [short[each] for each in difflib.get_close_matches(digits, short, _MOST)]
-    what = f"no alert's id begins with {wanted.strip()!r}"
+    what, close = f"no alert's id begins with {wanted.strip()!r}", []
     if len(digits) < SHORTEST:
         what = f"{wanted!r} is too short: an alert is named by {SHORTEST} digits of its id or more"
+    else:
+        short = {each[: len(digits)]: each for each in reversed(known)}
+        close = [short[each] for each in difflib.get_close_matches(digits, short, _MOST)]
     listed = close or known[:_MOST]
     raise NoSuchAlertError(
         f"{what}; {'similar ones' if close else 'the latest'}:"

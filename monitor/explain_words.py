@@ -47,7 +47,7 @@ def lines(told: Explanation) -> Iterator[str]:
         if rung is not None and told.working is not None:
             yield from _entry("Worked out", *_worked_out(told, told.working, rung))
             yield ""
-            yield from _Table(told.working, rung, event["statistic"], told.plan.unit).lines()
+            yield from _Table(told.working, rung, told.plan.unit).lines()
             yield ""
             yield from _entry("It rang", *_it_rang(told.working, rung, told.plan.unit))
         yield from _entry("Began", *_began(event))
@@ -152,8 +152,12 @@ def _rule(rule: RulePlan) -> str:
             return f"outside{width}"
         case "zone":
             return f"zone {rule.count} of {rule.of} beyond{width}"
+        case "stratification":
+            return f"stratification of {rule.length} within{width}"
+        case "mixture":
+            return f"mixture of {rule.length} beyond{width}"
         case _:
-            return f"{rule.rule} of {rule.length}{width}"
+            return f"{rule.rule} of {rule.length}"
 
 
 def _worked_out(told: Explanation, working: Working, rung: Rung) -> Iterator[str]:
@@ -207,15 +211,11 @@ def _worked_out(told: Explanation, working: Working, rung: Rung) -> Iterator[str
 class _Table:
     """The steps that made it ring, some before and those after."""
 
-    def __init__(self, working: Working, rung: Rung, statistic: object, unit: str) -> None:
+    def __init__(self, working: Working, rung: Rung, unit: str) -> None:
         self._working, self._rung, self._unit = working, rung, unit
-        rang = working.rang
-        limit = rang.upper if rung.sign > 0 else rang.lower
         places = max(0, 1 - math.floor(math.log10(rung.error(rung.subgroup["size"]))))
-        while (
-            limit is not None
-            and f"{rang.value:.{places}f}" == f"{limit:.{places}f}"
-            and places < _MOST_PLACES
+        while places < _MOST_PLACES and any(
+            step.counts and _look_equal(step, rung.sign, places) for step in working.steps
         ):
             places += 1
         self._places = places
@@ -290,6 +290,12 @@ class _Table:
         return text[11:23] if same else f"{text[:10]} {text[11:23]}"
 
 
+def _look_equal(step: Step, sign: int, places: int) -> bool:
+    """Whether so few decimals hide on which side of its limit a value lies."""
+    limit = step.upper if sign > 0 else step.lower
+    return limit not in (None, step.value) and f"{step.value:.{places}f}" == f"{limit:.{places}f}"
+
+
 def _it_rang(working: Working, rung: Rung, unit: str) -> Iterator[str]:
     rang, said, counted = working.rang, rung.statistic, sum(s.counts for s in working.steps)
     unit, scheme = _unit(unit), rung.detector.scheme
@@ -313,7 +319,7 @@ def _met(rule: RulePlan | None, name: str, counted: int, held: str, against: str
         return f"when the {name} was {against}"
     if rule.rule == "zone":
         return f"when {counted} of the last {rule.of} {name}s lay beyond: the newest {against}"
-    return f"when {rule.length} {name}s in a row made a {rule.rule}: the newest {held}"
+    return f"when {rule.length} {name}s in a row met the rule: the newest {held}"
 
 
 def _began(event: AlertEvent) -> Iterator[str]:
@@ -321,9 +327,11 @@ def _began(event: AlertEvent) -> Iterator[str]:
     if shift is None:
         return
     earliest = shift["onset_from"]
-    since = "before what is looked back at" if earliest is None else _moment(earliest)
     yield f"most likely at {_moment(shift['onset'])}"
-    yield f"nine times in ten between {since} and {_moment(shift['onset_to'])}"
+    if earliest is None:
+        yield f"nine times in ten before {_moment(shift['onset_to'])}; how long before is not known"
+    else:
+        yield f"nine times in ten between {_moment(earliest)} and {_moment(shift['onset_to'])}"
     yield (
         f"the mean moved by about {shift['estimate']:.3g}{_unit(shift['unit'])}; "
         "such an estimate runs some 12 % high"

@@ -16,7 +16,9 @@ NANOSECONDS = 1_000
 _MOST = 2_000
 _MOST_BYTES = 8 << 20
 _PATIENCE = 2 * SECOND
-"""How long nothing comes from a broker that has nothing more to send again."""
+"""How long nothing comes from a broker that waits, or has nothing more to send again."""
+_LONGEST = 60 * SECOND
+"""How long after a reconnect something may be sent again, however much is new on other topics."""
 
 
 class Arrival:
@@ -50,6 +52,7 @@ class Intake:
         "_acknowledge",
         "_bytes",
         "_came",
+        "_connected",
         "_entries",
         "_heard",
         "_now",
@@ -65,7 +68,7 @@ class Intake:
         self._acknowledge: list[int] = []
         self._came: list[tuple[Message, bool]] = []
         self._bytes = 0
-        self._heard: float = math.inf
+        self._connected = self._heard = math.inf
         self.holding = False
         """Whether it takes more messages, or quiet, to tell what is new of those that came."""
         self.unsafe = 0
@@ -82,8 +85,7 @@ class Intake:
             self._acknowledge.append(packet)
             if self._resends.matching:
                 self._came.append((message, dup))
-                if self._resends.expects(topic):
-                    self._heard = message.time
+                self._heard = message.time
         elif not retain:
             self.unsafe += 1
 
@@ -91,7 +93,7 @@ class Intake:
         """Something else happened that moves state."""
         self._entries.append(entry)
         if isinstance(entry, Connected):
-            self._heard = entry.time
+            self._connected = self._heard = entry.time
 
     def full(self) -> bool:
         """Whether the batch is large enough: brokers differ in whether they bound it."""
@@ -100,14 +102,19 @@ class Intake:
     def take(self) -> tuple[list[Recorded], list[int]]:
         """The batch and its acknowledgements; both start again empty.
 
-        What was journaled before is only acknowledged. Nothing is given while ``holding``.
+        What was journaled before is only acknowledged. While ``holding``, what follows the first
+        message of which that cannot be told yet is left for later.
         """
-        again = self._sent_again()
-        self.holding = again is None
-        if again is None:
-            return [], []
-        entries, acknowledge = self._entries, self._acknowledge
-        self._entries, self._acknowledge, self._came, self._bytes = [], [], [], 0
+        entries, acknowledge, came = self._entries, self._acknowledge, self._came
+        again, told = self._sent_again() if self._resends.matching else ([], len(came))
+        self.holding = told < len(came)
+        self._entries, self._acknowledge, self._came = [], [], came[told:]
+        if self.holding:
+            first = came[told][0]
+            at = next(n for n, each in enumerate(entries) if each is first)
+            entries, self._entries = entries[:at], entries[at:]
+            acknowledge, self._acknowledge = acknowledge[:told], acknowledge[told:]
+        self._weigh()
         if again:
             known = {id(message) for message in again}
             entries = [each for each in entries if id(each) not in known]
@@ -118,13 +125,17 @@ class Intake:
         self._acknowledge.clear()
         self._came.clear()
         self._entries = [e for e in self._entries if not (isinstance(e, Message) and e.qos)]
-        self._bytes = sum(len(e.payload) for e in self._entries if isinstance(e, Message))
-        self._heard, self.holding = math.inf, False
+        self._weigh()
+        self._connected = self._heard = math.inf
+        self.holding = False
 
-    def _sent_again(self) -> list[Message] | None:
-        if not self._resends.matching:
-            return []
-        quiet = self._now() - self._heard >= _PATIENCE
-        if not (self._came or quiet):
-            return []
-        return self._resends.again(self._came, quiet=quiet, full=self.full())
+    def _weigh(self) -> None:
+        self._bytes = sum(len(e.payload) for e in self._entries if isinstance(e, Message))
+
+    def _sent_again(self) -> tuple[list[Message], int]:
+        resends, came, now = self._resends, self._came, self._now()
+        quiet, late = now - self._heard >= _PATIENCE, now - self._connected >= _LONGEST
+        told = resends.again(came, final=quiet or late or self.full())
+        if late or (quiet and not came):
+            resends.nothing_more()
+        return told

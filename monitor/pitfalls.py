@@ -133,13 +133,15 @@ def _gaps(plan: CharacteristicPlan, subgroup: ByCount) -> Iterator[Found]:
     spacing = many / rate
     if gap / times.SECOND >= 2 * spacing:
         return
-    of = f"{many} streams'" if many > 1 else "the"
-    usual = f"{of} usual {spans.short(spacing)} from reading to reading"
-    what = "subgroup is given up" if subgroup.size > 1 else "moving range is left blank"
+    of = f" of one stream, if there are {many}" if many > 1 else ""
+    usual = f"the usual {spans.short(spacing)} between readings{of}"
+    single = subgroup.size == 1
     if gap / times.SECOND <= spacing:
-        wrong = f"is not longer than {usual}: nearly every {what}"
+        lost = "moving range is left blank" if single else "subgroup is given up"
+        wrong = f"is not longer than {usual}: nearly every {lost}"
     else:
-        wrong = f"is less than twice {usual}: at every reading that is missing a {what}"
+        lost = "leaves a moving range blank" if single else "gives a subgroup up"
+        wrong = f"is less than twice {usual}: one that is missing {lost}"
     instead = f"write {spans.short(3 * spacing)} or more, or leave max_gap out"
     yield "subgroup.max_gap", wrong, instead
 

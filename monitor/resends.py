@@ -1,9 +1,9 @@
 """Which of the messages that come after a reconnect were journaled before.
 
 Knows the messages whose acknowledgement the broker may not have, in order. Must not know sockets,
-files or readings. What the broker sends again it sends first, all of it, and in the order of its
-topic (MQTT 3.1.1, section 4.6), so what is to be recognised of a topic is a run: the longest end of
-what was journaled that equals the beginning of what comes.
+files or readings. What the broker sends again of a topic it sends before what is new there, all of
+it, and in its order (MQTT 3.1.1, section 4.6), so what is to be recognised is a run: the longest
+end of what was journaled that equals the beginning of what comes.
 """
 
 from __future__ import annotations
@@ -14,6 +14,7 @@ from collections.abc import Iterable, Sequence
 from monitor.entries import Message, Recorded
 
 _MOST = 65_535  # unacknowledged messages differ in their packet identifiers, of 16 bits
+_TELLING = 8  # values in a row that are hardly the same by chance
 
 Came = tuple[Message, bool]
 """A message and its DUP."""
@@ -54,10 +55,6 @@ class Resends:
         """Whether what comes next may have come before."""
         return bool(self._runs)
 
-    def expects(self, topic: str) -> bool:
-        """Whether what comes next on this topic may have come before."""
-        return topic in self._runs
-
     def journaled(self, position: int, entries: Iterable[Recorded]) -> None:
         """Entries became durable, the first at ``position``; the broker may not know yet."""
         for at, entry in enumerate(entries, position):
@@ -91,7 +88,7 @@ class Resends:
         """
         expected = [message for _, message in self._unproven]
         expected += [e for e in folded if isinstance(e, Message) and e.qos]
-        self._new_from_now_on()
+        self.nothing_more()
         for place, message in enumerate(expected):
             self._runs.setdefault(message.topic, []).append(message.payload)
             self._by_packet[message.packet] = place, message
@@ -101,25 +98,24 @@ class Resends:
 
     def session_gone(self) -> None:
         """The broker remembers nothing of ours: whatever comes is new."""
-        self._new_from_now_on()
+        self.nothing_more()
         self._unproven.clear()
 
-    def again(self, came: Sequence[Came], *, quiet: bool, full: bool) -> list[Message] | None:
-        """Those of the messages that came next which were journaled before.
+    def nothing_more(self) -> None:
+        """Whatever comes from now on is new."""
+        self._runs.clear()
+        self._by_packet.clear()
 
-        None where only what follows can tell: then ask again with it. ``quiet`` says that nothing
-        follows, ``full`` that no more can be waited for.
+    def again(self, came: Sequence[Came], *, final: bool) -> tuple[list[Message], int]:
+        """Those of the messages that came next which were journaled before; and how many of the
+        messages that is said of.
+
+        Of the others only what follows can tell: ask again with it, or ``final`` where no more can
+        be waited for.
         """
         if self._keeps is None and came:
             self._keeps = self._keeps_identifiers(*came[0])
-        found = self._by_identifier(came) if self._keeps else self._by_content(came, quiet, full)
-        if quiet:
-            self._new_from_now_on()
-        return found
-
-    def _new_from_now_on(self) -> None:
-        self._runs.clear()
-        self._by_packet.clear()
+        return self._by_identifier(came) if self._keeps else self._by_content(came, final)
 
     def _keeps_identifiers(self, first: Message, dup: bool) -> bool:
         """Whether this broker sends again as MQTT demands: with DUP, under the old identifiers
@@ -136,36 +132,43 @@ class Resends:
         same = known and (known.topic, known.payload) == (message.topic, message.payload)
         return place if same else None
 
-    def _by_identifier(self, came: Sequence[Came]) -> list[Message]:
+    def _by_identifier(self, came: Sequence[Came]) -> tuple[list[Message], int]:
         last = -1
         for count, (message, dup) in enumerate(came):
             place = self._place(message) if dup else None
             if place is None or place <= last:
-                self._new_from_now_on()
-                return [each for each, _ in came[:count]]
+                self.nothing_more()
+                return [each for each, _ in came[:count]], len(came)
             last = place
-        return [each for each, _ in came]
+        return [each for each, _ in came], len(came)
 
-    def _by_content(self, came: Sequence[Came], quiet: bool, full: bool) -> list[Message] | None:
-        by_topic: dict[str, list[Message]] = {}
+    def _by_content(self, came: Sequence[Came], final: bool) -> tuple[list[Message], int]:
+        by_topic: dict[str, list[bytes]] = {}
         for message, _ in came:
             if message.topic in self._runs:
-                by_topic.setdefault(message.topic, []).append(message)
-        found: list[Message] = []
-        left: dict[str, list[bytes]] = {}
-        for topic, messages in by_topic.items():
+                by_topic.setdefault(message.topic, []).append(message.payload)
+        again: dict[str, list[bytes]] = {}
+        for topic, payloads in by_topic.items():
             run = self._runs[topic]
-            count, within = _end_that_begins(run, [each.payload for each in messages])
-            if within is not None and not quiet:
-                if not full:
-                    return None
-                count = len(messages)  # so many do not agree by chance
-                left[topic] = run[within + count :]
-            found += messages[:count]
-        for topic in by_topic:
-            del self._runs[topic]
-        self._runs |= left
-        return found
+            count, within = _end_that_begins(run, payloads)
+            if within is None or (final and len(payloads) < _TELLING):
+                again[topic] = run[len(run) - count :]
+            elif final:
+                # The broker waits for acknowledgements before it sends the rest.
+                again[topic] = run[within:]
+        open_topics = by_topic.keys() - again.keys()
+        told = next((n for n, (each, _) in enumerate(came) if each.topic in open_topics), len(came))
+        found: list[Message] = []
+        for message, _ in came[:told]:
+            if again.get(message.topic):
+                found.append(message)
+                del again[message.topic][0]
+        for topic, left in again.items():
+            if left:
+                self._runs[topic] = left
+            else:
+                del self._runs[topic]
+        return found, told
 
 
 def _end_that_begins(ours: Sequence[bytes], theirs: Sequence[bytes]) -> tuple[int, int | None]:

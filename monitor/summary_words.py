@@ -184,7 +184,8 @@ class _Speaker:
         yield f"all readings of one stream in each {_duration(window)} of UTC"
         if least > 1:
             yield f"given up where they are fewer than {least}"
-        yield f"the limits below are for {readings} readings: more narrow them, fewer widen them"
+        shown = "a single reading" if readings == 1 else f"{readings} readings"
+        yield f"the limits below are for {shown}; they move with the number"
 
     def _count(self) -> Iterator[str]:
         subgroup = self._plan["subgroup"]

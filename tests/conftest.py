@@ -9,8 +9,13 @@ import os
 from collections.abc import Callable, Iterator
 from pathlib import Path
 
+import hypothesis
 import pytest
 from brokers import Broker, Client, Daemon, Embedded, Mosquitto, mosquitto_path
+
+# How long an example takes says more of the machine than of the code.
+hypothesis.settings.register_profile("untimed", deadline=None)
+hypothesis.settings.load_profile("untimed")
 
 BROKERS = ["embedded", "mosquitto"] if mosquitto_path() else ["embedded"]
 

@@ -116,7 +116,7 @@ def test_what_died_with_its_connection_takes_no_room() -> None:
 # ── what is sent again ───────────────────────────────────────────────────────────────────────────
 
 
-def value(text: bytes, packet: int = 0) -> Message:
+def value(text: bytes, packet: int = 500) -> Message:
     return Message(0, "a", text, qos=1, packet=packet)
 
 
@@ -164,9 +164,9 @@ def test_what_cannot_be_told_is_new_once_nothing_follows() -> None:
     started: Recorded = Started(0)
     resumed.intake.note(started)
     resumed.come(b"1")
-    assert resumed.taken() == []
+    assert resumed.intake.take() == ([started], []), "what came before waits for nothing"
     resumed.clock.at += 10 * MICRO
-    assert resumed.intake.take()[0] == [started, Message(1, "a", b"1", qos=1, packet=1_000)]
+    assert resumed.intake.take() == ([Message(1, "a", b"1", qos=1, packet=1_000)], [1_000])
 
 
 def test_nothing_is_held_for_what_never_comes_again() -> None:
@@ -188,6 +188,29 @@ def test_a_broker_that_answers_late_is_waited_for() -> None:
     resumed.intake.take()
     resumed.come(b"3")
     assert resumed.taken() == []
+
+
+def test_what_stands_before_it_is_taken_and_acknowledged() -> None:
+    # The broker may send no more before it has acknowledgements, and wants them in order.
+    resumed = Resumed(b"1", b"2", b"1", b"3")
+    resumed.clock.at = 5
+    resumed.intake.message("b", b"7", False, 1, 1, False)
+    resumed.come(b"1")
+    resumed.intake.message("b", b"8", False, 1, 2, False)
+    assert resumed.intake.take() == ([Message(5, "b", b"7", qos=1, packet=1)], [1])
+    assert resumed.intake.holding
+    resumed.come(b"3")
+    assert resumed.intake.take() == ([Message(6, "b", b"8", qos=1, packet=2)], [1_000, 2, 1_001])
+
+
+def test_much_that_is_new_elsewhere_does_not_put_it_off_for_ever() -> None:
+    resumed = Resumed(b"1", b"2", b"3")
+    resumed.intake.note(Connected(1, True))
+    for _ in range(100):
+        resumed.clock.at += MICRO
+        resumed.intake.message("b", b"7", False, 1, 1, False)
+        resumed.intake.take()
+    assert not resumed.resends.matching
 
 
 def test_what_is_held_dies_with_its_connection_too() -> None:

@@ -49,14 +49,30 @@ def test_nothing_bites(warn: Warn) -> None:
     ("topic", "gap", "said"),
     [
         # six a minute: ten seconds from reading to reading
-        ("a", "5s", "is not longer than the usual 10 s from reading to reading: nearly every subg"),
+        (
+            "a",
+            "5s",
+            "is not longer than the usual 10 s between readings: nearly every subgroup is g",
+        ),
         ("a", "10s", "is not longer than the usual 10 s"),
-        ("a", "15s", "is less than twice the usual 10 s from reading to reading: at every reading"),
+        (
+            "a",
+            "15s",
+            "is less than twice the usual 10 s between readings: one that is missing gives",
+        ),
         ("a", "20s", None),
         # nobody writes a stream key for a single stream
-        ("{a}", "20s", "is not longer than 2 streams' usual 20 s"),
+        (
+            "{a}",
+            "20s",
+            "is not longer than the usual 20 s between readings of one stream, if there are 2",
+        ),
         ("{a}", "40s", None),
-        ("{a}/{b}", "60s", "is less than twice 4 streams' usual 40 s"),
+        (
+            "{a}/{b}",
+            "60s",
+            "is less than twice the usual 40 s between readings of one stream, if there are 4",
+        ),
         ("{a}/{b}", "80s", None),
     ],
 )
@@ -77,7 +93,7 @@ def test_max_gap_of_streams_that_are_named(warn: Warn) -> None:
     source = {"topic": "{a}", "expected_rate": "6/min"}
     found = warn(source, subgroup={"size": 5, "max_gap": "60s"}, baseline={"by_stream": own})
     _, wrong, instead = one(found)
-    assert wrong.startswith("is not longer than 6 streams' usual 60 s")
+    assert wrong.startswith("is not longer than the usual 60 s between readings of one stream, if")
     assert instead == "write 3 min or more, or leave max_gap out"
 
 
@@ -86,6 +102,9 @@ def test_max_gap_matters_to_moving_ranges_but_not_to_single_readings(warn: Warn)
     assert warn(source, subgroup=subgroup) == []
     ranges = [{"kind": "shewhart", "chart": "moving_range", "width": 9}]
     assert "moving range is left blank" in one(warn(source, subgroup=subgroup, detectors=ranges))[1]
+    subgroup["max_gap"] = "15s"
+    found = one(warn(source, subgroup=subgroup, detectors=ranges))
+    assert "missing leaves a moving range blank" in found[1]
 
 
 def test_max_gap_without_a_rate(warn: Warn) -> None:

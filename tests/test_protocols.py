@@ -29,19 +29,33 @@ def certificates(tmp_path_factory: pytest.TempPathFactory) -> Path:
     """An authority, and a server's and a client's certificate that it signed."""
     folder = tmp_path_factory.mktemp("certificates")
     openssl(
-        folder, *["req", "-x509", "-newkey", "rsa:2048", "-nodes", "-days", "2", "-subj", "/CN=authority"],
-        "-keyout", "ca.key", "-out", "ca.pem",
-    )  # fmt: skip
+        folder,
+        *["req", "-x509", "-newkey", "rsa:2048", "-nodes", "-days", "2", "-subj", "/CN=authority"],
+        "-keyout",
+        "ca.key",
+        "-out",
+        "ca.pem",
+    )
     (folder / "names").write_text("subjectAltName=DNS:localhost,IP:127.0.0.1\n")
     for name in ("server", "client"):
         openssl(
-            folder, *f"req -newkey rsa:2048 -nodes -subj /CN={name}".split(),
-            "-keyout", f"{name}.key", "-out", f"{name}.csr",
-        )  # fmt: skip
+            folder,
+            *f"req -newkey rsa:2048 -nodes -subj /CN={name}".split(),
+            "-keyout",
+            f"{name}.key",
+            "-out",
+            f"{name}.csr",
+        )
         openssl(
-            folder, *["x509", "-req", "-days", "2", "-CA", "ca.pem", "-CAkey", "ca.key", "-CAcreateserial"],
-            "-extfile", "names", "-in", f"{name}.csr", "-out", f"{name}.pem",
-        )  # fmt: skip
+            folder,
+            *["x509", "-req", "-days", "2", "-CA", "ca.pem", "-CAkey", "ca.key", "-CAcreateserial"],
+            "-extfile",
+            "names",
+            "-in",
+            f"{name}.csr",
+            "-out",
+            f"{name}.pem",
+        )
     return folder
 
 
@@ -121,9 +135,13 @@ def test_a_broker_that_another_authority_vouches_for_is_refused(
         }
     )
     openssl(
-        tmp_path, *["req", "-x509", "-newkey", "rsa:2048", "-nodes", "-days", "2", "-subj", "/CN=stranger"],
-        "-keyout", "x.key", "-out", "stranger.pem",
-    )  # fmt: skip
+        tmp_path,
+        *["req", "-x509", "-newkey", "rsa:2048", "-nodes", "-days", "2", "-subj", "/CN=stranger"],
+        "-keyout",
+        "x.key",
+        "-out",
+        "stranger.pem",
+    )
     tls = {"ca": str(tmp_path / "stranger.pem")}
     daemon = Daemon(tmp_path, secured, configuration(host="localhost", port=secured, tls=tls))
     process = subprocess.Popen(

@@ -335,7 +335,7 @@ def test_windows(capsys: pytest.CaptureFixture[str], tmp_path: Path) -> None:
     for answer in [
         "MQTT 5: it keeps messages for us while we are away, up to 36h",
         "all readings of one stream in each 1min of UTC given up where they are fewer than 3",
-        "the limits below are for 12 readings: more narrow them, fewer widen them",
+        "the limits below are for 12 readings; they move with the number",
         "at 12 readings a minute: about 12 of one stream in each window",
         # c4 of 12 is 0.9776, c5 0.2107 (ISO 7870-2): 2 · 0.9776, and ± 5 · 0.2107 · 2
         "standard deviation of 12, centre 1.96 g, limits 0.00 to 4.06 g",

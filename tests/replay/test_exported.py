@@ -79,3 +79,12 @@ def test_a_characteristic_of_a_stretch_does(stopped: Launched, tmp_path: Path) -
 
 def test_the_journal_itself_does(stopped: Launched) -> None:
     assert replayed(stopped.configuration, stopped.journal) == live(stopped, 0)
+
+
+def test_its_alerts_are_explained(stopped: Launched) -> None:
+    raised = [each for each in live(stopped, 0) if each["event"] == "raised"]
+    for event in raised[:: max(1, len(raised) // 5)]:
+        told = json.loads(driftbell("explain", stopped.journal, event["id"], "--json").stdout)
+        assert (told["source"], told["agrees"]) == ("entries", "exactly")
+        assert told["rang"]["value"] == event["statistic"]["value"]
+        assert told["judged_by"]["unchanged"] is True
