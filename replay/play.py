@@ -173,7 +173,9 @@ class _Player:
         played.counts = engine.counts
         self._before = self._numbers()
         if state.plan != self._plan:
-            self._compare(state.plan, recording, number, ", and what it judges otherwise afresh")
+            self._compare(
+                state.plan, recording, number, ", and what it judges otherwise starts afresh"
+            )
             outputs = engine.fold(Configured(state.time, self._plan))
             self._take(outputs, recording, number)
 

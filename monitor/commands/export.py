@@ -81,7 +81,7 @@ def main(args: argparse.Namespace) -> int:
     if args.json:
         print(json.dumps(told.as_json(), indent=2))
     else:
-        print(told.in_words(), file=sys.stderr)
+        print(told.in_words(args.since), file=sys.stderr)
     return DONE
 
 
@@ -124,11 +124,13 @@ class _Told:
             **{name: None if at is None else format_time(at) for name, at in times.items()},
         }
 
-    def in_words(self) -> str:
+    def in_words(self, since: int | None) -> str:
         parts = [f"{self.entries:,} entries"]
         if self.first is not None and self.last is not None:
             parts = [f"{parts[0]}, {format_time(self.first)} to {format_time(self.last)}"]
         if self.state is not None:
+            if since is None or self.state >= since:
+                parts.append("the journal reaches back no further")
             at = format_time(self.state)
             parts.append(f"before them, what was remembered of all that came until {at}")
         return "; ".join(parts)

@@ -179,6 +179,16 @@ def test_a_stretch_says_what_it_begins_with(tmp_path: Path) -> None:
     )
 
 
+def test_a_pruned_journal_says_how_far_it_reaches(tmp_path: Path) -> None:
+    day = journals.day(seed=1)
+    path = journals.write(tmp_path / "j.db", day, (100,), dropped=99)
+    for words in ([], ["--since", format_time(day[50].time)]):
+        done = driftbell("export", path, *words, "--to", tmp_path / "x.jsonl")
+        said = done.stderr.decode()
+        assert said.startswith(f"{len(day) - 100} entries, {format_time(day[100].time)} to ")
+        assert "; the journal reaches back no further; before them, what was remembered" in said
+
+
 def test_one_characteristic(tmp_path: Path) -> None:
     day = journals.day(seed=1)
     path = journals.write(tmp_path / "j.db", day)

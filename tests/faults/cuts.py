@@ -94,7 +94,7 @@ PLACES: dict[str, Callable[[list[int]], None]] = {
     "commit-to-publication": lambda left: _before(Link, "publish", _is_alert, left),
     "acknowledgement-to-publication": lambda left: _before(Link, "publish", _has_written, left),
     "publication-to-its-acknowledgement": lambda left: _before(Pipeline, "taken", _was_alert, left),
-    "farewell": lambda left: _before(Keeper, "settle", lambda _: True, left),
+    "farewell": lambda left: _before(Keeper, "settle", lambda *_: True, left),
 }
 
 if __name__ == "__main__":

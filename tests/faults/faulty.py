@@ -41,12 +41,14 @@ class Faulty(Launched):
     ) -> None:
         super().__init__(folder, port, configuration)
         self.log.touch()
+        self._log_before = 0
         self.environment: dict[str, str] = {}
         self.cut: tuple[str, int] | None = None
         """(place, how often it is passed before the process kills itself there); see cuts.py."""
 
     def launch(self, *, stderr: int | None = None) -> subprocess.Popen[bytes]:
         """Start it, and return at once."""
+        self._log_before = self.log.stat().st_size
         words = ["-m", "monitor"] if self.cut is None else [str(CUTS), *map(str, self.cut)]
         with self.log.open("ab") as log:
             self.process = subprocess.Popen(
@@ -60,10 +62,17 @@ class Faulty(Launched):
 
     def online(self) -> Self:
         """Launch it, and return once it is subscribed."""
-        before = len(self.logged("connected"))
         self.launch()
-        self.await_logged("connected", before + 1)
+        self.await_online()
         return self
+
+    def await_online(self) -> None:
+        """Wait until the process that was launched last is subscribed."""
+
+        def subscribed() -> bool:
+            return b'"connected"' in self.log.read_bytes()[self._log_before :]
+
+        until(subscribed, "it is subscribed", self.is_running)
 
     def signal(self, number: int) -> None:
         """Send its process a signal."""
@@ -279,6 +288,7 @@ def check_complete(daemon: Faulty, watcher: Watcher, published: Published) -> li
     The journal holds each message once, in order; consumers saw the alerts of an undisturbed replay
     of it, in order, and no (id, sequence) with two contents. Returns the alerts.
     """
+    daemon.await_online()
     daemon.await_count(len(published))
     until(lambda: not daemon.waiting(), "an empty outbox", daemon.is_running)
     assert daemon.stop() == 0, daemon.tail()

@@ -12,6 +12,7 @@ import signal
 import subprocess
 from collections.abc import Callable, Iterator
 from pathlib import Path
+from typing import Any
 
 import pytest
 import slow_disk
@@ -63,9 +64,16 @@ def acknowledged(broker: Mosquitto) -> int:
     return len(re.findall(r"Received PUBACK from driftbell-test", broker.log.read_text()))
 
 
-def check_frozen(daemon: Faulty, watcher: Watcher, broker: Mosquitto, published: Published) -> None:
+def is_frozen(health: dict[str, Any]) -> bool:
+    """Whether it says that nothing is acknowledged."""
+    return "cannot be written" in str(health["last_error"])
+
+
+def check_frozen(
+    daemon: Faulty, watcher: Watcher, broker: Mosquitto, published: Published, since: str = ""
+) -> None:
     """It says why in health, at most what is durable is acknowledged, and it stays so."""
-    said = watcher.await_health(daemon, lambda h: "cannot be written" in str(h["last_error"]))
+    said = watcher.await_health(daemon, lambda h: is_frozen(h) and h["time"] > since)
     assert said["online"], "readings still reach us"
     # Whatever it does when it is asked to live, it acknowledges nothing.
     before = acknowledged(broker)
@@ -98,8 +106,11 @@ def test_a_full_disk(
         check_frozen(daemon, watcher, broker, messages)
         if killed:
             daemon.kill()
+            before = watcher.last_health()["time"]
+            filler.unlink()
+            filler = fill(small_disk)  # also what was held back, and let go of
             daemon.online()
-            check_frozen(daemon, watcher, broker, messages)
+            check_frozen(daemon, watcher, broker, messages, before)
         filler.unlink()
         daemon.await_logged("the journal takes entries again")
         alerts = check_complete(daemon, watcher, messages)
@@ -175,7 +186,7 @@ def test_stopped_while_the_disk_is_full(
         daemon.await_count(1_000)
         filler = fill(small_disk)
         line.publish_all(messages[1_000:])
-        watcher.await_health(daemon, lambda h: "cannot be written" in str(h["last_error"]))
+        watcher.await_health(daemon, is_frozen)
         daemon.signal(signal.SIGTERM)
         until(lambda: process.poll() is not None, "its end")
         assert "Traceback" not in daemon.tail()

@@ -112,7 +112,7 @@ def test_pruned_and_exported_under_load(
 
 
 def test_a_second_daemon_under_load(broker: Broker, tmp_path: Path) -> None:
-    messages = weighings(4_000)
+    messages = weighings(30_000)
     with (
         Watcher(broker.port) as watcher,
         faulty(tmp_path / "a", broker.port, single("net-weight")) as daemon,

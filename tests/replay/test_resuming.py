@@ -106,7 +106,7 @@ def test_an_edited_title_changes_words_only(tmp_path: Path) -> None:
     ]
     assert found.notes == [
         f"{path}:1: recorded under another configuration of weight: CONFIG is used instead, "
-        "and what it judges otherwise afresh"
+        "and what it judges otherwise starts afresh"
     ]
 
 
