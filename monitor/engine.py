@@ -189,7 +189,7 @@ class Engine:
             old, new = before.pop(each.name, None), Characteristic(each)
             if old is not None:
                 new.adopt(old)
-                for state in new.streams.values():
+                for _, state in sorted(new.streams.items()):
                     outputs += state.reconfigure(each, time, counts)
                     if state.gatherer.closes() is None:
                         self._deadlines.cancel((each.name, state.keys))
@@ -206,7 +206,8 @@ class Engine:
     def _leave(self, old: Characteristic) -> list[Output]:
         """The streams that no other plan took over are no more."""
         outputs: list[Output] = []
-        for state in old.streams.values():
+        # In one order, whichever was heard of first: a restored engine does not know.
+        for _, state in sorted(old.streams.items()):
             outputs += state.leave(self._arrival, self.counts)
             self._deadlines.cancel((old.plan.name, state.keys))
             self.touched.pop(state, None)

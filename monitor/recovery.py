@@ -65,7 +65,7 @@ def restored(kept: journal.Snapshot, points: bool) -> Engine | None:
             if name not in (_ENGINE, _PLAN)
         ]
         engine.restore(orjson.loads(kept.values[_ENGINE]), streams)
-    except (ValueError, KeyError, TypeError):
+    except (ValueError, LookupError, TypeError, AttributeError):
         return None
     return engine
 

@@ -40,6 +40,8 @@ class Sent:
     """The first few lines that could not be sent: file, line, why."""
     line: int = 0
     at: int | None = None
+    stopping: bool = False
+    """Set by whoever wants it to end before its time; between two messages, it does."""
 
 
 def send(recording: Recording, publisher: Publisher, speed: float | None, sent: Sent) -> None:
@@ -67,6 +69,8 @@ def send(recording: Recording, publisher: Publisher, speed: float | None, sent: 
                 case _:
                     sent.control += 1
                     continue
+            if sent.stopping:
+                raise KeyboardInterrupt
             if speed is not None:
                 seconds = at / SECOND / speed
                 zero = time.monotonic() - seconds if zero is None else zero

@@ -60,6 +60,12 @@ def test_an_identifier_alone_proves_nothing() -> None:
     assert ask(resends, (message(b"2", 8, "b"), True)) == []
 
 
+def test_identifiers_that_come_round_again_are_new() -> None:
+    resends = reconnected([message(b"1", n) for n in (7, 8, 9)])
+    came = [(message(b"1", 9), True), (message(b"1", 7), True)]
+    assert ask(resends, *came) == [b"1"]
+
+
 def test_who_goes_on_counting_sends_nothing_again_without_dup() -> None:
     resends = reconnected([message(b"1", 7), message(b"1", 8)])
     assert ask(resends, (message(b"1", 9), False)) == []

@@ -58,13 +58,22 @@ def main(args: argparse.Namespace) -> int:
             "send a .jsonl or a .db",
             WRONG,
         )
-    # Whoever ends us wants to be told how far it came, too.
-    signal.signal(signal.SIGTERM, signal.default_int_handler)
     progress, sent = Progress(), Sent()
+
+    def stop(*_: object) -> None:
+        sent.stopping = True
+
+    def idle() -> None:
+        # Here, and not wherever a signal comes: in the middle of a message nobody could count it.
+        if sent.stopping:
+            raise KeyboardInterrupt
+        progress(lambda: _how_far(recording, sent))
+
+    # Whoever ends us wants to be told how far it came, too.
+    for number in (signal.SIGINT, signal.SIGTERM):
+        signal.signal(number, stop)
     host, port = args.broker
-    sender = Sender(
-        host, port, args.username, password, lambda: progress(lambda: _how_far(recording, sent))
-    )
+    sender = Sender(host, port, args.username, password, idle)
     started, stopped = time.monotonic(), ""
     try:
         sender.connect()
