@@ -8,8 +8,9 @@ from __future__ import annotations
 from collections.abc import Sequence
 from typing import Protocol
 
-from monitor import evidence, health, messages, times
+from monitor import health, messages, times
 from monitor.engine import Engine
+from monitor.explaining import evidence
 from monitor.health import EVERY, Health, SetAsideNotices
 from monitor.journal import AlertRow
 from monitor.messages import SCHEMA, PointMessage, RowField

@@ -11,8 +11,8 @@ from dataclasses import dataclass
 from typing import Any
 
 from monitor import runlengths
+from monitor.configuration.presets import OUTSIDE_LIMITS
 from monitor.plan import CusumPlan, EwmaPlan, Scheme, ShewhartPlan
-from monitor.presets import OUTSIDE_LIMITS
 from monitor.runlengths import RunLength
 
 

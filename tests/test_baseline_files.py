@@ -11,9 +11,9 @@ from typing import Any
 import pytest
 import yaml
 
-from monitor.config import ConfigurationError
+from monitor.configuration.config import ConfigurationError
+from monitor.configuration.resolve import read_plan
 from monitor.plan import BaselinePlan, CharacteristicPlan, Stream
-from monitor.resolve import read_plan
 
 OWN = {"head=1;lane=1": {"mean": 339, "sigma": 2}, "head=2;lane=1": {"mean": 341, "sigma": 1.5}}
 VALUES: dict[str, Any] = {"mean": 340, "sigma": 1.9, "sigma_between": 0.4, "by_stream": OWN}

@@ -25,8 +25,8 @@ from paho.mqtt.enums import CallbackAPIVersion
 from pem import needs_openssl
 
 from monitor.commandline import WRONG
+from monitor.configuration.resolve import read_plan
 from monitor.demo.broker import HOST, await_listening, free_port
-from monitor.resolve import read_plan
 from monitor.times import SECOND, format_time
 
 CONFIG = Path(__file__).parents[1] / "config"

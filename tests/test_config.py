@@ -16,11 +16,11 @@ from hypothesis import HealthCheck, given, settings
 from hypothesis import strategies as st
 from pem import make, needs_openssl
 
-from monitor.config import Config, ConfigurationError, load, load_measured
+from monitor.configuration.config import Config, ConfigurationError, load, load_measured
+from monitor.configuration.problems import Problem
+from monitor.configuration.sections.base import Section
+from monitor.configuration.sections.document import NOT_BUILT_KEYS, NOT_BUILT_VALUES, Document
 from monitor.plan import Chart
-from monitor.problems import Problem
-from monitor.sections.base import Section
-from monitor.sections.document import NOT_BUILT_KEYS, NOT_BUILT_VALUES, Document
 
 HERE = Path(__file__).parent.parent / "config"
 EXAMPLE = (HERE / "jar-line-2.yaml").read_text()

@@ -7,9 +7,9 @@ from pathlib import Path
 import pytest
 from pem import make, needs_openssl
 
-from monitor.config import ConfigurationError
+from monitor.configuration.config import ConfigurationError
+from monitor.configuration.resolve import read_settings
 from monitor.plan import BrokerPlan, TlsPlan
-from monitor.resolve import read_settings
 
 REST = """
 outputs: {root: watch/out}

@@ -17,9 +17,9 @@ from jsonschema import Draft7Validator, Draft202012Validator
 from plans import fresh, rules, shewhart, steps
 
 from monitor import describe, messages, times
+from monitor.configuration.presets import preset
 from monitor.gauge import RULES as GAUGE_RULES
 from monitor.plan import CusumPlan, EwmaPlan
-from monitor.presets import preset
 
 pytestmark = pytest.mark.xdist_group("describe")  # one run of the daemon serves them all
 

@@ -17,10 +17,10 @@ import journals
 import plans
 import pytest
 
-from monitor import presets
+from monitor.configuration import presets
 from monitor.entries import Configured, Connected, Message, Recorded, Started
-from monitor.explain import Explanation, explain
-from monitor.explain_words import lines
+from monitor.explaining.explain import Explanation, explain
+from monitor.explaining.explain_words import lines
 from monitor.journal import open_reader
 from monitor.messages import AlertEvent
 from monitor.plan import (

@@ -9,9 +9,9 @@ from dataclasses import replace
 import pytest
 from plans import GAUGE, characteristic, engine, fold, readings, shewhart
 
-from monitor import false_alarms
+from monitor.configuration import false_alarms
+from monitor.configuration.presets import preset
 from monitor.plan import ByWindow, CharacteristicPlan, CusumPlan, RulePlan, Scheme, ShewhartPlan
-from monitor.presets import preset
 from monitor.times import SECOND
 
 

@@ -7,8 +7,8 @@ from dataclasses import replace
 import pytest
 from plans import GAUGE, characteristic
 
-from monitor import pace
-from monitor.pace import Pace
+from monitor.configuration import pace
+from monitor.configuration.pace import Pace
 from monitor.plan import ByCount, ByWindow, CharacteristicPlan, Stream, SubgroupPlan
 from monitor.times import SECOND
 

@@ -9,8 +9,8 @@ from typing import Any
 
 import pytest
 
-from monitor.pitfalls import Pitfall, pitfalls
-from monitor.resolve import read_plan
+from monitor.configuration.pitfalls import Pitfall, pitfalls
+from monitor.configuration.resolve import read_plan
 
 Warn = Callable[..., list[Pitfall]]
 

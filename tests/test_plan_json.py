@@ -17,8 +17,8 @@ from hypothesis import strategies as st
 
 from monitor import plan as plans
 from monitor import plan_json
+from monitor.configuration.resolve import read_settings
 from monitor.plan import CharacteristicPlan, Plan, Stream
-from monitor.resolve import read_settings
 
 
 def made(annotation: Any) -> st.SearchStrategy[Any]:

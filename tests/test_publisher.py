@@ -11,6 +11,7 @@ import pytest
 import yaml
 from daemons import CONFIGURATION, ROOT, weighing, with_
 
+from monitor.configuration.resolve import read_settings
 from monitor.engine import Engine
 from monitor.entries import Configured, Connected, Message, Recorded
 from monitor.folding import Folded, fold
@@ -19,7 +20,6 @@ from monitor.outbox import Outbox
 from monitor.outputs import Gone, Output
 from monitor.plan import Plan
 from monitor.publisher import Publisher
-from monitor.resolve import read_settings
 from monitor.times import SECOND, format_time
 
 START = 1_772_433_672 * SECOND

@@ -173,18 +173,18 @@ def test_most_of_it_is_not_folded_again(tmp_path: Path) -> None:
 
 def spoil(path: Path, *tables: str) -> None:
     """As if another version had taken these states down."""
-    db = sqlite3.connect(path)
-    state = orjson.dumps({**Engine(FIRST, points=True).state(), "version": 99})
-    with db:
+    with sqlite3.connect(path) as db:
         for table in tables:
-            db.execute(f"UPDATE {table} SET value = ? WHERE owner = ''", (state,))
+            db.execute(f"UPDATE {table} SET value = '{{\"version\": 99}}' WHERE owner != '/'")
     db.close()
 
 
 @pytest.fixture
 def lived(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> tuple[Kept, list[Recorded]]:
     """A journal with a base and a later snapshot, and all that is in it."""
-    kept, entries = Kept(tmp_path / "j.db"), life(random.Random(3), 160)
+    kept, entries = Kept(tmp_path / "j.db"), life(random.Random(3), 159)
+    # A head that is never heard of again.
+    entries.insert(3, message({"v": 0.0, "t": START / SECOND, "n": 0, "head": 99}))
     for at in range(0, 80, 4):
         kept.take(entries[at : at + 4])
     monkeypatch.setattr(kept.keeper._retention, "_wants_base", True)

@@ -13,6 +13,8 @@ from typing import Any
 import pytest
 import yaml
 
+from monitor.configuration.presets import PRESETS, preset
+from monitor.configuration.resolve import read_settings
 from monitor.plan import (
     BaselinePlan,
     ByCount,
@@ -30,8 +32,6 @@ from monitor.plan import (
     SourcePlan,
     Specification,
 )
-from monitor.presets import PRESETS, preset
-from monitor.resolve import read_settings
 
 WEIGHT: dict[str, Any] = {
     "title": "Net weight",

@@ -6,9 +6,9 @@ import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
+from monitor.configuration.presets import preset
 from monitor.methods.runlength import cusum, ewma, shewhart, spread
 from monitor.plan import CusumPlan, EwmaPlan, RulePlan, ShewhartPlan, Side
-from monitor.presets import preset
 from monitor.runlengths import Kind, RunLength, floor, run_length, solve
 
 

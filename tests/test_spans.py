@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import pytest
 
-from monitor import spans
+from monitor.configuration import spans
 
 
 @pytest.mark.parametrize(

@@ -11,8 +11,8 @@ import yaml
 from hypothesis import given
 from hypothesis import strategies as st
 
-from monitor import yamltree
-from monitor.yamltree import (
+from monitor.configuration import yamltree
+from monitor.configuration.yamltree import (
     EXACT,
     Filled,
     Flaw,

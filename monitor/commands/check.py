@@ -17,11 +17,11 @@ from pathlib import Path
 from typing import Any
 
 from monitor.commandline import DONE, WRONG, CommandError
-from monitor.config import load
-from monitor.problems import ConfigurationError
-from monitor.resolve import resolve
-from monitor.summary import summary
-from monitor.summary_words import lines
+from monitor.configuration.config import load
+from monitor.configuration.problems import ConfigurationError
+from monitor.configuration.resolve import resolve
+from monitor.configuration.summary import summary
+from monitor.configuration.summary_words import lines
 
 PATIENCE = 1.0
 """Seconds after which somebody at a terminal is told what takes so long."""

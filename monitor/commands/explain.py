@@ -13,10 +13,10 @@ from pathlib import Path
 
 import orjson
 
-from monitor import explain_json, explain_words
-from monitor.alert_log import NoSuchAlertError
 from monitor.commandline import DONE, CommandError
-from monitor.explain import explain
+from monitor.explaining import explain_json, explain_words
+from monitor.explaining.alert_log import NoSuchAlertError
+from monitor.explaining.explain import explain
 from monitor.journal import JournalError, open_reader
 from monitor.progress import Counter
 

@@ -14,11 +14,11 @@ import structlog
 
 from monitor import logs
 from monitor.commandline import COULD_NOT, DONE, WRONG, CommandError
+from monitor.configuration.problems import ConfigurationError
+from monitor.configuration.resolve import read_settings
 from monitor.daemon import Daemon
 from monitor.journal import JournalError
 from monitor.plan import Settings
-from monitor.problems import ConfigurationError
-from monitor.resolve import read_settings
 
 log = structlog.get_logger()
 

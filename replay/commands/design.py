@@ -14,9 +14,9 @@ from pydantic import TypeAdapter, ValidationError
 
 from monitor import files, runlengths
 from monitor.commandline import DONE, WRONG, CommandError
+from monitor.configuration.presets import OUTSIDE_LIMITS, PRESETS, preset
+from monitor.configuration.sections.scalars import Rate
 from monitor.plan import CusumPlan, EwmaPlan, Scheme, ShewhartPlan
-from monitor.presets import OUTSIDE_LIMITS, PRESETS, preset
-from monitor.sections.scalars import Rate
 from monitor.times import SECOND, parse_duration
 from replay.design import as_json, design
 from replay.design_page import page

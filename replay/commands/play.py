@@ -17,9 +17,9 @@ import orjson
 
 from monitor import files
 from monitor.commandline import COULD_NOT, DONE, WRONG, CommandError
+from monitor.configuration.problems import ConfigurationError
+from monitor.configuration.resolve import read_plan
 from monitor.plan import Plan
-from monitor.problems import ConfigurationError
-from monitor.resolve import read_plan
 from monitor.times import parse_duration
 from replay.play import Played, play
 from replay.progress import Progress

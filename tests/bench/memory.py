@@ -23,9 +23,9 @@ ROOT = Path(__file__).parents[2]
 sys.path.insert(0, str(ROOT))
 
 from monitor import plan as plans  # noqa: E402
+from monitor.configuration.resolve import read_settings  # noqa: E402
 from monitor.engine import Engine  # noqa: E402
 from monitor.entries import Parsed  # noqa: E402
-from monitor.resolve import read_settings  # noqa: E402
 from monitor.stream import StreamState  # noqa: E402
 from monitor.times import SECOND  # noqa: E402
 

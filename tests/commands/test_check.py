@@ -13,12 +13,12 @@ import pytest
 
 from monitor.__main__ import main
 from monitor.commands import check as check_command
-from monitor.config import load
+from monitor.configuration.config import load
+from monitor.configuration.resolve import resolve
+from monitor.configuration.summary import summary
 from monitor.detectors import detector
 from monitor.plan import ByCount
-from monitor.resolve import resolve
 from monitor.subgroups import Subgroup
-from monitor.summary import summary
 
 EXAMPLE = Path(__file__).parents[2] / "config" / "jar-line-2.yaml"
 

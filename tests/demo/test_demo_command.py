@@ -16,12 +16,12 @@ import pytest
 import yaml
 from brokers import HOST, TIMEOUT, Broker, Client
 
+from monitor.configuration.resolve import read_settings
 from monitor.demo import line
 from monitor.demo.scenes import SCENES
 from monitor.demo.score import score
 from monitor.engine import Engine
 from monitor.outputs import Alert
-from monitor.resolve import read_settings
 
 DEMO = [sys.executable, "-m", "monitor", "demo", "--seconds", "5"]
 

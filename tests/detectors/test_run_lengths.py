@@ -10,6 +10,7 @@ import math
 import numpy as np
 import pytest
 
+from monitor.configuration.presets import preset
 from monitor.detectors import detector
 from monitor.plan import (
     BaselinePlan,
@@ -20,7 +21,6 @@ from monitor.plan import (
     Scheme,
     ShewhartPlan,
 )
-from monitor.presets import preset
 from monitor.runlengths import run_length
 from monitor.subgroups import Subgroup
 

@@ -14,7 +14,7 @@ from typing import Any
 import pytest
 import yaml
 
-from monitor.sections.detectors import CusumDetector, EwmaDetector, ShewhartDetector
+from monitor.configuration.sections.detectors import CusumDetector, EwmaDetector, ShewhartDetector
 from replay.__main__ import main
 
 

@@ -11,8 +11,9 @@ import textwrap
 from collections.abc import Iterator
 from typing import Any
 
-from monitor import spans, times
-from monitor.sections.base import either
+from monitor import times
+from monitor.configuration import spans
+from monitor.configuration.sections.base import either
 
 _WIDTH = 100
 _LABEL = 14

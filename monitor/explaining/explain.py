@@ -10,18 +10,19 @@ from collections.abc import Callable
 from dataclasses import dataclass
 from typing import Literal
 
-from monitor import alert_log, history, messages, times
-from monitor.alert_log import Occurrence
+from monitor import history, messages, times
 from monitor.engine import Engine
 from monitor.entries import State
-from monitor.evidence import Kept
-from monitor.evidence_working import from_evidence
 from monitor.excerpt import excerpt
+from monitor.explaining import alert_log
+from monitor.explaining.alert_log import Occurrence
+from monitor.explaining.evidence import Kept
+from monitor.explaining.evidence_working import from_evidence
+from monitor.explaining.working import Rung, Working, agreement, from_points
 from monitor.journal import JournalError
 from monitor.messages import AlertEvent
 from monitor.outputs import Alert, Points
 from monitor.plan import CharacteristicPlan, DetectorPlan, Judgement, Plan, Stream
-from monitor.working import Rung, Working, agreement, from_points
 
 _FURTHER = 5  # subgroups after the one that rang
 _PATIENCE = 20_000  # entries in which they are looked for

@@ -10,10 +10,10 @@ import ssl
 from collections.abc import Iterator
 from pathlib import Path
 
-from monitor.complaints import Complaint
-from monitor.problems import Path as KeyPath
-from monitor.problems import Problem, dotted
-from monitor.yamltree import Node, at
+from monitor.configuration.complaints import Complaint
+from monitor.configuration.problems import Path as KeyPath
+from monitor.configuration.problems import Problem, dotted
+from monitor.configuration.yamltree import Node, at
 
 _MAX_SECRET = 65_535  # bytes; what MQTT can carry
 

@@ -13,7 +13,7 @@ from typing import Any
 
 import yaml
 
-from monitor.problems import Path, Problem, dotted
+from monitor.configuration.problems import Path, Problem, dotted
 
 Scalar = str | int | float | bool | None
 

@@ -9,13 +9,13 @@ from typing import Annotated, Literal
 
 from pydantic import BeforeValidator, Field, ValidationInfo, field_validator
 
+from monitor.configuration.presets import PRESETS, as_written, preset
+from monitor.configuration.problems import Path
+from monitor.configuration.sections.base import Section, either, fault, faults
+from monitor.configuration.sections.scalars import Name, Number, Positive, Whole
+from monitor.configuration.sections.subgroup import Subgroup
 from monitor.detectors.charts import SPREAD
 from monitor.plan import Side
-from monitor.presets import PRESETS, as_written, preset
-from monitor.problems import Path
-from monitor.sections.base import Section, either, fault, faults
-from monitor.sections.scalars import Name, Number, Positive, Whole
-from monitor.sections.subgroup import Subgroup
 
 _WIDTH = "a number of standard errors above 0, such as 3"
 

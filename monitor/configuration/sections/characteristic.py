@@ -11,14 +11,14 @@ from typing import Annotated
 from pydantic import AfterValidator, BeforeValidator, Field, ValidationInfo, field_validator
 
 from monitor import stream_names
+from monitor.configuration.problems import Path
+from monitor.configuration.sections.base import Section, either, fault, faults
+from monitor.configuration.sections.baseline import Baseline
+from monitor.configuration.sections.detectors import AnyDetector, fits
+from monitor.configuration.sections.scalars import LINE, Line, Number, Positive
+from monitor.configuration.sections.source import Source
+from monitor.configuration.sections.subgroup import Subgroup
 from monitor.plan import Priority
-from monitor.problems import Path
-from monitor.sections.base import Section, either, fault, faults
-from monitor.sections.baseline import Baseline
-from monitor.sections.detectors import AnyDetector, fits
-from monitor.sections.scalars import LINE, Line, Number, Positive
-from monitor.sections.source import Source
-from monitor.sections.subgroup import Subgroup
 
 _BRACED = re.compile(r"\{([^{}]*)\}")
 _PRIORITY = "low, medium or high, or a mapping such as {down: high, up: medium}"

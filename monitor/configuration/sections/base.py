@@ -13,7 +13,7 @@ from collections.abc import Sequence
 from pydantic import BaseModel, ConfigDict
 from pydantic_core import PydanticCustomError
 
-from monitor.problems import Path
+from monitor.configuration.problems import Path
 
 FAULT = "fault"
 

@@ -15,7 +15,23 @@ from typing import Any
 import rfc8785
 
 from monitor import filters, pointers, stream_names, times
-from monitor.config import Config, load, load_measured
+from monitor.configuration.config import Config, load, load_measured
+from monitor.configuration.presets import OUTSIDE_LIMITS, as_written, preset
+from monitor.configuration.sections.base import Section
+from monitor.configuration.sections.baseline import StreamBaseline
+from monitor.configuration.sections.characteristic import Characteristic
+from monitor.configuration.sections.daemon import Alerts, Tls
+from monitor.configuration.sections.detectors import (
+    AnyDetector,
+    CusumDetector,
+    EwmaDetector,
+    OutsideRule,
+    ShewhartDetector,
+    default_chart,
+)
+from monitor.configuration.sections.document import Measured
+from monitor.configuration.sections.source import Source
+from monitor.configuration.sections.subgroup import Subgroup
 from monitor.plan import (
     BaselinePlan,
     BrokerPlan,
@@ -40,22 +56,6 @@ from monitor.plan import (
     SubgroupPlan,
     TlsPlan,
 )
-from monitor.presets import OUTSIDE_LIMITS, as_written, preset
-from monitor.sections.base import Section
-from monitor.sections.baseline import StreamBaseline
-from monitor.sections.characteristic import Characteristic
-from monitor.sections.daemon import Alerts, Tls
-from monitor.sections.detectors import (
-    AnyDetector,
-    CusumDetector,
-    EwmaDetector,
-    OutsideRule,
-    ShewhartDetector,
-    default_chart,
-)
-from monitor.sections.document import Measured
-from monitor.sections.source import Source
-from monitor.sections.subgroup import Subgroup
 
 PORT, TLS_PORT = 1883, 8883
 WIDTH = 3.0

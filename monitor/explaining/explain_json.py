@@ -9,9 +9,9 @@ from dataclasses import asdict
 from typing import Any
 
 from monitor import times
-from monitor.explain import Explanation
+from monitor.explaining.explain import Explanation
+from monitor.explaining.working import Step
 from monitor.plan import ByCount, CharacteristicPlan
-from monitor.working import Step
 
 
 def document(told: Explanation) -> dict[str, Any]:

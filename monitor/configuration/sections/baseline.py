@@ -10,8 +10,8 @@ from typing import Annotated
 from pydantic import AfterValidator, Field, ValidationInfo, field_validator, model_validator
 
 from monitor import stream_names, times
-from monitor.sections.base import Section, fault, faults
-from monitor.sections.scalars import LINE, Line, Name, Number, Positive, Scalar, Whole
+from monitor.configuration.sections.base import Section, fault, faults
+from monitor.configuration.sections.scalars import LINE, Line, Name, Number, Positive, Scalar, Whole
 
 MAX_STREAMS = 10_000
 """As many as a characteristic may have."""

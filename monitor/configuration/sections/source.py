@@ -10,8 +10,8 @@ from typing import Annotated, Literal
 from pydantic import AfterValidator, BeforeValidator, Field, ValidationInfo, field_validator
 
 from monitor import filters
-from monitor.sections.base import Section, fault
-from monitor.sections.scalars import Number, Pointer, Rate, Scalar, StreamKey, Whole
+from monitor.configuration.sections.base import Section, fault
+from monitor.configuration.sections.scalars import Number, Pointer, Rate, Scalar, StreamKey, Whole
 
 RESERVED = frozenset({"characteristic", "value", "time", "sequence"})
 """Columns of a table of readings, so no stream key can be called so."""

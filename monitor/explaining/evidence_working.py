@@ -13,9 +13,9 @@ from functools import partial
 
 from monitor import times
 from monitor.detectors.charts import chart
+from monitor.explaining.working import CLOSE, Rung, Step, Working, clipped, counted, rule_of
 from monitor.outputs import Evidence
 from monitor.plan import CusumPlan, EwmaPlan, ShewhartPlan
-from monitor.working import CLOSE, Rung, Step, Working, clipped, counted, rule_of
 
 _OF_MEANS = ("mean", "individual")
 

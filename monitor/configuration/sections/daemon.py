@@ -11,8 +11,8 @@ from typing import Annotated, Literal
 from pydantic import AfterValidator, Field, ValidationInfo, field_validator
 
 from monitor import times
-from monitor.sections.base import Section, fault
-from monitor.sections.scalars import Duration, Flag, Line, Whole
+from monitor.configuration.sections.base import Section, fault
+from monitor.configuration.sections.scalars import Duration, Flag, Line, Whole
 
 
 def _root(value: str) -> str:

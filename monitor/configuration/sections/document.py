@@ -9,12 +9,12 @@ from typing import Annotated
 
 from pydantic import AfterValidator, Field
 
-from monitor.sections.base import Section, fault
-from monitor.sections.baseline import Baseline
-from monitor.sections.characteristic import Characteristic
-from monitor.sections.daemon import Alerts, Broker, Journal, Outputs
-from monitor.sections.detectors import Detector
-from monitor.sections.scalars import Name, Whole
+from monitor.configuration.sections.base import Section, fault
+from monitor.configuration.sections.baseline import Baseline
+from monitor.configuration.sections.characteristic import Characteristic
+from monitor.configuration.sections.daemon import Alerts, Broker, Journal, Outputs
+from monitor.configuration.sections.detectors import Detector
+from monitor.configuration.sections.scalars import Name, Whole
 
 
 def _known_version(value: int) -> int:

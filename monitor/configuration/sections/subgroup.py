@@ -10,8 +10,8 @@ from typing import Annotated
 from pydantic import AfterValidator, Field, ValidationInfo, field_validator
 
 from monitor import times
-from monitor.sections.base import Section, fault
-from monitor.sections.scalars import Duration, Whole
+from monitor.configuration.sections.base import Section, fault
+from monitor.configuration.sections.scalars import Duration, Whole
 
 _LARGEST = 10_000  # readings
 

@@ -14,12 +14,13 @@ from typing import TypeVar
 
 from pydantic import ValidationError
 
-from monitor import baseline_files, credentials, filters, yamltree
-from monitor.complaints import Complaint, complaints, shown
-from monitor.problems import ConfigurationError, Problem, dotted
-from monitor.problems import Path as KeyPath
-from monitor.sections.document import DAEMON, Document, Measured
-from monitor.yamltree import Flaw, Node, UnreadableError
+from monitor import filters
+from monitor.configuration import baseline_files, credentials, yamltree
+from monitor.configuration.complaints import Complaint, complaints, shown
+from monitor.configuration.problems import ConfigurationError, Problem, dotted
+from monitor.configuration.problems import Path as KeyPath
+from monitor.configuration.sections.document import DAEMON, Document, Measured
+from monitor.configuration.yamltree import Flaw, Node, UnreadableError
 
 __all__ = ["Config", "ConfigurationError", "load", "load_measured"]
 

@@ -9,11 +9,11 @@ from collections.abc import Iterator, Mapping
 from dataclasses import dataclass, field, replace
 from pathlib import Path
 
-from monitor import yamltree
-from monitor.complaints import Complaint, shown
-from monitor.problems import Path as KeyPath
-from monitor.problems import Problem, dotted
-from monitor.yamltree import Flaw, Node, UnreadableError
+from monitor.configuration import yamltree
+from monitor.configuration.complaints import Complaint, shown
+from monitor.configuration.problems import Path as KeyPath
+from monitor.configuration.problems import Problem, dotted
+from monitor.configuration.yamltree import Flaw, Node, UnreadableError
 
 
 @dataclass(slots=True)

@@ -9,8 +9,9 @@ import math
 from collections.abc import Iterator
 from dataclasses import dataclass
 
-from monitor import false_alarms, pace, spans, stream_names, times
-from monitor.false_alarms import DetectorRinging
+from monitor import stream_names, times
+from monitor.configuration import false_alarms, pace, spans
+from monitor.configuration.false_alarms import DetectorRinging
 from monitor.plan import (
     ByCount,
     ByWindow,

@@ -11,9 +11,11 @@ import math
 import textwrap
 from collections.abc import Iterator
 
-from monitor import false_alarms, pace, spans, stream_names, times
-from monitor.explain import Explanation
-from monitor.explain_table import Table, charted
+from monitor import stream_names, times
+from monitor.configuration import false_alarms, pace, spans
+from monitor.explaining.explain import Explanation
+from monitor.explaining.explain_table import Table, charted
+from monitor.explaining.working import Rung, Working, rule_of
 from monitor.messages import AlertEvent
 from monitor.plan import (
     BaselinePlan,
@@ -25,7 +27,6 @@ from monitor.plan import (
     RulePlan,
     ShewhartPlan,
 )
-from monitor.working import Rung, Working, rule_of
 
 _WIDTH = 100
 _BOUND = "\u00a0"  # no line is broken here; it is printed as a plain space

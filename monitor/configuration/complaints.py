@@ -17,10 +17,10 @@ from pydantic import ValidationError
 from pydantic.fields import FieldInfo
 from pydantic_core import ErrorDetails
 
-from monitor.problems import Path, Problem, dotted
-from monitor.sections.base import FAULT, Section, either
-from monitor.sections.document import NOT_BUILT_KEYS, NOT_BUILT_VALUES
-from monitor.yamltree import Filled, Node, child_of, scalar
+from monitor.configuration.problems import Path, Problem, dotted
+from monitor.configuration.sections.base import FAULT, Section, either
+from monitor.configuration.sections.document import NOT_BUILT_KEYS, NOT_BUILT_VALUES
+from monitor.configuration.yamltree import Filled, Node, child_of, scalar
 
 _KEY = "[key]"  # how pydantic marks that the key itself is meant
 _HIDDEN = {"password_file", "key"}  # someone will write the secret itself there

@@ -11,8 +11,8 @@ from typing import Annotated, Any
 from pydantic import AfterValidator, BeforeValidator, Field
 
 from monitor import filters, pointers, times
-from monitor.sections.base import fault
-from monitor.yamltree import Filled, scalar
+from monitor.configuration.sections.base import fault
+from monitor.configuration.yamltree import Filled, scalar
 
 _LONGEST = 36_525 * times.DAY  # a hundred years
 _RATE = re.compile(r"([0-9]+(?:\.[0-9]+)?)\s*/\s*(s|min|h|d)", re.ASCII)

@@ -9,8 +9,9 @@ import math
 from dataclasses import dataclass, replace
 from functools import lru_cache
 
-from monitor import pace, runlengths
-from monitor.pace import Pace
+from monitor import runlengths
+from monitor.configuration import pace
+from monitor.configuration.pace import Pace
 from monitor.plan import CharacteristicPlan, DetectorPlan, Scheme, ShewhartPlan
 
 SHIFT = 8 * 3_600.0

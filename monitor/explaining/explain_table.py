@@ -9,8 +9,8 @@ import math
 from collections.abc import Callable, Iterator, Sequence
 
 from monitor import times
+from monitor.explaining.working import Rung, Step, Working
 from monitor.plan import CusumPlan, EwmaPlan, ShewhartPlan
-from monitor.working import Rung, Step, Working
 
 _BEFORE = 3
 _BEGINNING, _END = 6, 24  # of a long story that much is shown

@@ -12,7 +12,7 @@ from dataclasses import dataclass
 
 import orjson
 
-from monitor.evidence import Kept, decode
+from monitor.explaining.evidence import Kept, decode
 from monitor.messages import AlertEvent
 
 SHORTEST = 4

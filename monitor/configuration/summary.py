@@ -10,11 +10,13 @@ import math
 from dataclasses import asdict
 from typing import Any
 
-from monitor import false_alarms, pace, stream_names, times
-from monitor.config import Config
+from monitor import stream_names, times
+from monitor.configuration import false_alarms, pace
+from monitor.configuration.config import Config
+from monitor.configuration.false_alarms import SHIFT, Ringing
+from monitor.configuration.pitfalls import pitfalls
+from monitor.configuration.sections.characteristic import Characteristic
 from monitor.detectors.charts import chart, standard_error
-from monitor.false_alarms import SHIFT, Ringing
-from monitor.pitfalls import pitfalls
 from monitor.plan import (
     BaselinePlan,
     ByCount,
@@ -30,7 +32,6 @@ from monitor.plan import (
     ShewhartPlan,
     SourcePlan,
 )
-from monitor.sections.characteristic import Characteristic
 
 
 def summary(config: Config, settings: Settings) -> dict[str, Any]:

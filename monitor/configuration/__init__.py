@@ -1,0 +1,1 @@
+"""From YAML to a plan: reading it, naming every mistake, and saying what the plan will do."""

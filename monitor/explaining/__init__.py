@@ -1,0 +1,1 @@
+"""Why an alert rang: its points, limits and arithmetic, derived again."""
