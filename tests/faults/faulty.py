@@ -21,7 +21,7 @@ from types import TracebackType
 from typing import Any, Self
 
 import orjson
-from brokers import TIMEOUT, Client, Received
+from brokers import TIMEOUT, Broker, Client, Embedded, Received
 from daemons import ALERTS, CONFIGURATION, HEALTH, ROOT, Launched, events, recording, until
 
 from monitor.journal import open_reader
@@ -121,13 +121,16 @@ SHORT_ALERTS: dict[str, object] = {"off_delay": "200ms", "rejoin": "100ms"}
 """For readings that have their arrival for a time: alerts come and go while a test lasts."""
 
 
-def torques(count: int, seed: int = 1) -> Published:
+def torques(count: int, seed: int = 1, *, broker: Broker) -> Published:
     """``count`` values with neither time nor number, as a gauge of 0.01 N·m gives them.
 
-    Many are equal to their neighbours, so only their order tells them apart.
+    Many are equal to their neighbours, so only their order tells them apart. A broker that sends
+    again without DUP and under new identifiers gets a finer gauge: nobody can tell whether one that
+    equals the last is it again.
     """
     chance = random.Random(seed)
-    return [(TORQUE, b"%.2f" % chance.gauss(2.0, 0.11)) for _ in range(count)]
+    digits = 6 if isinstance(broker, Embedded) else 2
+    return [(TORQUE, b"%.*f" % (digits, chance.gauss(2.0, 0.11))) for _ in range(count)]
 
 
 class Feed:

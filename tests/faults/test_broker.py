@@ -155,7 +155,7 @@ def test_a_stall_longer_than_the_keepalive(
     mosquitto: Callable[..., Mosquitto], tmp_path: Path
 ) -> None:
     """The broker gives up on the connection; what it had sent into it comes again."""
-    messages = torques(6_000)
+    messages = torques(6_000, broker=broker)
     broker = mosquitto(log_type="all")
     configuration = single("cap-torque", alerts=SHORT_ALERTS, broker={"keepalive": "1s"})
     with (
@@ -178,7 +178,7 @@ def test_a_stall_longer_than_the_keepalive(
 def test_connections_that_break_under_load(count: int, broker: Broker, tmp_path: Path) -> None:
     """Cut by someone between: nobody said goodbye, and both ends hold what the other never read."""
     chance = random.Random(count)
-    messages = torques(count)
+    messages = torques(count, broker=broker)
     with (
         Watcher(broker.port) as watcher,
         Cable(broker.port) as cable,

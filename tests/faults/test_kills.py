@@ -83,7 +83,7 @@ def test_killed_under_load_readings_with_identity(
 
 @pytest.mark.parametrize("scale", SCALES)
 def test_killed_under_load_values_only(scale: Scale, broker: Broker, tmp_path: Path) -> None:
-    messages = torques(scale.messages * 4, scale.seed)
+    messages = torques(scale.messages * 4, scale.seed, broker=broker)
     configuration = single("cap-torque", alerts=SHORT_ALERTS)
     with (
         Watcher(broker.port) as watcher,
@@ -149,5 +149,5 @@ def test_killed_on_its_way_out(broker: Broker, tmp_path: Path) -> None:
 
 def interleaved(count: int) -> Published:
     """Readings with identity and values without, in turn."""
-    pairs = zip(weighings(count // 2), torques(count // 2), strict=True)
+    pairs = zip(weighings(count // 2), torques(count // 2, broker=broker), strict=True)
     return [message for pair in pairs for message in pair]

@@ -61,7 +61,7 @@ def oldest(daemon: Faulty) -> tuple[int, int]:
 def test_pruned_and_exported_under_load(
     count: int, mosquitto: Callable[..., Mosquitto], tmp_path: Path
 ) -> None:
-    messages = torques(3 * count)
+    messages = torques(3 * count, broker=broker)
     broker = mosquitto()
     configuration = single("cap-torque", alerts=SHORT_ALERTS)
     with (
