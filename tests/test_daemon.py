@@ -6,7 +6,6 @@ import json
 import os
 import random
 import re
-import resource
 import signal
 import socket
 import subprocess
@@ -42,7 +41,7 @@ from daemons import (
 from monitor import times
 from monitor.demo.broker import HOST, free_port
 from monitor.entries import Connected, Disconnected, Message, Started
-from monitor.journal import Journal
+from monitor.journal import AlertRow, Batch, Journal
 from monitor.times import SECOND
 
 TIME = re.compile(r"\d{4}-\d\d-\d\dT\d\d:\d\d:\d\d\.\d{3}(\d{3})?Z")
@@ -343,7 +342,7 @@ def test_stops_at_a_broker_that_accepts_and_says_nothing(tmp_path: Path) -> None
 def test_stops_while_it_reads_its_journal(tmp_path: Path) -> None:
     daemon = Launched(tmp_path / "a", free_port())
     journal = Journal(daemon.journal)
-    journal.commit([Message(START, *weighing(1, START, 340.0))] * 300_000, [])
+    journal.commit(Batch([Message(START, *weighing(1, START, 340.0))] * 300_000))
     journal.close()
     process = daemon.launch()
     daemon.await_logged("starting")
@@ -595,7 +594,8 @@ def test_after_a_restart_it_goes_on_where_it_was(
         journal = Journal(daemon.journal)
         left = {**alert.body, "text": "left over"}
         del left["published"]
-        journal.commit([], [(alert.topic, json.dumps(left).encode())])
+        row = AlertRow(alert.topic, left["id"], json.dumps(left).encode(), b"", 0)
+        journal.commit(Batch([Started(journal.last_time)], [row]))
         journal.close()
         daemon.start()
         # The fourth completes the subgroup of the third, and the CUSUM joins the alert.
@@ -610,24 +610,3 @@ def test_after_a_restart_it_goes_on_where_it_was(
     del bodies[1]
     assert [b["sequence"] for b in bodies] == list(range(1, len(bodies) + 1))
     assert {b["id"] for b in bodies} == {bodies[0]["id"]}
-
-
-def test_a_full_disk_ends_it_and_loses_nothing(
-    broker: Broker, watcher: Client, tmp_path: Path
-) -> None:
-    messages = weighings(2_000)
-    with started(tmp_path / "a", broker.port) as daemon, Client(broker.port) as line:
-        process = daemon.process
-        assert process is not None
-        line.publish_all(messages[:500])
-        settled(daemon, messages[:500])
-        limit = daemon.journal.with_name("journal.db-wal").stat().st_size + 20_000
-        resource.prlimit(process.pid, resource.RLIMIT_FSIZE, (limit, limit))
-        line.publish_all(messages[500:])
-        assert process.wait(20) == 1
-        assert "cannot write the journal" in daemon.log.read_text()
-        daemon.launch()
-        settled(daemon, messages)
-        expected = replayed(daemon.configuration, recording(tmp_path / "x.jsonl", messages))
-        found = events(watcher.wait_for(lambda ms: len(events(ms)) >= len(expected), ALERTS))
-    assert by_stream(found) == by_stream(expected)

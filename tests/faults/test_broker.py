@@ -155,8 +155,8 @@ def test_a_stall_longer_than_the_keepalive(
     mosquitto: Callable[..., Mosquitto], tmp_path: Path
 ) -> None:
     """The broker gives up on the connection; what it had sent into it comes again."""
-    messages = torques(6_000, broker=broker)
     broker = mosquitto(log_type="all")
+    messages = torques(6_000, broker=broker)
     configuration = single("cap-torque", alerts=SHORT_ALERTS, broker={"keepalive": "1s"})
     with (
         Watcher(broker.port) as watcher,

@@ -189,7 +189,8 @@ def of_good_streams(alerts: list[bytes]) -> list[bytes]:
 
 @pytest.mark.parametrize("count", [5_000, pytest.param(100_000, marks=pytest.mark.long)])
 def test_garbage_bends_no_alert(count: int, broker: Broker, tmp_path: Path) -> None:
-    good = [m for pair in zip(weighings(2_000), torques(2_000, broker=broker), strict=True) for m in pair]
+    pairs = zip(weighings(2_000), torques(2_000, broker=broker), strict=True)
+    good = [message for pair in pairs for message in pair]
     oversized = [(topic, b"[%s]" % (b" " * 300_000)) for topic, _ in good[:3]]
     messages = shuffled_in(good, [*oversized, *generated(count)], random.Random(count))
     with (

@@ -10,12 +10,11 @@ from __future__ import annotations
 import random
 import signal
 import threading
-from collections.abc import Callable
 from dataclasses import dataclass
 from pathlib import Path
 
 import pytest
-from brokers import TIMEOUT, Broker, Mosquitto
+from brokers import TIMEOUT, Broker, mosquitto_path
 from cuts import PLACES
 from daemons import weighings
 from faulty import (
@@ -30,6 +29,8 @@ from faulty import (
     single,
     torques,
 )
+
+BROKERS = ["embedded", "mosquitto"] if mosquitto_path() else ["embedded"]
 
 
 @dataclass(frozen=True, slots=True)
@@ -104,15 +105,19 @@ def die(daemon: Faulty, place: str, times: int) -> None:
     daemon.cut = None
 
 
-@pytest.mark.parametrize("deaths", [2, pytest.param(12, marks=pytest.mark.long)])
+@pytest.mark.parametrize(
+    ("broker", "deaths"),
+    [
+        (BROKERS[-1], 2),
+        *(pytest.param(each, 12, marks=pytest.mark.long) for each in BROKERS),
+    ],
+    indirect=["broker"],
+)
 @pytest.mark.parametrize("place", [place for place in PLACES if place != "farewell"])
-def test_killed_between_two_steps(
-    place: str, deaths: int, mosquitto: Callable[..., Mosquitto], tmp_path: Path
-) -> None:
+def test_killed_between_two_steps(place: str, deaths: int, broker: Broker, tmp_path: Path) -> None:
     chance = random.Random(f"{place} {deaths}")
     rate = 1_500
-    messages = interleaved(rate * 4 * deaths)
-    broker = mosquitto()
+    messages = interleaved(rate * 4 * deaths, broker)
     snapshots = place == "before-commit-of-a-snapshot"  # there is one soon after each start
     with (
         Watcher(broker.port) as watcher,
@@ -147,7 +152,7 @@ def test_killed_on_its_way_out(broker: Broker, tmp_path: Path) -> None:
         check_complete(daemon, watcher, feed.sent)
 
 
-def interleaved(count: int) -> Published:
+def interleaved(count: int, broker: Broker) -> Published:
     """Readings with identity and values without, in turn."""
     pairs = zip(weighings(count // 2), torques(count // 2, broker=broker), strict=True)
     return [message for pair in pairs for message in pair]

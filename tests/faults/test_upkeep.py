@@ -61,8 +61,8 @@ def oldest(daemon: Faulty) -> tuple[int, int]:
 def test_pruned_and_exported_under_load(
     count: int, mosquitto: Callable[..., Mosquitto], tmp_path: Path
 ) -> None:
-    messages = torques(3 * count, broker=broker)
     broker = mosquitto()
+    messages = torques(3 * count, broker=broker)
     configuration = single("cap-torque", alerts=SHORT_ALERTS)
     with (
         Watcher(broker.port) as watcher,
