@@ -262,7 +262,7 @@ class RetentionPlan:
     """How long the journal keeps entries and alerts (µs), and how large it may become (bytes)."""
 
     keep: int = 30 * 86_400_000_000
-    keep_alerts: int = 1_096 * 86_400_000_000
+    keep_alerts: int = 1_095 * 86_400_000_000
     max_size: int = 20_000_000_000
 
 

@@ -13,8 +13,16 @@ DAY = 86_400 * SECOND
 EPOCH = datetime(1970, 1, 1, tzinfo=UTC)
 MICROSECOND = timedelta(microseconds=1)
 
-_UNITS = {"us": 1, "ms": 1_000, "s": SECOND, "min": 60 * SECOND, "h": 3_600 * SECOND, "d": DAY}
-_SHORT = re.compile(r"(\d+(?:\.\d+)?)\s*(us|ms|s|min|h|d)", re.ASCII)
+_UNITS = {
+    "us": 1,
+    "ms": 1_000,
+    "s": SECOND,
+    "min": 60 * SECOND,
+    "h": 3_600 * SECOND,
+    "d": DAY,
+    "y": 365 * DAY,
+}
+_SHORT = re.compile(r"(\d+(?:\.\d+)?)\s*(us|ms|s|min|h|d|y)", re.ASCII)
 _ISO = re.compile(
     r"P(?:(\d+)W)?(?:(\d+)D)?(?:T(?=\d)(?:(\d+)H)?(?:(\d+)M)?(?:(\d+(?:\.\d+)?)S)?)?", re.ASCII
 )
@@ -24,7 +32,7 @@ def parse_duration(text: str) -> int:
     """Microseconds in ``30s``, ``5min``, ``8h``, ``14d`` or an ISO 8601 duration of fixed length.
 
     Raises ValueError with a sentence a person can act on. ISO years and months are refused: their
-    length depends on the calendar.
+    length depends on the calendar. ``3y`` is 3 · 365 days.
     """
     short = _SHORT.fullmatch(text.strip())
     if short:

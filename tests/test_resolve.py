@@ -25,6 +25,7 @@ from monitor.plan import (
     DetectorPlan,
     EwmaPlan,
     Judgement,
+    RetentionPlan,
     RulePlan,
     SequencePlan,
     Settings,
@@ -32,6 +33,7 @@ from monitor.plan import (
     SourcePlan,
     Specification,
 )
+from monitor.times import DAY
 
 WEIGHT: dict[str, Any] = {
     "title": "Net weight",
@@ -195,6 +197,12 @@ def test_the_daemon(read: Read, tmp_path: Path) -> None:
     assert "hunter2" not in repr(settings)
     assert (settings.points, settings.journal) == (False, "/srv/j.db")
     assert (only(settings).off_delay, only(settings).rejoin) == (0, 3_600_000_000)
+
+
+def test_how_long_the_journal_keeps_what(read: Read) -> None:
+    assert read().retention == RetentionPlan(30 * DAY, 3 * 365 * DAY, 20_000_000_000)
+    journal = {"path": "j.db", "keep": "7d", "max_size": "1.5 GB", "keep_alerts": "1y"}
+    assert read(journal=journal).retention == RetentionPlan(7 * DAY, 365 * DAY, 1_500_000_000)
 
 
 def test_resolution(read: Read) -> None:

@@ -46,6 +46,7 @@ from monitor.plan import (
     Judgement,
     Plan,
     Priority,
+    RetentionPlan,
     RulePlan,
     Scheme,
     SequencePlan,
@@ -93,6 +94,11 @@ def resolve(config: Config) -> Settings:
         root=root,
         points=document.outputs.points,
         journal=str(config.folder / document.journal.path),
+        retention=RetentionPlan(
+            keep=document.journal.keep,
+            keep_alerts=document.journal.keep_alerts,
+            max_size=document.journal.max_size,
+        ),
     )
 
 

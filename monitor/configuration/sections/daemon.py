@@ -12,7 +12,7 @@ from pydantic import AfterValidator, Field, ValidationInfo, field_validator
 
 from monitor import times
 from monitor.configuration.sections.base import Section, fault
-from monitor.configuration.sections.scalars import Duration, Flag, Line, Whole
+from monitor.configuration.sections.scalars import Duration, Flag, Line, Size, Whole
 
 
 def _root(value: str) -> str:
@@ -113,10 +113,31 @@ class Outputs(Section):
     points: Flag = Field(True, description="true or false: whether every subgroup is published")
 
 
+def _a_day(value: int) -> int:
+    if value < times.DAY:
+        raise fault("is less than a day", "write a duration from 1d, such as 30d")
+    return value
+
+
+def _roomy(value: int) -> int:
+    if value < 50_000_000:
+        raise fault("is too small to work with", "write a size from 50MB, such as 20GB")
+    return value
+
+
 class Journal(Section):
-    """Where the daemon keeps what it must not lose."""
+    """Where the daemon keeps what it must not lose, and how long."""
 
     path: Line = Field(description="the path of a file, such as var/jar-line-2.db")
+    keep: Annotated[Duration, AfterValidator(_a_day)] = Field(
+        30 * times.DAY, description="a duration from 1d, such as 30d"
+    )
+    max_size: Annotated[Size, AfterValidator(_roomy)] = Field(
+        20_000_000_000, description="a size from 50MB, such as 20GB"
+    )
+    keep_alerts: Annotated[Duration, AfterValidator(_a_day)] = Field(
+        3 * 365 * times.DAY, description="a duration from 1d, such as 3y"
+    )
 
 
 class Alerts(Section):

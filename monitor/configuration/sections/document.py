@@ -48,7 +48,6 @@ DAEMON = frozenset(Document.model_fields) - frozenset(Measured.model_fields)
 
 NOT_BUILT_KEYS: dict[type[Section], frozenset[str]] = {
     Measured: frozenset({"budget", "instances"}),
-    Journal: frozenset({"keep", "max_size", "keep_alerts"}),
     Characteristic: frozenset({"promise", "gauge", "changeover"}),
     Baseline: frozenset({"learn", "over_at_least"}),
     Detector: frozenset({"catch", "ignore", "catch_ratio", "share"}),

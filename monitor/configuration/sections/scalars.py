@@ -16,6 +16,8 @@ from monitor.configuration.yamltree import Filled, scalar
 
 _LONGEST = 36_525 * times.DAY  # a hundred years
 _RATE = re.compile(r"([0-9]+(?:\.[0-9]+)?)\s*/\s*(s|min|h|d)", re.ASCII)
+_SIZE = re.compile(r"([0-9]+(?:\.[0-9]+)?)\s*([kMGT]B)", re.ASCII)
+_BYTES = {"kB": 1e3, "MB": 1e6, "GB": 1e9, "TB": 1e12}
 _PER = {"s": 1.0, "min": 60.0, "h": 3_600.0, "d": 86_400.0}
 LINE = r"^[^\x00-\x1f\x7f]*$"
 _NAME = r"^[A-Za-z0-9][A-Za-z0-9_-]*$"
@@ -37,6 +39,13 @@ def _duration(value: object) -> int:
     if duration > _LONGEST:
         raise fault("is more than a hundred years", "write a shorter time")
     return duration
+
+
+def _size(value: object) -> int:
+    found = _SIZE.fullmatch(value.strip()) if isinstance(value, str) else None
+    if not found:
+        raise fault("is not a size", "write a number of kB, MB, GB or TB, such as 20GB")
+    return round(float(found[1]) * _BYTES[found[2]])
 
 
 def _rate(value: object) -> float:
@@ -81,6 +90,9 @@ Number = Annotated[float, BeforeValidator(_typed), Field(ge=-1e100, le=1e100)]
 Positive = Annotated[float, BeforeValidator(_typed), Field(gt=0, ge=1e-100, le=1e100)]
 Whole = Annotated[int, BeforeValidator(_typed)]
 Flag = Annotated[bool, BeforeValidator(_typed)]
+Size = Annotated[int, BeforeValidator(_size)]
+"""Bytes, written as ``20GB``."""
+
 Duration = Annotated[int, BeforeValidator(_duration)]
 Rate = Annotated[float, BeforeValidator(_rate)]
 Pointer = Annotated[str, AfterValidator(_pointer)]
