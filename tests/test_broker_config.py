@@ -244,7 +244,7 @@ def test_who_may_publish_what(users: Callable[..., User], name: str, topic: str,
 @needs_mosquitto
 @pytest.mark.parametrize(
     "count",
-    [3_000, pytest.param(round(SHIFT * 618 / 60), marks=pytest.mark.long)],
+    [3_000, pytest.param(round(SHIFT * 624 / 60), marks=pytest.mark.long)],
     ids=["short", "shift"],
 )
 def test_what_was_published_while_the_daemon_was_away_waits_for_it(

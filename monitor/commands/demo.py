@@ -78,11 +78,12 @@ def main(args: argparse.Namespace) -> int:
             session = stack.enter_context(Session(folder, host, port, prefix))
             kind = "embedded" if args.broker is None else "yours"
             run = _Run(session, prefix, args.seed, args.seconds, tell)
-            try:
-                tell(telling.opening(SCENE, run.clock, f"{kind}, {host}:{port}", folder))
-                run.play()
-            except KeyboardInterrupt:
-                interrupted = True
+            # Between two messages, and not wherever it comes: in the middle of one, what the
+            # client holds could not be put in order any more.
+            for number in (signal.SIGINT, signal.SIGTERM):
+                signal.signal(number, run.stop)
+            tell(telling.opening(SCENE, run.clock, f"{kind}, {host}:{port}", folder))
+            interrupted = not run.play()
         run.hear_rest()
     except (BrokerError, SessionError) as error:
         tell.clear()
@@ -138,14 +139,24 @@ class _Run:
         self.sent = 0
         self.reached = 0.0  # seconds of line time
         self.raised: list[AlertEvent] = []
+        self._stopping = False
         self._session = session
         self._tell = tell
         self._messages = line.messages(SCENE, seed, start=start, seconds=of_line, prefix=prefix)
 
-    def play(self) -> None:
-        """Send the scene at its pace, and wait until the daemon has read all of it."""
+    def stop(self, *_: object) -> None:
+        """End before the next message (a signal handler)."""
+        self._stopping = True
+
+    def play(self) -> bool:
+        """Send the scene at its pace, and wait until the daemon has read all of it.
+
+        False where it was stopped.
+        """
         begun = time.monotonic()
         for message in self._messages:
+            if self._stopping:
+                return False
             elapsed = (message.time - self.clock.start) / times.SECOND
             while self._hear(begun + elapsed / self.clock.speed - time.monotonic()):
                 pass
@@ -155,6 +166,7 @@ class _Run:
             self.reached = elapsed
             self._tell.progress(lambda: telling.progress(self.reached, self.clock, self.sent))
         self._session.await_read(self.sent)
+        return True
 
     def hear_rest(self) -> None:
         """Hear what has already come."""
