@@ -23,8 +23,8 @@ CAUTION = (
 _MOST_PLACES = 12
 _PLAIN_BELOW = 1e12  # from there up a string of digits tells less than an exponent
 _WITHDRAWN = {
-    "gauge-restart": "the gauge restarted",
-    "configuration": "its configuration changed",
+    "gauge-restart": "is judged afresh because the gauge restarted",
+    "configuration": "is no longer judged as it was because its configuration changed",
 }
 
 
@@ -58,8 +58,7 @@ def sentence(
     if event == "returned-to-normal":
         return f"{who} has returned to normal: {_over(signal, chart)}."
     if event == "withdrawn":
-        why = _WITHDRAWN[reason or ""]
-        return f"{who} is judged afresh because {why}: what was reported may still be there."
+        return f"{who} {_WITHDRAWN[reason or '']}: what was reported may still be there."
     again = " again" if event == "rejoined" else ""
     also = "now also: " if event == "updated" else ""
     change = _change(finding, judged.plan.unit, time, again)

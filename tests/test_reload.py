@@ -4,12 +4,13 @@ from __future__ import annotations
 
 import copy
 import signal
+from collections.abc import Callable
 from pathlib import Path
 from typing import Any
 
 import pytest
 import yaml
-from brokers import Broker, Client, Embedded
+from brokers import Broker, Client, Embedded, Mosquitto
 from daemons import ALERTS, CONFIGURATION, ROOT, Launched, launched, started, until, weighing
 
 from monitor.entries import Configured
@@ -181,11 +182,31 @@ def test_it_is_the_same_by_a_restart(broker: Broker, tmp_path: Path) -> None:
     assert one[0]["id"] != one[2]["id"]
 
 
+def test_what_is_kept_of_a_characteristic_goes_with_it(broker: Broker, tmp_path: Path) -> None:
+    standings = f"{ROOT}/standing/#"
+    with started(tmp_path / "a", broker.port) as daemon, Client(broker.port) as client:
+        client.subscribe(f"{ROOT}/#")
+        client.publish_all([*pair(1, 350.0), ("line-2/capper/torque", b"2.0")])
+        client.wait_for(lambda ms: len({m.topic for m in ms}) == 2, standings)
+        edit(daemon, lambda d: d["characteristics"].pop("net-weight"))
+        hang_up(daemon)
+        cleared = f"{ROOT}/standing/net-weight/1/1"
+        client.wait_for(lambda ms: bool(ms) and ms[-1].payload == b"", cleared)
+        (_, withdrawn) = client.received(ALERTS)
+        assert withdrawn.body["event"] == "withdrawn"
+        with Client(broker.port) as late:
+            late.subscribe(standings, f"{ROOT}/health")
+            late.wait_for(bool, f"{ROOT}/health")
+            late.wait_for(bool, standings)
+            assert [m.topic for m in late.received(standings)] == [f"{ROOT}/standing/cap-torque"]
+        assert daemon.stop() == 0
+
+
 def test_what_was_configured_once_is_given_up_though_we_never_were_there(
-    broker: Broker, tmp_path: Path
+    mosquitto: Callable[..., Mosquitto], tmp_path: Path
 ) -> None:
-    if isinstance(broker, Embedded):
-        pytest.skip("it only gives up filters of the same connection")
+    # The embedded broker only gives up filters of the same connection.
+    broker = mosquitto()
     with started(tmp_path / "a", broker.port) as daemon:
         assert daemon.stop() == 0
         broker.stop()

@@ -8,6 +8,7 @@ from __future__ import annotations
 import json
 import random
 import signal
+import threading
 from collections.abc import Callable
 from pathlib import Path
 
@@ -30,6 +31,9 @@ from faulty import (
     torques,
     undisturbed,
 )
+
+STEADY = 1.1
+"""Seconds that a connection holds: those that end sooner, in a row, are taken for a rival's work."""
 
 
 def save(broker: Mosquitto) -> None:
@@ -69,6 +73,7 @@ def test_a_broker_restored_from_a_stale_store(
                 "all messages",
                 daemon.is_running,
             )
+            threading.Event().wait(STEADY)
             broker.kill()
             broker.start()
             daemon.await_logged("connected", n + 2)
@@ -188,12 +193,12 @@ def test_connections_that_break_under_load(count: int, broker: Broker, tmp_path:
         with Feed(broker.port, messages, 2_000) as feed:
             cuts = 0
             while not feed.is_over:
-                daemon.await_count(min(daemon.count() + chance.randrange(1_500), count))
+                threading.Event().wait(STEADY + chance.random())
                 cable.cut()
                 cuts += 1
                 daemon.await_logged("connected", cuts + 1)
         check_complete(daemon, watcher, feed.sent)
-    assert cuts > 3
+    assert cuts > 1
 
 
 def test_two_daemons_with_one_client_id(broker: Broker, tmp_path: Path) -> None:
