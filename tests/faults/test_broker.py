@@ -33,7 +33,7 @@ from faulty import (
 )
 
 STEADY = 1.1
-"""Seconds that a connection holds: those that end sooner, in a row, are taken for a rival's work."""
+"""Seconds a connection holds: those that end sooner, in a row, are taken for a rival's work."""
 
 
 def save(broker: Mosquitto) -> None:
