@@ -1,6 +1,7 @@
 """How fast the daemon drains a backlog, against a subscriber that does nothing.
 
-    python tests/bench/live.py [--rounds 5] [--messages 60000] [--points] [--profile]
+    python tests/bench/live.py [--rounds 5] [--messages 60000] [--points] [--fsync-delay 5]
+                               [--profile]
 
 Each side drains the same backlog of QoS 1 messages, queued by a fresh mosquitto for a persistent
 session (max_inflight_messages 1000, max_queued_messages 0, persistence off as is its default), in a
@@ -14,13 +15,15 @@ so no start-up is in it, and stops:
 
 The ratio is bare over driftbell, the median over the rounds: 1.0 is as fast as bare. Afterwards the
 daemon's own counts must say that it read and judged everything. ``--points`` also publishes every
-point; ``--profile`` runs the daemon once more under cProfile and prints the ten costliest calls.
+point; ``--fsync-delay`` makes each fsync of the daemon take so many milliseconds longer, as on a
+slow disk; ``--profile`` runs the daemon once more under cProfile and prints the ten costliest calls.
 """
 
 from __future__ import annotations
 
 import argparse
 import contextlib
+import os
 import pstats
 import re
 import sqlite3
@@ -31,12 +34,14 @@ import tempfile
 import time
 from collections.abc import Callable, Iterator
 from dataclasses import dataclass
+from functools import partial
 from pathlib import Path
 
 ROOT = Path(__file__).parents[2]
-sys.path[:0] = [str(ROOT), str(ROOT / "tests")]
+sys.path[:0] = [str(ROOT), str(ROOT / "tests"), str(ROOT / "tests" / "faults")]
 
 import paho.mqtt.client as mqtt  # noqa: E402
+import slow_disk  # noqa: E402
 from brokers import Client, Daemon, Mosquitto  # noqa: E402
 from paho.mqtt.enums import CallbackAPIVersion  # noqa: E402
 
@@ -153,7 +158,11 @@ def be_bare(port: int, count: int) -> None:
 
 
 def drain_driftbell(
-    messages: list[tuple[str, bytes]], *, points: bool, profile: Path | None = None
+    messages: list[tuple[str, bytes]],
+    *,
+    points: bool,
+    fsync_delay: int,
+    profile: Path | None = None,
 ) -> Drain:
     """One round of the daemon; AssertionError where it did not read and judge everything."""
     with fresh_broker() as (server, folder):
@@ -164,9 +173,12 @@ def drain_driftbell(
             publisher.publish_all(messages)
         profiled = [] if profile is None else ["-m", "cProfile", "-o", str(profile)]
         command = [sys.executable, *profiled, "-m", "monitor", "run", str(daemon.configuration)]
+        environment = dict(os.environ)
+        if fsync_delay:
+            environment |= slow_disk.environment(folder, fsync_ms=fsync_delay)
         started = time.monotonic()
         with daemon.log.open("ab") as log:
-            process = subprocess.Popen(command, stdout=log, stderr=log, cwd=ROOT)
+            process = subprocess.Popen(command, stdout=log, stderr=log, cwd=ROOT, env=environment)
         try:
             connected = connected_at(server, process, skip=1)
             ended = journaled_at(folder / "journal.db", len(messages), process)
@@ -201,15 +213,17 @@ def main() -> None:
     parser.add_argument("--rounds", type=int, default=5)
     parser.add_argument("--messages", type=int, default=60_000, help="a multiple of 30")
     parser.add_argument("--points", action="store_true", help="publish every point as well")
+    parser.add_argument("--fsync-delay", type=int, default=0, metavar="MS", help="a slow disk")
     parser.add_argument("--profile", action="store_true", help="print the daemon's ten costliest")
     parser.add_argument("--bare", nargs=2, type=int, help=argparse.SUPPRESS)
     args = parser.parse_args()
     if args.bare:
         be_bare(*args.bare)
         return
+    drain = partial(drain_driftbell, points=args.points, fsync_delay=args.fsync_delay)
     sides: dict[str, Callable[[list[tuple[str, bytes]]], Drain]] = {
         "bare": drain_bare,
-        "driftbell": lambda messages: drain_driftbell(messages, points=args.points),
+        "driftbell": drain,
     }
     drains: dict[str, list[Drain]] = {side: [] for side in sides}
     ratios = []
@@ -232,7 +246,7 @@ def main() -> None:
     print(f"ratio: {statistics.median(ratios):.2f} ({min(ratios):.2f} to {max(ratios):.2f})")
     if args.profile:
         with tempfile.NamedTemporaryFile(suffix=".prof") as file:
-            drain_driftbell(backlog(args.messages), points=args.points, profile=Path(file.name))
+            drain(backlog(args.messages), profile=Path(file.name))
             pstats.Stats(file.name).strip_dirs().sort_stats("tottime").print_stats(10)
 
 

@@ -116,7 +116,7 @@ def _single(daemon: Faulty, query: str) -> int:
         return found
 
 
-@pytest.mark.parametrize("rounds", [6, pytest.param(100, marks=pytest.mark.long)])
+@pytest.mark.parametrize("rounds", [4, pytest.param(100, marks=pytest.mark.long)])
 def test_live_equals_replay(rounds: int, broker: Broker, tmp_path: Path) -> None:
     chance = random.Random(rounds)
     with (
