@@ -16,7 +16,7 @@ so no start-up is in it, and stops:
 The ratio is bare over driftbell, the median over the rounds: 1.0 is as fast as bare. Afterwards the
 daemon's own counts must say that it read and judged everything. ``--points`` also publishes every
 point; ``--fsync-delay`` makes each fsync of the daemon take so many milliseconds longer, as on a
-slow disk; ``--profile`` runs the daemon once more under cProfile and prints the ten costliest calls.
+slow disk; ``--profile`` runs the daemon once more under cProfile and prints the costliest calls.
 """
 
 from __future__ import annotations

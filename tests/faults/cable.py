@@ -28,12 +28,20 @@ class Cable:
         self.port: int = self._listener.getsockname()[1]
         self._told, self._tell = socket.socketpair()
         self._pairs: dict[socket.socket, socket.socket] = {}
+        self._near: set[socket.socket] = set()
+        self._holding = False
         self._lock = threading.Lock()
         self._thread = threading.Thread(target=self._run)
+
+    def hold(self) -> None:
+        """Bring nothing from the client to the broker any more, until the next cut."""
+        self._holding = True
+        self._tell.send(b"\0")
 
     def cut(self) -> None:
         """End all that runs through it, whatever is under way."""
         with self._lock:
+            self._holding = False
             for end in self._pairs:
                 end.setsockopt(socket.SOL_SOCKET, socket.SO_LINGER, _RESET)
                 end.close()
@@ -63,7 +71,7 @@ class Cable:
     def _run(self) -> None:
         while True:
             with self._lock:
-                ends = list(self._pairs)
+                ends = [end for end in self._pairs if not (self._holding and end in self._near)]
             with contextlib.suppress(ValueError, OSError):  # cut while it was listed
                 ready, _, _ = select.select([self._told, self._listener, *ends], [], [])
                 for end in ready:
@@ -79,6 +87,7 @@ class Cable:
         far = socket.create_connection((HOST, self._broker))
         with self._lock:
             self._pairs |= {near: far, far: near}
+            self._near.add(near)
 
     def _forward(self, end: socket.socket) -> None:
         with self._lock:

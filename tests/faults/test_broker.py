@@ -9,13 +9,14 @@ import json
 import random
 import signal
 import threading
+import time
 from collections.abc import Callable
 from pathlib import Path
 
 import pytest
 from brokers import Broker, Client, Mosquitto
 from cable import Cable
-from daemons import until, weighings
+from daemons import until, weighing, weighings
 from faulty import (
     SHORT_ALERTS,
     Faulty,
@@ -31,6 +32,8 @@ from faulty import (
     torques,
     undisturbed,
 )
+
+from monitor.times import SECOND
 
 STEADY = 1.1
 """Seconds a connection holds: those that end sooner, in a row, are taken for a rival's work."""
@@ -199,6 +202,32 @@ def test_connections_that_break_under_load(count: int, broker: Broker, tmp_path:
                 daemon.await_logged("connected", cuts + 1)
         check_complete(daemon, watcher, feed.sent)
     assert cuts > 1
+
+
+def test_what_never_arrives_is_said_again(broker: Broker, tmp_path: Path) -> None:
+    """Alerts and acknowledgements left, and were lost on their way, and then the daemon was killed."""
+    start = int(time.time() - 600) * SECOND
+    # Each pair of jars is of a head of its own, and an alert.
+    messages = [weighing(n, start + n * SECOND // 10, 360.0, head=n // 2) for n in range(400)]
+    with (
+        Watcher(broker.port) as watcher,
+        Cable(broker.port) as cable,
+        faulty(tmp_path / "a", cable.port, single("net-weight")) as daemon,
+        Client(broker.port) as line,
+    ):
+        daemon.online()
+        line.publish_all(messages[:100])
+        daemon.await_count(100)
+        until(lambda: not daemon.waiting(), "an empty outbox", daemon.is_running)
+        cable.hold()
+        for n in range(100, 400, 4):  # a few at once: many commits
+            line.publish_all(messages[n : n + 4])
+        until(lambda: len(journaled_alerts(daemon)) >= 55, "alerts", daemon.is_running)
+        daemon.kill()
+        cable.cut()
+        daemon.online()
+        alerts = check_complete(daemon, watcher, messages)
+    assert len(alerts) == 200
 
 
 def test_two_daemons_with_one_client_id(broker: Broker, tmp_path: Path) -> None:
