@@ -205,7 +205,7 @@ def test_connections_that_break_under_load(count: int, broker: Broker, tmp_path:
 
 
 def test_what_never_arrives_is_said_again(broker: Broker, tmp_path: Path) -> None:
-    """Alerts and acknowledgements left, and were lost on their way, and then the daemon was killed."""
+    """Alerts and acknowledgements were lost on their way, and then the daemon was killed."""
     start = int(time.time() - 600) * SECOND
     # Each pair of jars is of a head of its own, and an alert.
     messages = [weighing(n, start + n * SECOND // 10, 360.0, head=n // 2) for n in range(400)]
