@@ -82,8 +82,12 @@ def check_frozen(
     assert acknowledged(broker) == before <= daemon.count() < len(published)
 
 
-@pytest.mark.parametrize("small_disk", [48, 12], indirect=True)
-@pytest.mark.parametrize("killed", [False, True], ids=["", "killed-meanwhile"])
+@pytest.mark.parametrize(
+    ("small_disk", "killed"),
+    [(48, False), (12, False), (48, True)],
+    ids=["", "without-room-for-ballast", "killed-meanwhile"],
+    indirect=["small_disk"],
+)
 def test_a_full_disk(
     killed: bool, small_disk: Path, mosquitto: Callable[..., Mosquitto], tmp_path: Path
 ) -> None:
