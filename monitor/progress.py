@@ -1,12 +1,12 @@
-"""How many of something a command has done, on a terminal, where it takes long.
+"""One line on a terminal that says how far a command is.
 
-Knows the terminal. Must not know what is done.
+Knows the terminal. Must not know what is being done.
 """
 
 from __future__ import annotations
 
 import sys
-from collections.abc import Iterable, Iterator
+from collections.abc import Callable, Iterable, Iterator
 from time import monotonic
 from typing import TypeVar
 
@@ -17,20 +17,47 @@ _EVERY = 0.25
 _LOOK_AFTER = 1_024  # between two looks at the clock
 
 
+class Progress:
+    """Shows a line on stderr where that is a terminal; ``clear`` takes it away.
+
+    ``at_once``: from the first call on, not only where it takes long.
+    """
+
+    def __init__(self, *, at_once: bool = False) -> None:
+        first = monotonic() + (0.0 if at_once else _QUIET)
+        self._next = first if sys.stderr.isatty() else float("inf")
+        self._shown = False
+
+    def __call__(self, text: Callable[[], str]) -> None:
+        """Show ``text()`` in place of the last, once it is due."""
+        now = monotonic()
+        if now < self._next:
+            return
+        self._next = now + _EVERY
+        self._shown = True
+        print(f"\r\x1b[K{text()}", end="", file=sys.stderr, flush=True)
+
+    def clear(self) -> None:
+        """Take the line away."""
+        if self._shown:
+            self._shown = False
+            print("\r\x1b[K", end="", file=sys.stderr, flush=True)
+
+
 class Counter:
-    """Counts calls, and shows them as so many of ``what`` on stderr where that is a terminal."""
+    """Counts calls, and shows them as so many of ``what``."""
 
     def __init__(self, what: str) -> None:
         self._what = what
         self._count = 0
-        self._next = monotonic() + _QUIET if sys.stderr.isatty() else float("inf")
-        self._shown = False
+        self._progress = Progress()
+        self.clear = self._progress.clear
 
     def __call__(self) -> None:
         """One more is done."""
         self._count += 1
         if self._count % _LOOK_AFTER == 0:
-            self._show()
+            self._progress(lambda: f"{self._count:,} {self._what}")
 
     def through(self, items: Iterable[T], what: str) -> Iterator[T]:
         """The items, counted from now on, as so many of ``what``."""
@@ -39,16 +66,3 @@ class Counter:
                 self._what, self._count = what, 0
             yield item
             self()
-
-    def clear(self) -> None:
-        """Take the line away."""
-        if self._shown:
-            self._shown = False
-            print("\r\x1b[K", end="", file=sys.stderr, flush=True)
-
-    def _show(self) -> None:
-        now = monotonic()
-        if now >= self._next:
-            self._next, self._shown = now + _EVERY, True
-            text = f"\r\x1b[K{self._count:,} {self._what}"
-            print(text, end="", file=sys.stderr, flush=True)

@@ -12,7 +12,6 @@ import signal
 import sys
 import tempfile
 import time
-from collections.abc import Callable
 from pathlib import Path
 
 import orjson
@@ -26,6 +25,7 @@ from monitor.demo.score import Finding, as_json, score
 from monitor.demo.session import Session, SessionError
 from monitor.demo.telling import Clock
 from monitor.messages import AlertEvent, CountsField
+from monitor.progress import Progress
 
 SCENE = SCENES["demo"]
 SHORTEST = 5.0  # seconds; in less, the line would outrun a small computer
@@ -86,7 +86,7 @@ def main(args: argparse.Namespace) -> int:
             interrupted = not run.play()
         run.hear_rest()
     except (BrokerError, SessionError) as error:
-        tell.clear()
+        tell.progress.clear()
         raise CommandError(str(error)) from None
     findings, false = score(SCENE.causes, run.raised)
     stopped = run.reached if interrupted else None
@@ -103,27 +103,12 @@ class _Teller:
 
     def __init__(self, *, silent: bool) -> None:
         self._silent = silent
-        self._terminal = sys.stderr.isatty()
-        self._shown = 0.0
+        self.progress = Progress(at_once=True)
 
     def __call__(self, text: str = "") -> None:
-        self.clear()
+        self.progress.clear()
         if not self._silent:
             print(text, flush=True)
-
-    def progress(self, text: Callable[[], str]) -> None:
-        """Show ``text()`` in place of the last, four times a second at most."""
-        if self._terminal and time.monotonic() - self._shown > 0.25:
-            self._shown = time.monotonic()
-            sys.stderr.write(f"\r\x1b[K{text()}")
-            sys.stderr.flush()
-
-    def clear(self) -> None:
-        """Take the progress away."""
-        if self._terminal and self._shown:
-            self._shown = 0.0
-            sys.stderr.write("\r\x1b[K")
-            sys.stderr.flush()
 
 
 class _Run:

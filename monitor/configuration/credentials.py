@@ -10,12 +10,11 @@ import ssl
 from collections.abc import Iterator
 from pathlib import Path
 
+from monitor import secrets_file
 from monitor.configuration.complaints import Complaint
 from monitor.configuration.problems import Path as KeyPath
 from monitor.configuration.problems import Problem, dotted
 from monitor.configuration.yamltree import Node, at
-
-_MAX_SECRET = 65_535  # bytes; what MQTT can carry
 
 
 def password(tree: Node, folder: Path) -> tuple[str | None, list[Complaint]]:
@@ -25,16 +24,9 @@ def password(tree: Node, folder: Path) -> tuple[str | None, list[Complaint]]:
     if node is None or not isinstance(node.value, str):
         return None, []
     try:
-        with (folder / node.value).open("rb") as file:
-            secret = file.read(_MAX_SECRET + 2).decode().rstrip("\r\n")
-        wrong = "is empty" if not secret else "is too long" if len(secret) > _MAX_SECRET else ""
-    except OSError as error:
-        wrong = f"cannot be read ({error.strerror})"
-    except ValueError:  # not UTF-8, or a path with a NUL
-        wrong = "is not a file of UTF-8 text"
-    else:
-        if not wrong:
-            return secret, []
+        return secrets_file.read(folder / node.value), []
+    except ValueError as error:
+        wrong = str(error)
     instead = "write the path of a file that holds the password and nothing else"
     return None, [_complaint(node, path, wrong, instead)]
 

@@ -100,8 +100,8 @@ class Run(Remembers):
         return ("run-upper",) if side > 0 else ("run-lower",)
 
 
-class Trend(Remembers):
-    """``length`` points in a row steadily rising or falling; equal neighbours end it."""
+class _Steps(Remembers):
+    """``length`` points in a row, each step as the one before or each the other way."""
 
     __slots__ = ("_length", "_points", "_previous", "_side")
     _memory = ("_points", "_side", "_previous")
@@ -110,82 +110,85 @@ class Trend(Remembers):
         self._length = length
         self._points = self._side = 0
         self._previous: float | None = None
+
+    def _completed(self, value: float, turn: int) -> int:
+        """Take a point: the side of its step where that completes the row, else 0.
+
+        ``turn`` is 1 where steps go on the same way, −1 where they alternate; equal neighbours end
+        the row.
+        """
+        before = self._previous
+        side = 0 if before is None else (value > before) - (value < before)
+        self._points = self._points + 1 if side and side == turn * self._side else 1 + abs(side)
+        self._side, self._previous = side, value
+        if self._points < self._length:
+            return 0
+        self._points = self._side = 0
+        self._previous = None
+        return side
+
+
+class Trend(_Steps):
+    """``length`` points in a row steadily rising or falling; equal neighbours end it."""
+
+    __slots__ = ()
 
     def step(self, value: float, z: float, limits: Limits) -> Met:
         """Met at the last point of the trend; judged on the values themselves."""
-        side = 0 if self._previous is None else _step_side(value, self._previous)
-        self._points = self._points + 1 if side and side == self._side else 1 + abs(side)
-        self._side, self._previous = side, value
-        if self._points < self._length:
+        side = self._completed(value, 1)
+        if not side:
             return NONE
-        self._points = self._side = 0
-        self._previous = None
         return ("trend-up",) if side > 0 else ("trend-down",)
 
 
-class Alternation(Remembers):
+class Alternation(_Steps):
     """``length`` points in a row alternating up and down; equal neighbours end it."""
 
-    __slots__ = ("_length", "_points", "_previous", "_side")
-    _memory = ("_points", "_side", "_previous")
-
-    def __init__(self, length: int) -> None:
-        self._length = length
-        self._points = self._side = 0
-        self._previous: float | None = None
+    __slots__ = ()
 
     def step(self, value: float, z: float, limits: Limits) -> Met:
         """Met at the last point; judged on standardised values."""
-        side = 0 if self._previous is None else _step_side(z, self._previous)
-        self._points = self._points + 1 if side and side == -self._side else 1 + abs(side)
-        self._side, self._previous = side, z
-        if self._points < self._length:
-            return NONE
-        self._points = self._side = 0
-        self._previous = None
-        return ("alternation",)
+        return ("alternation",) if self._completed(z, -1) else NONE
 
 
-class Stratification(Remembers):
+class _Streak(Remembers):
+    """``length`` points in a row of one kind, on whichever side."""
+
+    __slots__ = ("_length", "_run")
+    _memory = ("_run",)
+
+    def __init__(self, length: int) -> None:
+        self._length = length
+        self._run = 0
+
+    def _completed(self, is_one: bool) -> bool:
+        """Take a point: whether it completes the row."""
+        self._run = self._run + 1 if is_one else 0
+        if self._run < self._length:
+            return False
+        self._run = 0
+        return True
+
+
+class Stratification(_Streak):
     """``length`` points in a row inside the limits: they spread less than the baseline says."""
 
-    __slots__ = ("_length", "_run")
-    _memory = ("_run",)
-
-    def __init__(self, length: int) -> None:
-        self._length = length
-        self._run = 0
+    __slots__ = ()
 
     def step(self, value: float, z: float, limits: Limits) -> Met:
         """Met at the last point of the run."""
-        self._run = self._run + 1 if limits.lower < value < limits.upper else 0
-        if self._run < self._length:
-            return NONE
-        self._run = 0
-        return ("stratification",)
+        inside = limits.lower < value < limits.upper
+        return ("stratification",) if self._completed(inside) else NONE
 
 
-class Mixture(Remembers):
+class Mixture(_Streak):
     """``length`` points in a row outside the limits, on either side."""
 
-    __slots__ = ("_length", "_run")
-    _memory = ("_run",)
-
-    def __init__(self, length: int) -> None:
-        self._length = length
-        self._run = 0
+    __slots__ = ()
 
     def step(self, value: float, z: float, limits: Limits) -> Met:
         """Met at the last point of the run."""
-        self._run = self._run + 1 if _side(value, limits) else 0
-        if self._run < self._length:
-            return NONE
-        self._run = 0
-        return ("mixture",)
-
-
-def _step_side(value: float, previous: float) -> int:
-    return (value > previous) - (value < previous)
+        return ("mixture",) if self._completed(bool(_side(value, limits))) else NONE
 
 
 def rule(plan: RulePlan) -> Rule:

@@ -20,9 +20,9 @@ from monitor.commandline import COULD_NOT, DONE, WRONG, CommandError
 from monitor.configuration.problems import ConfigurationError
 from monitor.configuration.resolve import read_plan
 from monitor.plan import Plan
+from monitor.progress import Progress
 from monitor.times import parse_duration
 from replay.play import Played, play
-from replay.progress import Progress
 from replay.recordings import Chunk, Recording
 from replay.summary import summary
 from replay.tables import WORDS, Layout

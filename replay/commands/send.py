@@ -10,17 +10,16 @@ import math
 import signal
 import sys
 import time
+from pathlib import Path
 
 import orjson
 
-from monitor import times
+from monitor import secrets_file, times
 from monitor.commandline import COULD_NOT, DONE, WRONG, CommandError, broker_address
-from replay.progress import Progress
+from monitor.progress import Progress
 from replay.recordings import Recording
 from replay.send import Sent, send
 from replay.sending import Sender, SendingError
-
-_MAX_SECRET = 65_535  # bytes; MQTT carries no longer password
 
 
 def configure(parser: argparse.ArgumentParser) -> None:
@@ -152,14 +151,7 @@ def _password(args: argparse.Namespace) -> str | None:
         return None
     if args.username is None:
         raise CommandError("--password-file goes with --username", WRONG)
-    # The file's name is not shown: someone will write the password there.
     try:
-        with open(args.password_file, "rb") as file:
-            secret = file.read(_MAX_SECRET + 1).decode().rstrip("\r\n")
-    except OSError as error:
-        raise CommandError(f"--password-file cannot be read: {error.strerror}") from None
-    except ValueError:
-        raise CommandError("--password-file is not a file of UTF-8 text") from None
-    if not 0 < len(secret.encode()) <= _MAX_SECRET:
-        raise CommandError("--password-file must hold the password and nothing else")
-    return secret
+        return secrets_file.read(Path(args.password_file))
+    except ValueError as error:
+        raise CommandError(f"--password-file {error}") from None
