@@ -76,7 +76,7 @@ def test_every_example_runs_and_says_what_is_shown(tmp_path: Path, embedded: Emb
             (tmp_path / name).write_text(body)
         elif kind == "sh":
             for line in body.splitlines():
-                line = line.replace("localhost:1883", f"{HOST}:{embedded.port}")
+                line = line.replace("localhost:1885", f"{HOST}:{embedded.port}")
                 words = shlex.split(line)
                 said = run(words, tmp_path)
                 ran.append(words[1])
