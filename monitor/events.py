@@ -10,7 +10,7 @@ import re
 from collections.abc import Iterable
 from typing import Protocol
 
-from monitor import text, times
+from monitor import text, times, units
 from monitor.messages import (
     SCHEMA,
     AlertEvent,
@@ -71,7 +71,7 @@ def event(
             "value": signal.value,
             "lower": signal.lower,
             "upper": signal.upper,
-            "unit": plan.unit,
+            "unit": units.of_chart(alert.detector.scheme.chart, plan.unit),
         },
         signals=[SignalField(**known) for known in alert.met()],
         subgroup=None if subgroup is None else subgroup_field(subgroup),

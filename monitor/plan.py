@@ -18,7 +18,7 @@ Stream = tuple[tuple[str, str], ...]
 Direction = Literal["up", "down"]
 Side = Literal["both", "up", "down"]
 Priority = Literal["low", "medium", "high"]
-Chart = Literal["mean", "range", "sd", "median", "individual", "moving_range"]
+Chart = Literal["mean", "range", "sd", "variance", "median", "individual", "moving_range"]
 
 
 @dataclass(frozen=True, slots=True)
@@ -49,6 +49,8 @@ class SourcePlan:
     plausible_upper: float = 1e100
     expected_rate: float | None = None
     """Readings per second of the whole characteristic, all streams together."""
+    expected_streams: int | None = None
+    """How many streams there will be, where nobody can tell otherwise."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -97,17 +99,27 @@ class RulePlan:
 
 @dataclass(frozen=True, slots=True)
 class ShewhartPlan:
-    """Shewhart chart; rules in the order they are tried (the first met names the alert)."""
+    """Shewhart chart; rules in the order they are tried (the first met names the alert).
+
+    ``exact`` is of charts of spread (a variance's are always so): each limit is crossed as often as
+    a normal statistic crosses ``width`` standard errors, rather than lying so far from the centre.
+    """
 
     chart: Chart
     width: float
     rules: tuple[RulePlan, ...]
     direction: Side = "both"
+    exact: bool = False
 
 
 @dataclass(frozen=True, slots=True)
 class CusumPlan:
-    """Tabular CUSUM; ``k`` and ``h`` in standard errors, ``head_start`` a fraction of ``h``."""
+    """Tabular CUSUM; ``k`` and ``h`` in standard errors, ``head_start`` a fraction of ``h``.
+
+    On chart ``variance``, where nothing is clipped, they are multiples of the baseline's variance:
+    with direction ``both`` of the upper sum, ``k_lower`` and ``h_lower`` being the lower sum's, for
+    subgroups of ``size`` (a subgroup of n counts (n − 1)/(size − 1) times).
+    """
 
     chart: Chart
     k: float
@@ -116,6 +128,20 @@ class CusumPlan:
     clip: float | None = None
     hold: bool = False
     direction: Side = "both"
+    k_lower: float | None = None
+    h_lower: float | None = None
+    size: int | None = None
+
+    def sums(self) -> list[tuple[Literal["upper_sum", "lower_sum"], float, float]]:
+        """The sums that are watched, with the k and h of each."""
+        k = self.k if self.k_lower is None else self.k_lower
+        h = self.h if self.h_lower is None else self.h_lower
+        watched: list[tuple[Literal["upper_sum", "lower_sum"], float, float]] = []
+        if self.direction != "down":
+            watched.append(("upper_sum", self.k, self.h))
+        if self.direction != "up":
+            watched.append(("lower_sum", k, h))
+        return watched
 
 
 @dataclass(frozen=True, slots=True)
@@ -135,13 +161,54 @@ Scheme = ShewhartPlan | CusumPlan | EwmaPlan
 
 
 @dataclass(frozen=True, slots=True)
+class Intent:
+    """What a detector was asked to do, which its scheme was worked out from.
+
+    ``interval``: subgroups of the whole characteristic between this detector's false alarms, while
+    its mean is off by up to ``ignore``. ``size``: readings in a usual subgroup. ``catch`` and
+    ``ignore`` in the gauge's unit, ``catch_ratio`` times the usual spread; a Shewhart chart has
+    neither ``catch`` nor ``catch_ratio``: it takes what the interval leaves it.
+    """
+
+    kind: Literal["shewhart", "cusum", "ewma"]
+    chart: Chart
+    interval: float
+    size: int
+    catch: float | None = None
+    ignore: float = 0.0
+    catch_ratio: float | None = None
+    direction: Side = "both"
+    head_start: float = 0.0
+    clip: float | None = None
+    hold: bool = False
+    asymptotic: bool = False
+
+
+@dataclass(frozen=True, slots=True)
 class DetectorPlan:
-    """A named detector; ``revision`` is its decision revision (contract, section 4, ``id``)."""
+    """A named detector; ``revision`` is its decision revision (contract, section 4, ``id``).
+
+    ``intent`` is None where the scheme itself was written down.
+    """
 
     name: str
     kind: str
     scheme: Scheme
     revision: str
+    intent: Intent | None = None
+
+
+@dataclass(frozen=True, slots=True)
+class DeclaredDetector:
+    """A detector as declared, for baselines that are still to come.
+
+    ``decides`` is the canonical JSON of all that its revision hashes beside the baseline.
+    """
+
+    name: str
+    kind: str
+    given: Intent | Scheme
+    decides: str
 
 
 @dataclass(frozen=True, slots=True)
@@ -177,6 +244,19 @@ class Judgement:
 
 
 @dataclass(frozen=True, slots=True)
+class LearnPlan:
+    """A baseline is proposed for each stream once it had so many ``subgroups``, over so long (µs).
+
+    ``adopt``: one that may be trusted is judged by from then on, with ``detectors``.
+    """
+
+    subgroups: int
+    over_at_least: int
+    adopt: bool
+    detectors: tuple[DeclaredDetector, ...]
+
+
+@dataclass(frozen=True, slots=True)
 class CharacteristicPlan:
     """One characteristic; durations in microseconds of event time."""
 
@@ -195,16 +275,18 @@ class CharacteristicPlan:
     resolution: float | None = None
     """The gauge's smallest step, for the advice of ``check``; None where nobody said."""
     by_stream: Mapping[Stream, Judgement] = field(default_factory=dict)
+    learn: LearnPlan | None = None
 
     def judgement_of(self, stream: Stream) -> Judgement | None:
         """The stream's own judgement, else the common one; None where it has neither."""
         return self.by_stream.get(stream, self.judgement)
 
-    def example(self) -> tuple[Stream | None, Judgement]:
-        """The common judgement, or that of the first stream: all have the same detectors."""
+    def example(self) -> tuple[Stream | None, Judgement | None]:
+        """The common judgement, or that of the first stream: all have the same detectors. None
+        where every baseline is still to be learned."""
         if self.judgement is not None:
             return None, self.judgement
-        return next(iter(self.by_stream.items()))
+        return next(iter(self.by_stream.items()), (None, None))
 
 
 @dataclass(frozen=True, slots=True)

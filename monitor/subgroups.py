@@ -66,12 +66,18 @@ class Subgroup:
         return statistics.median(self.values)
 
     @property
-    def sd(self) -> float | None:
-        """Sample standard deviation (divisor n − 1); None for a single value."""
+    def variance(self) -> float | None:
+        """Sample variance (divisor n − 1); None for a single value."""
         if self.size < 2:
             return None
         centre = self.mean
-        return math.sqrt(sum((x - centre) * (x - centre) for x in self.values) / (self.size - 1))
+        return sum((x - centre) * (x - centre) for x in self.values) / (self.size - 1)
+
+    @property
+    def sd(self) -> float | None:
+        """Sample standard deviation, the square root of the variance."""
+        variance = self.variance
+        return None if variance is None else math.sqrt(variance)
 
 
 class Gatherer(Protocol):

@@ -8,7 +8,7 @@ from __future__ import annotations
 import math
 from typing import NamedTuple
 
-from monitor import times
+from monitor import times, units
 from monitor.detectors import Signal
 from monitor.detectors.charts import SPREAD
 from monitor.lookback import Shift
@@ -20,6 +20,7 @@ CAUTION = (
     "This is an advisory message, not a safety function."
 )
 
+_HARDLY = 0.01  # of the usual spread: a gauge that shows the same value again and again
 _MOST_PLACES = 12
 _PLAIN_BELOW = 1e12  # from there up a string of digits tells less than an exponent
 _WITHDRAWN = {
@@ -69,7 +70,7 @@ def _change(finding: Finding, unit: str, time: int, again: str) -> str:
     signal, chart, shift, _ = finding
     if chart in SPREAD:
         more = "more" if signal.rule.endswith("upper") else "less"
-        return f"varies {more} than usual{again}"
+        return f"varies {more} than usual{again}{_how_much(signal, time)}"
     if signal.direction is None:
         return {
             "alternation": f"goes up and down by turns{again}",
@@ -88,6 +89,17 @@ def _change(finding: Finding, unit: str, time: int, again: str) -> str:
     )
 
 
+def _how_much(signal: Signal, time: int) -> str:
+    if signal.ratio is None or signal.onset is None:
+        return ""
+    times_usual = (
+        f"about {_about(signal.ratio)} times its usual spread"
+        if signal.ratio >= _HARDLY
+        else "hardly at all"
+    )
+    return f": {times_usual} since about {_clock(signal.onset, time)}"
+
+
 def _over(signal: Signal, chart: str) -> str:
     if chart in SPREAD:
         return "it varies as usual"
@@ -98,15 +110,18 @@ def _over(signal: Signal, chart: str) -> str:
 
 def _figures(judged: Judged, finding: Finding) -> str:
     signal, chart, _, error = finding
-    scale = _Scale(judged.plan.unit, error)
+    upper = signal.rule.endswith(("upper", "up"))
+    limit = signal.upper if upper else signal.lower
+    if chart == "variance":
+        # Far below the usual variance a lower limit needs digits of its own.
+        error = min(judged.baseline.sigma**2, limit or signal.upper or math.inf)
+    scale = _Scale(units.of_chart(chart, judged.plan.unit), error)
     name = {"moving_range": "moving range", "individual": "value", "sd": "standard deviation"}.get(
         chart, chart
     )
     row = f"{signal.span} {name}s in a row"
     latest = f"the latest {scale.show(signal.value)}"
-    upper = signal.rule.endswith(("upper", "up"))
     beyond = "above" if upper else "below"
-    limit = signal.upper if upper else signal.lower
     match signal.rule.rsplit("-", 1)[0]:
         case "cusum":
             return scale.held(signal.statistic.replace("_", " "), signal.value, signal.upper)

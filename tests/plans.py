@@ -53,10 +53,15 @@ GAUGE = SourcePlan(
 
 
 def shewhart(
-    *rules: RulePlan, chart: Chart = "individual", width: float = 3.0, direction: Side = "both"
+    *rules: RulePlan,
+    chart: Chart = "individual",
+    width: float = 3.0,
+    direction: Side = "both",
+    exact: bool = False,
 ) -> ShewhartPlan:
     """A Shewhart chart, with the rule ``outside`` where none is given."""
-    return ShewhartPlan(chart, width, rules or (RulePlan("outside", width=width),), direction)
+    outside = (RulePlan("outside", width=width),)
+    return ShewhartPlan(chart, width, rules or outside, direction, exact)
 
 
 def characteristic(

@@ -80,15 +80,20 @@ PLAN = Plan(
         charted("median", *WESTERN[1:]),
         charted("range"),
         charted("sd"),
+        charted("variance"),
+        of("exact", plans.shewhart(chart="range", width=2.0, exact=True)),
+        of("spread", CusumPlan("variance", 1.46, 4.0, k_lower=0.6, h_lower=2.0, size=3)),
+        of("spread-held", CusumPlan("variance", 1.46, 3.0, 0.5, None, True, "up", size=3)),
         charted("moving_range", size=1),
     )
 )
 MEANS = {"mean", "individual"}
+SQUARES = {"variance", "exact", "spread", "spread-held"}
 
 
 def recorded(seed: int = 3, seconds: int = 600) -> list[Recorded]:
     """Two readings a second of everything, wandering slowly and now and then varying more."""
-    chance = random.Random(seed)
+    common, squares = random.Random(seed), random.Random(seed + 1)
     entries: list[Recorded] = [
         Started(plans.START),
         Configured(plans.START, PLAN),
@@ -99,6 +104,7 @@ def recorded(seed: int = 3, seconds: int = 600) -> list[Recorded]:
         drift = 0.7 * math.sin(second / 40) + 0.4 * math.sin(second / 7)
         spread = 2.0 if second % 200 > 170 else 0.4 if second % 200 > 140 else 1.0
         for each in PLAN.characteristics:
+            chance = squares if each.name in SQUARES else common
             value = 10.0 + drift + chance.gauss(0.0, spread)
             if each.name.startswith("individual-alternation"):
                 value = 10.0 + (-1) ** n * abs(chance.gauss(0.0, 1.0))

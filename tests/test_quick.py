@@ -87,6 +87,7 @@ PLANS = {
     "subgroups": characteristic(
         shewhart(chart="mean", width=2.0),
         CusumPlan("mean", 0.5, 3.0),
+        CusumPlan("variance", 1.5, 2.0, k_lower=0.6, h_lower=1.0, size=3),
         source=SOURCE,
         size=3,
         max_gap=2 * SECOND,

@@ -95,6 +95,11 @@ BELOW = Signal("outside-lower", "down", "mean", 1.874, 1.902, 2.198)
 RANGE = Signal("outside-upper", None, "range", 9.93, 0.0, 9.34)
 CLOSE = Signal("outside-lower", None, "range", 0.02, 0.03, 9.34)
 MOVED = Signal("outside-upper", None, "moving_range", 4.6, 0.0, 4.42)
+WIDE = Signal("outside-upper", None, "variance", 17.9, 0.1, 16.07)
+NARROW = Signal("outside-lower", None, "variance", 0.0044, 0.0062, 16.07)
+WIDER = Signal("cusum-upper", None, "upper_sum", 45.21, None, 43.32, 9, 0, 1.583, RISE.onset)
+TIGHT = Signal("cusum-lower", None, "lower_sum", 0.0411, None, 0.0403, 9, 0, 0.446, RISE.onset)
+STUCK = Signal("cusum-lower", None, "lower_sum", 24.0, None, 23.1, 9, 0, 0.0, START - DAY)
 ZONE = Signal("zone-lower", "down", "mean", 339.12, 339.32, 343.08, 3, 2)
 RUN = Signal("run-upper", "up", "individual", 165.7, 161.4, 168.6, 9)
 FALLING = Signal("trend-down", "down", "mean", 339.9, 338.38, 344.02, 6)
@@ -138,6 +143,35 @@ AVERAGE = Signal("ewma-lower", "down", "mean", 1.985, 1.9942, 2.1058)
         (
             say(GLUE, MOVED, None, chart="moving_range"),
             "Glue temperature varies more than usual (moving range 4.6 °C, limit 4.4 °C).",
+        ),
+        (
+            say(WEIGHT, WIDE, None, chart="variance"),
+            "Net weight, lane 1 head 4, varies more than usual (variance 17.9 g², limit 16.1 g²).",
+        ),
+        (
+            say(WEIGHT, NARROW, None, chart="variance"),
+            "Net weight, lane 1 head 4, varies less than usual "
+            "(variance 0.0044 g², limit 0.0062 g²).",
+        ),
+        (
+            say(WEIGHT, WIDER, None, chart="variance"),
+            "Net weight, lane 1 head 4, varies more than usual: about 1.6 times its usual spread "
+            "since about 06:40:48 UTC (upper sum 45.2 g², limit 43.3 g²).",
+        ),
+        (
+            say(WEIGHT, WIDER, None, "rejoined", chart="variance"),
+            "Net weight, lane 1 head 4, varies more than usual again: about 1.6 times its usual "
+            "spread since about 06:40:48 UTC (upper sum 45.2 g², limit 43.3 g²).",
+        ),
+        (
+            say(TORQUE, TIGHT, None, chart="variance"),
+            "Capping torque varies less than usual: about 0.45 times its usual spread "
+            "since about 06:40:48 UTC (lower sum 0.041 (N·m)², limit 0.040 (N·m)²).",
+        ),
+        (
+            say(WEIGHT, STUCK, None, chart="variance"),
+            "Net weight, lane 1 head 4, varies less than usual: hardly at all since about "
+            "2026-03-01 06:41:12 UTC (lower sum 24.0 g², limit 23.1 g²).",
         ),
         (
             say(WEIGHT, ZONE, FALL),

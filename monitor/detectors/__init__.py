@@ -9,6 +9,7 @@ from monitor.detectors.base import Detector, Signal
 from monitor.detectors.cusum import Cusum
 from monitor.detectors.ewma import Ewma
 from monitor.detectors.shewhart import Shewhart
+from monitor.detectors.variance_cusum import VarianceCusum
 from monitor.plan import BaselinePlan, CusumPlan, DetectorPlan, EwmaPlan, ShewhartPlan
 
 __all__ = ["Detector", "Signal", "detector"]
@@ -19,6 +20,8 @@ def detector(plan: DetectorPlan, baseline: BaselinePlan) -> Detector:
     match plan.scheme:
         case ShewhartPlan() as scheme:
             return Shewhart(scheme, baseline)
+        case CusumPlan(chart="variance") as scheme:
+            return VarianceCusum(scheme, baseline)
         case CusumPlan() as scheme:
             return Cusum(scheme, baseline)
         case EwmaPlan() as scheme:

@@ -18,7 +18,8 @@ class Signal(NamedTuple):
 
     ``span`` is the number of points the rule looks at, ``needed`` how many a zone rule asks for.
     ``direction`` is the side the process mean went to; None for spread and for patterns without a
-    side.
+    side. ``ratio`` is about how many times its usual spread the stream has had since ``onset``
+    (µs), where a detector of spread can tell.
     """
 
     rule: str
@@ -29,6 +30,8 @@ class Signal(NamedTuple):
     upper: float | None
     span: int = 1
     needed: int = 0
+    ratio: float | None = None
+    onset: int | None = None
 
 
 NO_SIGNALS: tuple[Signal, ...] = ()

@@ -11,7 +11,13 @@ from typing import Any, Protocol
 
 from monitor.memory import Remembers
 from monitor.methods.constants import c5, d3, median_se
-from monitor.methods.limits import Limits, moving_range_limits, range_limits, sd_limits
+from monitor.methods.limits import (
+    Limits,
+    moving_range_limits,
+    range_limits,
+    sd_limits,
+    variance_limits,
+)
 from monitor.plan import BaselinePlan
 from monitor.subgroups import Subgroup
 
@@ -22,7 +28,7 @@ def standard_error(baseline: BaselinePlan, size: int) -> float:
 
 
 class Chart(Protocol):
-    """A statistic and its limits."""
+    """A statistic and its limits, in the characteristic's unit (a variance's: squared)."""
 
     name: str
 
@@ -33,7 +39,8 @@ class Chart(Protocol):
         """Standard error of the statistic for a subgroup of ``size``."""
 
     def limits(self, size: int, width: float) -> Limits:
-        """Limits ``width`` standard errors from the centre for a subgroup of ``size``."""
+        """Limits ``width`` standard errors from the centre for a subgroup of ``size``, or exact
+        ones that are crossed as often as such limits of a normal statistic."""
 
     def restart(self) -> None:
         """Forget the readings before."""
@@ -74,11 +81,12 @@ class Location(Remembers):
 class Range(Remembers):
     """The range of a subgroup of two or more."""
 
-    __slots__ = ("_sigma", "name")
+    __slots__ = ("_exact", "_sigma", "name")
 
-    def __init__(self, name: str, baseline: BaselinePlan) -> None:
+    def __init__(self, name: str, baseline: BaselinePlan, exact: bool) -> None:
         self.name = name
         self._sigma = baseline.sigma
+        self._exact = exact
 
     def value(self, subgroup: Subgroup) -> float | None:
         """Largest less smallest."""
@@ -89,8 +97,8 @@ class Range(Remembers):
         return d3(size) * self._sigma
 
     def limits(self, size: int, width: float) -> Limits:
-        """d2 σ ± width · d3 σ, not below zero."""
-        return range_limits(size, self._sigma, width)
+        """d2 σ ± width · d3 σ, not below zero; or exact."""
+        return range_limits(size, self._sigma, width, exact=self._exact)
 
     def restart(self) -> None:
         """Nothing is remembered."""
@@ -99,11 +107,12 @@ class Range(Remembers):
 class Sd(Remembers):
     """The standard deviation of a subgroup of two or more."""
 
-    __slots__ = ("_sigma", "name")
+    __slots__ = ("_exact", "_sigma", "name")
 
-    def __init__(self, name: str, baseline: BaselinePlan) -> None:
+    def __init__(self, name: str, baseline: BaselinePlan, exact: bool) -> None:
         self.name = name
         self._sigma = baseline.sigma
+        self._exact = exact
 
     def value(self, subgroup: Subgroup) -> float | None:
         """Sample standard deviation."""
@@ -114,8 +123,33 @@ class Sd(Remembers):
         return c5(size) * self._sigma
 
     def limits(self, size: int, width: float) -> Limits:
-        """c4 σ ± width · c5 σ, not below zero."""
-        return sd_limits(size, self._sigma, width)
+        """c4 σ ± width · c5 σ, not below zero; or exact."""
+        return sd_limits(size, self._sigma, width, exact=self._exact)
+
+    def restart(self) -> None:
+        """Nothing is remembered."""
+
+
+class Variance(Remembers):
+    """The variance of a subgroup of two or more, in the unit squared; its limits are exact."""
+
+    __slots__ = ("_sigma", "name")
+
+    def __init__(self, name: str, baseline: BaselinePlan, exact: bool) -> None:
+        self.name = name
+        self._sigma = baseline.sigma
+
+    def value(self, subgroup: Subgroup) -> float | None:
+        """Sample variance."""
+        return subgroup.variance
+
+    def error(self, size: int) -> float:
+        """σ²·√(2/(n − 1))."""
+        return self._sigma**2 * math.sqrt(2 / (size - 1))
+
+    def limits(self, size: int, width: float) -> Limits:
+        """σ²·χ²/(n − 1)."""
+        return variance_limits(size, self._sigma, width)
 
     def restart(self) -> None:
         """Nothing is remembered."""
@@ -150,12 +184,13 @@ class Median(Remembers):
 class MovingRange(Remembers):
     """The distance between neighbouring single readings; blank at the first and after a gap."""
 
-    __slots__ = ("_previous", "_sigma", "name")
+    __slots__ = ("_exact", "_previous", "_sigma", "name")
     _memory = ("_previous",)
 
-    def __init__(self, name: str, baseline: BaselinePlan) -> None:
+    def __init__(self, name: str, baseline: BaselinePlan, exact: bool) -> None:
         self.name = name
         self._sigma = baseline.sigma
+        self._exact = exact
         self._previous: float | None = None
 
     def value(self, subgroup: Subgroup) -> float | None:
@@ -169,27 +204,32 @@ class MovingRange(Remembers):
         return d3(2) * self._sigma
 
     def limits(self, size: int, width: float) -> Limits:
-        """Limits of a range of two."""
-        return moving_range_limits(self._sigma, width)
+        """Limits of a range of two; or exact."""
+        return moving_range_limits(self._sigma, width, exact=self._exact)
 
     def restart(self) -> None:
         """The next reading has no neighbour."""
         self._previous = None
 
 
-_KINDS: dict[str, Callable[[str, BaselinePlan], Chart]] = {
+_LOCATION: dict[str, Callable[[str, BaselinePlan], Chart]] = {
     "mean": Location,
     "individual": Location,
     "median": Median,
+}
+_SPREAD: dict[str, Callable[[str, BaselinePlan, bool], Chart]] = {
     "range": Range,
     "sd": Sd,
+    "variance": Variance,
     "moving_range": MovingRange,
 }
 
-SPREAD = frozenset({"range", "sd", "moving_range"})
+SPREAD = frozenset(_SPREAD)
 """Charts whose signals say that the spread changed, not the mean: they have no direction."""
 
 
-def chart(name: str, baseline: BaselinePlan) -> Chart:
-    """The chart of that name."""
-    return _KINDS[name](name, baseline)
+def chart(name: str, baseline: BaselinePlan, exact: bool = False) -> Chart:
+    """The chart of that name; ``exact`` limits are of charts of spread."""
+    if name in SPREAD:
+        return _SPREAD[name](name, baseline, exact)
+    return _LOCATION[name](name, baseline)

@@ -35,7 +35,7 @@ def _limits(
 ) -> tuple[tuple[Limits, ...], Limits, float]:
     """Each rule's limits, the chart's own, and the standard error, for subgroups of ``size``:
     shared by the streams of one baseline."""
-    judged = chart(plan.chart, baseline)
+    judged = chart(plan.chart, baseline, plan.exact)
     rules = tuple(judged.limits(size, each.width) for each in plan.rules)
     return rules, judged.limits(size, plan.width), judged.error(size)
 
@@ -60,7 +60,7 @@ class Shewhart:
     def __init__(self, plan: ShewhartPlan, baseline: BaselinePlan) -> None:
         self._plan = plan
         self._baseline = baseline
-        self._chart = chart(plan.chart, baseline)
+        self._chart = chart(plan.chart, baseline, plan.exact)
         self._spread = plan.chart in SPREAD
         self._plain = [each.rule for each in plan.rules] == ["outside"]
         self._rules = tuple(rule(r) for r in plan.rules)

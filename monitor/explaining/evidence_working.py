@@ -12,7 +12,6 @@ from dataclasses import replace
 from functools import partial
 
 from monitor import times
-from monitor.detectors.charts import chart
 from monitor.explaining.working import CLOSE, Rung, Step, Working, clipped, counted, rule_of
 from monitor.outputs import Evidence
 from monitor.plan import CusumPlan, EwmaPlan, ShewhartPlan
@@ -69,7 +68,7 @@ def _charted(step: Step, rung: Rung) -> Step:
     scheme, rule = rung.detector.scheme, rule_of(rung)
     assert isinstance(scheme, ShewhartPlan)
     width = rule.width if rule is not None and rule.width else scheme.width
-    limits = chart(scheme.chart, rung.baseline).limits(step.size or 1, width)
+    limits = rung.chart().limits(step.size or 1, width)
     return replace(step, lower=limits.lower, upper=limits.upper)
 
 

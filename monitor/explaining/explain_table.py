@@ -8,7 +8,7 @@ from __future__ import annotations
 import math
 from collections.abc import Callable, Iterator, Sequence
 
-from monitor import times
+from monitor import times, units
 from monitor.explaining.working import Rung, Step, Working
 from monitor.plan import CusumPlan, EwmaPlan, ShewhartPlan
 
@@ -22,7 +22,7 @@ class Table:
 
     def __init__(self, working: Working, rung: Rung, unit: str) -> None:
         self._working, self._rung, self._unit = working, rung, unit
-        places = max(0, 1 - math.floor(math.log10(rung.error(rung.subgroup["size"]))))
+        places = max(0, 1 - math.floor(math.log10(rung.worth(rung.subgroup["size"]))))
         while places < _MOST_PLACES and any(
             step.counts and _look_equal(step, rung.sign, places) for step in working.steps
         ):
@@ -62,13 +62,20 @@ class Table:
         return "signalled" if step.signalled else "•" if step.counts else ""
 
     def _columns(self) -> Iterator[tuple[str, Callable[[Step], str]]]:
-        unit = f", {self._unit}" if self._unit else ""
         rung = self._rung
         scheme = rung.detector.scheme
+        unit = units.of_chart(scheme.chart, self._unit)
+        unit = f", {unit}" if unit else ""
         yield "subgroup", lambda s: "" if s.number is None else f"{s.number}"
         yield "first reading", lambda s: self._clock(s.first)
         yield "n", lambda s: "" if s.size is None else f"{s.size}"
         match scheme:
+            case CusumPlan(chart="variance"):
+                yield f"variance{unit}", lambda s: self._number(s.terms.get("variance"))
+                yield "/ usual", lambda s: _plain(s.terms.get("times_usual"))
+                yield "added", lambda s: _signed(s.terms.get("added"))
+                yield "sum", lambda s: _plain(s.terms.get("sum"))
+                yield f"sum × usual{unit}", lambda s: self._number(s.value)
             case CusumPlan():
                 added = f"{'−' if rung.sign < 0 else ''}z − k"
                 yield f"mean{unit}", lambda s: self._number(s.mean)

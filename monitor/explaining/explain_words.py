@@ -11,7 +11,7 @@ import math
 import textwrap
 from collections.abc import Iterator
 
-from monitor import stream_names, times
+from monitor import stream_names, times, units
 from monitor.configuration import false_alarms, pace, spans
 from monitor.explaining.explain import Explanation
 from monitor.explaining.explain_table import Table, charted
@@ -127,6 +127,12 @@ def _subgroups(plan: CharacteristicPlan) -> str:
 
 def _scheme(detector: DetectorPlan) -> str:
     match detector.scheme:
+        case CusumPlan(chart="variance") as s:
+            constants = "CUSUM of the variance"
+            for name, k, h in s.sums():
+                constants += f", {name.replace('_', ' ')} k {k:.6g} and h {h:.6g}"
+            constants += " times the usual variance"
+            constants += f", head start {s.head_start:g}" if s.head_start else ""
         case CusumPlan() as s:
             constants = f"CUSUM of the {s.chart}, k {s.k:.6g}, h {s.h:.6g}"
             constants += f", head start {s.head_start:g}" if s.head_start else ""
@@ -135,7 +141,10 @@ def _scheme(detector: DetectorPlan) -> str:
             constants = f"EWMA of the {s.chart}, lambda {s.lam:.6g}, width {s.width:.6g}, {limits}"
         case ShewhartPlan() as s:
             rules = ", ".join(map(_rule, s.rules))
-            constants = f"Shewhart chart of the {charted(s.chart)}, width {s.width:.6g}: {rules}"
+            exact = " of exact limits" if s.exact else ""
+            constants = (
+                f"Shewhart chart of the {charted(s.chart)}, width {s.width:.6g}{exact}: {rules}"
+            )
     scheme = detector.scheme
     if not isinstance(scheme, ShewhartPlan):
         constants += f", clip {scheme.clip:g}" if scheme.clip is not None else ""
@@ -175,6 +184,9 @@ def _worked_out(told: Explanation, working: Working, rung: Rung) -> Iterator[str
         told.agrees or "",
         "IT DOES NOT GIVE THE FIGURES OF THE ALERT: another version may have judged it",
     )
+    if rung.is_squared:
+        yield from _of_squares(told, rung)
+        return
     size = rung.subgroup["size"]
     error = rung.error(size)
     yield (
@@ -207,14 +219,38 @@ def _worked_out(told: Explanation, working: Working, rung: Rung) -> Iterator[str
         yield f"before the first of these it was {working.carried:.4g}{unit} already"
 
 
+def _of_squares(told: Explanation, rung: Rung) -> Iterator[str]:
+    unit = _unit(units.of_chart("variance", told.plan.unit))
+    usual, scheme = rung.baseline.sigma**2, rung.detector.scheme
+    yield f"usual variance: {usual:.4g}{unit} = sigma²"
+    if not isinstance(scheme, CusumPlan):
+        return
+    k, h = rung.summed()
+    adds = f"variance / usual − {k:.6g}" if rung.sign > 0 else f"{k:.6g} − variance / usual"
+    size = scheme.size or rung.subgroup["size"]
+    yield (
+        f"the {rung.statistic['name'].replace('_', ' ')} adds {adds} (times (n − 1)/{size - 1} "
+        f"where n is not {size}) and never falls below 0; it signals above h = {h:.6g}, which "
+        f"is {h * usual:.4g}{unit}"
+        + (
+            ""
+            if scheme.hold
+            else f"; after a signal it starts again at {scheme.head_start * h:.4g}"
+        )
+    )
+
+
 def _it_rang(working: Working, rung: Rung, unit: str) -> Iterator[str]:
     rang, said, counted = working.rang, rung.statistic, sum(s.counts for s in working.steps)
-    unit, scheme = _unit(unit), rung.detector.scheme
+    scheme = rung.detector.scheme
+    unit = _unit(units.of_chart(scheme.chart, unit))
     limit = said["lower"] if rung.sign < 0 and said["lower"] is not None else said["upper"]
     held = f"{said['value']!r}{unit}"
     against = held if limit is None else f"{held}, limit {limit!r}{unit}"
     subgroups = f"{counted} subgroup{'s'[: counted > 1]}"
     match scheme:
+        case CusumPlan() if not rang.terms:
+            yield f"when the sum was {against}"
         case CusumPlan():
             yield f"when the sum, over {subgroups} since it last was 0 or started, was {against}"
         case EwmaPlan():

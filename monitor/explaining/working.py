@@ -11,7 +11,7 @@ from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass, field, replace
 from functools import partial
 
-from monitor.detectors.charts import chart, standard_error
+from monitor.detectors.charts import Chart, chart, standard_error
 from monitor.messages import AlertEvent, StatisticField, SubgroupField
 from monitor.outputs import Points, Row
 from monitor.plan import (
@@ -22,6 +22,7 @@ from monitor.plan import (
     RulePlan,
     ShewhartPlan,
 )
+from monitor.subgroups import Subgroup
 
 CLOSE = 1e-9  # of a standard error: so far off is a mean that was kept standardised
 
@@ -31,7 +32,9 @@ class Step:
     """One subgroup as a detector saw it, in the characteristic's unit; None where it is not known.
 
     ``terms`` are what ``value`` is made of: a CUSUM's ``added`` and ``sum`` are in standard errors,
-    an EWMA's ``weighted`` and ``kept`` in the unit. ``counts`` where it is part of what rang.
+    an EWMA's ``weighted`` and ``kept`` in the unit; of the variance, ``variance`` and ``value`` are
+    in the unit squared, ``times_usual``, ``added`` and ``sum`` in multiples of the baseline's.
+    ``counts`` where it is part of what rang.
     """
 
     first: int
@@ -94,6 +97,31 @@ class Rung:
         """The standard error of a subgroup's mean."""
         return standard_error(self.baseline, size)
 
+    def chart(self) -> Chart:
+        """What a Shewhart chart's limits come from."""
+        scheme = self.detector.scheme
+        exact = isinstance(scheme, ShewhartPlan) and scheme.exact
+        return chart(scheme.chart, self.baseline, exact)
+
+    @property
+    def is_squared(self) -> bool:
+        """Whether what is charted is in the unit squared."""
+        return self.detector.scheme.chart == "variance"
+
+    def worth(self, size: int) -> float:
+        """A difference worth showing, in what is charted."""
+        if not self.is_squared:
+            return self.error(size)
+        said = self.statistic
+        limit = said["lower"] if self.sign < 0 and said["lower"] is not None else said["upper"]
+        return min(self.baseline.sigma**2, limit or math.inf)
+
+    def summed(self) -> tuple[float, float]:
+        """The k and h of the sum of variances that rang."""
+        scheme = self.detector.scheme
+        assert isinstance(scheme, CusumPlan)
+        return next((k, h) for name, k, h in scheme.sums() if name == self.statistic["name"])
+
 
 def agreement(working: Working, rung: Rung) -> str:
     """Whether the arithmetic ends where the alert says: ``exactly``, ``to rounding`` or ``no``."""
@@ -105,7 +133,7 @@ def agreement(working: Working, rung: Rung) -> str:
     )
     if all(ours == theirs for ours, theirs in pairs):
         return "exactly"
-    close = partial(math.isclose, rel_tol=CLOSE, abs_tol=CLOSE * rung.error(1))
+    close = partial(math.isclose, rel_tol=CLOSE, abs_tol=CLOSE * rung.worth(1))
     both = [(a, b) for a, b in pairs if a is not None and b is not None]
     return "to rounding" if len(both) > 1 and all(close(a, b) for a, b in both) else "no"
 
@@ -142,6 +170,8 @@ def _step(points: Points, rung: Rung) -> Step | None:
         signalled=rung.rule in row.rules,
     )
     match scheme:
+        case CusumPlan(chart="variance"):
+            return replace(step, terms=_of_variance(subgroup, row, rung, scheme))
         case CusumPlan():
             added = clipped(z, scheme.clip) * rung.sign - scheme.k
             return replace(step, terms={"added": added, "sum": row.value / error})
@@ -153,12 +183,24 @@ def _step(points: Points, rung: Rung) -> Step | None:
             return _at_the_rule(step, row, subgroup.size, rung)
 
 
+def _of_variance(subgroup: Subgroup, row: Row, rung: Rung, scheme: CusumPlan) -> dict[str, float]:
+    usual, variance = rung.baseline.sigma**2, subgroup.variance or 0.0
+    counts = (subgroup.size - 1) / ((scheme.size or subgroup.size) - 1)
+    k, _ = rung.summed()
+    return {
+        "variance": variance,
+        "times_usual": variance / usual,
+        "added": rung.sign * counts * (variance / usual - k),
+        "sum": row.value / usual,
+    }
+
+
 def _at_the_rule(step: Step, row: Row, size: int, rung: Rung) -> Step:
     """With the limits at the width of the rule that rang, where it has one."""
     rule = rule_of(rung)
     if rule is None or not rule.width:
         return step
-    limits = chart(row.chart, rung.baseline).limits(size, rule.width)
+    limits = rung.chart().limits(size, rule.width)
     return replace(step, lower=limits.lower, upper=limits.upper)
 
 
@@ -209,7 +251,7 @@ def rule_of(rung: Rung) -> RulePlan | None:
     of_kind = [rule for rule in scheme.rules if rule.rule == kind]
     for rule in of_kind:
         width = rule.width or scheme.width
-        limits = chart(scheme.chart, rung.baseline).limits(rung.subgroup["size"], width)
+        limits = rung.chart().limits(rung.subgroup["size"], width)
         if (limits.lower, limits.upper) == (said["lower"], said["upper"]):
             return rule
     return of_kind[0] if of_kind else None

@@ -1,4 +1,4 @@
-"""The range of n independent standard normal values: its distribution and first two moments.
+"""The range of n independent standard normal values: its distribution, points and two moments.
 
 Knows one distribution. Must not know charts, sigma or limits.
 """
@@ -6,6 +6,7 @@ Knows one distribution. Must not know charts, sigma or limits.
 from __future__ import annotations
 
 import math
+from collections.abc import Callable
 from functools import lru_cache
 
 import numpy as np
@@ -17,6 +18,7 @@ from monitor.methods.quadrature import gauss_legendre
 # exponentially: a step of 0.05 is exact to rounding. The grid reaches as far as ranges of 20 need.
 _STEP = 0.05
 _GRID = np.arange(-20.0, 12.0 + _STEP / 2, _STEP)
+_NARROW = 1e-5
 
 
 @lru_cache(maxsize=1)
@@ -38,7 +40,45 @@ def range_sf(w: Array, n: int) -> Array:
 
 def range_cdf(w: Array, n: int) -> Array:
     """P(R ≤ w): as :func:`range_sf`, keeping the digits of the lower tail."""
-    return np.asarray(np.exp(_log_within(w, n)) @ _smallest(n))
+    # Where w is so small that 1 − Q(x+w)/Q(x) loses digits, it is w·φ(x + w/2)/Q(x).
+    narrow = density(_GRID[None, :] + w[:, None] / 2) * w[:, None] / _minimum()[1]
+    within = np.where(w[:, None] < _NARROW, (n - 1) * np.log(narrow), _log_within(w, n))
+    return np.asarray(np.exp(within) @ _smallest(n))
+
+
+@lru_cache(maxsize=1024)
+def range_upper_point(p: float, n: int) -> float:
+    """The w with P(R > w) = ``p``, for p down to 1e-25, to a relative precision of 1e-9."""
+    return _point(p, n, range_sf, -1)
+
+
+@lru_cache(maxsize=1024)
+def range_lower_point(p: float, n: int) -> float:
+    """The w with P(R ≤ w) = ``p``, for p down to 1e-25, to a relative precision of 1e-6."""
+    return _point(p, n, range_cdf, 1)
+
+
+def _point(p: float, n: int, tail: Callable[[Array, int], Array], sign: int) -> float:
+    """Newton's method on log p in log w, kept inside the bracket that the tails have shown."""
+    low, high = 1e-30, 20.0
+    mean, sd = range_moments(n)
+    w, slope = mean, sign * mean / sd
+    value = math.log(float(tail(np.array([w]), n)[0]) / p)
+    for _ in range(200):
+        if value * sign > 0:
+            high = w
+        else:
+            low = w
+        following = w * math.exp(max(-3.0, min(3.0, -value / slope)))
+        if not low < following < high:
+            following = math.sqrt(low * high)
+        if abs(following - w) <= 1e-11 * w:
+            break
+        there = math.log(max(float(tail(np.array([following]), n)[0]), 1e-300) / p)
+        secant = (there - value) / math.log(following / w)
+        slope = secant if secant * sign > 0 else slope
+        w, value = following, there
+    return w
 
 
 def _log_within(w: Array, n: int) -> Array:

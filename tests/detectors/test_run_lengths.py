@@ -29,7 +29,7 @@ RUNS = 1500
 OUTSIDE = (RulePlan("outside", width=3.0),)
 
 
-def stepped(scheme: Scheme, shift: float, size: int) -> tuple[float, float]:
+def stepped(scheme: Scheme, shift: float, size: int, ratio: float = 1.0) -> tuple[float, float]:
     """Mean run length of 1,500 runs of the real detector, and its standard error."""
     rng = np.random.default_rng(17)
     watched = detector(DetectorPlan("it", "it", scheme, ""), BASELINE)
@@ -38,7 +38,7 @@ def stepped(scheme: Scheme, shift: float, size: int) -> tuple[float, float]:
     for _ in range(RUNS):
         watched.restart()
         for number in itertools.count(1):
-            values = tuple((rng.standard_normal(size) + shift / scale).tolist())
+            values = tuple((rng.standard_normal(size) * ratio + shift / scale).tolist())
             mean = sum(values) / size
             subgroup = Subgroup(number, values, 0, 0, (None, None, None), False, size, mean)
             if watched.step(subgroup):
@@ -86,4 +86,23 @@ def test_against_the_computed_run_length(scheme: Scheme, shift: float) -> None:
     computed = run_length(scheme, shift)
     assert mean == pytest.approx(
         computed.subgroups, abs=4 * math.hypot(error, computed.standard_error)
+    )
+
+
+@pytest.mark.parametrize(
+    ("scheme", "size", "ratio"),
+    [
+        (CusumPlan("variance", 1.46, 5, direction="up", size=5), 5, 1.5),
+        (CusumPlan("variance", 1.46, 2, 0.5, direction="up", size=5), 3, 1.0),
+        (CusumPlan("variance", 0.65, 2, direction="down", size=5), 5, 0.8),
+        (CusumPlan("variance", 1.46, 3, k_lower=0.65, h_lower=1.5, size=5), 5, 1.0),
+        (ShewhartPlan("range", 2, (RulePlan("outside", width=2.0),), exact=True), 5, 1.0),
+        (ShewhartPlan("sd", 2, (RulePlan("outside", width=2.0),), exact=True), 4, 1.3),
+        (ShewhartPlan("variance", 2, (RulePlan("outside", width=2.0),), exact=True), 3, 0.7),
+    ],
+)
+def test_spread_against_the_computed_run_length(scheme: Scheme, size: int, ratio: float) -> None:
+    mean, error = stepped(scheme, 0.0, size, ratio)
+    assert mean == pytest.approx(
+        run_length(scheme, size=size, ratio=ratio).subgroups, abs=4 * error
     )

@@ -8,9 +8,9 @@ from hypothesis import given
 from hypothesis import strategies as st
 from scipy import stats
 
-from monitor.methods import chi_square
 from monitor.methods.constants import c4, c5, d2, d3, median_se
 from monitor.methods.runlength import shewhart, spread
+from monitor.plan import Side
 
 
 def test_the_textbook_row() -> None:
@@ -65,7 +65,6 @@ def test_three_sigma_limits_of_spread() -> None:
 def test_spread_by_independent_distributions(n: int, ratio: float, sides: str) -> None:
     chi2, ranges = stats.chi2(n - 1), stats.studentized_range(n, np.inf)
     sd_limits = [(c4(n) + w * c5(n)) / ratio for w in (-2.0, 2.0)]
-    variance_limits = [(1 + w * math.sqrt(2 / (n - 1))) / ratio**2 for w in (-2.0, 2.0)]
     range_limits = [(d2(n) + w * d3(n)) / ratio for w in (-2.0, 2.0)]
 
     def expected(below: float, above: float) -> float:
@@ -74,47 +73,79 @@ def test_spread_by_independent_distributions(n: int, ratio: float, sides: str) -
 
     for statistic, (low, high), scale in (
         ("sd", [max(x, 0) ** 2 * (n - 1) for x in sd_limits], chi2),
-        ("variance", [max(x, 0) * (n - 1) for x in variance_limits], chi2),
         ("range", [max(x, 0) for x in range_limits], ranges),
     ):
         found = spread.run_length(statistic, n, 2, ratio, direction=sides)  # type: ignore[arg-type]
         assert found == pytest.approx(expected(scale.cdf(low), scale.sf(high)), rel=1e-5)
 
 
+@pytest.mark.parametrize("n", [2, 5, 12])
+@pytest.mark.parametrize("ratio", [0.7, 1.0, 1.5])
+@pytest.mark.parametrize("sides", ["both", "up", "down"])
+def test_exact_spread_by_independent_distributions(n: int, ratio: float, sides: str) -> None:
+    tail = stats.norm.sf(2.0)
+    for statistic, reference, power, scale in (
+        ("sd", stats.chi2(n - 1), 2, ratio),
+        ("variance", stats.chi2(n - 1), 1, ratio**2),
+        ("range", stats.studentized_range(n, np.inf), 1, ratio),
+    ):
+        low, high = (x ** (1 / power) / scale for x in (reference.ppf(tail), reference.isf(tail)))
+        below, above = reference.cdf(low**power), reference.sf(high**power)
+        chance = {"both": below + above, "up": above, "down": below}[sides]
+        found = spread.run_length(statistic, n, 2, ratio, direction=sides, exact=True)  # type: ignore[arg-type]
+        assert found == pytest.approx(1 / chance, rel=1e-5)
+
+
 @pytest.mark.parametrize("statistic", ["range", "sd", "variance"])
 @pytest.mark.parametrize("n", [2, 5, 25])
 @pytest.mark.parametrize("wanted", [100, 1e6, 1e15])
-def test_the_inverse_of_spread_gives_back_the_interval(
-    statistic: spread.Statistic, n: int, wanted: float
+@pytest.mark.parametrize("sides", ["both", "up", "down"])
+def test_exact_limits_hold_an_interval(
+    statistic: spread.Statistic, n: int, wanted: float, sides: Side
 ) -> None:
-    width = spread.width_for(statistic, n, wanted)
-    assert spread.run_length(statistic, n, width) == pytest.approx(wanted, rel=1e-6)
+    width = spread.exact_width_for(wanted, direction=sides)
+    found = spread.run_length(statistic, n, width, direction=sides, exact=True)
+    assert found == pytest.approx(wanted, rel=1e-6)
+
+
+@pytest.mark.parametrize("wanted", [0.9, 1e25])
+def test_no_width_for_an_absurd_interval(wanted: float) -> None:
+    with pytest.raises(ValueError, match="no setting"):
+        spread.exact_width_for(wanted)
 
 
 def test_a_lower_limit_at_zero_never_signals() -> None:
     assert spread.run_length("range", 5, 3, direction="down") == math.inf
+    assert spread.moving_range_run_length(3, direction="down") == math.inf
 
 
-@pytest.mark.parametrize(("width", "ratio"), [(3, 1.5), (2, 1.0), (2.5, 1.0)])
-def test_moving_ranges_against_simulation(width: float, ratio: float) -> None:
+@pytest.mark.parametrize(
+    ("width", "ratio", "exact", "sides"),
+    [
+        (3, 1.5, False, "both"),
+        (2, 1.0, False, "both"),
+        (2.5, 1.0, False, "up"),
+        (2, 1.0, True, "both"),
+        (2, 1.4, True, "up"),
+        (1.5, 0.6, True, "down"),
+    ],
+)
+def test_moving_ranges_against_simulation(
+    width: float, ratio: float, exact: bool, sides: Side
+) -> None:
     """Each signal starts a fresh series, whose first reading has no moving range."""
     rng = np.random.default_rng(3)
     readings = ratio * rng.standard_normal(3_000_000)
-    beyond = np.flatnonzero(np.abs(np.diff(readings)) > d2(2) + width * d3(2)) + 1
+    lower, upper = -math.inf, d2(2) + width * d3(2)
+    if exact:
+        lower, upper = stats.halfnorm(scale=math.sqrt(2)).ppf(stats.norm.cdf([-width, width]))
+    moves = np.abs(np.diff(readings))
+    out = ((moves > upper) & (sides != "down")) | ((moves < lower) & (sides != "up"))
+    beyond = np.flatnonzero(out) + 1
     lengths, start = [], 0
     while (at := int(np.searchsorted(beyond, start + 1))) < beyond.size:
         lengths.append(int(beyond[at]) - start + 1)
         start = int(beyond[at]) + 1
     error = np.std(lengths) / math.sqrt(len(lengths))
-    found = spread.moving_range_run_length(width, ratio)
+    found = spread.moving_range_run_length(width, ratio, direction=sides, exact=exact)
     assert found == pytest.approx(np.mean(lengths), abs=4 * error)
-
-
-@pytest.mark.parametrize("freedom", [1, 2, 3, 4, 24, 999])
-def test_both_tails_of_chi_square(freedom: int) -> None:
-    for quantile in (1e-12, 1e-3, 0.5, 0.999, 1 - 1e-9):
-        x = float(stats.chi2.ppf(quantile, freedom))
-        assert chi_square.cdf(x, freedom) == pytest.approx(stats.chi2.cdf(x, freedom), rel=1e-11)
-        assert chi_square.sf(x, freedom) == pytest.approx(stats.chi2.sf(x, freedom), rel=1e-11)
-    assert chi_square.sf(0.0, freedom) == 1
-    assert chi_square.cdf(0.0, freedom) == 0

@@ -5,6 +5,7 @@ Knows transition probabilities. Must not know what a state stands for.
 
 from __future__ import annotations
 
+import math
 from typing import Literal
 
 import numpy as np
@@ -13,6 +14,18 @@ from monitor.methods.normal import Array
 
 Side = Literal["both", "up", "down"]
 """Which signals count."""
+
+
+def either(one: tuple[float, float], other: tuple[float, float]) -> float:
+    """Average run length of two sums that are never both high, from that of each by itself: from 0,
+    and from where it starts (J. M. Lucas & R. B. Crosier 1982, Technometrics 24).
+
+    From head starts far above a half both are high at first, and the answer is too low.
+    """
+    (fast, fast_start), (slow, slow_start) = sorted((one, other))
+    if slow == math.inf:
+        return fast_start
+    return max(1.0, (fast_start + fast * (slow_start / slow - 1)) / (1 + fast / slow))
 
 
 _NEVER = 1e-60

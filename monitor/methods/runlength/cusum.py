@@ -11,8 +11,9 @@ import numpy as np
 
 from monitor.methods.normal import Array, density, sf, sf_array
 from monitor.methods.quadrature import gauss_legendre
-from monitor.methods.runlength.chains import Side, steps_to_absorption
+from monitor.methods.runlength.chains import Side, either, steps_to_absorption
 from monitor.methods.runlength.roots import increasing_root
+from monitor.methods.runlength.waits import Wait, chain
 
 _HIGHEST = 300.0
 
@@ -41,10 +42,17 @@ def run_length(
         return _one_side(k, h, shift if direction == "up" else -shift, head_start, clip)[1]
     up = _one_side(k, h, shift, head_start, clip)
     down = up if shift == 0 else _one_side(k, h, -shift, head_start, clip)
-    (fast, fast_start), (slow, slow_start) = sorted((up, down))
-    if slow == math.inf:
-        return fast_start
-    return (fast_start + fast * (slow_start / slow - 1)) / (1 + fast / slow)
+    return either(up, down)
+
+
+def wait(k: float, h: float, shift: float, head_start: float = 0.0) -> Wait:
+    """Of the upper sum, the chance to have given no signal yet, point after point."""
+    if h > _HIGHEST:
+        raise ValueError(f"h {h:g} is beyond {_HIGHEST:g}, as far as run lengths are computed")
+    moves, _ = _moves(k, h, shift, head_start * h)
+    start = np.zeros(len(moves))
+    start[-1] = 1.0
+    return chain(start, moves)
 
 
 def decision_interval(
@@ -100,8 +108,14 @@ def _one_side(
 
 
 def _smooth(k: float, h: float, shift: float, start: float) -> tuple[float, float]:
-    """E. S. Page's integral equation by Gauss–Legendre quadrature, an atom at 0 beside the nodes
-    (J. M. Lucas & R. B. Crosier 1982, appendix)."""
+    steps = steps_to_absorption(*_moves(k, h, shift, start))
+    return float(steps[0]), float(steps[-1])
+
+
+def _moves(k: float, h: float, shift: float, start: float) -> tuple[Array, Array]:
+    """E. S. Page's integral equation by Gauss–Legendre quadrature, an atom at 0 before the nodes,
+    the start behind them (J. M. Lucas & R. B. Crosier 1982, appendix): probabilities of moving, and
+    of signalling."""
     nodes, weights = gauss_legendre(16 + math.ceil(1.6 * h))
     n = nodes.size + 2
     sums = np.empty(n)
@@ -111,8 +125,7 @@ def _smooth(k: float, h: float, shift: float, start: float) -> tuple[float, floa
     moves[:, 0] = sf_array(sums + drift)
     moves[:, 1:-1] = density(sums[None, 1:-1] - sums[:, None] - drift) * (h / 2 * weights)
     moves[:, -1] = 0.0
-    steps = steps_to_absorption(moves, sf_array(h - sums - drift))
-    return float(steps[0]), float(steps[-1])
+    return moves, sf_array(h - sums - drift)
 
 
 def _clipped(

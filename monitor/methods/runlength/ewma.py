@@ -6,6 +6,7 @@ Knows weighted averages of normal values. Must not know sigma, streams or alerts
 from __future__ import annotations
 
 import math
+from collections.abc import Iterator
 from dataclasses import dataclass
 
 import numpy as np
@@ -14,6 +15,7 @@ from monitor.methods.normal import Array, density, sf_array, upper_quantile
 from monitor.methods.quadrature import gauss_legendre
 from monitor.methods.runlength.chains import Side, steps_to_absorption
 from monitor.methods.runlength.roots import increasing_root
+from monitor.methods.runlength.waits import Wait, chain
 
 _FLOOR = 6.0
 """A one-sided average is followed so many standard errors below its mean, and stopped there."""
@@ -43,19 +45,32 @@ def run_length(
     if asymptotic:
         return float(average.settled()[-1])
     onward = average.settled()[:-1]
-    decay = math.log1p(-lam) if lam < 1 else -math.inf
-    last = max(1, math.ceil(math.log(_SETTLED) / (2 * decay)))
-    while last > 1:
-        steps = 1 + last // _ALIKE
-        middle = last - steps / 2
-        before = -math.expm1((2 * middle - 1) * decay)
-        after = -math.expm1((2 * middle + 1) * decay)
-        keep, add = average.keep * math.sqrt(before / after), average.add / math.sqrt(after)
-        moves = average.moves(average.nodes, keep, add)
+    for moves, steps in reversed(list(average.settling(lam))):
         for _ in range(steps):
             onward = 1 + moves @ onward
-        last -= steps
     return 1 + float((average.moves(np.zeros(1), 0.0, 1.0) @ onward)[0])
+
+
+def wait(
+    lam: float,
+    width: float,
+    shift: float = 0.0,
+    *,
+    direction: Side = "both",
+    asymptotic: bool = False,
+) -> Wait:
+    """The chance to have given no signal yet, point after point; arguments as of
+    :func:`run_length`."""
+    average = _Average.of(lam, width, -shift if direction == "down" else shift, direction)
+    settled = average.moves(average.nodes, average.keep, average.add)
+    first = average.add if asymptotic else 1.0
+    states = average.moves(np.zeros(1), 0.0, first)[0]
+    yield float(states.sum())
+    for moves, steps in () if asymptotic else average.settling(lam):
+        for _ in range(steps):
+            states = states @ moves
+            yield float(states.sum())
+    yield from chain(states, settled)
 
 
 def width_for(
@@ -171,6 +186,22 @@ class _Average:
         if self.walled:
             moves[:, 0] += sf_array((keep * y - self.low) / add + self.shift)
         return moves
+
+    def settling(self, lam: float) -> Iterator[tuple[Array, int]]:
+        """Moves between nodes while exact limits settle, from the second point on, and how many
+        steps they do for."""
+        decay = math.log1p(-lam) if lam < 1 else -math.inf
+        last = max(1, math.ceil(math.log(_SETTLED) / (2 * decay)))
+        groups = []
+        while last > 1:
+            steps = 1 + last // _ALIKE
+            groups.append((last - steps / 2, steps))
+            last -= steps
+        for middle, steps in reversed(groups):
+            before = -math.expm1((2 * middle - 1) * decay)
+            after = -math.expm1((2 * middle + 1) * decay)
+            keep, add = self.keep * math.sqrt(before / after), self.add / math.sqrt(after)
+            yield self.moves(self.nodes, keep, add), steps
 
     def settled(self) -> Array:
         """Run lengths with settled limits, from each node and, last, from 0."""

@@ -16,6 +16,7 @@ from numpy.typing import NDArray
 
 from monitor.methods.normal import Array, sf_array
 from monitor.methods.runlength.chains import Side
+from monitor.methods.runlength.waits import Wait
 
 
 class Rule(Protocol):
@@ -58,7 +59,7 @@ def run_length(rules: Sequence[Rule], shift: float = 0.0, *, direction: Side = "
     C. W. Champ & W. H. Woodall 1987. With ``direction`` the other side's signals do not count;
     stratification and mixture have no side. Check: the four zone rules of 1956: 91.75.
     """
-    keys = tuple((r.rule, r.width, r.count, r.of, r.length) for r in rules)
+    keys = _keys(rules)
     cuts, moves = _chain(keys, direction)
     probability = _zone_probabilities(cuts - shift)
     # From each state: the chance to be quiet for so many points, and to signal at the next one.
@@ -77,6 +78,21 @@ def run_length(rules: Sequence[Rule], shift: float = 0.0, *, direction: Side = "
         points += 1
         quiet[:SIGNAL], then[:SIGNAL] = quiet[moves] @ probability, then[moves] @ probability
     return total
+
+
+def wait(rules: Sequence[Rule], shift: float, direction: Side) -> Wait:
+    """The chance to be quiet for so many points; what is given as for :func:`run_length`."""
+    cuts, moves = _chain(_keys(rules), direction)
+    probability = _zone_probabilities(cuts - shift)
+    quiet = np.ones(len(moves) + 1)
+    quiet[SIGNAL] = 0.0
+    while True:
+        quiet[:SIGNAL] = quiet[moves] @ probability
+        yield float(quiet[0])
+
+
+def _keys(rules: Sequence[Rule]) -> tuple[Key, ...]:
+    return tuple((r.rule, r.width, r.count, r.of, r.length) for r in rules)
 
 
 def _zone_probabilities(cuts: Array) -> Array:

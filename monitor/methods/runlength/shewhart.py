@@ -44,6 +44,16 @@ def median_run_length(
     return interval(_sides(up, down, direction))
 
 
+def median_width_for(n: int, wanted: float, *, direction: Side = "both") -> float:
+    """The width whose run length on medians of ``n`` in control is ``wanted`` > 1."""
+    guess = upper_quantile((0.5 if direction == "both" else 1.0) / wanted)
+    return increasing_root(
+        lambda width: math.log(median_run_length(n, width, direction=direction) / wanted),
+        max(0.1, guess),
+        max(0.1, guess),
+    )
+
+
 def interval(probability: float) -> float:
     """Points between signals of this probability each; inf where it is none."""
     return 1 / probability if probability > 0 else math.inf

@@ -12,54 +12,80 @@ from typing import Literal
 import numpy as np
 
 from monitor.methods import chi_square
-from monitor.methods.constants import c4, c5, d2, d3
-from monitor.methods.normal import Array, density, sf_array
+from monitor.methods.limits import (
+    WIDEST,
+    moving_range_limits,
+    range_limits,
+    sd_limits,
+    variance_limits,
+)
+from monitor.methods.normal import Array, density, sf, sf_array, upper_quantile
 from monitor.methods.ranges import range_cdf, range_sf
 from monitor.methods.runlength.chains import Side, steps_to_absorption
-from monitor.methods.runlength.roots import increasing_root
 from monitor.methods.runlength.shewhart import interval
 
 Statistic = Literal["range", "sd", "variance"]
 
+_APART = 12.0
+"""Sigmas that no two readings lie apart."""
+
 
 def run_length(
-    statistic: Statistic, n: int, width: float, ratio: float = 1.0, *, direction: Side = "both"
+    statistic: Statistic,
+    n: int,
+    width: float,
+    ratio: float = 1.0,
+    *,
+    direction: Side = "both",
+    exact: bool = False,
 ) -> float:
-    """Average run length of a chart of subgroups of ``n`` ≥ 2, its limits ``width`` standard errors
-    of the statistic from its mean, when the spread of readings is ``ratio`` times the baseline's.
+    """Average run length of a chart of subgroups of ``n`` ≥ 2 with limits at ``width``, when the
+    spread of readings is ``ratio`` times the baseline's.
 
-    A lower limit at or below 0 never signals. Check: n 5, width 3: range 217, sd 256.
+    A variance's limits are always exact. A lower limit at 0 never signals. Check: n 5, width 3:
+    range 217, sd 256; exact: 370.4.
     """
-    mean, se = _moments(statistic, n)
+    match statistic:
+        case "range":
+            limits = range_limits(n, 1.0, width, exact=exact)
+        case "sd":
+            limits = sd_limits(n, 1.0, width, exact=exact)
+        case "variance":
+            limits = variance_limits(n, 1.0, width)
     scale = ratio * ratio if statistic == "variance" else ratio
     beyond = 0.0
     if direction != "down":
-        beyond += _above(statistic, n, (mean + width * se) / scale)
-    if direction != "up" and mean > width * se:
-        beyond += _below(statistic, n, (mean - width * se) / scale)
+        beyond += _above(statistic, n, limits.upper / scale)
+    if direction != "up" and limits.lower > 0:
+        beyond += _below(statistic, n, limits.lower / scale)
     return interval(beyond)
 
 
-def width_for(
-    statistic: Statistic, n: int, wanted: float, ratio: float = 1.0, *, direction: Side = "both"
+def exact_width_for(wanted: float, *, direction: Side = "both") -> float:
+    """The width of exact limits whose run length is ``wanted``, for any statistic and subgroup:
+    each side watched has an equal part of the risk. ValueError where it cannot be so short, or
+    so long."""
+    sides = 2 if direction == "both" else 1
+    if not 2 / sides < wanted < interval(sides * sf(WIDEST)):
+        raise ValueError("no setting gives that run length")
+    return upper_quantile(1 / (sides * wanted))
+
+
+def moving_range_run_length(
+    width: float, ratio: float = 1.0, *, direction: Side = "both", exact: bool = False
 ) -> float:
-    """The width whose run length is ``wanted``, to 1e-7 of it."""
-
-    def excess(width: float) -> float:
-        length = run_length(statistic, n, width, ratio, direction=direction)
-        return math.log(length / wanted)
-
-    return increasing_root(excess, 3.0, 2.5)
-
-
-def moving_range_run_length(width: float, ratio: float = 1.0) -> float:
     """Average run length, in readings, of a chart of moving ranges of two.
 
     Neighbouring moving ranges share a reading, so a Markov chain on the reading (S. V.
     Crowder 1987, J. Quality Technology 19); by Simpson's rule on steps that divide the limit. A
     lasting shift of the mean moves only the one moving range that spans its onset.
     """
-    limit = (d2(2) + width * d3(2)) / ratio
+    limits = moving_range_limits(1.0, width, exact=exact)
+    lower = limits.lower / ratio if direction != "up" else 0.0
+    upper = limits.upper / ratio if direction != "down" else math.inf
+    if upper == math.inf and lower == 0:
+        return math.inf
+    limit = min(upper, _APART)
     within = math.ceil(8 * limit)
     step = limit / within
     reach = math.ceil(8.5 / step)
@@ -70,7 +96,11 @@ def moving_range_run_length(width: float, ratio: float = 1.0) -> float:
     weights = density(x) * step
     moves *= weights
     moves[:, 0] /= 2  # 0 is its own mirror image
-    steps = steps_to_absorption(moves, sf_array(limit - x) + sf_array(limit + x))
+    beyond = sf_array(limit - x) + sf_array(limit + x) if upper < math.inf else np.zeros(x.size)
+    # A lower limit is so small that it ends the run where the chain would stay: on the diagonal.
+    # P(|reading − x| < lower), by Taylor, as the difference of two tails would have no digits.
+    beyond += 2 * lower * density(x) * (1 + lower * lower * (x * x - 1) / 6)
+    steps = steps_to_absorption(moves, beyond)
     return 1 + float(2 * weights[1:] @ steps[1:] + weights[0] * steps[0])
 
 
@@ -79,14 +109,6 @@ def _neighbours(apart: Array, step: float, within: int) -> Array:
     steps = np.rint(np.abs(apart) / step)
     inner = np.where((within - steps) % 2 == 1, 4 / 3, 2 / 3)
     return np.where(steps < within, inner, np.where(steps == within, 1 / 3, 0.0))
-
-
-def _moments(statistic: Statistic, n: int) -> tuple[float, float]:
-    if statistic == "range":
-        return d2(n), d3(n)
-    if statistic == "sd":
-        return c4(n), c5(n)
-    return 1.0, math.sqrt(2 / (n - 1))
 
 
 def _above(statistic: Statistic, n: int, limit: float) -> float:
