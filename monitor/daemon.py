@@ -86,6 +86,7 @@ class Daemon:
             pipeline.resends.proof(link.last_packet, pipeline.position)
             link.write()
             self._let_go_if_lost(link)
+        pipeline.tidy()
 
     def _configure(self, settings: Settings) -> None:
         before = self._stale | self._settings.plan.topics()

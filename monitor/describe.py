@@ -18,6 +18,7 @@ from monitor import messages
 from monitor.messages import (
     SCHEMA,
     AlertEvent,
+    BaselineMessage,
     HealthMessage,
     PointMessage,
     SetAsideMessage,
@@ -52,6 +53,7 @@ class Kind:
 KINDS = (
     Kind("alert", AlertEvent, "Alert event", retained=False, of_stream=True),
     Kind("standing", StandingMessage, "Standing of a stream", retained=True, of_stream=True),
+    Kind("baseline", BaselineMessage, "Proposed baseline", retained=True, of_stream=True),
     Kind("point", PointMessage, "Point of a stream", retained=False, of_stream=True),
     Kind("health", HealthMessage, "Health of the daemon", retained=True, of_stream=False),
     Kind("setaside", SetAsideMessage, "Set-aside notice", retained=False, of_stream=False),

@@ -6,7 +6,7 @@ file, a socket or who calls it: the daemon and the replay are two shells around 
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Sequence
+from collections.abc import Callable, Iterable, Sequence
 from dataclasses import asdict
 from typing import Any
 
@@ -34,20 +34,31 @@ from monitor.standing import standing
 from monitor.stream import Counts, StreamState
 from monitor.subgroups import Subgroup
 
-STATE_VERSION = 1
+STATE_VERSION = 2
 
 _NOTHING: Sequence[Output] = ()
 _GRACE = times.SECOND
 
 
+def _unnoticed(_: StreamState) -> None:
+    """Nobody asked."""
+
+
 class Engine:
     """Folds entries, in order, into outputs.
 
-    ``points`` asks for ``Points`` outputs, with a row for each statistic of each detector. Equal
+    ``points`` asks for ``Points`` outputs, with a row for each statistic of each detector.
+    ``opened`` is told of each stream that is first heard of, before it takes its reading. Equal
     plans and equal entries give equal outputs, always.
     """
 
-    def __init__(self, plan: Plan, *, points: bool) -> None:
+    def __init__(
+        self,
+        plan: Plan,
+        *,
+        points: bool,
+        opened: Callable[[StreamState], None] = _unnoticed,
+    ) -> None:
         self.counts = Counts()
         self.touched: dict[StreamState, None] = {}
         """Streams whose standing changed since the caller last cleared it, in order."""
@@ -56,6 +67,7 @@ class Engine:
         self.plan = plan
         self.sessions_lost = 0
         self._points = points
+        self._opened = opened
         self._characteristics = {c.name: Characteristic(c) for c in plan.characteristics}
         self._routes = Routes(self._characteristics.values())
         self._deadlines = Deadlines()
@@ -305,6 +317,7 @@ class Engine:
             return moment
         if state is None:
             state = route.characteristic.open(keys, arrival, counts)
+            self._opened(state)
         if key is not None:
             route.known[key] = state
         sequence = judge_sequence(number)

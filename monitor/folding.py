@@ -21,8 +21,8 @@ class Addresses(Protocol):
     def alert(self, output: Alert, entry: int) -> AlertRow:
         """An alert as the journal keeps it; ``entry`` of the batch caused it."""
 
-    def clear(self, output: Gone) -> str:
-        """The topic whose retained message is to go with a stream."""
+    def clears(self, output: Gone) -> tuple[str, ...]:
+        """The topics whose retained messages are to go with a stream."""
 
 
 @dataclass(slots=True)
@@ -48,5 +48,5 @@ def fold(
             if isinstance(output, Alert):
                 folded.alerts.append(addresses.alert(output, index))
             elif isinstance(output, Gone):
-                folded.clears.append(addresses.clear(output))
+                folded.clears += addresses.clears(output)
     return folded

@@ -77,7 +77,7 @@ ChartName = Annotated[
     Keywords(
         enum=list(get_args(Chart)),
         description="Which statistic of a subgroup is charted. `individual`: its only reading; "
-        "`moving_range`: how far that lies from the one before.",
+        "`moving_range`: how far that lies from the one before. `variance` is in the unit squared.",
     ),
 ]
 StatisticName = Annotated[
@@ -141,7 +141,8 @@ EventKind = Literal["raised", "updated", "rejoined", "returned-to-normal", "with
 
 
 class StatisticField(TypedDict):
-    """The charted statistic that signalled, with the limits it was held against, in ``unit``."""
+    """The charted statistic that signalled, with the limits it was held against, in ``unit``: the
+    characteristic's, or of a variance its square, such as `g²`."""
 
     name: StatisticName
     value: float
@@ -150,7 +151,7 @@ class StatisticField(TypedDict):
     """Null where there is no limit on this side."""
     upper: float | None
     """Null where there is no limit on this side."""
-    unit: Unit
+    unit: Annotated[str, Keywords(description="Such as `g`; empty where there is none.")]
 
 
 class SignalField(TypedDict):
@@ -280,7 +281,8 @@ class AlertEvent(TypedDict):
 
 
 class RowField(TypedDict):
-    """One statistic of one detector at one subgroup, in the message's ``unit``."""
+    """One statistic of one detector at one subgroup, in the message's ``unit``; one of the variance
+    in its square."""
 
     detector: DetectorName
     chart: ChartName
@@ -365,6 +367,57 @@ class StandingMessage(TypedDict):
     """What is open now, in the order it was raised."""
     subgroup: SubgroupField | None
     """The latest; null before the first."""
+
+
+class ReasonField(TypedDict):
+    """One thing that speaks for or against a baseline."""
+
+    grade: Annotated[str, Keywords(enum=["refuse", "provisional", "note"])]
+    """How grave it is: the gravest of all decides the verdict."""
+    kind: str
+    """A name for programs, such as `wander`."""
+    found: str
+    """What is so, in words."""
+    do: str
+    """What to do about it."""
+
+
+class BaselineMessage(TypedDict):
+    """A baseline that was learned of one stream, for people to judge.
+
+    Sent when so many subgroups as were asked for had been gathered, and again as more are.
+    """
+
+    schema: Version
+    characteristic: CharacteristicName
+    title: Title
+    stream: StreamKeys
+    time: Time
+    """Event time of the last reading it was learned from."""
+    verdict: Annotated[str, Keywords(enum=["trust", "provisional", "refuse"])]
+    """`provisional`: good for a beginning; `refuse`: nothing to judge by."""
+    reasons: list[ReasonField]
+    """The gravest first."""
+    adopted: bool
+    """Whether the stream is judged by it from now on, as its configuration asks for."""
+    mean: float
+    """The centre, in ``unit``."""
+    sigma: Spread
+    """Standard deviation of single readings within a subgroup."""
+    sigma_between: Spread
+    """Standard deviation of subgroup means beyond what ``sigma`` explains."""
+    unit: Unit
+    subgroups: Count
+    """How many it was estimated from."""
+    effective: Count
+    """How many independent ones those are worth."""
+    first: Time
+    """Event time of the first of them."""
+    last: Time
+    """Event time of the last of them."""
+    promise_kept: float | None
+    """What part of the promised interval between false alarms is left if the estimate is among the
+    unlucky tenth; null where that is too much to compute."""
 
 
 class CountsField(TypedDict):

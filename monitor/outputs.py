@@ -66,10 +66,11 @@ class SetAside:
 
 @dataclass(frozen=True, slots=True)
 class Gone:
-    """A stream left the configuration."""
+    """A stream left the configuration; ``proposed``: a baseline had been proposed for it."""
 
     characteristic: str
     stream: Stream
+    proposed: bool = False
 
 
 Output = Points | Alert | SetAside | Gone

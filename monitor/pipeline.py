@@ -18,6 +18,7 @@ from monitor.intake import Arrival, Intake
 from monitor.journal import Journal
 from monitor.keeper import Keeper
 from monitor.outbox import Outbox
+from monitor.pinning import pinned
 from monitor.plan import Plan, Settings
 from monitor.recovery import recover
 from monitor.resends import Resends
@@ -74,8 +75,8 @@ class Pipeline:
         self.intake.note(entry)
 
     def configure(self, plan: Plan) -> None:
-        """From now on this plan is in force."""
-        self.note(Configured(self.now(), plan))
+        """From now on this plan is in force; what was worked out for the same stays as it was."""
+        self.note(Configured(self.now(), pinned(plan, self.engine.plan)))
 
     def step(self, addresses: Addresses) -> Folded:
         """Fold what came in, and make it durable; what may be acknowledged and said now."""
@@ -88,6 +89,10 @@ class Pipeline:
         self.outbox.extend(leaving)
         self.resends.journaled(position + 1, folded.entries)
         return folded
+
+    def tidy(self) -> None:
+        """What may wait until what was folded has left."""
+        self._keeper.tidy()
 
     def taken(self, packet: int) -> None:
         """The broker took over a publication."""

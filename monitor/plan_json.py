@@ -24,13 +24,13 @@ _CLASSES = {
 
 def encode(plan: Plan) -> bytes:
     """The plan as JSON; equal plans give equal bytes."""
-    return orjson.dumps(_plain(plan))
+    return orjson.dumps(plain(plan))
 
 
 def decode(text: bytes) -> Plan:
     """The plan that ``encode`` was given; ValueError where the text is none of this version."""
     try:
-        plan = _restored(orjson.loads(text))
+        plan = restored(orjson.loads(text))
     except (KeyError, TypeError) as error:
         raise ValueError(f"a plan of another version: {error}") from error
     if not isinstance(plan, Plan):
@@ -38,25 +38,27 @@ def decode(text: bytes) -> Plan:
     return plan
 
 
-def _plain(value: Any) -> Any:
+def plain(value: Any) -> Any:
+    """A part of a plan as JSON values."""
     if is_dataclass(value):
-        named = {each.name: _plain(getattr(value, each.name)) for each in fields(value)}
+        named = {each.name: plain(getattr(value, each.name)) for each in fields(value)}
         return {_KIND: type(value).__name__, **named}
     if isinstance(value, tuple):
-        return [_plain(each) for each in value]
+        return [plain(each) for each in value]
     if isinstance(value, Mapping):
         # In one order: mappings that differ only in theirs are equal.
-        pairs = [[_plain(key), _plain(each)] for key, each in value.items()]
+        pairs = [[plain(key), plain(each)] for key, each in value.items()]
         return {_PAIRS: sorted(pairs, key=lambda pair: orjson.dumps(pair[0]))}
     return value
 
 
-def _restored(value: Any) -> Any:
+def restored(value: Any) -> Any:
+    """What ``plain`` was given; KeyError or TypeError where it is of another version."""
     if isinstance(value, list):
-        return tuple(_restored(each) for each in value)
+        return tuple(restored(each) for each in value)
     if not isinstance(value, dict):
         return value
     if _PAIRS in value:
-        return {_restored(key): _restored(each) for key, each in value[_PAIRS]}
+        return {restored(key): restored(each) for key, each in value[_PAIRS]}
     made = _CLASSES[value[_KIND]]
-    return made(**{name: _restored(each) for name, each in value.items() if name != _KIND})
+    return made(**{name: restored(each) for name, each in value.items() if name != _KIND})

@@ -13,7 +13,7 @@ from monitor.engine import Engine
 from monitor.explaining import evidence
 from monitor.health import EVERY, Health, SetAsideNotices
 from monitor.journal import AlertRow
-from monitor.messages import SCHEMA, PointMessage, RowField
+from monitor.messages import SCHEMA, BaselineMessage, PointMessage, RowField
 from monitor.outbox import Outbox
 from monitor.outputs import Alert, Gone, Output, Points, SetAside
 from monitor.stream import StreamState
@@ -52,6 +52,8 @@ class Publisher:
         self._outbox = outbox
         self._notices = SetAsideNotices()
         self._standings: Throttle[StreamState] = Throttle(EVERY)
+        self._proposals: dict[StreamState, BaselineMessage | None] = {}
+        """The baselines proposed so far; none of a stream that is not in it."""
 
     def will(self, now: int) -> tuple[str, bytes]:
         """(topic, payload) of what the broker says when we are gone without a word."""
@@ -68,9 +70,11 @@ class Publisher:
             entry,
         )
 
-    def clear(self, output: Gone) -> str:
-        """The topic whose retained message is to go with a stream."""
-        return f"{self._root}/standing/{messages.path(output.characteristic, output.stream)}"
+    def clears(self, output: Gone) -> tuple[str, ...]:
+        """The topics whose retained messages are to go with a stream."""
+        path = messages.path(output.characteristic, output.stream)
+        kinds = ("standing", "baseline") if output.proposed else ("standing",)
+        return tuple(f"{self._root}/{kind}/{path}" for kind in kinds)
 
     def publish(self, link: Link, outputs: Sequence[Output], now: int) -> None:
         """Publish what the outbox holds, and what outputs and the passing of time make due."""
@@ -116,12 +120,19 @@ class Publisher:
         engine.touched.clear()
         for state in due:
             if state.has_left:
+                self._proposals.pop(state, None)
                 continue  # what is kept of it is cleared, and is to stay so
+            path = messages.path(state.plan.name, state.stream)
             link.publish(
-                f"{self._root}/standing/{messages.path(state.plan.name, state.stream)}",
+                f"{self._root}/standing/{path}",
                 messages.encode(engine.standing(state)),
                 retain=True,
             )
+            proposal = state.learning.proposal
+            if proposal is not self._proposals.get(state):
+                self._proposals[state] = proposal
+                said = b"" if proposal is None else messages.encode(proposal)
+                link.publish(f"{self._root}/baseline/{path}", said, retain=True)
 
     def _notice(self, link: Link, reason: str) -> None:
         message = self._notices.message(reason, self._engine.counts)

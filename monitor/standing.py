@@ -16,7 +16,7 @@ def standing(state: StreamState, now: int, since: int, blind: str | None) -> Sta
 
     ``blind``: why no stream is judged right now, or None.
     """
-    why = blind or ("no baseline" if state.judgement is None else None)
+    why = blind or (_unjudged(state) if state.judgement is None else None)
     return StandingMessage(
         schema=SCHEMA,
         characteristic=state.plan.name,
@@ -27,3 +27,7 @@ def standing(state: StreamState, now: int, since: int, blind: str | None) -> Sta
         open=[] if state.alerts is None else state.alerts.open(),
         subgroup=None if state.last is None else subgroup_field(state.last),
     )
+
+
+def _unjudged(state: StreamState) -> str:
+    return state.learning.told or "no baseline"

@@ -6,7 +6,7 @@ Knows subgroups, detectors, alerts and their order. Must not know topics, payloa
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from typing import Any
 
 from monitor.alerts import Numbering, StreamAlerts
@@ -15,8 +15,16 @@ from monitor.detectors.charts import standard_error
 from monitor.lookback import LookBack
 from monitor.messages import AlertEvent
 from monitor.outputs import Alert, Gone, Output, Points, Row
-from monitor.plan import ByWindow, CharacteristicPlan, DetectorPlan, Judged, Judgement, Stream
+from monitor.plan import (
+    ByWindow,
+    CharacteristicPlan,
+    DetectorPlan,
+    Judged,
+    Judgement,
+    Stream,
+)
 from monitor.seen import StreamSeen
+from monitor.stream_learning import StreamLearning
 from monitor.subgroups import Subgroup, gatherer
 
 
@@ -53,6 +61,7 @@ class StreamState:
         "judgement",
         "keys",
         "last",
+        "learning",
         "lookback",
         "plan",
         "seen",
@@ -78,20 +87,25 @@ class StreamState:
         self.has_left = False
         """Whether it is no longer in the configuration."""
         self.judgement: Judgement | None = plan.judgement_of(stream)
+        self.learning = StreamLearning(plan.learn)
         self.seen = StreamSeen(sequence.wraps if sequence else None)
         self.gatherer = gatherer(plan.subgroup, counts.abandon)
         self.windowed = isinstance(plan.subgroup, ByWindow)
         self.detectors: list[tuple[DetectorPlan, Detector]] = []
         self.alerts: StreamAlerts | None = None
         self.sequence = numbers
-        if self.judgement is not None:
-            baseline = self.judgement.baseline
-            self.detectors += [(p, detector(p, baseline)) for p in self.judgement.detectors]
-            self.alerts = StreamAlerts(Judged(plan, stream, baseline), self.sequence)
+        self._begin()
         self.lookback = LookBack()
         self.last: Subgroup | None = None
         self._size = 0
         self._error = 1.0
+
+    def _begin(self) -> None:
+        """Fresh detectors, where there is a baseline."""
+        if self.judgement is not None:
+            baseline = self.judgement.baseline
+            self.detectors = [(p, detector(p, baseline)) for p in self.judgement.detectors]
+            self.alerts = StreamAlerts(Judged(self.plan, self.stream, baseline), self.sequence)
 
     def close(self, counts: Counts, points: bool) -> Sequence[Output]:
         """The time of what was gathered has come; a reading from before it is late from now on."""
@@ -107,6 +121,7 @@ class StreamState:
         for _, each in self.detectors:
             each.restart()
         self.lookback.clear()
+        self.learning.restart()
         return self._withdraw(time, "gauge-restart", counts)
 
     def leave(self, time: int, counts: Counts) -> list[Output]:
@@ -114,14 +129,15 @@ class StreamState:
         self.has_left = True
         return [
             *self._withdraw(time, "configuration", counts),
-            Gone(self.plan.name, self.stream),
+            Gone(self.plan.name, self.stream, self.learning.proposal is not None),
         ]
 
     def reconfigure(self, plan: CharacteristicPlan, time: int, counts: Counts) -> list[Output]:
         """Another plan is in force from now on; what decides as before goes on as before."""
         before, self.plan = self.plan, plan
-        judgement, self.judgement = self.judgement, plan.judgement_of(self.stream)
         same_readings = plan.source == before.source and plan.subgroup == before.subgroup
+        self.learning.reconfigure(plan.learn, same_readings)
+        judgement = self._adopt()
         if not same_readings:
             self.gatherer.abandon()
             number, self.gatherer = self.gatherer.number, gatherer(plan.subgroup, counts.abandon)
@@ -130,10 +146,25 @@ class StreamState:
         if plan.source.sequence != before.source.sequence:
             sequence = plan.source.sequence
             self.seen = StreamSeen(sequence.wraps if sequence else None)
+        return self._judge_anew(judgement, same_readings, time, counts)
+
+    def _adopt(self) -> Judgement | None:
+        """Be judged by what was learned, else by the plan; by what it was until now. Whoever asks
+        the plan for this stream's judgement gets the same."""
+        learned, before = self.learning.adopted, self.judgement
+        if learned is not None:
+            self.plan = replace(self.plan, by_stream={self.stream: learned})
+        self.judgement = self.plan.judgement_of(self.stream)
+        return before
+
+    def _judge_anew(
+        self, before: Judgement | None, same_readings: bool, time: int, counts: Counts
+    ) -> list[Output]:
+        """``judgement`` is another than ``before``; what decides as before goes on as before."""
         same_baseline = (
-            judgement is not None
+            before is not None
             and self.judgement is not None
-            and judgement.baseline.revision == self.judgement.baseline.revision
+            and before.baseline.revision == self.judgement.baseline.revision
         )
         if not (same_baseline and same_readings):
             self.lookback.clear()
@@ -149,7 +180,7 @@ class StreamState:
             if (each.name, each.revision) in kept:
                 goes_on.restore(kept[each.name, each.revision].state())
             self.detectors.append((each, goes_on))
-        judged = Judged(plan, self.stream, self.judgement.baseline)
+        judged = Judged(self.plan, self.stream, self.judgement.baseline)
         if self.alerts is None:
             self.alerts = StreamAlerts(judged, self.sequence)
         return self._told(self.alerts.reconfigure(judged, time), counts)
@@ -168,8 +199,12 @@ class StreamState:
         """What a finished subgroup causes."""
         counts.subgroups += 1
         self.last = subgroup
+        if self.learning.gathers and self.learning.take(self.plan, self.stream, subgroup):
+            # From the next subgroup on: this one is part of what was learned.
+            anew = self._judge_anew(self._adopt(), True, subgroup.last, counts)
+            return [*anew, *self._unjudged(subgroup, points)]
         if self.judgement is None or self.alerts is None:
-            return [Points(self.plan, self.stream, subgroup, ())] if points else []
+            return self._unjudged(subgroup, points)
         baseline = self.judgement.baseline
         if subgroup.size != self._size:
             self._size = subgroup.size
@@ -193,6 +228,9 @@ class StreamState:
         events = self.alerts.judge(subgroup, z, signals, self.lookback)
         return [*outputs, *self._told(events, counts)] if events else outputs
 
+    def _unjudged(self, subgroup: Subgroup, points: bool) -> Sequence[Output]:
+        return [Points(self.plan, self.stream, subgroup, ())] if points else []
+
     def state(self) -> dict[str, Any]:
         """Everything remembered, as JSON values; detectors by name."""
         last = self.last
@@ -207,10 +245,15 @@ class StreamState:
             "sequence": self.sequence.value,
             "alerts": None if self.alerts is None else self.alerts.state(),
             "last": None if last is None else last.state(),
+            "learning": self.learning.state(),
         }
 
     def restore(self, state: dict[str, Any]) -> None:
         """Take back what ``state`` gave under the same plan."""
+        self.learning.restore(state["learning"])
+        if self.learning.adopted is not None:
+            self._adopt()
+            self._begin()
         self.seen.restore(state["seen"])
         self.gatherer.restore(state["gatherer"])
         for plan, each in self.detectors:

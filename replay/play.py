@@ -18,6 +18,7 @@ from monitor.engine import Engine
 from monitor.entries import Configured, Parsed, State
 from monitor.messages import AlertEvent
 from monitor.outputs import Alert, Output, Points, SetAside
+from monitor.pinning import pinned
 from monitor.plan import Plan
 from monitor.stream import Counts
 from replay.merging import in_order
@@ -154,7 +155,7 @@ class _Player:
     def _ours(self, configured: Configured, recording: Recording, number: int) -> Configured:
         """Another configuration than ours counts only as something that was heard then."""
         self._compare(configured.plan, recording, number, "")
-        return Configured(configured.time, self._plan)
+        return Configured(configured.time, pinned(self._plan, configured.plan))
 
     def _resume(self, state: State, recording: Recording, number: int) -> None:
         """Go on from what was remembered; what we judge otherwise starts afresh."""
@@ -172,15 +173,16 @@ class _Player:
             ) from error
         played.counts = engine.counts
         self._before = self._numbers()
-        if state.plan != self._plan:
+        ours = pinned(self._plan, state.plan)
+        if state.plan != ours:
             self._compare(
                 state.plan, recording, number, ", and what it judges otherwise starts afresh"
             )
-            outputs = engine.fold(Configured(state.time, self._plan))
+            outputs = engine.fold(Configured(state.time, ours))
             self._take(outputs, recording, number)
 
     def _compare(self, theirs: Plan, recording: Recording, number: int, afresh: str) -> None:
-        ours = self._plan.characteristics
+        ours = pinned(self._plan, theirs).characteristics
         other = [each.name for each in theirs.characteristics if each not in ours]
         if other and not self._compared:
             self._compared = True

@@ -49,11 +49,19 @@ CONFIGURATION: dict[str, object] = {
                 "plausible": {"lower": 0, "upper": 1000},
             },
             "subgroup": {"size": 2, "max_gap": "30s"},
-            "baseline": {"mean": 341.2, "sigma": 1.9, "sigma_between": 0.4},
+            "baseline": {
+                "mean": 341.2,
+                "sigma": 1.9,
+                "sigma_between": 0.4,
+                "learn": 25,
+                "over_at_least": "1min",
+            },
             "detectors": [
                 {"kind": "shewhart", "chart": "mean", "width": 4.5},
                 {"kind": "cusum", "k": 0.5, "h": 8},
                 {"kind": "shewhart", "chart": "range", "width": 5},
+                {"kind": "shewhart", "chart": "variance", "width": 5},
+                {"kind": "cusum", "chart": "variance", "k": 1.5, "h": 30},
             ],
             "priority": {"down": "high", "up": "medium"},
             "reaction": {"up": ["Check fill head {head} for drips or a slow valve."]},
@@ -61,7 +69,7 @@ CONFIGURATION: dict[str, object] = {
         "cap-torque": {
             "title": "Capping torque",
             "source": {"topic": TORQUE, "payload": "number"},
-            "baseline": {"mean": 2.05, "sigma": 0.11},
+            "baseline": {"mean": 2.05, "sigma": 0.11, "learn": 25, "over_at_least": "0s"},
             "detectors": [
                 {"kind": "ewma", "lambda": 0.2, "width": 2.962},
                 {"kind": "shewhart", "chart": "moving_range", "width": 3},
@@ -70,6 +78,7 @@ CONFIGURATION: dict[str, object] = {
     },
 }
 
+RETAINED = ("standing", "baseline", "health")
 EVENTS = {"raised", "updated", "rejoined", "returned-to-normal", "withdrawn"}
 
 
@@ -135,6 +144,7 @@ def wire(tmp_path_factory: pytest.TempPathFactory) -> Iterator[Wire]:
             daemon.start()
             client.publish_all(story())
             client.publish_all([(TORQUE, "2.05")] * 3 + [(TORQUE, "3.05")] * 3)
+            client.publish_all([(TORQUE, f"{2 + each / 100}") for each in range(20)])
             client.publish_all(UNUSED.values())
             client.wait_for(
                 lambda ms: {m.body["event"] for m in ms} == EVENTS, f"{ROOT}/alert/net-weight/#"
@@ -144,7 +154,8 @@ def wire(tmp_path_factory: pytest.TempPathFactory) -> Iterator[Wire]:
                 lambda ms: {m.body["reason"] for m in ms} == {"retained", *UNUSED},
                 f"{ROOT}/setaside",
             )
-            client.wait_for(lambda ms: len({m.topic for m in ms}) == 2, f"{ROOT}/standing/#")
+            for kind in ("standing", "baseline"):
+                client.wait_for(lambda ms: len({m.topic for m in ms}) == 2, f"{ROOT}/{kind}/#")
             for end in (daemon.kill, daemon.stop):
                 if daemon.process is None:
                     daemon.start()
@@ -155,7 +166,7 @@ def wire(tmp_path_factory: pytest.TempPathFactory) -> Iterator[Wire]:
                     f"{ROOT}/health",
                 )
             said = client.received()
-        topics = {m.topic for m in said if m.topic.split("/")[3] in ("standing", "health")}
+        topics = {m.topic for m in said if m.topic.split("/")[3] in RETAINED}
         with Client(broker.port) as late:
             late.subscribe(f"{ROOT}/#")
             kept = late.wait_for(lambda ms: {m.topic for m in ms} >= topics)
@@ -174,7 +185,7 @@ VALIDATORS = {kind: Draft202012Validator(schema) for kind, schema in SCHEMAS.ite
 
 
 def test_there_is_a_schema_for_every_kind_of_message() -> None:
-    assert list(SCHEMAS) == ["alert", "standing", "point", "health", "setaside"]
+    assert list(SCHEMAS) == ["alert", "standing", "baseline", "point", "health", "setaside"]
 
 
 @pytest.mark.parametrize("kind", SCHEMAS)

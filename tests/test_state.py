@@ -85,6 +85,8 @@ PLANS = (
         EwmaPlan("mean", 0.3, 1.5),
         shewhart(chart="range", width=1.0),
         shewhart(chart="sd", width=1.0),
+        shewhart(chart="variance", width=1.5),
+        CusumPlan("variance", 1.5, 2.0, 0.5, k_lower=0.6, h_lower=1.0, size=2),
         all_rules("median"),
         subgroup=ByCount(2, 20 * SECOND),
     ),
@@ -102,6 +104,7 @@ PLANS = (
         all_rules("mean"),
         CusumPlan("mean", 0.25, 2.0),
         EwmaPlan("mean", 0.3, 1.5),
+        CusumPlan("variance", 1.3, 2.0, direction="up", hold=True, size=3),
         subgroup=ByWindow(6 * SECOND, 2),
         source=replace(HEADS, sequence=None),
     ),
@@ -368,7 +371,7 @@ def test_a_restored_engine_does_not_share_what_it_was_given() -> None:
     assert orjson.dumps([whole, streams]) == before
 
 
-@pytest.mark.parametrize("version", [0, 2, "1", None])
+@pytest.mark.parametrize("version", [0, 1, "2", None])
 def test_a_state_of_another_version_is_refused(version: object) -> None:
     state: dict[str, Any] = engine(*PLANS).state() | {"version": version}
     with pytest.raises(ValueError, match="version"):

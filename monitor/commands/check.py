@@ -16,11 +16,11 @@ from dataclasses import asdict
 from pathlib import Path
 from typing import Any
 
-from monitor.commandline import DONE, WRONG, CommandError
+from monitor.commandline import COULD_NOT, DONE, WRONG, CommandError
 from monitor.configuration.config import load
 from monitor.configuration.problems import ConfigurationError
 from monitor.configuration.resolve import resolve
-from monitor.configuration.summary import summary
+from monitor.configuration.summary import kept, summary
 from monitor.configuration.summary_words import lines
 
 PATIENCE = 1.0
@@ -34,7 +34,8 @@ def configure(parser: argparse.ArgumentParser) -> None:
 
 
 def main(args: argparse.Namespace) -> int:
-    """Print what the configuration will do; every problem to stderr and 2 where it is wrong."""
+    """Print what the configuration will do; every problem to stderr and 2 where it is wrong, 1
+    where it would ring more often than the promises or the budget allow."""
     try:
         config = load(Path(args.config), os.environ)
     except ConfigurationError as error:
@@ -47,10 +48,12 @@ def main(args: argparse.Namespace) -> int:
         found = summary(config, resolve(config))
     if args.json:
         _print_json({"valid": True, **found})
-        return DONE
-    warnings = len(found["warnings"])
-    but = f", with {warnings} warning{'s'[: warnings > 1]} at the end" if warnings else ""
-    print("\n".join([f"{args.config} is valid{but}.", *lines(found)]))
+    else:
+        warnings = len(found["warnings"])
+        but = f", with {warnings} warning{'s'[: warnings > 1]} at the end" if warnings else ""
+        print("\n".join([f"{args.config} is valid{but}.", *lines(found)]))
+    if not kept(found):
+        raise CommandError("it would ring more often than was agreed (see above)", COULD_NOT)
     return DONE
 
 

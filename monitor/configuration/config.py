@@ -20,11 +20,12 @@ from monitor.configuration.complaints import Complaint, complaints, shown
 from monitor.configuration.problems import ConfigurationError, Problem, dotted
 from monitor.configuration.problems import Path as KeyPath
 from monitor.configuration.sections.document import DAEMON, Document, Measured
+from monitor.configuration.unjudged import Baselines, with_baselines
 from monitor.configuration.yamltree import Flaw, Node, UnreadableError
 
 __all__ = ["Config", "ConfigurationError", "load", "load_measured"]
 
-_PUBLISHED = ("alert/#", "standing/#", "point/#", "health", "setaside", "command/#")
+_PUBLISHED = ("alert/#", "standing/#", "baseline/#", "point/#", "health", "setaside", "command/#")
 
 D = TypeVar("D", bound=Measured)
 
@@ -49,12 +50,15 @@ def load(path: Path, environ: Mapping[str, str]) -> Config:
     return Config(reading.checked(Document, more), reading.folder, password)
 
 
-def load_measured(path: Path, environ: Mapping[str, str]) -> Measured:
+def load_measured(
+    path: Path, environ: Mapping[str, str], baselines: Baselines | None = None
+) -> Measured:
     """Read only what a replay needs: it has no broker, and no password to read.
 
-    Arguments and errors are those of ``load``.
+    With ``baselines`` only the characteristics named in them are judged, by these instead of what
+    is written. Other arguments and errors are those of ``load``.
     """
-    reading = _Reading(path, environ, leaving=DAEMON)
+    reading = _Reading(path, environ, leaving=DAEMON, baselines=baselines)
     return reading.checked(Measured, [])
 
 
@@ -62,7 +66,12 @@ class _Reading:
     """A configuration as it was found. Raises ConfigurationError where there is none to judge."""
 
     def __init__(
-        self, path: Path, environ: Mapping[str, str], *, leaving: frozenset[str] = frozenset()
+        self,
+        path: Path,
+        environ: Mapping[str, str],
+        *,
+        leaving: frozenset[str] = frozenset(),
+        baselines: Baselines | None = None,
     ) -> None:
         flaws: list[Flaw] = []
         trees, self._unreadable = _trees(path, environ, flaws)
@@ -71,6 +80,8 @@ class _Reading:
         self.folder = path if path.is_dir() else path.parent
         whole = yamltree.without(yamltree.merged(trees, flaws), leaving)
         flaws = [flaw for flaw in flaws if not (flaw.path and flaw.path[0] in leaving)]
+        if baselines is not None:
+            whole = with_baselines(whole, baselines)
         self._planted = baseline_files.plant(whole, self.folder, environ)
         self.tree = self._planted.tree
         self._flaws = [*flaws, *self._planted.flaws, *_blanks(self.tree)]

@@ -1,6 +1,8 @@
 """How often each detector rings while nothing is wrong, by the textbook: independent, normal.
 
-Knows run lengths and pace. Must not know words, or how often is too often.
+Nothing is wrong while the mean is off by no more than a detector was asked to ignore: what is said
+here of such a detector is said of that drift. Knows run lengths and pace. Must not know words, or
+how often is too often.
 """
 
 from __future__ import annotations
@@ -12,6 +14,7 @@ from functools import lru_cache
 from monitor import runlengths
 from monitor.configuration import pace
 from monitor.configuration.pace import Pace
+from monitor.detectors.charts import standard_error
 from monitor.plan import CharacteristicPlan, DetectorPlan, Scheme, ShewhartPlan
 
 SHIFT = 8 * 3_600.0
@@ -58,17 +61,33 @@ def of_detector(plan: CharacteristicPlan, detector: DetectorPlan) -> DetectorRin
         if isinstance(scheme, ShewhartPlan)
         else []
     )
+    off = ignored(plan, detector, size)
     return DetectorRinging(
-        _ringing(scheme, size, coming), tuple(_ringing(part, size, coming) for part in parts)
+        _ringing(scheme, size, coming, off),
+        tuple(_ringing(part, size, coming, off) for part in parts),
     )
 
 
+def ignored(plan: CharacteristicPlan, detector: DetectorPlan, size: int) -> float:
+    """The drift that it was asked to leave alone, in standard errors; towards where it watches."""
+    if detector.intent is None:
+        return 0.0
+    _, judgement = plan.example()
+    if judgement is None:
+        return 0.0
+    off = detector.intent.ignore / standard_error(judgement.baseline, size)
+    return -off if detector.intent.direction == "down" else off
+
+
 def of_characteristic(plan: CharacteristicPlan) -> float | None:
-    """False alarms in a shift of all its detectors; None where one of them is unknown.
+    """False alarms in a shift of all its detectors; None where one of them is unknown, or all are
+    because the baseline is still to be learned.
 
     Rates add, which is a little too much for detectors that share their readings.
     """
     _, judgement = plan.example()
+    if judgement is None:
+        return None
     rates = [of_detector(plan, each).whole.in_a_shift for each in judgement.detectors]
     known = [rate for rate in rates if rate is not None]
     return math.fsum(known) if len(known) == len(rates) else None
@@ -83,6 +102,8 @@ def total(plans: tuple[CharacteristicPlan, ...]) -> Total:
         rate, coming = of_characteristic(plan), pace.pace(plan)
         if coming is None:
             unknown[plan.name] = "has no expected_rate"
+        elif plan.example()[1] is None:
+            unknown[plan.name] = "learns its baseline first"
         elif rate is None:
             unknown[plan.name] = "has a detector whose run length is too much to compute"
         elif coming.each:
@@ -92,16 +113,16 @@ def total(plans: tuple[CharacteristicPlan, ...]) -> Total:
     return Total(math.fsum(together), each_stream, unknown)
 
 
-def _ringing(scheme: Scheme, size: int, coming: Pace | None) -> Ringing:
-    subgroups = _run_length(scheme, size)
+def _ringing(scheme: Scheme, size: int, coming: Pace | None, off: float) -> Ringing:
+    subgroups = _run_length(scheme, size, off)
     if subgroups is None or coming is None:
         return Ringing(subgroups, None)
     return Ringing(subgroups, subgroups * coming.seconds)
 
 
 @lru_cache(maxsize=1024)
-def _run_length(scheme: Scheme, size: int) -> float | None:
+def _run_length(scheme: Scheme, size: int, off: float) -> float | None:
     try:
-        return runlengths.run_length(scheme, size=size).subgroups
+        return runlengths.run_length(scheme, off, size=size).subgroups
     except ValueError:
         return None

@@ -1,7 +1,7 @@
 """How often subgroups come and how large they are, as far as a plan can tell.
 
 Knows expected rates, windows and counts. Must not know charts. How many streams there are only the
-readings can tell, unless they are named one by one or there is but one.
+readings can tell, unless somebody wrote it down, named them one by one, or there is but one.
 """
 
 from __future__ import annotations
@@ -9,7 +9,7 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 from monitor import times
-from monitor.plan import ByCount, ByWindow, CharacteristicPlan
+from monitor.plan import ByCount, ByWindow, CharacteristicPlan, SubgroupPlan
 
 
 @dataclass(frozen=True, slots=True)
@@ -30,7 +30,9 @@ def streams(plan: CharacteristicPlan) -> int | None:
     """How many streams are judged; None where nobody can know."""
     if not keys(plan):
         return 1
-    return len(plan.by_stream) if plan.judgement is None else None
+    if plan.judgement is None and plan.by_stream:
+        return len(plan.by_stream)
+    return plan.source.expected_streams
 
 
 def least_streams(plan: CharacteristicPlan) -> int:
@@ -40,18 +42,15 @@ def least_streams(plan: CharacteristicPlan) -> int:
 
 def size(plan: CharacteristicPlan) -> int:
     """Readings in a usual subgroup; the fewest it may have where that is unknown."""
-    subgroup = plan.subgroup
-    if isinstance(subgroup, ByCount):
-        return subgroup.size
-    return max(subgroup.min_size, round(in_window(plan) or 0))
+    return usual_size(plan.subgroup, plan.source.expected_rate, streams(plan))
 
 
 def in_window(plan: CharacteristicPlan) -> float | None:
     """Expected readings of one stream in a window; None where that is unknown."""
-    subgroup, rate, count = plan.subgroup, plan.source.expected_rate, streams(plan)
-    if not isinstance(subgroup, ByWindow) or rate is None or count is None:
+    subgroup = plan.subgroup
+    if not isinstance(subgroup, ByWindow):
         return None
-    return rate * subgroup.window / times.SECOND / count
+    return _in_window(subgroup, plan.source.expected_rate, streams(plan))
 
 
 def takes(plan: CharacteristicPlan) -> float | None:
@@ -64,15 +63,32 @@ def takes(plan: CharacteristicPlan) -> float | None:
 
 def pace(plan: CharacteristicPlan) -> Pace | None:
     """How often subgroups come; None without an expected rate, a window or ``every``."""
-    count, rate = streams(plan), plan.source.expected_rate
-    match plan.subgroup:
-        case ByCount() as subgroup:
+    return usual_pace(plan.subgroup, plan.source.expected_rate, streams(plan))
+
+
+def usual_size(subgroup: SubgroupPlan, rate: float | None, count: int | None) -> int:
+    """``size`` of ``count`` streams with so many readings a second together."""
+    if isinstance(subgroup, ByCount):
+        return subgroup.size
+    return max(subgroup.min_size, round(_in_window(subgroup, rate, count) or 0))
+
+
+def usual_pace(subgroup: SubgroupPlan, rate: float | None, count: int | None) -> Pace | None:
+    """``pace`` of ``count`` streams with so many readings a second together."""
+    match subgroup:
+        case ByCount():
             least, planned = subgroup.size, subgroup.every
-        case ByWindow() as window:
-            least, planned = window.min_size, window.window
+        case ByWindow():
+            least, planned = subgroup.min_size, subgroup.window
     gathering = 0.0 if rate is None else least / rate  # they cannot come faster than readings do
     if planned is None:
         return Pace(gathering) if gathering else None
     if count is None:
         return Pace(planned / times.SECOND, each=True)
     return Pace(max(planned / times.SECOND / count, gathering))
+
+
+def _in_window(subgroup: ByWindow, rate: float | None, count: int | None) -> float | None:
+    if rate is None or count is None:
+        return None
+    return rate * subgroup.window / times.SECOND / count

@@ -72,7 +72,7 @@ def _of(plan: CharacteristicPlan) -> Iterator[Found]:
     else:
         yield from _windows(plan, plan.subgroup)
     _, judgement = plan.example()
-    for index, detector in enumerate(judgement.detectors):
+    for index, detector in enumerate(judgement.detectors if judgement else ()):
         yield from _rings(plan, detector, f"detectors[{index}]")
 
 
@@ -116,7 +116,7 @@ def _filters(plan: CharacteristicPlan) -> Iterator[Found]:
 
 
 def _resolution(plan: CharacteristicPlan) -> Iterator[Found]:
-    sigma = min(judgement.baseline.sigma for _, judgement in _judgements(plan))
+    sigma = min((each.baseline.sigma for _, each in _judgements(plan)), default=math.inf)
     if plan.resolution is not None and plan.resolution > COARSE * sigma:
         wrong = (
             f"is coarser than half of sigma ({_amount(plan, sigma)}): readings fall on so few "
@@ -164,6 +164,8 @@ def _windows(plan: CharacteristicPlan, subgroup: ByWindow) -> Iterator[Found]:
 
 def _charts(plan: CharacteristicPlan) -> set[str]:
     _, judgement = plan.example()
+    if judgement is None:
+        return {each.given.chart for each in plan.learn.detectors} if plan.learn else set()
     return {each.scheme.chart for each in judgement.detectors}
 
 

@@ -6,15 +6,13 @@ could be wrong was found before.
 
 from __future__ import annotations
 
-import hashlib
 import re
 from collections.abc import Mapping
 from pathlib import Path
 from typing import Any
 
-import rfc8785
-
-from monitor import filters, pointers, stream_names, times
+from monitor import filters, judging, pointers, stream_names, times
+from monitor.configuration.asked import Asked, planned
 from monitor.configuration.config import Config, load, load_measured
 from monitor.configuration.presets import OUTSIDE_LIMITS, as_written, preset
 from monitor.configuration.sections.base import Section
@@ -22,6 +20,7 @@ from monitor.configuration.sections.baseline import StreamBaseline
 from monitor.configuration.sections.characteristic import Characteristic
 from monitor.configuration.sections.daemon import Alerts, Tls
 from monitor.configuration.sections.detectors import (
+    WIDTH,
     AnyDetector,
     CusumDetector,
     EwmaDetector,
@@ -31,19 +30,18 @@ from monitor.configuration.sections.detectors import (
 )
 from monitor.configuration.sections.document import Measured
 from monitor.configuration.sections.source import Source
-from monitor.configuration.sections.subgroup import Subgroup
+from monitor.configuration.unjudged import Baselines
 from monitor.plan import (
-    BaselinePlan,
     BrokerPlan,
-    ByCount,
     ByDirection,
-    ByWindow,
     CharacteristicPlan,
     Chart,
     CusumPlan,
-    DetectorPlan,
+    DeclaredDetector,
     EwmaPlan,
+    Intent,
     Judgement,
+    LearnPlan,
     Plan,
     Priority,
     RetentionPlan,
@@ -54,12 +52,10 @@ from monitor.plan import (
     ShewhartPlan,
     SourcePlan,
     Specification,
-    SubgroupPlan,
     TlsPlan,
 )
 
 PORT, TLS_PORT = 1883, 8883
-WIDTH = 3.0
 _URGENCY: tuple[Priority, ...] = ("low", "medium", "high")
 
 
@@ -68,10 +64,10 @@ def read_settings(path: Path, environ: Mapping[str, str]) -> Settings:
     return resolve(load(path, environ))
 
 
-def read_plan(path: Path, environ: Mapping[str, str]) -> Plan:
+def read_plan(path: Path, environ: Mapping[str, str], baselines: Baselines | None = None) -> Plan:
     """What a replay needs of a file or folder: broker, outputs and journal may be missing, and are
-    not looked at. Arguments and errors are those of ``load``."""
-    return _plan(load_measured(path, environ))
+    not looked at. Arguments and errors are those of ``load_measured``."""
+    return _plan(load_measured(path, environ, baselines))
 
 
 def resolve(config: Config) -> Settings:
@@ -120,17 +116,23 @@ def _plan(document: Measured) -> Plan:
 
 def _characteristic(name: str, section: Characteristic, alerts: Alerts) -> CharacteristicPlan:
     judge, baseline = _Judge(section), section.baseline.given
+    learn = section.baseline.learn
     specification = section.specification
     return CharacteristicPlan(
         name=name,
         title=section.title or name,
         unit=section.unit,
         source=_source(section.source),
-        subgroup=_subgroup(section.subgroup),
+        subgroup=planned(section.subgroup),
         judgement=None if baseline.common is None else judge(baseline.common),
         by_stream={
             stream_names.parse(stream): judge(own) for stream, own in baseline.by_stream.items()
         },
+        learn=None
+        if learn is None
+        else LearnPlan(
+            learn, section.baseline.over_at_least, section.baseline.adopt, judge.detectors
+        ),
         priority=_priority(section),
         reaction=_reaction(section),
         off_delay=alerts.off_delay,
@@ -140,12 +142,6 @@ def _characteristic(name: str, section: Characteristic, alerts: Alerts) -> Chara
         if specification is None
         else Specification(specification.nominal, specification.lower, specification.upper),
     )
-
-
-def _subgroup(section: Subgroup) -> SubgroupPlan:
-    if section.window is not None:
-        return ByWindow(section.window, section.min_size)
-    return ByCount(section.size, section.max_gap, section.every)
 
 
 def _source(section: Source) -> SourcePlan:
@@ -168,34 +164,38 @@ def _source(section: Source) -> SourcePlan:
         stream=tuple((key, pointers.parse(text)) for key, text in section.stream.items()),
         use_if=tuple((pointers.parse(text), tuple(v)) for text, v in section.use_if.items()),
         expected_rate=section.expected_rate,
+        expected_streams=section.expected_streams,
         **limits,
     )
 
 
-def _scheme(section: AnyDetector, chart: Chart) -> Scheme:
+def _written(section: AnyDetector, chart: Chart, size: int) -> Scheme:
+    """The scheme of a detector whose constants are written down; ``size`` is a usual subgroup's."""
     match section:
         case ShewhartDetector():
             return _shewhart(section, chart)
-        case CusumDetector():
+        case CusumDetector(k=float(k), h=float(h)):
             return CusumPlan(
                 chart,
-                section.k,
-                section.h,
+                k,
+                h,
                 section.head_start,
                 section.clip,
                 section.after_signal == "hold",
-                section.direction,
+                section.watched,
+                size=size if chart == "variance" else None,
             )
-        case EwmaDetector():
+        case EwmaDetector(lam=float(lam)):
             return EwmaPlan(
                 chart,
-                section.lam,
-                section.width,
+                lam,
+                section.width or WIDTH,
                 section.limits == "asymptotic",
                 section.clip,
                 section.after_signal == "hold",
                 section.direction,
             )
+    raise AssertionError("a detector without constants was let through")
 
 
 def _shewhart(section: ShewhartDetector, chart: Chart) -> ShewhartPlan:
@@ -209,7 +209,7 @@ def _shewhart(section: ShewhartDetector, chart: Chart) -> ShewhartPlan:
         if isinstance(rule, OutsideRule):
             given.setdefault("width", width)
         rules.append(RulePlan(**given))
-    return ShewhartPlan(chart, width, tuple(rules), section.direction)
+    return ShewhartPlan(chart, width, tuple(rules), section.direction, section.exact)
 
 
 def _priority(section: Characteristic) -> ByDirection[Priority]:
@@ -231,68 +231,63 @@ def _reaction(section: Characteristic) -> ByDirection[tuple[str, ...]]:
 # writing the default down changes nothing; names, titles and reactions decide nothing.
 
 
-class _Judge:
-    """Gives each stream's baseline the characteristic's detectors, with their revisions.
+def _detectors(section: Characteristic) -> tuple[DeclaredDetector, ...]:
+    usual = default_chart(section.subgroup)
+    common = {"source": _declared(section.source), "subgroup": _declared(section.subgroup)}
+    asked = Asked(
+        section.source, section.subgroup, section.baseline, section.promise, section.detectors
+    )
+    declared: list[DeclaredDetector] = []
+    for each in section.detectors:
+        intent = asked.intent(each)
+        given = intent or _written(each, each.chart or usual, asked.size)
+        name = each.name or (f"{each.kind}-{each.chart}" if each.chart else each.kind)
+        decides = {"detector": _judging(each, given, usual), **common}
+        if intent is not None and section.promise is not None:
+            decides["promise"] = _declared(section.promise)
+        text = judging.canonical(decides).decode()
+        declared.append(DeclaredDetector(name, each.kind, given, text))
+    return tuple(declared)
 
-    A revision hashes {baseline, detector, source, subgroup}. Only the baseline differs between ten
-    thousand streams, and its key sorts first, so the rest of the canonical text is made once.
-    """
+
+class _Judge:
+    """Gives each stream's baseline the characteristic's detectors; equal baselines share them."""
 
     def __init__(self, section: Characteristic) -> None:
-        usual = default_chart(section.subgroup)
-        source, subgroup = _declared(section.source), _declared(section.subgroup)
-        self._detectors: list[tuple[str, str, Scheme, bytes]] = []
+        self.detectors = _detectors(section)
         self._known: dict[StreamBaseline, Judgement] = {}
-        for each in section.detectors:
-            scheme = _scheme(each, each.chart or usual)
-            name = each.name or (f"{each.kind}-{each.chart}" if each.chart else each.kind)
-            decides = {
-                "detector": _judging(each, scheme, usual),
-                "source": source,
-                "subgroup": subgroup,
-            }
-            self._detectors.append((name, each.kind, scheme, _canonical(decides)))
 
     def __call__(self, baseline: StreamBaseline) -> Judgement:
-        """The judgement by that baseline; equal baselines share one."""
+        """The judgement by that baseline."""
         known = self._known.get(baseline)
-        if known is not None:
-            return known
-        declared = _canonical(_declared(baseline))
-        before = b'{"baseline":' + declared + b","
-        judgement = self._known[baseline] = Judgement(
-            BaselinePlan(baseline.mean, baseline.sigma, baseline.sigma_between, _sha256(declared)),
-            tuple(
-                DetectorPlan(name, kind, scheme, _sha256(before + decides[1:]))
-                for name, kind, scheme, decides in self._detectors
-            ),
-        )
-        return judgement
+        if known is None:
+            known = self._known[baseline] = judging.judgement(
+                baseline.mean, baseline.sigma, baseline.sigma_between, self.detectors
+            )
+        return known
 
 
-def _judging(section: AnyDetector, scheme: Scheme, usual: Chart) -> dict[str, Any]:
+def _judging(section: AnyDetector, given: Intent | Scheme, usual: Chart) -> dict[str, Any]:
     """What of a detector decides."""
     detector = _declared(section)
     detector.pop("name", None)
     if section.chart == usual:
         detector.pop("chart", None)
-    if isinstance(scheme, ShewhartPlan):
+    if not isinstance(given, Intent):
+        detector.pop("share", None)  # the promise is not what its constants come from
+    if isinstance(section, ShewhartDetector) and (section.chart == "variance" or not section.exact):
+        detector.pop("limits", None)  # they say what would be so without them
+    if isinstance(given, ShewhartPlan):
         # Several spellings (a preset, a list, a width here or there) say the same.
-        detector |= {"width": scheme.width, "rules": [as_written(rule) for rule in scheme.rules]}
-        if scheme.width == WIDTH:
-            del detector["width"]
-        if scheme.rules == preset(OUTSIDE_LIMITS, scheme.width):
+        detector |= {"width": given.width, "rules": [as_written(rule) for rule in given.rules]}
+        if given.rules == preset(OUTSIDE_LIMITS, given.width):
             del detector["rules"]
+    if isinstance(section, CusumDetector) and section.chart == "variance":
+        detector["direction"] = section.watched
+    if detector.get("width") == WIDTH:
+        del detector["width"]
     return detector
 
 
 def _declared(section: Section) -> dict[str, Any]:
     return section.model_dump(mode="json", by_alias=True, exclude_defaults=True)
-
-
-def _canonical(value: dict[str, Any]) -> bytes:
-    return rfc8785.dumps(value)
-
-
-def _sha256(text: bytes) -> str:
-    return hashlib.sha256(text).hexdigest()[:32]

@@ -12,7 +12,7 @@ _YEAR = 365.25 * _DAY
 
 def number(value: float) -> str:
     """Two digits, three of larger numbers: ``0.17``, ``14``, ``1,050,000``."""
-    if value == 0 or 0.001 <= abs(value) < 100:
+    if value == 0 or 0.001 <= abs(value) < 99.5:  # above, two digits would write 1e+02
         return f"{value:.2g}"
     if abs(value) < 0.001:
         return "almost 0"

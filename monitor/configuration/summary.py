@@ -11,12 +11,15 @@ from dataclasses import asdict
 from typing import Any
 
 from monitor import stream_names, times
-from monitor.configuration import false_alarms, pace
+from monitor.configuration import catching, false_alarms, pace, verdicts
+from monitor.configuration.catching import Catching
 from monitor.configuration.config import Config
 from monitor.configuration.false_alarms import SHIFT, Ringing
 from monitor.configuration.pitfalls import pitfalls
 from monitor.configuration.sections.characteristic import Characteristic
+from monitor.configuration.verdicts import BudgetVerdict
 from monitor.detectors.charts import chart, standard_error
+from monitor.methods.runlength import variance_cusum
 from monitor.plan import (
     BaselinePlan,
     ByCount,
@@ -27,6 +30,7 @@ from monitor.plan import (
     DetectorPlan,
     EwmaPlan,
     Judgement,
+    LearnPlan,
     RulePlan,
     Settings,
     ShewhartPlan,
@@ -39,7 +43,8 @@ def summary(config: Config, settings: Settings) -> dict[str, Any]:
 
     ``settings`` are what ``config`` resolves to.
     """
-    broker, plans = settings.broker, settings.plan.characteristics
+    broker, plans, document = settings.broker, settings.plan.characteristics, config.document
+    total = false_alarms.total(plans)
     return {
         "broker": {
             "host": broker.host,
@@ -55,12 +60,34 @@ def summary(config: Config, settings: Settings) -> dict[str, Any]:
         "journal": settings.journal,
         "characteristics": [
             _characteristic(each, settings.root)
-            | {"origin": _origin(config.document.characteristics[each.name])}
+            | _agreed(each, document.characteristics[each.name])
             for each in plans
         ],
-        "false_alarms": {"seconds": SHIFT, **asdict(false_alarms.total(plans))},
+        "false_alarms": {"seconds": SHIFT, **asdict(total)},
+        "budget": _as_dict(verdicts.of_budget(total, document.budget)),
         "warnings": [asdict(each) for each in pitfalls(settings.plan)],
     }
+
+
+def kept(found: dict[str, Any]) -> bool:
+    """Whether nothing that was agreed is broken; what nobody can tell is not."""
+    promises = [each["promise"] for each in found["characteristics"]]
+    return all(each["kept"] is not False for each in [found["budget"], *promises] if each)
+
+
+def _agreed(plan: CharacteristicPlan, section: Characteristic) -> dict[str, Any]:
+    promise = verdicts.of_promise(plan, section.promise)
+    foreseen = promise and promise.foreseen
+    return {
+        "origin": _origin(section),
+        "promise": promise
+        and asdict(promise)
+        | {"never": foreseen == math.inf, "foreseen": None if foreseen == math.inf else foreseen},
+    }
+
+
+def _as_dict(found: BudgetVerdict | Catching | None) -> dict[str, Any] | None:
+    return None if found is None else asdict(found)
 
 
 def _origin(section: Characteristic) -> dict[str, Any] | None:
@@ -86,14 +113,29 @@ def _characteristic(plan: CharacteristicPlan, root: str) -> dict[str, Any]:
         },
         # Limits are those of the common baseline, or of one stream where there is none.
         "limits_of": example and stream_names.name(example),
-        "detectors": [_detector(plan, each, judgement.baseline) for each in judgement.detectors],
+        "learns": plan.learn and _learns(plan.learn),
+        "detectors": [_detector(plan, each, judgement.baseline) for each in judgement.detectors]
+        if judgement
+        else [],
         "priority": _sides(plan.priority),
         "reaction": _sides(plan.reaction),
         "off_delay": plan.off_delay / times.SECOND,
         "rejoin": plan.rejoin / times.SECOND,
-        "alert_topic": "/".join(
-            [root, "alert", plan.name, *(f"<{key}>" for key in pace.keys(plan))]
-        ),
+        "alert_topic": _topic(plan, root, "alert"),
+        "baseline_topic": _topic(plan, root, "baseline"),
+    }
+
+
+def _topic(plan: CharacteristicPlan, root: str, what: str) -> str:
+    return "/".join([root, what, plan.name, *(f"<{key}>" for key in pace.keys(plan))])
+
+
+def _learns(plan: LearnPlan) -> dict[str, Any]:
+    return {
+        "subgroups": plan.subgroups,
+        "over_at_least": plan.over_at_least / times.SECOND,
+        "adopt": plan.adopt,
+        "detectors": [each.name for each in plan.detectors],
     }
 
 
@@ -176,18 +218,23 @@ def _detector(
         "chart": scheme.chart,
         "direction": scheme.direction,
         "revision": detector.revision,
+        "intent": None if detector.intent is None else asdict(detector.intent),
         "false_alarm": _ringing(ringing.whole),
+        "catches": _as_dict(catching.of_detector(plan, detector)),
     }
     match scheme:
         case ShewhartPlan():
             return common | {
                 "width": scheme.width,
+                "exact": scheme.exact,
                 **_limits(scheme, baseline, size, scheme.width),
                 "rules": [
                     _rule(rule, scheme, baseline, size) | {"false_alarm": _ringing(each)}
                     for rule, each in zip(scheme.rules, ringing.rules, strict=True)
                 ],
             }
+        case CusumPlan(chart="variance"):
+            return common | _variance_cusum(scheme, baseline)
         case CusumPlan():
             return common | _cusum(scheme, baseline, size)
         case EwmaPlan():
@@ -218,7 +265,7 @@ def _rule(rule: RulePlan, plan: ShewhartPlan, baseline: BaselinePlan, size: int)
 def _limits(
     plan: ShewhartPlan, baseline: BaselinePlan, size: int, width: float
 ) -> dict[str, float]:
-    return chart(plan.chart, baseline).limits(size, width)._asdict()
+    return chart(plan.chart, baseline, plan.exact).limits(size, width)._asdict()
 
 
 def _cusum(plan: CusumPlan, baseline: BaselinePlan, size: int) -> dict[str, Any]:
@@ -234,6 +281,26 @@ def _cusum(plan: CusumPlan, baseline: BaselinePlan, size: int) -> dict[str, Any]
         "limit": plan.h * error,
         "start": plan.head_start * plan.h * error,
         "tuned_to": 2 * plan.k * error,
+    }
+
+
+def _variance_cusum(plan: CusumPlan, baseline: BaselinePlan) -> dict[str, Any]:
+    square = baseline.sigma**2
+    return {
+        "head_start": plan.head_start,
+        "after_signal": "hold" if plan.hold else "restart",
+        "sums": [
+            {
+                "statistic": statistic,
+                "k": k,
+                "h": h,
+                "reference": k * square,
+                "limit": h * square,
+                "start": plan.head_start * h * square,
+                "tuned_to": variance_cusum.tuned_to(k),
+            }
+            for statistic, k, h in plan.sums()
+        ],
     }
 
 

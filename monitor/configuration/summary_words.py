@@ -11,7 +11,7 @@ import textwrap
 from collections.abc import Iterator
 from typing import Any
 
-from monitor import times
+from monitor import times, units
 from monitor.configuration import spans
 from monitor.configuration.sections.base import either
 
@@ -34,7 +34,7 @@ def lines(plan: Summary) -> Iterator[str]:
         yield ""
         yield from _Speaker(each).lines()
     yield ""
-    yield from _entry("False alarms", *_false_alarms(plan["false_alarms"]))
+    yield from _entry("False alarms", *_false_alarms(plan["false_alarms"], plan["budget"]))
     for warning in plan["warnings"]:
         yield ""
         wrong, instead = warning["wrong"], warning["instead"]
@@ -53,7 +53,9 @@ def _broker(broker: Summary) -> Iterator[str]:
         yield f"TLS: it must show a certificate signed by {tls['ca']}{shows}"
 
 
-def _false_alarms(total: Summary) -> Iterator[str]:
+def _false_alarms(total: Summary, budget: Summary | None) -> Iterator[str]:
+    if budget is not None:
+        yield _budget(budget)
     hours = f"{total['seconds'] / 3_600:g} h"
     if total["together"] or not (total["each_stream"] or total["unknown"]):
         yield f"with nothing wrong, about {spans.number(total['together'])} in {hours} altogether"
@@ -64,6 +66,17 @@ def _false_alarms(total: Summary) -> Iterator[str]:
     yield (
         "by the textbook, as above: for independent, normal readings that keep exactly to the "
         "baseline; most real ones ring more often"
+    )
+
+
+def _budget(budget: Summary) -> str:
+    agreed = f"{budget['alerts']:g} in {_duration(budget['seconds'])}"
+    foreseen = spans.number(budget["foreseen"])
+    if budget["kept"]:
+        return f"within the budget of {agreed}: about {foreseen} are foreseen"
+    return (
+        f"ABOVE THE BUDGET of {agreed}: about {foreseen} are foreseen; promise longer intervals, "
+        "or widen what rings most"
     )
 
 
@@ -89,7 +102,7 @@ class _Speaker:
     def __init__(self, plan: Summary) -> None:
         self._plan = plan
         baselines = [*plan["by_stream"].values(), *filter(None, [plan["baseline"]])]
-        error = min(baseline["standard_error"] for baseline in baselines)
+        error = min((baseline["standard_error"] for baseline in baselines), default=1.0)
         self._places = max(0, 1 - math.floor(math.log10(error)))
         self._unit = f"{_BOUND}{plan['unit']}" if plan["unit"] else ""
 
@@ -103,7 +116,25 @@ class _Speaker:
         yield from _entry("  Baseline", *self._baseline())
         for detector in plan["detectors"]:
             yield from _entry("  Detector", *self._detector(detector))
+        if plan["promise"]:
+            yield from _entry("  Promise", self._promise(plan["promise"]))
         yield from _entry("  Alerts", *self._alerts())
+
+    def _promise(self, promise: Summary) -> str:
+        agreed = f"one false alarm in {_duration(promise['seconds'])}"
+        if promise["kept"] is None:
+            return f"{agreed}: nobody can tell whether it is kept"
+        foreseen = (
+            "none is ever foreseen"
+            if promise["never"]
+            else f"one in {spans.long(promise['foreseen'])} is foreseen"
+        )
+        if promise["kept"]:
+            return f"{agreed} of all its streams and detectors together: {foreseen}"
+        return (
+            f"BROKEN: {agreed} was agreed, {foreseen}; "
+            "give the detectors that ring most wider constants or a smaller share"
+        )
 
     def _number(self, value: float) -> str:
         if self._places > 9 or abs(value) >= 1e12:
@@ -112,6 +143,13 @@ class _Speaker:
 
     def _amount(self, value: float) -> str:
         return self._number(value) + self._unit
+
+    def _squared(self, value: float) -> str:
+        unit = units.of_chart("variance", self._plan["unit"])
+        return f"{value:.4g}{_BOUND}{unit}" if unit else f"{value:.4g}"
+
+    def _between_squares(self, limits: Summary) -> str:
+        return f"{limits['lower']:.4g} to {self._squared(limits['upper'])}"
 
     def _between(self, limits: Summary) -> str:
         return f"{self._number(limits['lower'])} to {self._amount(limits['upper'])}"
@@ -222,6 +260,8 @@ class _Speaker:
                 f"sigma {self._as_given(common['sigma'])}{extra}; "
                 f"standard error of {of}: {self._amount(common['standard_error'])}"
             )
+        if learns := plan["learns"]:
+            yield from self._learns(learns)
         if plan["origin"]:
             yield from self._origin(plan["origin"])
         if specification := plan["specification"]:
@@ -231,6 +271,18 @@ class _Speaker:
                 if value is not None
             ]
             yield f"specification {', '.join(given)}: shown with alerts, it moves no limit"
+
+    def _learns(self, learns: Summary) -> Iterator[str]:
+        over, count = _duration(learns["over_at_least"]), learns["subgroups"]
+        yield (
+            f"learned of each stream from {count:,} subgroups over {over} or more, and proposed on "
+            f"{self._plan['baseline_topic']}"
+        )
+        if learns["adopt"]:
+            detectors = ", ".join(learns["detectors"])
+            yield f"one that may be trusted is judged by from then on, with {detectors}"
+        elif not (self._plan["baseline"] or self._plan["by_stream"]):
+            yield "until one is written down here nothing is judged"
 
     def _own(self, own: list[Summary], limits_of: str | None) -> Iterator[str]:
         means, sigmas = ([each[key] for each in own] for key in ("mean", "sigma"))
@@ -262,15 +314,39 @@ class _Speaker:
             "median": f"median of {size}",
             "range": f"range of {size}",
             "sd": f"standard deviation of {size}",
+            "variance": f"variance of {size}",
             "individual": "single reading",
             "moving_range": "moving range",
         }[detector["chart"]]
         say = {"shewhart": self._shewhart, "cusum": self._cusum, "ewma": self._ewma}
+        if "sums" in detector:
+            say["cusum"] = self._variance_cusum
         first, *more = say[detector["kind"]](detector, charted)
         yield f"{detector['name']}: {first}{only}"
         yield from (f"  {sentence}" for sentence in more)
         once = self._once(detector["false_alarm"])
-        yield f"  with nothing wrong it {'never rings' if once == 'never' else f'rings {once}'}"
+        off = detector["intent"] and detector["intent"]["ignore"]
+        wrong = f"while off by no more than {self._amount(off)}" if off else "with nothing wrong"
+        yield f"  {wrong} it {'never rings' if once == 'never' else f'rings {once}'}"
+        if detector["catches"]:
+            yield f"  {self._catches(detector['catches'])}"
+
+    def _catches(self, catches: Summary) -> str:
+        what = (
+            f"a spread {catches['ratio']:g} times the usual"
+            if catches["drift"] is None
+            else f"a lasting drift of {self._amount(catches['drift'])}"
+        )
+        delays = catches["half"], catches["nine_of_ten"]
+        readings = [spans.number(max(1.0, each["pieces"])) for each in delays]
+        if delays[0]["seconds"] is None:
+            half, nine = f"{readings[0]} readings of its stream", readings[1]
+        else:
+            half, nine = (
+                f"{spans.short(each['seconds'])} ({count} readings)"
+                for each, count in zip(delays, readings, strict=True)
+            )
+        return f"catches {what} within {half} half the time, within {nine} nine times in ten"
 
     def _once(self, false_alarm: Summary) -> str:
         subgroups, seconds = false_alarm["subgroups"], false_alarm["seconds"]
@@ -285,19 +361,22 @@ class _Speaker:
         return f"once in {spans.long(seconds)}{each} ({count.removeprefix('once in ')})"
 
     def _shewhart(self, detector: Summary, charted: str) -> Iterator[str]:
-        yield (
-            f"Shewhart chart of the {charted}, centre {self._amount(detector['centre'])}, "
-            f"limits {self._between(detector)}"
-        )
+        centre, limits = self._amount(detector["centre"]), self._between(detector)
+        if detector["chart"] == "variance":
+            centre, limits = self._squared(detector["centre"]), self._between_squares(detector)
+        yield f"Shewhart chart of the {charted}, centre {centre}, limits {limits}"
         rules = detector["rules"]
         for rule in rules:
             once = f": {self._once(rule['false_alarm'])}" if len(rules) > 1 else ""
-            yield f"{rule['rule']}: {self._rule(rule, detector['centre'])}{once}"
+            yield f"{rule['rule']}: {self._rule(rule, detector)}{once}"
 
-    def _rule(self, rule: Summary, centre: float) -> str:
-        band = (
-            f"{self._between(rule)} (±{rule['width']:g} standard errors)" if "width" in rule else ""
-        )
+    def _rule(self, rule: Summary, detector: Summary) -> str:
+        band, centre = "", detector["centre"]
+        if "width" in rule:
+            squares, wide = detector["chart"] == "variance", f"{rule['width']:.4g} standard errors"
+            band = self._between_squares(rule) if squares else self._between(rule)
+            exact = squares or detector["exact"]
+            band += f" (crossed as rarely as {wide} by a mean)" if exact else f" (±{wide})"
         match rule["rule"]:
             case "outside":
                 return f"one point outside {band}"
@@ -318,18 +397,34 @@ class _Speaker:
         yield (
             f"CUSUM of the {charted}: what lies more than {self._amount(detector['slack'])} off "
             f"the centre is summed up, a sum above {self._amount(detector['limit'])} signals "
-            f"(k {detector['k']:g}, h {detector['h']:g})"
+            f"(k {detector['k']:.4g}, h {detector['h']:.5g})"
         )
         yield f"quickest for a lasting shift of {self._amount(detector['tuned_to'])}"
         if detector["start"]:
             yield f"both sums start at {self._amount(detector['start'])}"
         yield from self._clip_and_after(detector, "the sum that signalled")
 
+    def _variance_cusum(self, detector: Summary, charted: str) -> Iterator[str]:
+        for each in detector["sums"]:
+            beyond = "above" if each["statistic"] == "upper_sum" else "below"
+            what = f"CUSUM of the {charted}: what" if each is detector["sums"][0] else "and what"
+            yield (
+                f"{what} lies {beyond} {self._squared(each['reference'])} is summed up, a sum "
+                f"above {self._squared(each['limit'])} signals (k {each['k']:.4g}, h "
+                f"{each['h']:.5g} times the usual variance); quickest for a spread "
+                f"{each['tuned_to']:.3g} times the usual"
+            )
+        if detector["head_start"]:
+            starts = " and ".join(self._squared(each["start"]) for each in detector["sums"])
+            yield f"{'both sums start' if len(detector['sums']) > 1 else 'it starts'} at {starts}"
+        goes = "starts again" if detector["after_signal"] == "restart" else "goes on as it is"
+        yield f"after a signal the sum that signalled {goes}"
+
     def _ewma(self, detector: Summary, charted: str) -> Iterator[str]:
         first, settled = self._between(detector["first"]), self._between(detector["settled"])
         early = "" if first == settled else f", {first} at the first point"
         yield (
-            f"EWMA of the {charted}, weight {detector['lambda']:g}: "
+            f"EWMA of the {charted}, weight {detector['lambda']:.4g}: "
             f"signals outside {settled}{early}"
         )
         yield from self._clip_and_after(detector, "the average")

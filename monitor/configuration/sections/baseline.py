@@ -10,8 +10,19 @@ from typing import Annotated
 from pydantic import AfterValidator, Field, ValidationInfo, field_validator, model_validator
 
 from monitor import stream_names, times
+from monitor.baselining.demands import LEAST, SHIFT
 from monitor.configuration.sections.base import Section, fault, faults
-from monitor.configuration.sections.scalars import LINE, Line, Name, Number, Positive, Scalar, Whole
+from monitor.configuration.sections.scalars import (
+    LINE,
+    Duration,
+    Flag,
+    Line,
+    Name,
+    Number,
+    Positive,
+    Scalar,
+    Whole,
+)
 
 MAX_STREAMS = 10_000
 """As many as a characteristic may have."""
@@ -74,6 +85,8 @@ class Values(Section):
         # What failed its own checks is not in the data, and is not missing.
         in_file = "file" in cls.model_fields and info.data.get("file", True)
         no_mean = info.field_name == "mean" or info.data.get("mean", 0.0) is None
+        if "learn" in cls.model_fields and no_mean and info.data.get("learn", 0) is not None:
+            return value
         in_streams = info.data.get("by_stream", True) and no_mean
         if value is None and not in_file and not in_streams:
             hint = cls.model_fields[info.field_name or ""].description
@@ -170,8 +183,28 @@ class _Elsewhere(Section):
     )
 
 
-class Baseline(Values, _Elsewhere):  # fields of the last base are checked first
-    """A baseline, or the file that holds it."""
+class _Learned(Section):
+    learn: Whole | None = Field(
+        None,
+        ge=LEAST,
+        le=10_000,
+        description=f"how many subgroups to learn from, {LEAST} to 10000, such as 1000",
+    )
+    over_at_least: Duration = Field(
+        SHIFT, description="how long to learn at least, such as 8h", validate_default=False
+    )
+    adopt: Flag = Field(False, description="true or false")
+
+    @field_validator("over_at_least", "adopt")
+    @classmethod
+    def _of_learning(cls, value: object, info: ValidationInfo) -> object:
+        if info.data.get("learn", 0) is None:
+            raise fault("has no learn beside it", "write learn: too, such as learn: 1000")
+        return value
+
+
+class Baseline(Values, _Elsewhere, _Learned):  # fields of the last base are checked first
+    """A baseline, the file that holds it, or how it is to be learned."""
 
     @field_validator("by_stream", "mean", "sigma", "sigma_between")
     @classmethod

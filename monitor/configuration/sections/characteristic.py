@@ -8,17 +8,27 @@ from __future__ import annotations
 import re
 from typing import Annotated
 
-from pydantic import AfterValidator, BeforeValidator, Field, ValidationInfo, field_validator
+from pydantic import (
+    AfterValidator,
+    BeforeValidator,
+    Field,
+    ValidationInfo,
+    field_validator,
+    model_validator,
+)
 
 from monitor import stream_names
+from monitor.configuration.asked import Asked, by_intent
 from monitor.configuration.problems import Path
 from monitor.configuration.sections.base import Section, either, fault, faults
 from monitor.configuration.sections.baseline import Baseline
 from monitor.configuration.sections.detectors import AnyDetector, fits
+from monitor.configuration.sections.promise import Promise
 from monitor.configuration.sections.scalars import LINE, Line, Number, Positive
 from monitor.configuration.sections.source import Source
 from monitor.configuration.sections.subgroup import Subgroup
-from monitor.plan import Priority
+from monitor.plan import BaselinePlan, Intent, Priority
+from monitor.solving import UnsolvableError, solved
 
 _BRACED = re.compile(r"\{([^{}]*)\}")
 _PRIORITY = "low, medium or high, or a mapping such as {down: high, up: medium}"
@@ -63,6 +73,10 @@ def _spread_sides(value: object) -> object:
     return value if isinstance(value, dict) else dict.fromkeys(("up", "down", "other"), value)
 
 
+def _below(place: Path, found: list[tuple[Path, str, str]]) -> list[tuple[Path, str, str]]:
+    return [((*place, *path), wrong, instead) for path, wrong, instead in found]
+
+
 class Characteristic(Section):
     """One measured quantity on one line. Source and subgroup come first: what follows is held
     against them."""
@@ -84,6 +98,9 @@ class Characteristic(Section):
     )
     baseline: Baseline = Field(
         description="the frozen centre and spread, such as {mean: 341.2, sigma: 1.9}, or {file: …}"
+    )
+    promise: Promise | None = Field(
+        None, description="how often it may ring with nothing wrong: {false_alarm_every: 14d}"
     )
     detectors: list[Annotated[AnyDetector, Field(discriminator="kind"), AfterValidator(fits)]] = (
         Field(
@@ -119,6 +136,36 @@ class Characteristic(Section):
         if found:
             raise faults(found)
         return value
+
+    @model_validator(mode="after")
+    def _can_be_solved(self) -> Characteristic:
+        """Whatever is asked of detectors can be done, on the baseline of every stream."""
+        asked = Asked(self.source, self.subgroup, self.baseline, self.promise, self.detectors)
+        found: list[tuple[Path, str, str]] = []
+        if self.promise and any(by_intent(each, self.promise) for each in self.detectors):
+            place: Path = ("promise", "false_alarm_every")
+            found += _below(place, asked.promise_faults())
+        for index, detector in enumerate(self.detectors):
+            wrong = asked.faults(detector)
+            if not (found or wrong):
+                wrong = self._unsolvable(asked.intent(detector))
+            found += _below(("detectors", index), wrong)
+        if found:
+            raise faults(found)
+        return self
+
+    def _unsolvable(self, intent: Intent | None) -> list[tuple[Path, str, str]]:
+        """Why the first baseline that has none has no constants."""
+        given = self.baseline.given
+        for name, each in [("", given.common), *given.by_stream.items()] if intent else ():
+            if intent is None or each is None:
+                continue
+            try:
+                solved(intent, BaselinePlan(each.mean, each.sigma, each.sigma_between, ""))
+            except UnsolvableError as error:
+                of = f", in stream {name}" if name else ""
+                return [((error.key,) if error.key else (), error.wrong + of, error.instead)]
+        return []
 
     @field_validator("reaction")
     @classmethod

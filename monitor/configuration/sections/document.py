@@ -10,10 +10,9 @@ from typing import Annotated
 from pydantic import AfterValidator, Field
 
 from monitor.configuration.sections.base import Section, fault
-from monitor.configuration.sections.baseline import Baseline
 from monitor.configuration.sections.characteristic import Characteristic
 from monitor.configuration.sections.daemon import Alerts, Broker, Journal, Outputs
-from monitor.configuration.sections.detectors import Detector
+from monitor.configuration.sections.promise import Budget
 from monitor.configuration.sections.scalars import Name, Whole
 
 
@@ -28,6 +27,9 @@ class Measured(Section):
 
     version: Annotated[Whole, AfterValidator(_known_version)] = Field(description="version: 1")
     alerts: Alerts = Field(Alerts(), description="{off_delay: 2min, rejoin: 30min}")
+    budget: Budget | None = Field(
+        None, description="false alarms that the crew will accept: {alerts: 2, per: 8h}"
+    )
     characteristics: dict[Name, Characteristic] = Field(
         min_length=1, description="a mapping of names to what is measured"
     )
@@ -47,14 +49,12 @@ DAEMON = frozenset(Document.model_fields) - frozenset(Measured.model_fields)
 """Keys that only the daemon needs."""
 
 NOT_BUILT_KEYS: dict[type[Section], frozenset[str]] = {
-    Measured: frozenset({"budget", "instances"}),
-    Characteristic: frozenset({"promise", "gauge", "changeover"}),
-    Baseline: frozenset({"learn", "over_at_least"}),
-    Detector: frozenset({"catch", "ignore", "catch_ratio", "share"}),
+    Measured: frozenset({"instances"}),
+    Characteristic: frozenset({"gauge", "changeover"}),
 }
 """Keys of the contract that are still to come; delete one here when its field is added."""
 
 NOT_BUILT_VALUES: dict[str, frozenset[str]] = {
-    "chart": frozenset({"variance", "fraction", "number", "count", "rate"}),
+    "chart": frozenset({"fraction", "number", "count", "rate"}),
 }
 """Values of the contract that are still to come, by key."""

@@ -101,6 +101,9 @@ class Source(Section):
     expected_rate: Rate | None = Field(
         None, description="readings of all streams together, such as 600/min"
     )
+    expected_streams: Whole | None = Field(
+        None, ge=1, le=10_000, description="how many streams there will be, such as 6"
+    )
 
     @field_validator("value", "time", "sequence", "stream", "use_if")
     @classmethod

@@ -1,0 +1,98 @@
+"""From what a detector is asked to do to the constants that do it, on a given baseline.
+
+Knows sigma, and which method solves which kind. Must not know streams, time or where an intent was
+written down. Formulas: the methods that ``monitor.runlengths`` names.
+"""
+
+from __future__ import annotations
+
+from dataclasses import replace
+from functools import lru_cache
+
+from monitor import runlengths
+from monitor.detectors.charts import SPREAD, standard_error
+from monitor.plan import BaselinePlan, CusumPlan, EwmaPlan, Intent, Scheme
+
+
+class UnsolvableError(ValueError):
+    """No constants do what is asked. ``key`` of the detector is what stands in the way."""
+
+    def __init__(self, key: str, wrong: str, instead: str) -> None:
+        super().__init__(f"{key} {wrong}; {instead}")
+        self.key, self.wrong, self.instead = key, wrong, instead
+
+
+def solved(intent: Intent, baseline: BaselinePlan) -> Scheme:
+    """The scheme that rings once in ``intent.interval`` subgroups with nothing wrong.
+
+    A clip makes false alarms a little rarer still; it is left out of what is solved. Raises
+    UnsolvableError.
+    """
+    if intent.chart in SPREAD:
+        return _spread(intent)
+    error = standard_error(baseline, intent.size)
+    scheme = _location(replace(intent, catch=None, ignore=0.0), *_sizes(intent, error))
+    if isinstance(scheme, CusumPlan | EwmaPlan):
+        scheme = replace(scheme, clip=intent.clip, hold=intent.hold)
+        if isinstance(scheme, CusumPlan) and scheme.clip is not None and scheme.clip <= scheme.k:
+            wrong = f"is not above the k that was worked out ({scheme.k:.3g} standard errors)"
+            raise UnsolvableError("clip", wrong, "write a larger one, or leave it out")
+    return replace(scheme, chart=intent.chart)
+
+
+def _sizes(intent: Intent, error: float) -> tuple[float | None, float]:
+    """What to catch and what to ignore, in standard errors."""
+    return None if intent.catch is None else intent.catch / error, intent.ignore / error
+
+
+@lru_cache(maxsize=16_384)
+def _location(intent: Intent, catch: float | None, ignore: float) -> Scheme:
+    """A scheme for the mean or the median; ``catch`` and ``ignore`` in standard errors."""
+    try:
+        if intent.chart == "median":
+            return runlengths.solve_median(intent.interval, intent.size, intent.direction)
+        return runlengths.solve(
+            intent.kind,
+            catch or 0.0,
+            intent.interval,
+            ignore=ignore,
+            direction=intent.direction,
+            head_start=intent.head_start,
+            asymptotic=intent.asymptotic,
+        )
+    except ValueError:
+        if catch is None:
+            raise _too_often() from None
+        wrong = f"cannot be told from nothing wrong ({catch:.2g} standard errors of the mean)"
+        if catch - ignore > 0.5:
+            raise _too_often() from None
+        raise UnsolvableError(
+            "catch", wrong, "write a larger one, less to ignore, or gather larger subgroups"
+        ) from None
+
+
+@lru_cache(maxsize=1024)
+def _spread(intent: Intent) -> Scheme:
+    try:
+        if intent.catch_ratio is None:
+            return runlengths.solve_spread_chart(
+                intent.chart, intent.interval, intent.size, intent.direction
+            )
+        scheme = runlengths.solve_variance(
+            intent.catch_ratio,
+            intent.interval,
+            size=intent.size,
+            direction=intent.direction,
+            head_start=intent.head_start,
+        )
+    except ValueError:
+        if intent.catch_ratio is None or abs(intent.catch_ratio - 1) > 0.1:
+            raise _too_often() from None
+        wrong = "is too close to the usual spread to be told from it"
+        raise UnsolvableError("catch_ratio", wrong, "write a ratio farther from 1") from None
+    return replace(scheme, hold=intent.hold)
+
+
+def _too_often() -> UnsolvableError:
+    wrong = "is to ring so often that no constants are right"
+    return UnsolvableError("", wrong, "write a longer promise.false_alarm_every")
