@@ -24,7 +24,7 @@ from monitor.health import Health
 from monitor.journal import Batch, Journal, read_entries
 from monitor.outputs import Alert, Gone
 from monitor.pipeline import Pipeline
-from monitor.plan import ByWindow, Plan, Settings
+from monitor.plan import ByWindow, CusumPlan, DetectorPlan, Intent, Plan, Settings
 from monitor.publisher import Publisher
 from monitor.recovery import recover
 from monitor.times import SECOND
@@ -233,3 +233,34 @@ def test_filters_of_all_times_are_known(settings: Settings) -> None:
         assert not any(isinstance(output, Gone) for output in folded.outputs)
         assert line.pipeline.filters == settings.plan.topics()
         line.pipeline.close()
+
+
+def solved_differently(settings: Settings, by: float) -> Settings:
+    """The same configuration, as a version that solves constants a little otherwise has it."""
+    (weight,) = [each for each in settings.plan.characteristics if each.name == "net-weight"]
+    assert weight.judgement is not None
+    intent = Intent("cusum", "individual", 1e6, 1, catch=2.0)
+    cusum = DetectorPlan("cusum", "cusum", CusumPlan("individual", 0.5, 12.657 + by), "r", intent)
+    judgement = replace(weight.judgement, detectors=(cusum,))
+    return replace(settings, plan=Plan((replace(weight, judgement=judgement),)))
+
+
+def limit(line: Line) -> float:
+    (weight,) = line.pipeline.engine.plan.characteristics
+    assert weight.judgement is not None
+    scheme = weight.judgement.detectors[0].scheme
+    assert isinstance(scheme, CusumPlan)
+    return scheme.h
+
+
+def test_what_was_worked_out_once_stays_over_a_restart(settings: Settings) -> None:
+    line = Line(solved_differently(settings, 0.0))
+    line.come(1)
+    line.step()
+    line.pipeline.close()
+    line.settings = solved_differently(settings, 0.01)
+    line.start()
+    line.come(2)
+    line.step()
+    assert limit(line) == 12.657
+    line.pipeline.close()
