@@ -11,7 +11,7 @@ from collections.abc import Iterator
 
 from monitor import times
 from monitor.baselining.delivered import Delivered
-from monitor.baselining.demands import ENOUGH, LEAST, SHIFT
+from monitor.baselining.demands import ENOUGH, LEAST, NEARLY, SHIFT
 from monitor.baselining.estimating import Estimate
 from monitor.baselining.material import Clues
 from monitor.baselining.outside import Found
@@ -45,7 +45,7 @@ def amount(estimate: Estimate) -> Iterator[Reason]:
             else "use it for now, and estimate again from a longer recording",
         )
     span = estimate.last - estimate.first
-    if span < SHIFT:
+    if span < NEARLY * SHIFT:
         yield Reason(
             "provisional",
             "short",
