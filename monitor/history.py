@@ -8,7 +8,6 @@ from __future__ import annotations
 
 import sqlite3
 from collections.abc import Callable, Iterator
-from contextlib import contextmanager
 from itertools import islice
 from typing import NamedTuple
 
@@ -21,7 +20,7 @@ from monitor.journal import JournalError, Snapshot
 from monitor.plan import Plan
 from monitor.recovery import restored
 
-_AT_ONCE = 2_000  # entries; a long read would keep the daemon's log from being folded into its file
+_AT_ONCE = 50  # entries; a long read would keep the daemon's log from beginning anew
 
 
 class Resumed(NamedTuple):
@@ -71,15 +70,14 @@ def resume(db: sqlite3.Connection, before: int, *, points: bool = False) -> Resu
 
     JournalError where the journal's beginning is gone and this version can read no state in it.
     """
-    with _at_one_moment(db):
-        for kept in _states_until(db, before):
-            if (engine := restored(kept, points)) is not None:
-                return Resumed(engine, kept.position)
-        if _ends(db)[0] <= 1:
-            return Resumed(Engine(Plan(()), points=points), 0)
-        for kept in _states_after(db, before):
-            if (engine := restored(kept, points)) is not None:
-                return Resumed(engine, kept.position)
+    for kept in _states_until(db, before):
+        if (engine := restored(kept, points)) is not None:
+            return Resumed(engine, kept.position)
+    if _ends(db)[0] <= 1:
+        return Resumed(Engine(Plan(()), points=points), 0)
+    for kept in _states_after(db, before):
+        if (engine := restored(kept, points)) is not None:
+            return Resumed(engine, kept.position)
     raise JournalError(
         "the journal's oldest entries were dropped, and what was remembered of them was taken down "
         "by another version: use that version"
@@ -148,27 +146,29 @@ def _ends(db: sqlite3.Connection) -> tuple[int, int]:
 
 def _states_until(db: sqlite3.Connection, last: int) -> Iterator[Snapshot]:
     """Newest first. A base that is being dropped is among them: nobody can restore it."""
-    newest = journal.snapshot(db)
+    newest = _at_one_moment(journal.snapshot, db)
     if newest.values and newest.position <= last:
         yield newest
-    while (kept := journal.base(db, last)).position:
+    while (kept := _at_one_moment(journal.base, db, last)).position:
         yield kept
         last = kept.position - 1
 
 
 def _states_after(db: sqlite3.Connection, position: int) -> Iterator[Snapshot]:
     while position := journal.base_after(db, position):
-        yield journal.base(db, position)
-    newest = journal.snapshot(db)
+        yield _at_one_moment(journal.base, db, position)
+    newest = _at_one_moment(journal.snapshot, db)
     if newest.values:
         yield newest
 
 
-@contextmanager
-def _at_one_moment(db: sqlite3.Connection) -> Iterator[None]:
-    """What the daemon commits meanwhile is not seen: half of one state and half of another."""
+def _at_one_moment(read: Callable[..., Snapshot], db: sqlite3.Connection, *at: int) -> Snapshot:
+    """What the daemon commits meanwhile is not seen: half of one state and half of another.
+
+    The read is over before anyone makes an engine of it, which may take long.
+    """
     db.execute("BEGIN")
     try:
-        yield
+        return read(db, *at)
     finally:
         db.execute("ROLLBACK")

@@ -60,6 +60,9 @@ CREATE TABLE bases (
 NEWEST = 2**62
 """After every position."""
 
+_CHECKPOINT_AFTER = 1_000  # pages in the write-ahead log
+_MOST_LOGGED = 4_000  # pages; then a commit carries them over itself, whoever forgets to
+_ROWS_A_PAGE = 20  # of readings; at least, or a checkpoint comes a little late
 _MOST_UNPROVEN = 70_000  # a little more than packet identifiers can be outstanding
 _MOST_TOPICS = 20_000  # remembered; whoever may publish may invent topics
 
@@ -119,6 +122,7 @@ class Journal:
         self.path = path
         self._gone: list[int] = []
         self._topics: dict[str, int] = {}
+        self._logged = 0
         with contextlib.ExitStack() as held:
             held.callback(os.close, _locked(path))
             try:
@@ -191,7 +195,20 @@ class Journal:
         self.position, self.oldest = last, oldest
         self._outbox += leaving
         self._gone.clear()
+        dropped = 0 if batch.pruning is None else batch.pruning.few
+        # A leaf, its parent and what keeps count of pages are rewritten for a single row, too.
+        self._logged += 4 + (len(batch.entries) + dropped) // _ROWS_A_PAGE
         return places
+
+    def checkpoint(self) -> None:
+        """Carry what the write-ahead log holds over into the file, once that is much.
+
+        It takes as long as several commits, so it is for between them, when nobody waits for one.
+        """
+        if self._logged >= _CHECKPOINT_AFTER:
+            self._logged = 0
+            with contextlib.suppress(sqlite3.OperationalError):  # a full disk: commits will say so
+                self.db.execute("PRAGMA wal_checkpoint(PASSIVE)")
 
     def delivered(self, place: int) -> None:
         """The broker has acknowledged this alert; it leaves the outbox with the next commit."""
@@ -294,6 +311,16 @@ class Journal:
                 self._topics.clear()
             self._topics[topic] = number
         return number
+
+
+def is_in_use(path: Path) -> bool:
+    """Whether a daemon writes the journal, or was killed while it did."""
+    # Whoever writes it takes the log away at the end; whoever reads it may leave an empty one. To
+    # try the lock instead would stop a daemon that starts at that moment.
+    try:
+        return Path(f"{path}-wal").stat().st_size > 0
+    except OSError:
+        return False
 
 
 def open_reader(path: Path) -> sqlite3.Connection:
@@ -407,6 +434,7 @@ def _locked(path: Path) -> int:
 def _prepare(db: sqlite3.Connection, path: Path) -> None:
     db.execute("PRAGMA journal_mode = WAL")
     db.execute("PRAGMA synchronous = FULL")
+    db.execute(f"PRAGMA wal_autocheckpoint = {_MOST_LOGGED}")
     found = _schema(db)
     if found is None or found > SCHEMA:
         raise JournalError(_other_version(path))

@@ -15,7 +15,7 @@ from monitor.ballast import Ballast
 from monitor.engine import Engine
 from monitor.folding import Folded
 from monitor.journal import Batch, Journal
-from monitor.plan import Plan, RetentionPlan
+from monitor.plan import RetentionPlan
 from monitor.retention import Retention
 
 log = structlog.get_logger()
@@ -37,7 +37,6 @@ class Keeper:
         self._ballast.take()
         self._since_snapshot = behind
         self._snapshot_at = 0
-        self._plan: Plan | None = None
         self._noted = journal.proven
         self._try_at = 0.0
 
@@ -66,6 +65,11 @@ class Keeper:
         leaving += [(topic, b"") for topic in folded.clears]
         return [(place, *each) for place, each in zip(places, leaving, strict=True)]
 
+    def tidy(self) -> None:
+        """Between batches, when what is durable has left: what may wait until then."""
+        if self.frozen is None:
+            self._journal.checkpoint()
+
     def settle(self, proven: int) -> None:
         """Take down what is remembered, so that the next start has little to fold."""
         if self.frozen is None:
@@ -93,7 +97,6 @@ class Keeper:
             # What was taken down is not in the file: take all of it down next time.
             if batch.remembered:
                 self._engine.changed.update(dict.fromkeys(self._engine.streams()))
-                self._plan = None
             raise
         self._noted = proven
         self._since_snapshot = since
@@ -104,10 +107,7 @@ class Keeper:
     def _take_down(self, batch: Batch) -> None:
         engine = self._engine
         batch.remembered = recovery.remembered(engine)
-        if engine.plan is not self._plan:
-            # Only with a configuration does a stream leave.
-            batch.forgotten = list(self._journal.owners() - recovery.owners(engine))
-            self._plan = engine.plan
+        batch.forgotten = list(self._journal.owners() - recovery.owners(engine))
 
     def _freeze(self, why: str) -> None:
         if self.frozen is None:

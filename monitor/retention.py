@@ -16,7 +16,8 @@ from monitor.plan import RetentionPlan
 _LOOK_EVERY = 60_000_000  # microseconds between two looks at ages and sizes
 _BASES = 30  # bases in the time that is kept
 _SHORTEST = 3_600_000_000  # microseconds between two bases
-_FEW = 200
+_EACH = 20  # rows that a commit may have dropped
+_FEW = 200  # rows dropped at once: nearly the same pages are rewritten for a tenth of them
 
 
 @dataclass(slots=True)
@@ -28,6 +29,7 @@ class Retention:
     _entries_to: int = 0
     _alerts_to: int = 0
     _wants_base: bool = False
+    _due: int = 0
 
     def look(self, kept: Journal, now: int) -> None:
         """Now and then, see what has become too old or too much."""
@@ -49,6 +51,11 @@ class Retention:
         wanted, self._wants_base = self._wants_base, False
         return wanted
 
-    def few(self, coming: int) -> Pruning:
-        """What the next commit may drop: more than it brings, or the file would only grow."""
-        return Pruning(self._entries_to, self._alerts_to, max(_FEW, 2 * coming))
+    def few(self, coming: int) -> Pruning | None:
+        """What the next commit may drop: more than came since the last, or the file would only
+        grow. None where that is too few to be worth it."""
+        self._due += max(_EACH, 2 * coming)
+        if self._due < _FEW:
+            return None
+        due, self._due = self._due, 0
+        return Pruning(self._entries_to, self._alerts_to, due)

@@ -12,11 +12,11 @@ import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
-from monitor import history
+from monitor import history, recovery
 from monitor.engine import Engine
 from monitor.entries import Recorded, State, Tick
 from monitor.history import entries, position_of, recorded
-from monitor.journal import Journal, JournalError, open_reader
+from monitor.journal import Batch, Journal, JournalError, Snapshot, open_reader
 from monitor.plan import Plan
 
 DAY = journals.day(seed=1)
@@ -123,6 +123,44 @@ def test_says_when_entries_are_dropped_while_they_are_read(
             daemon.execute("DELETE FROM entries WHERE position <= 50")
         with pytest.raises(JournalError, match="dropped old entries while they were read"):
             list(reading)
+
+
+@pytest.mark.parametrize("since", [None, DAY[240].time, DAY[60].time])
+@pytest.mark.parametrize("dropped", [0, BASES[0] - 1])
+def test_the_daemon_can_begin_its_log_anew_whatever_is_read(
+    tmp_path: Path, monkeypatch: pytest.MonkeyPatch, since: int | None, dropped: int
+) -> None:
+    path = journals.write(tmp_path / "j.db", DAY, BASES, dropped=dropped)
+    with closing(open_reader(path)) as db, closing(Journal(path)) as daemon:
+        restoring = calls = 0
+
+        def now_and_then() -> None:
+            nonlocal calls
+            calls += 1
+            if calls % 13 == 0:
+                begins_anew()
+
+        def begins_anew() -> None:
+            daemon.commit(Batch([Tick(DAY[-1].time)]))
+            busy, left, _ = daemon.db.execute("PRAGMA wal_checkpoint(TRUNCATE)").fetchone()
+            assert (busy, left) == (0, 0), "a read goes on"
+
+        def restored(kept: Snapshot, points: bool) -> Engine | None:
+            nonlocal restoring
+            restoring += 1
+            begins_anew()
+            return recovery.restored(kept, points)
+
+        monkeypatch.setattr(history, "restored", restored)
+        monkeypatch.setattr(history, "_AT_ONCE", 7)
+        told = []
+        for entry in recorded(db, since, folding=now_and_then):
+            now_and_then()
+            told.append(entry)
+    assert restoring == (1 if dropped or since == DAY[240].time else 0)
+    rest = [each for each in told if not isinstance(each, State)]
+    assert rest == DAY[-len(rest) :]
+    assert calls >= len(rest) > 50
 
 
 @settings(max_examples=50, deadline=None)

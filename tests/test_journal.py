@@ -6,6 +6,7 @@ import signal
 import sqlite3
 import subprocess
 import sys
+from contextlib import closing
 from dataclasses import replace
 from pathlib import Path
 from typing import Any
@@ -31,6 +32,7 @@ from monitor.journal import (
     Journal,
     JournalError,
     Pruning,
+    is_in_use,
     open_reader,
     read_entries,
 )
@@ -275,6 +277,46 @@ def test_a_base_stays_as_it_was(tmp_path: Path) -> None:
     assert module.bases_between(journal.db, 9) == (0, 60)
     assert module.bases_between(journal.db, 20) == (2, 60)
     assert module.bases_between(journal.db, 59) == (4, 60)
+
+
+@pytest.mark.parametrize("size", [1, 10, 100])
+def test_the_log_is_carried_over_between_commits(tmp_path: Path, size: int) -> None:
+    journal = Journal(tmp_path / "j.db")
+    log = Path(f"{journal.path}-wal")
+    changes, largest = 0, 0
+    for _ in range(800):
+        before = journal.path.stat().st_mtime_ns
+        journal.commit(Batch([Message(1, "a/b", b'{"net":341.6,"head":4}')] * size))
+        assert journal.path.stat().st_mtime_ns == before, "a commit did it"
+        journal.checkpoint()
+        changes += journal.path.stat().st_mtime_ns != before
+        largest = max(largest, log.stat().st_size)
+    assert 1 < changes < 20
+    assert largest < 1.5 * module._CHECKPOINT_AFTER * 4096, "the log does not begin anew"
+
+
+def test_a_log_that_nobody_carries_over_stays_bounded(
+    tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    monkeypatch.setattr(module, "_MOST_LOGGED", 100)
+    journal = Journal(tmp_path / "j.db")
+    for n in range(500):
+        journal.commit(Batch([Tick(n)]))
+    assert Path(f"{journal.path}-wal").stat().st_size < 120 * 4096
+
+
+def test_whether_it_is_in_use(tmp_path: Path) -> None:
+    path = tmp_path / "j.db"
+    assert not is_in_use(path)
+    journal = Journal(path)
+    assert is_in_use(path)
+    with closing(open_reader(path)) as reader:
+        assert list(read_entries(reader)) == []
+    journal.close()
+    assert not is_in_use(path)
+    with closing(open_reader(path)) as reader:
+        assert list(read_entries(reader)) == []
+    assert not is_in_use(path), "whoever reads is no daemon"
 
 
 def test_a_few_old_rows_go_with_each_commit(tmp_path: Path) -> None:

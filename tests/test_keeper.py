@@ -88,6 +88,26 @@ def test_nothing_is_written_for_nothing(bench: Bench) -> None:
     assert any(each.startswith("COMMIT") for each in asked)
 
 
+def test_the_log_is_carried_over_between_batches(
+    bench: Bench, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    monkeypatch.setattr(journal, "_CHECKPOINT_AFTER", 1)
+
+    def changes() -> bool:
+        before = bench.journal.path.stat().st_mtime_ns
+        bench.keeper.tidy()
+        return bench.journal.path.stat().st_mtime_ns != before
+
+    bench.keep(bench.fold(Started(START), *readings(0, 50)))
+    assert changes()
+    assert not changes(), "there was nothing left to do"
+    bench.keep(bench.fold(*readings(50, 50)))
+    bench.keeper.frozen = "the disk is full"
+    assert not changes()
+    bench.keeper.frozen = None
+    assert changes()
+
+
 def test_it_is_taken_down_now_and_then(bench: Bench, monkeypatch: pytest.MonkeyPatch) -> None:
     monkeypatch.setattr(keeper, "_SNAPSHOT_AFTER", 10)
 

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Iterator
+from itertools import pairwise
 from pathlib import Path
 
 import pytest
@@ -29,6 +30,7 @@ def _small(monkeypatch: pytest.MonkeyPatch) -> None:
     monkeypatch.setattr(retention, "_LOOK_EVERY", 0)
     monkeypatch.setattr(retention, "_SHORTEST", 5 * SECOND)
     monkeypatch.setattr(retention, "_FEW", FEW)
+    monkeypatch.setattr(retention, "_EACH", FEW // 2)
     monkeypatch.setattr(keeper, "_SNAPSHOT_AFTER", 3)
 
 
@@ -128,6 +130,18 @@ def test_an_old_journal_goes_a_few_rows_at_a_time(tmp_path: Path) -> None:
         assert before - FEW < after <= before + 1
         before = after
     assert before < 300
+
+
+def test_rows_are_dropped_in_every_few_commits(tmp_path: Path) -> None:
+    line = Line(tmp_path / "j.db", RetentionPlan(keep=100 * SECOND))
+    for _ in line.run(200):
+        pass
+    line.now += 100 * SECOND
+    counts = [len(line.kept()) for _ in line.run(8)]
+    steps = [after - before for before, after in pairwise(counts)]
+    # A base's own entry stays, with all that came after it.
+    assert sorted(set(steps)) == [1 - FEW, 1]
+    assert steps[:2] in ([1, 1 - FEW], [1 - FEW, 1])
 
 
 def test_large_batches_drop_more_than_they_bring(tmp_path: Path) -> None:

@@ -13,11 +13,12 @@ from pathlib import Path
 
 import orjson
 
+from monitor.background import Background
 from monitor.commandline import DONE, CommandError
 from monitor.explaining import explain_json, explain_words
 from monitor.explaining.alert_log import NoSuchAlertError
 from monitor.explaining.explain import explain
-from monitor.journal import JournalError, open_reader
+from monitor.journal import JournalError, is_in_use, open_reader
 from monitor.progress import Counter
 
 
@@ -32,10 +33,16 @@ def configure(parser: argparse.ArgumentParser) -> None:
 
 def main(args: argparse.Namespace) -> int:
     """Print the explanation; 1 where there is no such alert."""
+    background = Background(rests=is_in_use(Path(args.journal)))
     progress = Counter("entries folded again")
+
+    def folding() -> None:
+        progress()
+        background()
+
     try:
         with closing(open_reader(Path(args.journal))) as db:
-            told = explain(db, args.alert, progress)
+            told = explain(db, args.alert, folding)
     except (JournalError, NoSuchAlertError, ValueError) as error:
         raise CommandError(str(error)) from error
     except sqlite3.Error as error:

@@ -15,13 +15,14 @@ from contextlib import closing
 from dataclasses import dataclass
 from pathlib import Path
 
+from monitor.background import Background
 from monitor.commandline import DONE, WRONG, CommandError
 from monitor.decode import judge_time
 from monitor.entries import Message, Recorded, State
 from monitor.excerpt import excerpt, having
 from monitor.files import STDOUT, replacing
 from monitor.history import recorded
-from monitor.journal import JournalError, open_reader
+from monitor.journal import JournalError, is_in_use, open_reader
 from monitor.progress import Counter
 from monitor.recording_lines import write_jsonl
 from monitor.times import DAY, format_time
@@ -64,11 +65,17 @@ def main(args: argparse.Namespace) -> int:
         raise CommandError("--json and the recording both want stdout: add --to FILE", WRONG)
     if None not in (args.since, args.until) and args.until <= args.since:
         raise CommandError("--until must be later than --since", WRONG)
+    background = Background(rests=is_in_use(Path(args.journal)))
     progress = Counter("earlier entries folded")
     told = _Told()
+
+    def folding() -> None:
+        progress()
+        background()
+
     try:
         with closing(open_reader(Path(args.journal))) as db, replacing(args.to) as file:
-            found = recorded(db, args.since, args.until, progress)
+            found = background.through(recorded(db, args.since, args.until, folding))
             if args.characteristic is not None:
                 found = excerpt(having(found, args.characteristic), args.characteristic)
             write_jsonl(file, progress.through(told.of(found), "entries"))

@@ -2,12 +2,12 @@
 
 from __future__ import annotations
 
-import argparse
 import base64
 import gzip
 import json
 import os
 import pty
+import subprocess
 import sys
 from pathlib import Path
 
@@ -15,8 +15,6 @@ import journals
 import pytest
 from daemons import driftbell
 
-from monitor import progress
-from monitor.commands import export
 from monitor.entries import Connected, Disconnected, Message, Recorded, Started
 from monitor.journal import Batch, Journal, read_entries
 from monitor.times import SECOND, format_time, parse_iso_time
@@ -33,6 +31,15 @@ ENTRIES: list[Recorded] = [
     Disconnected(START + 6),
     Connected(START + 7, True),
 ]
+
+
+IMPATIENT = """
+import runpy
+from monitor import progress
+progress._QUIET = 0.0
+runpy.run_module("monitor", run_name="__main__")
+"""
+"""The commands, with no second gone by before they say how far they are."""
 
 
 @pytest.fixture
@@ -133,20 +140,15 @@ def test_a_damaged_journal_leaves_no_half_recording(tmp_path: Path) -> None:
     assert not list(tmp_path.glob("*jsonl*"))
 
 
-def test_shows_how_far_it_is_on_a_terminal(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+def test_shows_how_far_it_is_on_a_terminal(tmp_path: Path) -> None:
     path = tmp_path / "j.db"
     journal = Journal(path)
     journal.commit(Batch([Message(START, "a", b"{}")] * 3_000))
     journal.close()
     ours, theirs = pty.openpty()
     with open(theirs, "w") as terminal:
-        monkeypatch.setattr(sys, "stderr", terminal)
-        monkeypatch.setattr(progress, "_QUIET", 0.0)
-        parser = argparse.ArgumentParser()
-        export.configure(parser)
-        words = [str(path), "--to", str(tmp_path / "x.jsonl")]
-        assert export.main(parser.parse_args(words)) == 0
-        terminal.flush()
+        command = [sys.executable, "-c", IMPATIENT, "export", path, "--to", tmp_path / "x.jsonl"]
+        assert subprocess.run(command, stderr=terminal, check=False).returncode == 0
         seen = ""
         while not seen.endswith("\n"):
             seen += os.read(ours, 4096).decode()

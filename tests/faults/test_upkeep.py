@@ -81,12 +81,13 @@ def test_pruned_and_exported_under_load(
 
         daemon.online()
         pieces = []
-        with Feed(broker.port, messages[2 * count :], 2_000) as feed:
+        with Feed(broker.port, messages[2 * count :], min(2_000, count / 4)) as feed:
             while not feed.is_over:
                 pieces.append(export(daemon, tmp_path / "piece.jsonl"))
                 if len(pieces) == 2:
                     daemon.kill()
                     daemon.launch()
+        daemon.await_online()
         until(lambda: daemon.journaled()[-count:] == feed.sent, "all of it", daemon.is_running)
         until(lambda: not daemon.waiting(), "an empty outbox", daemon.is_running)
         first, base = oldest(daemon)
