@@ -10,7 +10,9 @@ from monitor import commandline
 COMMANDS = {
     "play": ("replay.commands.play", "run the engine over recordings"),
     "send": ("replay.commands.send", "publish a recording, with its own timing"),
+    "baseline": ("replay.commands.baseline", "estimate a baseline: may it be trusted?"),
     "design": ("replay.commands.design", "run lengths of a detector, or the one for a run length"),
+    "tune": ("replay.commands.tune", "compare settings on recordings of the line's own"),
     "scene": ("replay.commands.scene", "write a story of the demo line as a recording"),
 }
 

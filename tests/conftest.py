@@ -12,6 +12,7 @@ from pathlib import Path
 import hypothesis
 import pytest
 from brokers import Broker, Client, Daemon, Embedded, Mosquitto, mosquitto_path
+from browsers import chromium_path
 
 # How long an example takes says more of the machine than of the code.
 hypothesis.settings.register_profile("untimed", deadline=None)
@@ -23,11 +24,14 @@ BROKERS = ["embedded", "mosquitto"] if mosquitto_path() else ["embedded"]
 def pytest_configure() -> None:
     if os.environ.get("CI") and not mosquitto_path():
         raise pytest.UsageError("CI is set but mosquitto is missing: apt-get install mosquitto")
+    if os.environ.get("CI") and not chromium_path():
+        raise pytest.UsageError("CI is set but chromium is missing: apt-get install chromium")
 
 
 def pytest_terminal_summary(terminalreporter: pytest.TerminalReporter) -> None:
     # At the end rather than in the header, which quiet runs leave out.
     missing = "" if mosquitto_path() else "; mosquitto is not on PATH, its tests were left out"
+    missing += "" if chromium_path() else "; chromium is not on PATH, no page was opened"
     terminalreporter.write_line(f"brokers used: {', '.join(BROKERS)}{missing}")
 
 

@@ -1,0 +1,153 @@
+"""A result as one JSON object.
+
+Knows the object's keys. Must not know how figures were worked out.
+"""
+
+from __future__ import annotations
+
+import math
+from dataclasses import asdict
+from typing import Any
+
+from monitor.times import format_time
+from replay.tuning.result import Delay, Grouping, Part, Quantile, Range, Result, Setting
+
+
+def as_json(result: Result) -> dict[str, Any]:
+    """Durations are seconds of running time, ``readings`` pieces of the drifting stream, instants
+    ISO 8601; what is too long for a number, or unlimited, is null."""
+    best = None if result.best is None else result.settings[result.best]
+    return {
+        "characteristic": result.characteristic,
+        "unit": result.unit,
+        "recordings": [asdict(each) for each in result.sources],
+        "seed": result.seed,
+        "false_alarm_every": result.promise,
+        "catch": list(result.catch),
+        "ignore": list(result.ignore),
+        "catch_ratio": result.ratio,
+        "trusted": result.trusted,
+        "trust": result.trust,
+        "recording": {
+            **_part(result.whole),
+            "set_aside": dict(result.set_aside),
+            "resolution": result.resolution,
+            "fit": _part(result.fit),
+            "proof": _part(result.proof),
+            "streams": {each.stream: each.readings for each in result.streams},
+        },
+        "groupings": [_grouping(each) for each in result.groupings],
+        "settings": [_setting(each, result) for each in result.settings],
+        "refused": [asdict(each) for each in result.refusals],
+        "best": None if best is None else {"name": best.name, **_as_configured(best, result)},
+    }
+
+
+def _part(part: Part) -> dict[str, Any]:
+    return {
+        "first": format_time(part.first),
+        "last": format_time(part.last),
+        "running_seconds": part.running,
+        "readings": part.readings,
+    }
+
+
+def _grouping(found: Grouping) -> dict[str, Any]:
+    return {
+        "size": found.size,
+        "said": found.said,
+        "subgroups": {"fit": found.fit, "proof": found.proof, "per_second": found.rate},
+        "autocorrelation": found.correlation,
+        "wander": {
+            "wanders": found.wander.wanders,
+            "growth": found.wander.growth,
+            "limit": found.wander.limit,
+        },
+        "supports": found.supports,
+        "baseline": {
+            each.stream: {
+                "mean": each.mean,
+                "sigma": each.sigma,
+                "sigma_between": each.sigma_between,
+            }
+            for each in found.baselines
+        },
+    }
+
+
+def _setting(found: Setting, result: Result) -> dict[str, Any]:
+    told = found.extrapolated
+    events = found.events
+    return {
+        "name": found.name,
+        "rank": found.rank,
+        "unranked": found.unranked or None,
+        "origin": found.origin,
+        **_as_configured(found, result),
+        "catch": found.catch,
+        "ignore": found.ignore,
+        "false_alarms": {
+            "seen": found.observed.alarms,
+            "seconds": found.observed.seconds,
+            "interval": _range(found.observed.interval),
+        },
+        "interval": None
+        if told is None
+        else {
+            "seconds": told.seconds,
+            "factor": _finite(told.factor),
+            "low": told.interval.low,
+            "high": told.interval.high,
+        },
+        "no_interval": found.no_interval or None,
+        "meets": found.meets,
+        "delays": [_delay(each) for each in found.delays],
+        "curve": [_delay(each) for each in found.curve],
+        "events": None if events is None else asdict(events),
+    }
+
+
+def _as_configured(found: Setting, result: Result) -> dict[str, Any]:
+    return {
+        "kind": found.kind,
+        "chart": found.chart,
+        "size": result.groupings[found.grouping].size,
+        "constants": dict(found.constants),
+    }
+
+
+def _delay(found: Delay) -> dict[str, Any]:
+    return {
+        "shape": found.shape,
+        "amount": found.amount,
+        "onsets": found.onsets,
+        "caught": found.caught,
+        "horizon": found.horizon,
+        "readings": {
+            "median": _quantile(found.median_readings),
+            "late": _quantile(found.late_readings),
+            "floor": found.floor_readings,
+        },
+        "seconds": {
+            "median": _quantile(found.median_seconds),
+            "late": _quantile(found.late_seconds),
+            "floor": found.floor_seconds,
+        },
+    }
+
+
+def _quantile(found: Quantile) -> dict[str, Any]:
+    interval = found.interval
+    return {
+        "value": found.value,
+        "low": None if interval is None else interval.low,
+        "high": None if interval is None else interval.high,
+    }
+
+
+def _range(found: Range | None) -> dict[str, Any] | None:
+    return None if found is None else {"low": found.low, "high": found.high}
+
+
+def _finite(value: float) -> float | None:
+    return value if math.isfinite(value) else None

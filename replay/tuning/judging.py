@@ -1,0 +1,138 @@
+"""What one setting did on the recording: limits fitted on its first part, proved on the last.
+
+Knows peaks, signals and parts. Must not know drifts, words or files.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+
+import numpy as np
+
+from monitor.plan import CusumPlan, EwmaPlan, Scheme
+from replay.readings import Values
+from replay.tuning import tails
+from replay.tuning.array_cusum import CusumPath
+from replay.tuning.array_ewma import EwmaPath
+from replay.tuning.array_shewhart import ShewhartPath
+from replay.tuning.candidates import Candidate, limit, with_limit
+from replay.tuning.grouped import Grouped, GroupedStream
+from replay.tuning.paths import Path, Peaks, Signals
+from replay.tuning.tails import PooledPeaks, TailFit
+
+_ROUNDS = 8
+_MOST = 5.0
+"""Of an interval's logarithm, standard deviations open: beyond, a recording proves nothing."""
+
+
+@dataclass(frozen=True, slots=True)
+class Judged:
+    """A candidate with its constants, and what came of them.
+
+    ``fitted`` and ``proved`` are the tails of the two parts, None where peaks are too few.
+    ``signals`` are those of the whole recording, one entry a stream.
+    """
+
+    candidate: Candidate
+    scheme: Scheme
+    fitted: TailFit | None
+    proved: TailFit | None
+    signals: tuple[Signals, ...]
+
+
+def family(candidate: Candidate) -> Scheme:
+    """Candidates of one family differ in their limits only: one pass over the readings serves
+    them."""
+    return with_limit(candidate.scheme, 1.0)
+
+
+def judge(grouped: Grouped, members: Sequence[Candidate], interval: float) -> list[Judged]:
+    """Every member of one family; ``interval`` is the promise in subgroups of all streams.
+
+    A calibrated limit is set so far beyond the promise that the last part may be expected to prove
+    it: by what 90 % leaves open of both parts' estimates. Where no tail can be fitted a calibrated
+    member is left out.
+    """
+    scheme = members[0].scheme
+    paths = [path(scheme, stream) for stream in grouped.streams]
+    peaks = [each.peaks() for each in paths]
+    unit = max(float(np.median([each.unit() for each in paths])), 1e-9)
+    fitted = _tail(grouped, peaks, scheme, unit, proof=False)
+    proved = _tail(grouped, peaks, scheme, unit, proof=True)
+    found = []
+    for candidate in members:
+        at = limit(candidate.scheme)
+        if candidate.origin == "calibrated":
+            if fitted is None or proved is None:
+                continue
+            at = float(f"{fitted.level(interval * margin(fitted, proved, interval)):.5g}")
+        found.append(
+            Judged(
+                candidate,
+                with_limit(candidate.scheme, at),
+                fitted,
+                proved,
+                tuple(each.signals(at) for each in paths),
+            )
+        )
+    return found
+
+
+def margin(fitted: TailFit, proved: TailFit, interval: float) -> float:
+    """How many times the promise a limit must be fitted to, for both estimates to leave it; they
+    leave more open the longer the interval that is fitted to."""
+    times = 1.0
+    for _ in range(_ROUNDS):
+        aim = interval * times
+        open_left = fitted.deviation(aim) + proved.deviation(aim)
+        times = float(np.exp(tails.Z90 * min(open_left, _MOST)))
+    return times
+
+
+def path(scheme: Scheme, stream: GroupedStream) -> Path:
+    """The statistic of ``scheme`` over one stream."""
+    match scheme:
+        case CusumPlan():
+            return CusumPath(scheme, stream)
+        case EwmaPlan():
+            return EwmaPath(scheme, stream)
+        case _:
+            return ShewhartPath(scheme, stream)
+
+
+def in_proof(grouped: Grouped, signals: Sequence[Signals]) -> list[Signals]:
+    """Signals of the last part that no labelled cause explains, one entry a stream."""
+    found = []
+    for stream, each in zip(grouped.streams, signals, strict=True):
+        counts = (each.at >= stream.prove) & ~stream.left_out[each.at]
+        found.append(Signals(each.at[counts], each.up[counts]))
+    return found
+
+
+def _weight(scheme: Scheme) -> float | None:
+    """What ``tails.scale_of`` takes: None for sums, λ of averages, 1 for single points."""
+    if isinstance(scheme, CusumPlan):
+        return None
+    return scheme.lam if isinstance(scheme, EwmaPlan) else 1.0
+
+
+def _tail(
+    grouped: Grouped, peaks: Sequence[Peaks], scheme: Scheme, unit: float, *, proof: bool
+) -> TailFit | None:
+    levels: list[Values] = []
+    places = []
+    for stream, each in zip(grouped.streams, peaks, strict=True):
+        inside = each.begin >= stream.prove if proof else each.begin < stream.fit
+        if stream.left_out.any():
+            disturbed = np.concatenate(([0], np.cumsum(stream.left_out)))
+            inside &= disturbed[each.end] == disturbed[each.begin]
+        levels.append(each.level[inside])
+        places.append(each.begin[inside])
+    pooled: PooledPeaks = tails.pooled(
+        levels,
+        places,
+        [len(stream) for stream in grouped.streams],
+        grouped.proof if proof else grouped.fit,
+    )
+    return tails.fit(pooled, _weight(scheme), unit)

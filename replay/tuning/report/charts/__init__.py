@@ -1,0 +1,1 @@
+"""The charts of the report, built with plotly: one module a chart."""

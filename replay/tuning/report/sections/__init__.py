@@ -1,0 +1,1 @@
+"""The report's answers: one module a question of its reader."""

@@ -1,0 +1,118 @@
+"""The first screen: the answer in a paragraph, and where to read on.
+
+Knows what a reader in a hurry needs. Must not know the sections' contents.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+
+from monitor.configuration import spans
+from replay.tuning.report import chosen, markup, words
+from replay.tuning.report.markup import Html, Text
+from replay.tuning.result import Result, Setting
+
+CAUTION = (
+    "This report advises people. It is not a safety function, nothing may rely on it to stop a "
+    "machine, and it does not replace the checks that the law asks for. Its figures hold for the "
+    "process as it ran in this recording; after a change of product, gauge or machine, record and "
+    "tune again."
+)
+
+
+def render(result: Result, questions: Sequence[tuple[str, str]]) -> str:
+    """Heading, verdict, answer, key figures, caution, and the questions as links."""
+    links = "".join(f'<li><a href="#{name}">{question}</a></li>' for name, question in questions)
+    best = chosen.best(result)
+    title = result.title or result.characteristic
+    span = f"{words.moment(result.whole.first)} to {words.moment(result.whole.last)} UTC"
+    return (
+        f"<header><h1>{markup.inline(title)}: which setting?</h1>"
+        f'<p class="small">{markup.inline(result.characteristic)}, recorded {span}</p>'
+        f"{_verdict(result)}"
+        f"{markup.paragraph(_answer(result, best), 'answer')}"
+        f"{markup.facts(_key(result, best), 'key')}"
+        f"{markup.paragraph(CAUTION, 'caution')}"
+        f'<nav aria-label="Questions"><ol>{links}</ol></nav></header>'
+    )
+
+
+def _verdict(result: Result) -> str:
+    """Whether the recording may be trusted, with a sign and a word besides the colour."""
+    word = "✓ May be trusted" if result.trusted else "✗ May not be trusted"
+    kind = "verdict" if result.trusted else "verdict no"
+    return f'<p class="{kind}"><strong>{word}</strong>{markup.inline(result.trust)}</p>'
+
+
+def _answer(result: Result, best: Setting | None) -> Text:
+    asked = spans.long(result.promise)
+    tried = words.plural(len(result.settings), "setting")
+    if best is None:
+        told = f"Of {tried}, none can be recommended for one false alarm in {asked}."
+        if result.refusals:
+            told += f" Refused: {words.refusal(result.refusals[0])}"
+        return told
+    name = f"<strong>{markup.inline(best.name)}</strong>"
+    told = f" ({words.detector(best)}, {words.constants(best)})."
+    told += f" With nothing wrong it rings once in {_delivered(best)}; asked was {asked}."
+    delay = chosen.first_step(best, result)
+    if delay is not None and delay.late_readings.value is not None:
+        told += f" It catches {words.drift(delay, result)} within "
+        told += f"{spans.number(delay.late_readings.value)} pieces of the stream"
+        if delay.late_seconds.value is not None:
+            told += f" ({spans.long(delay.late_seconds.value)})"
+        told += " nine times in ten"
+        if delay.median_readings.value is not None:
+            told += f", half the time within {spans.number(delay.median_readings.value)}"
+        told += "."
+    return Html(f"Of {tried}, take {name}{markup.inline(told)}")
+
+
+def _delivered(best: Setting) -> str:
+    if best.extrapolated is None:
+        return words.joined(words.counted(best.observed))
+    if best.extrapolated.interval.high is None:
+        return f"at least {spans.long(best.extrapolated.interval.low)}"
+    about = spans.long(best.extrapolated.seconds)
+    return f"about {about}, somewhere from {words.time_range(best.extrapolated.interval)}"
+
+
+def _key(result: Result, best: Setting | None) -> list[tuple[str, Text]]:
+    pairs = [_tile("Asked", spans.long(result.promise), "between false alarms")]
+    if best is None:
+        supports = max((grouping.supports for grouping in result.groupings), default=0.0)
+        if result.trusted and supports:
+            note = "the longest interval it supports"
+            pairs.append(_tile("This recording", spans.long(supports), note))
+        return pairs
+    seen = best.observed
+    pairs.append(
+        _tile(
+            "Counted",
+            words.plural(seen.alarms, "false alarm"),
+            f"in {spans.long(seen.seconds)} of the last part",
+        )
+    )
+    if best.extrapolated is not None:
+        interval = best.extrapolated.interval
+        if interval.high is None:
+            told = f"at least {spans.long(interval.low)}"
+            note = "between false alarms; more than this recording can tell"
+        else:
+            told = spans.long(best.extrapolated.seconds)
+            note = f"between false alarms; {words.time_range(interval)} with 90 %"
+        pairs.append(_tile("Delivered", told, note))
+    delay = chosen.first_step(best, result)
+    if delay is not None and delay.late_readings.value is not None:
+        pairs.append(
+            _tile(
+                "Caught",
+                f"{spans.number(delay.late_readings.value)} pieces",
+                f"nine in ten, {words.drift(delay, result)}",
+            )
+        )
+    return pairs
+
+
+def _tile(name: str, told: str, note: str) -> tuple[str, Text]:
+    return name, markup.with_note(told, note)

@@ -1,0 +1,231 @@
+"""The whole of ``tune``: from the readings of one characteristic to its result.
+
+Knows the order of the steps. Must not know how any of them is done, or how a result is shown.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Iterator, Sequence
+from concurrent.futures import ThreadPoolExecutor
+from dataclasses import dataclass, replace
+from functools import partial
+
+import numpy as np
+
+from monitor import stream_names
+from monitor.commandline import CommandError
+from monitor.plan import CharacteristicPlan, Scheme
+from replay.readings import Readings
+from replay.tuning import fragment, looking, verdict
+from replay.tuning.candidates import Candidate, Request, candidates, configured
+from replay.tuning.catching import Catcher, moments
+from replay.tuning.changed import Drift, resolution
+from replay.tuning.delays import Resampling
+from replay.tuning.drifts import Onsets, onsets
+from replay.tuning.grouped import Grouped
+from replay.tuning.judging import Judged, family, judge
+from replay.tuning.preparing import Held, Prepared, horizon, prepare
+from replay.tuning.ranking import ranked
+from replay.tuning.result import Delay, Result, Setting, Shape, Source
+from replay.tuning.showing import Place, setting
+
+OnProgress = Callable[[str], None]
+"""Told what is being done."""
+
+RAMP = 200
+"""Readings of a stream over which a ramp grows."""
+
+_CURVE = (0.5, 0.75, 1.0, 1.25, 1.5, 2.0, 3.0)
+"""Sizes of steps that curves are drawn through, times the drift to catch."""
+
+_CURVED = 5
+"""So many of the best settings get a curve, and every configured one."""
+
+
+@dataclass(frozen=True, slots=True)
+class _Drifts:
+    """Where drifts begin, and what of the gauge they must respect."""
+
+    begun: Onsets
+    resampling: Resampling
+    step: float | None
+    plausible: tuple[float, float]
+
+    def of(self, shape: Shape, amount: float) -> Drift:
+        return Drift(shape, amount, RAMP, self.step, self.plausible)
+
+
+@dataclass(frozen=True, slots=True)
+class _Batch:
+    """Settings judged together: on the same subgroups, against the same baselines."""
+
+    number: int
+    held: Held
+    grouped: Grouped
+    judged: list[Judged]
+    left_out: list[str]
+
+
+def study(
+    readings: Readings, sources: Sequence[Source], request: Request, progress: OnProgress
+) -> Result:
+    """Judge every setting that ``request`` asks for. Raises CommandError where there is nothing to
+    judge."""
+    plan = readings.plan
+    progress("looking at the recording")
+    prepared = prepare(plan, readings.streams, request)
+    drifts = _drifts(plan, prepared, request)
+    place = Place(
+        prepared.running,
+        request.labels,
+        tuple(stream_names.name(each.stream) for each in prepared.streams),
+        request.promise,
+    )
+    batches = list(_batches(plan, prepared, request, progress))
+    settings: list[Setting] = []
+    schemes: list[tuple[_Batch, Scheme]] = []
+    for batch in batches:
+        progress(f"drifts for {len(batch.judged)} settings on {batch.held.found.said}")
+        delays = _delays(batch, prepared, drifts, request)
+        for judged, own in zip(batch.judged, delays, strict=True):
+            found = batch.held.found
+            settings.append(setting(judged, batch.grouped, batch.number, found, place, own))
+            schemes.append((batch, judged.scheme))
+    order = ranked(settings, request.catch[0])
+    progress("drifts of several sizes for the best")
+    curved = [
+        index
+        for number, (index, each) in enumerate(order)
+        if number < _CURVED or each.origin == "configured"
+    ]
+    curves = _curves({index: schemes[index] for index in curved}, prepared, drifts, request)
+    final = tuple(replace(each, curve=curves.get(index, ())) for index, each in order)
+    best = 0 if final and final[0].rank == 1 else None
+    running = prepared.running
+    groupings = tuple(each.found for each in prepared.held)
+    left_out = [name for batch in batches for name in batch.left_out]
+    refusals = verdict.refusals(groupings, final, request.promise, left_out, configured(plan)[1])
+    trusted, trust = verdict.trust(groupings, final, running.whole)
+    return Result(
+        characteristic=plan.name,
+        title=plan.title,
+        unit=plan.unit,
+        sources=tuple(sources),
+        seed=request.seed,
+        promise=request.promise,
+        catch=request.catch,
+        ignore=request.ignore,
+        ratio=request.ratio,
+        ramp=RAMP,
+        resolution=drifts.step,
+        whole=looking.part(prepared.streams, running, running.first, running.last),
+        fit=looking.part(prepared.streams, running, running.first, prepared.fit_to),
+        proof=looking.part(prepared.streams, running, prepared.prove_from, running.last),
+        set_aside=tuple(sorted(readings.set_aside.items())),
+        streams=looking.streams(prepared.streams),
+        groupings=groupings,
+        settings=final,
+        refusals=(*prepared.refusals, *refusals),
+        trust=trust,
+        trusted=trusted,
+        best=best,
+        fragment=""
+        if best is None
+        else fragment.fragment(plan, final[best], prepared.held[final[best].grouping]),
+        events=len(request.labels),
+    )
+
+
+def _drifts(plan: CharacteristicPlan, prepared: Prepared, request: Request) -> _Drifts:
+    grouped = prepared.held[0].ours
+    rng = np.random.default_rng(request.seed)
+    begun = onsets(grouped, horizon(prepared.held, request.catch[0]), rng)
+    if not begun.places:
+        raise CommandError(
+            "the recording is too short to put drifts into its last part: record for longer"
+        )
+    step = plan.resolution if plan.resolution is not None else resolution(prepared.streams)
+    return _Drifts(
+        begun,
+        Resampling(moments(grouped, begun, prepared.running), rng),
+        step,
+        (plan.source.plausible_lower, plan.source.plausible_upper),
+    )
+
+
+def _batches(
+    plan: CharacteristicPlan, prepared: Prepared, request: Request, progress: OnProgress
+) -> Iterator[_Batch]:
+    for number, held in enumerate(prepared.held):
+        tries: list[tuple[Grouped, list[Candidate]]] = []
+        if held.asked:
+            textbook = held.textbook
+            tries.append(
+                (held.ours, candidates(request, held.ours, textbook.error, textbook.interval))
+            )
+        if held.theirs is not None:
+            tries.append((held.theirs, configured(plan)[0]))
+        for grouped, tried in tries:
+            if not tried:
+                continue
+            progress(f"false alarms of {len(tried)} settings on {held.found.said}")
+            families: dict[Scheme, list[Candidate]] = {}
+            for candidate in tried:
+                families.setdefault(family(candidate), []).append(candidate)
+            one = partial(judge, grouped, interval=held.interval)
+            if request.jobs > 1:
+                with ThreadPoolExecutor(request.jobs) as pool:
+                    done = list(pool.map(one, families.values()))
+            else:
+                done = [one(members) for members in families.values()]
+            judged = [each for members in done for each in members]
+            known = {each.candidate.name for each in judged}
+            left_out = [each.name for each in tried if each.name not in known]
+            yield _Batch(number, held, grouped, judged, left_out)
+
+
+def _delays(
+    batch: _Batch, prepared: Prepared, drifts: _Drifts, request: Request
+) -> list[list[Delay]]:
+    """Of every setting of the batch: the first drift to catch in all shapes, and its own."""
+    catcher = _catcher(batch, prepared, drifts)
+    catcher.warm({index: one.scheme for index, one in enumerate(batch.judged)})
+    everyone = range(len(batch.judged))
+    first = request.catch[0]
+    found: list[list[Delay]] = [[] for _ in everyone]
+    wanted: list[tuple[Drift, Sequence[int]]] = [
+        (drifts.of("step", first), everyone),
+        (drifts.of("ramp", first), everyone),
+        (drifts.of("spread", request.ratio), everyone),
+    ]
+    for catch in request.catch[1:]:
+        own = [i for i in everyone if batch.judged[i].candidate.catch == catch]
+        wanted.append((drifts.of("step", catch), own))
+    for drift, keys in wanted:
+        for key, delay in catcher.catch(drift, keys).items():
+            found[key].append(delay)
+    return found
+
+
+def _curves(
+    chosen: dict[int, tuple[_Batch, Scheme]],
+    prepared: Prepared,
+    drifts: _Drifts,
+    request: Request,
+) -> dict[int, tuple[Delay, ...]]:
+    batches = {id(batch): batch for batch, _ in chosen.values()}
+    found: dict[int, list[Delay]] = {index: [] for index in chosen}
+    for batch in batches.values():
+        catcher = _catcher(batch, prepared, drifts)
+        catcher.warm({i: scheme for i, (one, scheme) in chosen.items() if one is batch})
+        for share in _CURVE:
+            drift = drifts.of("step", share * request.catch[0])
+            for index, delay in catcher.catch(drift, tuple(chosen)).items():
+                found[index].append(delay)
+    return {index: tuple(delays) for index, delays in found.items()}
+
+
+def _catcher(batch: _Batch, prepared: Prepared, drifts: _Drifts) -> Catcher:
+    return Catcher(
+        batch.grouped, drifts.begun, prepared.running, drifts.resampling, batch.held.textbook
+    )

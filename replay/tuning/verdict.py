@@ -1,0 +1,104 @@
+"""May the recording be trusted, and what is refused: in sentences.
+
+Knows finished groupings and settings. Must not know how they were judged.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterator, Sequence
+
+from monitor.configuration import spans
+from replay.tuning.result import Grouping, Refusal, Setting
+from replay.tuning.showing import NOT_EXPONENTIAL, TOO_FEW
+
+_SHIFT = 0.99 * 8 * 3_600.0
+"""A recording of a shift need not begin with its first reading and end with its last."""
+
+
+def trust(
+    groupings: Sequence[Grouping], settings: Sequence[Setting], running: float
+) -> tuple[bool, str]:
+    """Whether any interval can be given, and what a colleague would say of a recording of so many
+    ``running`` seconds."""
+    steady = [each for each in groupings if not each.wander.wanders]
+    if not steady:
+        return False, (
+            "No: the process wanders, so what it did here does not say how often it would ring."
+        )
+    told = [each for each in settings if each.extrapolated is not None]
+    if not told:
+        return False, "No: it is too short, or too odd, to say how often anything would ring."
+    longest = max(each.supports for each in steady)
+    said = f"es, for up to {spans.long(longest)} between false alarms"
+    if len(steady) < len(groupings):
+        wandering = ", ".join(each.said for each in groupings if each.wander.wanders)
+        return True, f"In part: y{said}, but not with {wandering}, where it wanders."
+    if any(each.wander.growth is None for each in steady):
+        return True, f"With care: y{said}, but it is too short to see whether the process wanders."
+    if running < _SHIFT:
+        return True, (
+            f"With care: y{said}, but it is shorter than a shift of 8 h, and has not seen what one "
+            "brings."
+        )
+    return True, f"Y{said}."
+
+
+def refusals(
+    groupings: Sequence[Grouping],
+    settings: Sequence[Setting],
+    promise: float,
+    left_out: Sequence[str],
+    unmatched: Sequence[str],
+) -> tuple[Refusal, ...]:
+    """Everything that was not answered; ``left_out`` are settings whose limits could not be worked
+    out, ``unmatched`` configured detectors that cannot be judged."""
+    return tuple(_refused(groupings, settings, promise, left_out, unmatched))
+
+
+def _refused(
+    groupings: Sequence[Grouping],
+    settings: Sequence[Setting],
+    promise: float,
+    left_out: Sequence[str],
+    unmatched: Sequence[str],
+) -> Iterator[Refusal]:
+    for each in groupings:
+        if each.wander.wanders:
+            yield Refusal(
+                f"any interval with {each.said}",
+                f"the process wanders: means of 200 subgroups vary {each.wander.growth or 0:.2g} "
+                f"times as much, for their length, as means of 50 (limit {each.wander.limit:g})",
+                "find what moved the process, and label it with --events if it was a real cause; "
+                "or take longer subgroups, or leave such a drift alone with --ignore",
+            )
+        elif promise > each.supports:
+            yield Refusal(
+                f"a promise of {spans.long(promise)} with {each.said}",
+                f"that is more than 50 times the last part of the recording, which supports "
+                f"{spans.long(each.supports)}",
+                "record for longer, or promise less",
+            )
+    if left_out:
+        yield Refusal(
+            _named(left_out),
+            "one part of the recording holds too few peaks of the statistic to work out a limit",
+            "record for longer, or take smaller subgroups",
+        )
+    for why, instead in (
+        (TOO_FEW, "record for longer"),
+        (NOT_EXPONENTIAL, "take a detector that clips, such as a CUSUM, or larger subgroups"),
+    ):
+        names = [each.name for each in settings if each.no_interval == why]
+        if names:
+            yield Refusal(f"an interval for {_named(names)}", why, instead)
+    for name in unmatched:
+        yield Refusal(
+            f"the configured detector {name}",
+            "tune judges CUSUM, EWMA and the Shewhart chart of means with its rule outside",
+            "play the recording to see what it rings",
+        )
+
+
+def _named(names: Sequence[str]) -> str:
+    more = f" and {len(names) - 3} more" if len(names) > 3 else ""
+    return "; ".join(names[:3]) + more

@@ -1,0 +1,365 @@
+"""``driftbell-replay tune`` as its user runs it: what it answers, writes and refuses."""
+
+from __future__ import annotations
+
+import copy
+import csv
+import hashlib
+import json
+from pathlib import Path
+from typing import Any
+
+import numpy as np
+import pytest
+import yaml
+
+from monitor.__main__ import main as driftbell
+from monitor.configuration import spans
+from monitor.times import SECOND, format_time, parse_iso_time
+from replay.__main__ import main
+
+DOCUMENT: dict[str, Any] = {
+    "version": 1,
+    "broker": {"host": "localhost"},
+    "outputs": {"root": "plant/jar-line-2/monitor"},
+    "journal": {"path": "line.db"},
+    "characteristics": {
+        "net-weight": {
+            "title": "Net weight, 340 g jar",
+            "unit": "g",
+            "resolution": 0.1,
+            "source": {
+                "topic": "plant/jar-line-2/checkweigher/1/reading",
+                "payload": "json",
+                "value": "/net",
+                "time": "/t",
+                "stream": {"head": "/head"},
+                "plausible": {"lower": 300, "upper": 380},
+                "expected_rate": "60/min",
+            },
+            "subgroup": {"size": 5, "max_gap": "30s"},
+            "baseline": {"mean": 341.2, "sigma": 1.9},
+            "detectors": [
+                {"kind": "cusum", "k": 0.5, "h": 5},
+                {"kind": "shewhart", "chart": "range"},
+            ],
+        }
+    },
+}
+START = parse_iso_time("2026-03-02T06:00:00Z")
+ROWS = 25_000
+"""Readings of two heads in turn, one a second: seven hours."""
+
+
+def recording(path: Path, values: np.ndarray) -> str:
+    rows = ["time,head,value"]
+    rows += [
+        f"{format_time(START + place * SECOND)},{place % 2 + 1},{value:.1f}"
+        for place, value in enumerate(values.tolist())
+    ]
+    path.write_text("\n".join(rows) + "\n")
+    return str(path)
+
+
+def steady(seed: int = 1) -> np.ndarray:
+    return np.random.default_rng(seed).normal(341.2, 1.9, ROWS)
+
+
+@pytest.fixture(scope="module")
+def config(tmp_path_factory: pytest.TempPathFactory) -> str:
+    path = tmp_path_factory.mktemp("config") / "line.yaml"
+    path.write_text(yaml.safe_dump(DOCUMENT))
+    return str(path)
+
+
+@pytest.fixture(scope="module")
+def week(tmp_path_factory: pytest.TempPathFactory) -> str:
+    return recording(tmp_path_factory.mktemp("recording") / "week.csv", steady())
+
+
+def tune(capsys: pytest.CaptureFixture[str], *arguments: str) -> dict[str, Any]:
+    assert main(["tune", *arguments, "--json"]) == 0
+    found: dict[str, Any] = json.loads(capsys.readouterr().out)
+    return found
+
+
+ASKED = ("--catch", "1.5", "--false-alarm-every", "1d")
+
+
+def by_name(found: dict[str, Any]) -> dict[str, dict[str, Any]]:
+    return {each["name"]: each for each in found["settings"]}
+
+
+def test_the_whole_answer(capsys: pytest.CaptureFixture[str], config: str, week: str) -> None:
+    found = tune(capsys, config, week, *ASKED, "--size", "5,10", "--cusum", "0.5,5")
+    digest = hashlib.sha256(Path(week).read_bytes()).hexdigest()
+    assert found["recordings"] == [{"name": week, "sha256": digest}]
+    assert found["trusted"]
+    assert found["recording"]["readings"] == ROWS
+    assert found["recording"]["running_seconds"] == ROWS - 1
+    assert found["recording"]["streams"] == {"head=1": ROWS // 2, "head=2": ROWS // 2}
+    assert [each["size"] for each in found["groupings"]] == [5, 10]
+    settings = by_name(found)
+    assert set(settings) == {
+        *(f"{name}, size {n}" for n in (5, 10) for name in ("shewhart", "cusum 0.5,5")),
+        *(f"{kind}, catch 1.5, size {n}" for n in (5, 10) for kind in ("cusum", "ewma")),
+        "as configured: cusum",
+    }
+    ranks = [each["rank"] for each in found["settings"] if each["rank"] is not None]
+    assert ranks == list(range(1, len(ranks) + 1))
+    late = [e["delays"][0]["readings"]["late"]["value"] for e in found["settings"][: len(ranks)]]
+    assert late == sorted(late)
+    assert found["best"]["name"] == found["settings"][0]["name"]
+    for each in found["settings"]:
+        assert each["meets"] or each["rank"] is None
+        assert [d["shape"] for d in each["delays"]] == ["step", "ramp", "spread"]
+        assert each["delays"][0]["onsets"] >= 200
+    assert found["settings"][0]["interval"]["low"] >= found["false_alarm_every"] == 86_400
+    # k 0.5, h 5 signals about once in 465 subgroups (methods.md): the textbook's own data.
+    given = settings["cusum 0.5,5, size 5"]
+    told = given["interval"]
+    seconds = 465.4 / 0.2
+    assert told["low"] < seconds < told["high"]
+    assert given["false_alarms"]["interval"]["low"] < seconds
+    assert seconds < given["false_alarms"]["interval"]["high"]
+    assert not given["meets"]
+    assert "the configured detector shewhart-range" in [each["what"] for each in found["refused"]]
+
+
+def test_configured_settings_ring_as_play_does(
+    capsys: pytest.CaptureFixture[str], tmp_path: Path, config: str
+) -> None:
+    """The engine's own signals in the last four tenths, from ``play``, are those counted; the
+    mean is not quite the baseline's."""
+    path = recording(tmp_path / "short.csv", steady(3)[:12_000] + 0.4)
+    points = tmp_path / "points.csv"
+    assert main(["play", config, path, "--points", str(points)]) == 0
+    capsys.readouterr()
+    edge = START + round(0.6 * 11_999 * SECOND)
+    with points.open() as file:
+        rows = [row for row in csv.DictReader(file) if row["detector"] == "cusum" and row["rule"]]
+    # Subgroups of five that begin after the edge end eight seconds later or more.
+    expected = [row for row in rows if parse_iso_time(row["time"]) >= edge + 8 * SECOND]
+    found = by_name(tune(capsys, config, path, *ASKED, "--kind", "cusum"))["as configured: cusum"]
+    assert found["false_alarms"]["seen"] == len(expected) > 2
+
+
+def test_the_same_seed_gives_the_same_answer(
+    capsys: pytest.CaptureFixture[str], config: str, week: str
+) -> None:
+    asked = (config, week, *ASKED, "--kind", "shewhart")
+    first, again, other = (
+        tune(capsys, *asked, "--seed", seed, "--jobs", jobs)
+        for seed, jobs in (("4", "1"), ("4", "2"), ("5", "1"))
+    )
+    assert first == again
+    assert first["settings"][0]["constants"] == other["settings"][0]["constants"]
+    assert first["settings"][0]["delays"] != other["settings"][0]["delays"]
+
+
+def test_questions_in_the_readers_order(
+    capsys: pytest.CaptureFixture[str], config: str, week: str
+) -> None:
+    assert main(["tune", config, week, *ASKED]) == 0
+    out = capsys.readouterr().out
+    questions = [line for line in out.splitlines() if line.endswith("?")]
+    assert questions == [
+        "May I trust this recording?",
+        "What would have rung with nothing wrong?",
+        "How late would it catch a drift?",
+        "What was refused, and why?",
+        "What do I put into the configuration?",
+    ]
+
+
+def test_what_could_be_promised_is_said(
+    capsys: pytest.CaptureFixture[str], config: str, week: str
+) -> None:
+    asked = [*ASKED, "--kind", "shewhart", "--cusum", "0.5,6"]
+    assert main(["tune", config, week, *asked]) == 0
+    out = " ".join(capsys.readouterr().out.split())
+    found = tune(capsys, config, week, *asked)
+    assert found["best"] is None
+    name = "cusum 0.5,6, size 5"
+    longest = by_name(found)[name]["interval"]["low"]
+    said = f"shown of one that does catch them is {spans.long(longest)}, of {name}."
+    assert said in out
+
+
+@pytest.mark.parametrize("kind", ["cusum", "ewma"])
+def test_check_accepts_the_fragment(
+    capsys: pytest.CaptureFixture[str], tmp_path: Path, config: str, week: str, kind: str
+) -> None:
+    fragment = tmp_path / "best.yaml"
+    arguments = ["--catch", "1.5", "--false-alarm-every", "6h", "--kind", kind, "--size", "10"]
+    arguments += ["--to", str(fragment)]
+    assert main(["tune", config, week, *arguments]) == 0
+    assert fragment.read_text() in capsys.readouterr().out
+    document = copy.deepcopy(DOCUMENT)
+    (keys,) = yaml.safe_load(fragment.read_text())["characteristics"].values()
+    document["characteristics"]["net-weight"] |= keys
+    assert keys["subgroup"] == {"size": 10, "max_gap": "30s"}
+    merged = tmp_path / "merged.yaml"
+    merged.write_text(yaml.safe_dump(document))
+    assert driftbell(["check", str(merged)]) == 0
+
+
+def test_a_promise_longer_than_the_recording_supports(
+    capsys: pytest.CaptureFixture[str], tmp_path: Path, config: str, week: str
+) -> None:
+    """The last part lasts 2.8 h: 50 times that are 5.8 days."""
+    to = tmp_path / "best.yaml"
+    asked = [config, week, "--catch", "1.5", "--kind", "cusum", "--to", str(to)]
+    assert main(["tune", *asked, "--false-alarm-every", "6d", "--json"]) == 1
+    out, said = capsys.readouterr()
+    found = json.loads(out)
+    assert found["best"] is None
+    assert found["groupings"][0]["supports"] == pytest.approx(50 * 0.4 * ROWS, rel=0.01)
+    assert any("a promise of 6 days" in each["what"] for each in found["refused"])
+    assert not to.exists()
+    assert "was not written" in said
+    assert all(each["interval"]["low"] <= 50 * 0.4 * ROWS for each in found["settings"])
+    assert main(["tune", *asked, "--false-alarm-every", "2d"]) == 0
+    assert to.exists()
+
+
+def test_no_interval_where_the_process_wanders(
+    capsys: pytest.CaptureFixture[str], tmp_path: Path, config: str
+) -> None:
+    rng = np.random.default_rng(1)
+    values = steady() + np.repeat(0.03 * np.cumsum(rng.normal(size=ROWS // 10)), 10)
+    found = tune(capsys, config, recording(tmp_path / "wander.csv", values), *ASKED)
+    assert not found["trusted"]
+    assert found["trust"].startswith("No: the process wanders")
+    assert found["best"] is None
+    assert found["groupings"][0]["wander"]["growth"] > 1.5
+    for each in found["settings"]:
+        assert each["interval"] is each["false_alarms"]["interval"] is each["rank"] is None
+        assert "wanders" in each["no_interval"]
+
+
+def test_settings_without_a_limit_are_told(
+    capsys: pytest.CaptureFixture[str], tmp_path: Path, config: str
+) -> None:
+    """A few hundred readings have too few peaks to work a limit out from; given ones need none."""
+    path = recording(tmp_path / "short.csv", steady()[:1_200])
+    found = tune(capsys, config, path, *ASKED, "--kind", "cusum", "--cusum", "0.5,5")
+    assert set(by_name(found)) == {"cusum 0.5,5, size 5", "as configured: cusum"}
+    assert found["best"] is None
+    refused = {each["what"]: each["why"] for each in found["refused"]}
+    assert "too few peaks" in refused["cusum, catch 1.5, size 5"]
+    assert "too few peaks" in refused["an interval for cusum 0.5,5, size 5; as configured: cusum"]
+
+
+def test_labelled_events_are_scored_and_left_out(
+    capsys: pytest.CaptureFixture[str], tmp_path: Path, config: str
+) -> None:
+    """Head 1 is 4 g heavy for 20 minutes, once in each part; a crew once heard a false alarm."""
+    values = steady()
+    for begin in (6_000, 20_000):
+        values[begin : begin + 1_200 : 2] += 4.0
+    path = recording(tmp_path / "events.csv", values)
+    labels = tmp_path / "labels.csv"
+
+    def at(place: int) -> str:
+        return format_time(START + place * SECOND)
+
+    labels.write_text(
+        "time,until,stream,what\n"
+        f"{at(6_000)},{at(7_200)},head=1,cause\n"
+        f"{at(20_000)},{at(21_200)},head=1,cause\n"
+        f"{at(12_000)},,,false\n"
+    )
+    asked = (config, path, *ASKED, "--kind", "cusum", "--cusum", "0.5,5")
+    plain, labelled = tune(capsys, *asked), tune(capsys, *asked, "--events", str(labels))
+    name = "cusum, catch 1.5, size 5"
+    seen = by_name(labelled)[name]
+    assert seen["events"]["causes"] == seen["events"]["caught"] == 2
+    assert 0 < seen["events"]["median_seconds"] <= seen["events"]["late_seconds"] < 240
+    assert seen["events"]["false_verdicts"] == seen["events"]["avoided"] == 1
+    assert by_name(plain)[name]["events"] is None
+    assert seen["false_alarms"]["seen"] == 0
+    loose = "cusum 0.5,5, size 5"
+    seconds = [by_name(found)[loose]["false_alarms"]["seconds"] for found in (plain, labelled)]
+    assert seconds[0] - seconds[1] == pytest.approx(600, abs=30)  # half of the streams' time
+    assert (
+        by_name(labelled)[loose]["false_alarms"]["seen"]
+        < by_name(plain)[loose]["false_alarms"]["seen"] - 10
+    )
+
+
+def test_a_spread_is_watched_where_asked(
+    capsys: pytest.CaptureFixture[str], config: str, week: str
+) -> None:
+    found = tune(capsys, config, week, *ASKED, "--kind", "cusum", "--catch-ratio", "2")
+    spread = by_name(found)["cusum, chart variance, catch_ratio 2, size 5"]
+    # 2 ln r · r²/(r² − 1), by the likelihood ratio.
+    assert spread["constants"]["k"] == pytest.approx(2 * np.log(2) * 4 / 3)
+    delay = {each["shape"]: each for each in spread["delays"]}["spread"]
+    assert delay["amount"] == 2
+    assert delay["readings"]["late"]["value"] < 100
+    assert spread["unranked"] == "it watches the spread, not the mean"
+
+
+def test_promise_and_drift_of_the_configuration(
+    capsys: pytest.CaptureFixture[str], tmp_path: Path, week: str
+) -> None:
+    document = copy.deepcopy(DOCUMENT)
+    weight = document["characteristics"]["net-weight"]
+    weight["source"]["expected_streams"] = 2
+    weight["promise"] = {"false_alarm_every": "1d"}
+    weight["detectors"] = [{"kind": "cusum", "catch": 1.5}]
+    path = tmp_path / "line.yaml"
+    path.write_text(yaml.safe_dump(document))
+    found = tune(capsys, str(path), week)
+    assert found["false_alarm_every"] == 86_400
+    assert found["catch"] == [1.5]
+    solved = by_name(found)["as configured: cusum"]
+    assert solved["interval"]["low"] < 86_400 < (solved["interval"]["high"] or np.inf)
+
+
+def test_windows(capsys: pytest.CaptureFixture[str], tmp_path: Path, week: str) -> None:
+    document = copy.deepcopy(DOCUMENT)
+    document["characteristics"]["net-weight"]["subgroup"] = {"window": "20s", "min_size": 3}
+    path = tmp_path / "line.yaml"
+    path.write_text(yaml.safe_dump(document))
+    found = tune(capsys, str(path), week, *ASKED, "--kind", "cusum")
+    assert found["groupings"][0]["said"] == "windows of 20s, usually 10 readings"
+    assert by_name(found)["cusum, catch 1.5, size 10"]["meets"]
+
+
+@pytest.mark.parametrize(
+    ("arguments", "said"),
+    [
+        (["--catch", "1.5"], "--false-alarm-every is needed, such as 14d: the configuration"),
+        (["--false-alarm-every", "1d"], "--catch is needed"),
+        ([*ASKED, "--kind", "cusums"], "--kind cusums: write cusum, ewma, shewhart"),
+        ([*ASKED, "--size", "0"], "--size: write whole numbers"),
+        ([*ASKED, "--cusum", "0.5"], "--cusum 0.5: write K,H"),
+        ([*ASKED, "--ewma", "2,3"], "--ewma 2,3: lambda is above 0, up to 1"),
+        ([*ASKED, "--ignore", "2"], "--ignore: write drifts from 0 up, less than those to catch"),
+        ([*ASKED, "--catch-ratio", "1"], "--catch-ratio: write a number above 1"),
+        (["--catch", "much", "--false-alarm-every", "1d"], "--catch much: write a number"),
+        (["--catch", "1", "--false-alarm-every", "soon"], "--false-alarm-every: 'soon' is not"),
+        ([*ASKED, "--characteristic", "torque"], "--characteristic torque: there is net-weight"),
+        ([*ASKED, "--json", "--to", "-"], "only one of --to -, --html - and --json"),
+    ],
+)
+def test_a_wrong_command_line(
+    capsys: pytest.CaptureFixture[str], config: str, week: str, arguments: list[str], said: str
+) -> None:
+    assert main(["tune", config, week, *arguments]) == 2
+    assert said in capsys.readouterr().err
+
+
+def test_a_recording_that_says_nothing(
+    capsys: pytest.CaptureFixture[str], tmp_path: Path, config: str
+) -> None:
+    for values, said in (
+        (np.full(4_000, 341.2), "has subgroups that vary in both parts"),
+        (steady()[:12], "has subgroups that vary in both parts"),
+        (np.full(100, 20.0), "hold no reading of net-weight"),
+    ):
+        path = recording(tmp_path / "short.csv", values)
+        assert main(["tune", config, path, *ASKED]) == 1
+        assert said in capsys.readouterr().err
