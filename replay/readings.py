@@ -44,7 +44,9 @@ class StreamReadings:
 
     ``time``: event times in µs since 1970-01-01T00:00Z, never falling; ``value``: in the gauge's
     unit; both of one length. ``breaks``: rising indices of readings that do not continue the one
-    before, since the gauge restarted between them: no subgroup spans one.
+    before, since the gauge restarted between them: no subgroup spans one, and a window that was
+    open is given up. (A restart after a window's end, before it was seen to be over, gives it up;
+    after that it is no break.)
     """
 
     stream: Stream
@@ -310,6 +312,7 @@ class _WindowRecorder(_Recorder):
         return None
 
     def abandon(self) -> None:
-        """What comes does not continue what was."""
+        """What comes does not continue what was; of windows, only one that is open is lost by it."""
+        if self._windows.closes() is not None:
+            super().abandon()
         self._windows.abandon()
-        super().abandon()

@@ -153,8 +153,8 @@ def _by_window(plan: ByWindow, time: Times, breaks: Places) -> Spans:
     if not len(time):
         edges = edges[:0]
     start, stop = edges[:-1], edges[1:]  # the last window may still go on
-    # A restart in the middle of a window gives up what the window held until then.
-    cut = window[stop] == window[start] if len(stop) else np.zeros(0, np.bool_)
+    # A restart gives up what the window that was open held until then.
+    cut = np.isin(stop, breaks)
     good = ~cut & (stop - start >= plan.min_size)
     start, stop = start[good], stop[good]
     return Spans(start, stop, np.zeros(len(start), np.bool_), int(np.count_nonzero(~good)))

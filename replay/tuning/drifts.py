@@ -117,7 +117,9 @@ def follow(grouped: Grouped, begun: Onsets, drift: Drift, horizon: int) -> Follo
         begun.chance[which, np.clip(since, 0, begun.horizon - 1)],
     )
     instant = np.concatenate([each.time for each in cut])
-    breaks = np.concatenate([edge, *(b.breaks + e for b, e in zip(cut, edge, strict=True))])
+    breaks = np.concatenate([each.breaks + at for each, at in zip(cut, edge, strict=True)])
+    if not isinstance(grouped.plan, ByWindow):  # windows of two places lie apart as it is
+        breaks = np.concatenate([edge, breaks])
     lower, upper = drift.plausible
     kept = (value >= lower) & (value <= upper)
     if not kept.all():

@@ -82,7 +82,7 @@ def test_pruned_and_exported_under_load(
         daemon.online()
         pieces = []
         with Feed(broker.port, messages[2 * count :], min(2_000, count / 4)) as feed:
-            while not feed.is_over:
+            while len(pieces) <= 2 or not feed.is_over:
                 pieces.append(export(daemon, tmp_path / "piece.jsonl"))
                 if len(pieces) == 2:
                     daemon.kill()
@@ -102,7 +102,6 @@ def test_pruned_and_exported_under_load(
     whole = [*old[: old.index(new[0])], *new]
     ends = [place(piece, whole) for piece in pieces]
     assert ends == sorted(ends)
-    assert len(pieces) > 2
     recorded = tmp_path / "whole.jsonl"
     recorded.write_bytes(b"\n".join(whole) + b"\n")
     assert alerts == undisturbed(daemon.configuration, recorded)

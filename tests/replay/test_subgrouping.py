@@ -40,9 +40,6 @@ def one_by_one(plan: SubgroupPlan, readings: StreamReadings) -> tuple[list[Subgr
     pairs = zip(readings.time.tolist(), readings.value.tolist(), strict=True)
     for index, (time, value) in enumerate(pairs):
         if index in restarts:
-            closes = gather.closes()
-            if closes is not None and time >= closes:
-                found.append(gather.close())  # its time had come before the gauge came back
             gather.abandon()
         found.append(gather.add(value, time, (index, time, None, None)))
     return [each for each in found if each is not None], len(given_up)
