@@ -11,6 +11,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
+from monitor import times
 from monitor.baselining.assess import Assessment, Detectors, assess, baselines
 from monitor.baselining.estimating import BetweenBy, SigmaBy, estimate
 from monitor.baselining.material import Clues, Flags, StreamSubgroups
@@ -47,6 +48,13 @@ class Estimated:
     in_spans: int
     left_outside: tuple[Outside, ...]
     left_outside_subgroups: int
+
+    @property
+    def rate(self) -> float | None:
+        """Subgroups a second of all streams; None where they take no time."""
+        found = self.assessment.estimate
+        seconds = (found.last - found.first) / times.SECOND
+        return found.subgroups / seconds if seconds else None
 
     @property
     def left_out(self) -> int:

@@ -53,6 +53,14 @@ def as_json(estimated: Estimated, written: str | None) -> dict[str, Any]:
             "wander": None
             if estimate.wander is None
             else {**asdict(estimate.wander), "wanders": estimate.wander.wanders},
+            "moved": [
+                {
+                    "stream": stream_names.name(each.stream),
+                    "time": times.format_time(each.time),
+                    "by": each.by,
+                }
+                for each in estimate.moved
+            ],
             "shape": None if estimate.shape is None else asdict(estimate.shape),
             "resolution": estimated.clues.step,
             "cycle": None if estimated.clues.cycle is None else asdict(estimated.clues.cycle),

@@ -44,6 +44,7 @@ def centre(estimate: Estimate, written: Baselines, unit: str) -> Iterator[str]:
     yield from _table(header, rows)
     if len(estimate.each) > SHOWN:
         yield f"  … and {len(estimate.each) - SHOWN:,} more streams (--json has them all)"
+    yield "  (independent: how many subgroups that do not follow each other would tell as much)"
     yield ""
     yield "  The same spread by other estimators:"
     yield from _estimators(estimate, places)

@@ -13,6 +13,7 @@ from collections.abc import Iterator
 
 from monitor import stream_names
 from monitor.baselining.delivered import Delivered
+from monitor.baselining.estimating import DIFFER
 from monitor.baselining.reason import part
 from monitor.configuration import spans
 from replay import baseline_tables
@@ -23,6 +24,7 @@ _WIDTH = 88
 _VERDICTS = {
     "trust": "Trust it: it may be put on the line.",
     "provisional": "Provisional: it may be used for now, and should be estimated again.",
+    "broken": "Provisional: centre and spread may be used for now, but not with these detectors.",
     "refuse": "Refused: no baseline can be taken from this.",
 }
 """The verdict, as a sentence."""
@@ -31,23 +33,39 @@ _VERDICTS = {
 def verdict(estimated: Estimated) -> Iterator[str]:
     """May I trust it?"""
     found = estimated.assessment
-    yield _VERDICTS[found.verdict]
-    for reason in found.reasons:
-        if reason.grade != "note":
-            yield from _point(_sentence(reason.found), _sentence(f"what to do: {reason.do}"))
-    if found.verdict == "provisional" and found.delivered is not None:
+    reasons = [each for each in found.reasons if each.grade != "note"]
+    broken = next((each for each in reasons if each.kind == "promise"), None)
+    if broken is None or found.delivered is None:
+        yield _VERDICTS[found.verdict]
+    else:
+        reasons.remove(broken)
+        yield from textwrap.wrap(
+            " ".join(
+                (
+                    _VERDICTS["broken"],
+                    f"{_rings(found.delivered, estimated.rate)}.",
+                    _sentence(broken.do),
+                )
+            ),
+            _WIDTH,
+            break_on_hyphens=False,
+        )
+    for reason in reasons:
+        yield from _point(_sentence(reason.found), _sentence(f"what to do: {reason.do}"))
+    if found.verdict == "provisional" and broken is None and found.delivered is not None:
         yield from _point(f"How much the promise shrinks: {_shrinks(found.delivered)}.")
 
 
-def body(estimated: Estimated, rate: float | None) -> Iterator[str]:
-    """Everything after the verdict; ``rate``: subgroups a second of all streams, None unknown."""
+def body(estimated: Estimated) -> Iterator[str]:
+    """Everything after the verdict: of what is refused, only what helps to find why."""
     found = estimated.assessment
-    for section in (
+    sections = [
         baseline_tables.centre(found.estimate, found.baselines, estimated.readings.plan.unit),
         _heads(estimated),
         _odd(estimated),
-        _promise(estimated, rate),
-    ):
+        _promise(estimated),
+    ]
+    for section in [_oddities(estimated)] if found.verdict == "refuse" else sections:
         lines = list(section)
         if lines:
             yield ""
@@ -59,7 +77,8 @@ def next_steps(
 ) -> Iterator[str]:
     """Where is it written, and what do I do next? ``named``: the file as CONFIG would name it."""
     name = estimated.readings.plan.name
-    if estimated.assessment.verdict == "refuse":
+    found = estimated.assessment
+    if found.verdict == "refuse":
         yield "Nothing is written. Do what stands under the verdict, and estimate again."
     elif written is None:
         yield "Nothing is written: --to FILE.yaml writes the baseline."
@@ -67,6 +86,8 @@ def next_steps(
         yield f"Written to {written}. Next, in {config}:"
         yield f"  characteristics: {{{name}: {{baseline: {{file: {named}}}, …}}}}"
         yield f"and let `driftbell check {config}` read it."
+        if any(each.kind == "promise" for each in found.reasons):
+            yield "But not yet with these detectors: first do what stands under the verdict."
 
 
 def note(estimated: Estimated) -> str:
@@ -74,9 +95,20 @@ def note(estimated: Estimated) -> str:
     found = estimated.assessment
     word = {"trust": "Trusted.", "provisional": "Provisional."}[found.verdict]
     why = [_sentence(r.found) for r in found.reasons if r.grade == "provisional"]
-    if found.delivered is not None:
+    if found.delivered is not None and not found.delivered.broken:
         why.append(f"How much the promise shrinks: {_shrinks(found.delivered)}.")
     return " ".join([word, *why])
+
+
+def _rings(found: Delivered, rate: float | None) -> str:
+    if rate is None:
+        often, asked = (f"{spans.number(n)} subgroups" for n in (found.rings, found.subgroups))
+    else:
+        often, asked = (spans.long(n / rate) for n in (found.rings, found.subgroups))
+    return (
+        f"With the configured detectors it may ring as often as once in {often} with nothing "
+        f"wrong, instead of once in {asked}"
+    )
 
 
 def _shrinks(found: Delivered) -> str:
@@ -118,7 +150,10 @@ def _heads(estimated: Estimated) -> Iterator[str]:
         yield from _point(
             f"Means: F {heads.ratio:.3g} with {heads.above:.0f} and {heads.below:.0f} degrees of "
             f"freedom, p {_chance(heads.p)}; {heads.share:.1%} of the variance of subgroup means "
-            "lies between streams."
+            "lies between streams.",
+            f"(F: how much more streams' means vary than chance alone makes them, 1 being no more; "
+            f"p: how often chance alone makes them differ so much. Below {DIFFER:g} they count as "
+            "different.)",
         )
     yield from _point(
         f"Spreads: the largest sigma is {estimate.spread_ratio**0.5:.3g} times the least."
@@ -132,46 +167,48 @@ def _chance(p: float) -> str:
 
 
 def _odd(estimated: Estimated) -> Iterator[str]:
-    found = estimated.assessment
-    notes = [r for r in found.reasons if r.grade == "note" and not r.kind.startswith("streams-")]
-    sigma = min(each.values.sigma for each in found.estimate.each)
     yield "Was anything odd?"
     quiet = True
-    for reason in notes:
+    for reason in estimated.assessment.reasons:
+        if reason.grade == "note" and not reason.kind.startswith("streams-"):
+            quiet = False
+            yield from _point(_sentence(reason.found), _sentence(f"what to do: {reason.do}"))
+    for line in _oddities(estimated):
         quiet = False
-        yield from _point(_sentence(reason.found), _sentence(f"what to do: {reason.do}"))
+        yield line
+    if quiet:
+        yield from _point("Nothing was found.")
+
+
+def _oddities(estimated: Estimated) -> Iterator[str]:
+    """What was left out, lies outside or was not used."""
+    found = estimated.assessment
+    sigma = min(each.values.sigma for each in found.estimate.each)
     if estimated.in_spans:
-        quiet = False
         yield from _point(f"Left out for their time, as asked: {estimated.in_spans:,} subgroups.")
     if estimated.left_outside:
-        quiet = False
         yield from _point(
             f"Left out because they lay outside, as asked: "
             f"{estimated.left_outside_subgroups:,} subgroups:"
         )
         yield from baseline_tables.strangers(estimated.left_outside, sigma)
     if found.outside.points:
-        quiet = False
         yield "  Outside, and part of the estimate:"
         yield from baseline_tables.strangers(found.outside.points, sigma)
     aside = estimated.readings.set_aside
     if aside:
-        quiet = False
         by_size = sorted(aside.items(), key=lambda item: (-item[1], item[0]))
         counts = ", ".join(f"{reason} {count:,}" for reason, count in by_size)
         yield from _point(f"Set aside, not used: {counts}.")
     if found.skipped:
-        quiet = False
         names = ", ".join(stream_names.name(s) for s in found.skipped[: baseline_tables.SHOWN])
         yield from _point(
             f"Streams with fewer than two subgroups, which have no baseline: {names}."
         )
-    if quiet:
-        yield from _point("Nothing was found.")
 
 
-def _promise(estimated: Estimated, rate: float | None) -> Iterator[str]:
-    found = estimated.assessment.delivered
+def _promise(estimated: Estimated) -> Iterator[str]:
+    found, rate = estimated.assessment.delivered, estimated.rate
     yield "What becomes of the promise?"
     if found is None:
         yield from _point("Nothing can be said: no detector's run length can be worked out.")
@@ -202,5 +239,6 @@ def _of_estimates(found: Delivered) -> str:
         return "A baseline estimated as this one was keeps all of that, nine times out of ten."
     return (
         f"A baseline estimated as this one was keeps {share(found.usual)} of that as often as not, "
-        f"and less than {share(found.unlucky)} one time out of ten."
+        f"and less than {share(found.unlucky)} one time out of ten: so far off the truth may "
+        "centre and spread be that a recording as long as this one gives."
     )

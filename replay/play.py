@@ -19,8 +19,10 @@ from monitor.entries import Configured, Parsed, State
 from monitor.messages import AlertEvent
 from monitor.outputs import Alert, Output, Points, SetAside
 from monitor.pinning import pinned
-from monitor.plan import Plan
-from monitor.stream import Counts
+from monitor.plan import CharacteristicPlan, Plan, Stream
+from monitor.stream import Counts, StreamState
+from monitor.stream_learning import StreamLearning
+from monitor.subgroups import Subgroup
 from replay.merging import in_order
 from replay.points import HEADER, PointsTable
 from replay.recordings import Chunk, Recording
@@ -33,6 +35,20 @@ KEPT = 20
 """Alert events kept for showing; the files have them all."""
 
 _EXAMPLES = 5
+
+
+@dataclass(frozen=True, slots=True)
+class PlayedStream:
+    """One stream that had a reading: of its ``subgroups``, how many were ``judged``; ``why`` it is
+    not judged at the end, None where it is; ``adopted``: event time (µs) from which on it is judged
+    by a baseline that it learned during this play."""
+
+    characteristic: str
+    stream: str
+    subgroups: int
+    judged: int
+    why: str | None
+    adopted: int | None
 
 
 @dataclass(slots=True)
@@ -55,8 +71,8 @@ class Played:
     """Alerts raised, by characteristic, stream, detector and rule."""
     events: list[AlertEvent] = field(default_factory=list)
     """The first ``KEPT`` alert events."""
-    streams: list[tuple[str, str, int]] = field(default_factory=list)
-    """Every stream that had a reading: characteristic, stream, subgroups."""
+    streams: list[PlayedStream] = field(default_factory=list)
+    """By characteristic and stream."""
     unread: list[str] = field(default_factory=list)
     """Characteristics without one."""
     notes: list[str] = field(default_factory=list)
@@ -89,7 +105,7 @@ def play(
         progress(chunk)
     played = player.played
     played.streams = player.streams()
-    read = {characteristic for characteristic, _, _ in played.streams}
+    read = {each.characteristic for each in played.streams}
     played.unread = [c.name for c in plan.characteristics if c.name not in read]
     played.seconds = perf_counter() - started
     return played
@@ -98,7 +114,8 @@ def play(
 class _Player:
     def __init__(self, plan: Plan, alerts: IO[bytes] | None, points: IO[bytes] | None) -> None:
         self._plan = plan
-        self._engine = Engine(plan, points=points is not None)
+        self._adoptions: dict[tuple[str, str], tuple[int, int]] = {}
+        self._engine = Engine(plan, points=points is not None, opened=self._watch)
         self.played = Played(self._engine.counts)
         self._before: dict[tuple[str, str], int] = {}
         self._compared = False
@@ -108,16 +125,30 @@ class _Player:
         if points is not None:
             points.write(HEADER)
 
-    def streams(self) -> list[tuple[str, str, int]]:
-        """Every stream there is: characteristic, stream, subgroups played."""
-        numbers = self._numbers()
-        return sorted((*key, number - self._before.get(key, 0)) for key, number in numbers.items())
+    def streams(self) -> list[PlayedStream]:
+        """Every stream there is."""
+        found = [self._stream(_key(each), each) for each in self._engine.streams()]
+        return sorted(found, key=lambda each: (each.characteristic, each.stream))
 
-    def _numbers(self) -> dict[tuple[str, str], int]:
-        return {
-            (each.plan.name, stream_names.name(each.stream)): each.last.number if each.last else 0
-            for each in self._engine.streams()
-        }
+    def _stream(self, key: tuple[str, str], state: StreamState) -> PlayedStream:
+        number, before = _number(state), self._before.get(key, 0)
+        why, adopted = None, self._adoptions.get(key)
+        first_judged = before if adopted is None else adopted[0]
+        if state.judgement is None:
+            first_judged = number
+            why = _why(state.learning)
+        return PlayedStream(
+            *key,
+            number - before,
+            number - first_judged,
+            why,
+            None if adopted is None else adopted[1],
+        )
+
+    def _watch(self, state: StreamState) -> None:
+        """Only the stream itself knows when it adopts what it learned."""
+        if state.plan.learn is not None:
+            state.learning = _Watched(state, self._adoptions)
 
     def unreadable(self, recording: Recording, number: int, wrong: str) -> None:
         played = self.played
@@ -163,7 +194,9 @@ class _Player:
         if played.first is not None:
             played.notes.append(f"{where}: a state that is passed over, as it is not the beginning")
             return
-        engine = self._engine = Engine(state.plan, points=self._points is not None)
+        engine = self._engine = Engine(
+            state.plan, points=self._points is not None, opened=self._watch
+        )
         try:
             # Counted is what is played.
             engine.restore({**state.engine, "counts": asdict(Counts())}, state.streams)
@@ -172,7 +205,7 @@ class _Player:
                 f"{where}: a state that this version cannot read: export the journal again"
             ) from error
         played.counts = engine.counts
-        self._before = self._numbers()
+        self._before = {_key(each): _number(each) for each in engine.streams()}
         ours = pinned(self._plan, state.plan)
         if state.plan != ours:
             self._compare(
@@ -180,6 +213,10 @@ class _Player:
             )
             outputs = engine.fold(Configured(state.time, ours))
             self._take(outputs, recording, number)
+        for each in engine.streams():  # which have been opened before
+            remembered = each.learning.state()
+            self._watch(each)
+            each.learning.restore(remembered)
 
     def _compare(self, theirs: Plan, recording: Recording, number: int, afresh: str) -> None:
         ours = pinned(self._plan, theirs).characteristics
@@ -220,3 +257,40 @@ class _Player:
             played.first = time
         played.backwards += 1
         played.backwards_at = played.backwards_at or f"{recording.path}:{number}"
+
+
+def _key(state: StreamState) -> tuple[str, str]:
+    return state.plan.name, stream_names.name(state.stream)
+
+
+def _why(learning: StreamLearning) -> str:
+    """Why a stream is not judged."""
+    told, proposal = learning.told or "no baseline", learning.proposal
+    if proposal is None or proposal["verdict"] == "trust":
+        return told
+    # Otherwise one would wait for what does not come.
+    verdict = "refused" if proposal["verdict"] == "refuse" else "only provisional"
+    return f"{told}; what it learned last was {verdict}"
+
+
+def _number(state: StreamState) -> int:
+    return state.last.number if state.last else 0
+
+
+class _Watched(StreamLearning):
+    """Learns as any, and notes the subgroup and the event time at which a baseline was adopted."""
+
+    __slots__ = ("_adoptions", "_key")
+
+    def __init__(
+        self, state: StreamState, adoptions: dict[tuple[str, str], tuple[int, int]]
+    ) -> None:
+        super().__init__(state.plan.learn)
+        self._key, self._adoptions = _key(state), adoptions
+
+    def take(self, plan: CharacteristicPlan, stream: Stream, subgroup: Subgroup) -> bool:
+        """Gather a subgroup; whether another baseline was adopted by it."""
+        adopted = super().take(plan, stream, subgroup)
+        if adopted:
+            self._adoptions[self._key] = subgroup.number, subgroup.last
+        return adopted

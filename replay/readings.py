@@ -87,13 +87,17 @@ class Gathered:
     """What recordings held: readings by characteristic, in the plan's order.
 
     ``entries``: lines or rows that could be read; ``unreadable``: those that could not, the first
-    few in words in ``unreadable_at``. ``notes``: what else is to be known of the recordings.
+    few in words in ``unreadable_at``. ``unclaimed``: messages of no characteristic, by reason;
+    ``set_aside_at``: the first of each reason, file and line, and what it was. ``notes``: what else
+    is to be known of the recordings.
     """
 
     readings: dict[str, Readings]
     entries: int
     unreadable: int
     unreadable_at: tuple[str, ...]
+    unclaimed: dict[str, int]
+    set_aside_at: dict[str, tuple[str, SetAside]]
     notes: tuple[str, ...]
 
 
@@ -152,6 +156,8 @@ class _Reader:
         self._asked = plan
         self._engine = Engine(self._plan, points=False, opened=_record)
         self._set_aside: dict[str, dict[str, int]] = {c.name: {} for c in plan.characteristics}
+        self._unclaimed: dict[str, int] = {}
+        self._set_aside_at: dict[str, tuple[str, SetAside]] = {}
         self._entries = 0
         self._unreadable = 0
         self._unreadable_at: list[str] = []
@@ -177,7 +183,7 @@ class _Reader:
             self._entries += 1
             outputs = fold(entry)
             if outputs:
-                self._take(outputs)
+                self._take(outputs, chunk.recording, number)
 
     def _resume(self, state: State, where: str) -> None:
         """Accept what follows as the engine of then would have; what it had gathered unfinished
@@ -197,11 +203,14 @@ class _Reader:
             _record(stream)
         self._engine = engine
 
-    def _take(self, outputs: Iterable[Output]) -> None:
+    def _take(self, outputs: Iterable[Output], recording: Recording, number: int) -> None:
         for output in outputs:
-            if type(output) is SetAside and output.characteristic in self._set_aside:
-                counts = self._set_aside[output.characteristic]
-                counts[output.reason] = counts.get(output.reason, 0) + 1
+            if type(output) is SetAside:
+                reason, name = output.reason, output.characteristic
+                counts = self._unclaimed if name is None else self._set_aside.get(name, {})
+                counts[reason] = counts.get(reason, 0) + 1
+                if reason not in self._set_aside_at:
+                    self._set_aside_at[reason] = f"{recording.path}:{number}", output
 
     def gathered(self) -> Gathered:
         found: dict[str, list[StreamReadings]] = {c.name: [] for c in self._plan.characteristics}
@@ -217,6 +226,8 @@ class _Reader:
             self._entries,
             self._unreadable,
             tuple(self._unreadable_at),
+            self._unclaimed,
+            self._set_aside_at,
             tuple(self._notes),
         )
 
@@ -312,7 +323,7 @@ class _WindowRecorder(_Recorder):
         return None
 
     def abandon(self) -> None:
-        """What comes does not continue what was; of windows, only one that is open is lost by it."""
+        """What comes does not continue what was; of windows, only an open one is lost."""
         if self._windows.closes() is not None:
             super().abandon()
         self._windows.abandon()

@@ -1,8 +1,9 @@
 """What a play found, in words, for the person who tunes.
 
 It answers, in this order: was everything read, and which time does it cover? What was not used,
-why, and where is one? Did every stream get its subgroups? What rang, by which rule, how often? What
-did the alerts say? Knows ``Played``. Must not know files or the engine.
+why, and where is one? Did every stream get its subgroups? Which of them were judged, and why not
+the others? What rang, by which rule, how often? What did the alerts say? Knows ``Played``. Must not
+know files or the engine.
 """
 
 from __future__ import annotations
@@ -11,30 +12,12 @@ from collections import Counter
 from collections.abc import Iterator, Sequence
 
 from monitor import times
-from monitor.outputs import SetAside
 from monitor.times import SECOND
-from replay.play import Played
+from replay import set_aside_words
+from replay.play import Played, PlayedStream
 
 _STREAMS = 40
-_EXAMPLE = 100
-
-_REASONS = {
-    "oversized": "larger than 256 KiB",
-    "retained": "retained messages are old news",
-    "no-topic": "no source of the configuration listens there",
-    "not-json": "the payload is no JSON",
-    "not-used": "left out by use_if",
-    "no-stream": "a stream key is missing, or is neither text nor number",
-    "no-value": "there is nothing where the value should be",
-    "not-a-number": "the value is no number",
-    "not-finite": "the value is infinite or NaN",
-    "implausible": "outside the plausible range",
-    "no-time": "there is nothing where the time should be",
-    "bad-time": "write ISO 8601 with its offset (…Z or …+01:00), or an epoch number",
-    "future": "more than 5 min later than its arrival",
-    "repeated": "the same reading again",
-    "late": "older than the stream's newest reading",
-}
+_WHYS = 6
 
 
 def summary(played: Played, noun: str) -> str:
@@ -44,6 +27,7 @@ def summary(played: Played, noun: str) -> str:
         for part in (
             list(_read(played, noun)),
             list(_streams(played)),
+            list(_unjudged(played)),
             list(_rules(played)),
             list(_events(played)),
         )
@@ -66,11 +50,7 @@ def _read(played: Played, noun: str) -> Iterator[str]:
         )
     aside = sum(counts.set_aside.values())
     yield f"Used {counts.readings:,} readings; set aside {aside:,}{':' if aside else '.'}"
-    by_size = sorted(counts.set_aside.items(), key=lambda item: (-item[1], item[0]))
-    for reason, count in by_size:
-        where, example = played.set_aside_at[reason]
-        yield f"  {reason:<13} {count:>9,}  {_REASONS.get(reason, '')}"
-        yield f"  {'':<23}  first at {where}: {_shown(example)}"
+    yield from set_aside_words.lines(counts.set_aside, played.set_aside_at)
     if played.unreadable:
         yield f"Unreadable lines: {played.unreadable:,} (named on stderr)."
     gaps = f"; {counts.missing:,} numbers of the sequence are missing" if counts.missing else ""
@@ -82,8 +62,13 @@ def _streams(played: Played) -> Iterator[str]:
     for (characteristic, stream, _, _), count in played.raised.items():
         alerts[characteristic, stream] += count
     rows = [
-        (characteristic, stream or "-", f"{subgroups:,}", f"{alerts[characteristic, stream]:,}")
-        for characteristic, stream, subgroups in played.streams
+        (
+            each.characteristic,
+            each.stream or "-",
+            f"{each.subgroups:,}",
+            f"{alerts[each.characteristic, each.stream]:,}",
+        )
+        for each in played.streams
     ]
     if rows:
         yield from _table(("characteristic", "stream", "subgroups", "alerts"), rows[:_STREAMS])
@@ -93,11 +78,56 @@ def _streams(played: Played) -> Iterator[str]:
         yield f"  No reading of {', '.join(played.unread)} was used."
 
 
+def _unjudged(played: Played) -> Iterator[str]:
+    """Silence of what nobody judged is no good news."""
+    by_name: dict[str, list[PlayedStream]] = {}
+    for each in played.streams:
+        by_name.setdefault(each.characteristic, []).append(each)
+    for name, streams in by_name.items():
+        total = sum(each.subgroups for each in streams)
+        judged = sum(each.judged for each in streams)
+        adopted = [each.adopted for each in streams if each.adopted is not None]
+        if judged == total and not adopted:
+            continue
+        part = "none" if not judged else f"{judged:,}"
+        yield f"{name}: {part} of {total:,} subgroups {'were' if judged > 1 else 'was'} judged."
+        if adopted:
+            first, last = _clock(min(adopted)), _clock(max(adopted))
+            when = f"at {first}" if first == last else f"from {first} to {last}"
+            yield (
+                f"  a baseline was learned and adopted for {len(adopted):,} of "
+                f"{_counted(len(streams), 'stream')}, {when}"
+            )
+        whys: dict[str, list[str]] = {}
+        for each in streams:
+            if each.why is not None:
+                whys.setdefault(each.why, []).append(each.stream)
+        for why, names in list(whys.items())[:_WHYS]:
+            whose = "" if len(names) == len(streams) else f"{_named(names)}: "
+            yield f"  {whose}{why}"
+        more = sum(map(len, list(whys.values())[_WHYS:]))
+        if more:
+            yield f"  … and {_counted(more, 'more stream')} not judged (--json has them all)"
+
+
+def _named(streams: Sequence[str]) -> str:
+    return streams[0] if len(streams) == 1 else f"{streams[0]} and {len(streams) - 1:,} more"
+
+
+def _counted(count: int, noun: str) -> str:
+    return f"{count:,} {noun}" if count == 1 else f"{count:,} {noun}s"
+
+
 def _rules(played: Played) -> Iterator[str]:
     raised = sum(played.raised.values())
     signals = f"{played.counts.signals:,} signals"
+    judged = sum(each.judged for each in played.streams)
+    if not judged:
+        yield "No alert could be raised: no subgroup was judged."
+        return
     if not raised:
-        yield f"No alert was raised; {signals}."
+        among = "" if judged == played.counts.subgroups else f" by the {judged:,} that were judged"
+        yield f"No alert was raised{among}; {signals}."
         return
     every = ""
     if played.first is not None and played.last is not None and played.last > played.first:
@@ -127,12 +157,6 @@ def _table(header: tuple[str, ...], rows: Sequence[tuple[str, ...]]) -> Iterator
             for title, cell, width in zip(header, row, widths, strict=True)
         ]
         yield "  " + "  ".join(cells).rstrip()
-
-
-def _shown(example: SetAside) -> str:
-    text = example.payload.decode("utf-8", "backslashreplace")
-    cut = repr(text if len(text) <= _EXAMPLE else text[:_EXAMPLE] + "…")
-    return f"{example.topic or example.characteristic or 'a row'} {cut}"
 
 
 def _clock(moment: int) -> str:

@@ -28,6 +28,9 @@ from monitor.plan import CusumPlan, DetectorPlan, EwmaPlan, Scheme, ShewhartPlan
 UNLUCKY = 0.10
 """The part of resamples that does worse than what is told."""
 
+BROKEN = 0.1
+"""Of the promise, below which it is none: what was to ring once in ten shifts rings in each."""
+
 _SHIFTS, _RATIOS = 9, 5
 _STREAMS = 12
 """Of so many streams the run lengths are computed; of more, of so many among them."""
@@ -55,6 +58,16 @@ class Delivered:
     of_skewness: float
     subgroups: float
     left_out: tuple[str, ...]
+
+    @property
+    def broken(self) -> bool:
+        """Whether such a baseline may keep next to nothing."""
+        return self.unlucky < BROKEN
+
+    @property
+    def rings(self) -> float:
+        """Subgroups of all streams between false alarms, in the unlucky tenth."""
+        return self.unlucky * self.subgroups
 
 
 def delivered(

@@ -18,6 +18,7 @@ from monitor.methods.estimates import Components
 from monitor.methods.f_ratio import Comparison, compare, f_cdf, f_sf
 from monitor.methods.normal import Array
 from monitor.methods.shape import Shape, shape
+from monitor.methods.split import split
 from monitor.methods.wander import Wander, wander
 from monitor.plan import Stream
 
@@ -29,6 +30,8 @@ DIFFER = 0.01
 """The chance below which streams count as different."""
 _ALIKE, _DOUBT = 1.02, 0.001
 """Inflation worth speaking of, and the chance below which means count as following each other."""
+_ALIKE_MOVED = 0.5
+"""A stream moved with the one that moved most where a cut explains half as much in it."""
 _APART = 1.2
 """The ratio of variances from which on it matters that they differ."""
 
@@ -79,6 +82,16 @@ class StreamEstimate:
 
 
 @dataclass(frozen=True, slots=True)
+class Moved:
+    """From event time ``time`` (µs) on, means of ``stream`` lay ``by`` (its unit) off those before:
+    the best cut in two, whether the centre stepped or crept."""
+
+    stream: Stream
+    time: int
+    by: float
+
+
+@dataclass(frozen=True, slots=True)
 class Estimate:
     """All streams. ``common`` are values for all of them together.
 
@@ -86,7 +99,8 @@ class Estimate:
     other more than chance explains; ``inflation``: then, by how much the variance of a long mean is
     that of independent ones. ``heads`` compares the streams' means, None where there is but one;
     ``differ`` says whether means or spreads of streams do. ``shape`` is of the standardised means.
-    ``between`` is how sigma_between was estimated.
+    ``moved``, where the centre seems to wander: the streams that moved, the one that did so most
+    first. ``between`` is how sigma_between was estimated.
     """
 
     each: tuple[StreamEstimate, ...]
@@ -100,6 +114,7 @@ class Estimate:
     spread_ratio: float
     shape: Shape | None
     wander: Wander | None
+    moved: tuple[Moved, ...]
     first: int
     last: int
     between: BetweenBy
@@ -118,6 +133,13 @@ class Estimate:
     def by_stream(self) -> dict[Stream, Values]:
         """A baseline for each stream."""
         return {each.stream: each.values for each in self.each}
+
+    @property
+    def weakest(self) -> Stream | None:
+        """The stream whose own baseline has least behind it; None where all have one together."""
+        if not self.differ or len(self.each) < 2:
+            return None
+        return min(self.each, key=lambda each: each.effective).stream
 
     @property
     def least_effective(self) -> float:
@@ -151,6 +173,7 @@ def estimate(
         inflation,
     )
     spread_ratio, spreads_differ = _compare_spreads(each)
+    found = wander([z for z in standard if z.any()])
     return Estimate(
         each,
         _common(streams, each, sigma, between, single),
@@ -162,7 +185,8 @@ def estimate(
         (heads is not None and heads.p < DIFFER) or spreads_differ,
         spread_ratio,
         _shape_of_means(streams, inflation),
-        wander([z for z in standard if z.any()]),
+        found,
+        _moved(streams) if found is not None and found.may_wander else (),
         min(int(s.time[0]) for s in streams),
         max(int(s.time[-1]) for s in streams),
         between,
@@ -183,6 +207,18 @@ def behaving(all_of: Estimate, inside: Estimate) -> Estimate:
         spread_ratio=inside.spread_ratio,
         shape=inside.shape,
         wander=inside.wander,
+        moved=inside.moved,
+    )
+
+
+def _moved(streams: Sequence[StreamSubgroups]) -> tuple[Moved, ...]:
+    """Those that moved about as much as the one that moved most."""
+    cuts = [(cut, each) for each in streams if (cut := split(each.mean)) is not None]
+    cuts.sort(key=lambda found: -found[0].share)
+    return tuple(
+        Moved(each.stream, int(each.time[cut.index]), cut.by)
+        for cut, each in cuts
+        if cut.share >= _ALIKE_MOVED * cuts[0][0].share
     )
 
 

@@ -9,7 +9,7 @@ from __future__ import annotations
 import math
 from collections.abc import Iterator
 
-from monitor import times
+from monitor import stream_names, times
 from monitor.baselining.delivered import Delivered
 from monitor.baselining.demands import ENOUGH, LEAST, NEARLY, SHIFT
 from monitor.baselining.estimating import Estimate
@@ -28,7 +28,8 @@ _HEAVY = 1.0
 def amount(estimate: Estimate) -> Iterator[Reason]:
     """Is there enough of it?"""
     effective = math.floor(estimate.least_effective)
-    whose = "a stream has" if estimate.differ and len(estimate.each) > 1 else "there are"
+    weakest = estimate.weakest
+    whose = "there are" if weakest is None else f"{stream_names.name(weakest)} has"
     worth = (
         f" (successive ones follow each other, so the {estimate.subgroups:,} are worth fewer)"
         if estimate.inflation > 1.05
@@ -40,9 +41,7 @@ def amount(estimate: Estimate) -> Iterator[Reason]:
             "few",
             f"{whose} only {effective:,} independent subgroups to estimate from{worth}; "
             f"{ENOUGH:,} are enough",
-            "record for longer"
-            if effective < LEAST
-            else "use it for now, and estimate again from a longer recording",
+            "record for longer" if effective < LEAST else "estimate again from a longer recording",
         )
     span = estimate.last - estimate.first
     if span < NEARLY * SHIFT:
@@ -126,11 +125,28 @@ def rest(estimate: Estimate, left_out: int, delivered: Delivered | None) -> Iter
     if delivered is not None and delivered.of_estimation < _LITTLE:
         yield Reason(
             "provisional",
-            "promise",
+            "long-promise",
             "with so long an interval between false alarms, an estimate from this recording "
             f"may keep only {part(delivered.of_estimation)} of it",
             "estimate from a longer recording, or ask for no longer an interval than you need",
         )
+
+
+def promise(delivered: Delivered | None) -> Iterator[Reason]:
+    """May the configured detectors be put on the line with it?"""
+    if delivered is None or not delivered.broken:
+        return
+    longer = delivered.of_estimation <= min(delivered.of_following, delivered.of_skewness)
+    yield Reason(
+        "provisional",
+        "promise",
+        "with the configured detectors it may ring as often as once in "
+        f"{spans.number(delivered.rings)} subgroups instead of {spans.number(delivered.subgroups)}",
+        "first estimate from a longer recording"
+        if longer
+        else "first let `driftbell-replay tune` find detectors that keep the promise on this "
+        "recording",
+    )
 
 
 def skewed(estimate: Estimate) -> bool:

@@ -11,7 +11,7 @@ from monitor.baselining.delivered import Delivered
 from monitor.baselining.estimating import Estimate
 from monitor.baselining.material import Clues
 from monitor.baselining.outside import Found
-from monitor.baselining.reason import Reason, gravest_first
+from monitor.baselining.reason import Reason, gravest_first, word
 
 _CONSTANT = Reason(
     "refuse",
@@ -32,17 +32,30 @@ def reasons(
     """Every reason, the gravest first; ``left_out`` subgroups were left out by hand."""
     if any(each.values.sigma <= 0 for each in estimate.each):
         return (_CONSTANT,)
-    return gravest_first(
-        [
-            *process_reasons.wander(estimate),
-            *process_reasons.mixed(estimate, clues),
-            *recording_reasons.amount(estimate),
-            *recording_reasons.strangers(estimate, outside),
-            *recording_reasons.resolution(estimate, clues, unit),
-            *process_reasons.following(estimate, delivered),
-            *recording_reasons.form(estimate, outside, delivered),
-            *process_reasons.between(estimate),
-            *process_reasons.heads(estimate),
-            *recording_reasons.rest(estimate, left_out, delivered),
-        ]
-    )
+    if word(found := _found(estimate, outside, left_out, clues, delivered, unit)) == "refuse":
+        # What a promise costs is no question where there is no baseline.
+        found = _found(estimate, outside, left_out, clues, None, unit)
+    return gravest_first(found)
+
+
+def _found(
+    estimate: Estimate,
+    outside: Found,
+    left_out: int,
+    clues: Clues,
+    delivered: Delivered | None,
+    unit: str,
+) -> list[Reason]:
+    return [
+        *recording_reasons.promise(delivered),
+        *process_reasons.wander(estimate, unit),
+        *process_reasons.mixed(estimate, clues),
+        *process_reasons.following(estimate, delivered),
+        *recording_reasons.amount(estimate),
+        *recording_reasons.strangers(estimate, outside),
+        *recording_reasons.resolution(estimate, clues, unit),
+        *recording_reasons.form(estimate, outside, delivered),
+        *process_reasons.between(estimate),
+        *process_reasons.heads(estimate),
+        *recording_reasons.rest(estimate, left_out, delivered),
+    ]

@@ -21,11 +21,11 @@ from monitor.configuration.problems import ConfigurationError
 from monitor.configuration.resolve import read_plan
 from monitor.plan import CharacteristicPlan, DetectorPlan, Plan, Stream
 from monitor.progress import Progress
-from replay import baseline_file, baseline_words
+from replay import baseline_file, baseline_words, set_aside_words
 from replay.baseline import Choices, Estimated, baseline
 from replay.baseline_json import as_json
 from replay.commands import inputs
-from replay.readings import Gathered, Readings, gather, sha256
+from replay.readings import Gathered, gather, sha256
 from replay.recordings import Recording
 
 
@@ -82,7 +82,7 @@ def main(args: argparse.Namespace) -> int:
         progress(lambda: "estimating…")
         _complain(gathered)
         detectors = _Detectors(args.config, plan.name)
-        estimated = _estimated(gathered.readings[plan.name], choices, detectors)
+        estimated = _estimated(gathered, plan, choices, detectors)
     finally:
         progress.clear()
     refused = estimated.assessment.verdict == "refuse"
@@ -185,15 +185,27 @@ def _complain(gathered: Gathered) -> None:
         print(note, file=sys.stderr)
 
 
-def _estimated(readings: Readings, choices: Choices, detectors: _Detectors) -> Estimated:
+def _estimated(
+    gathered: Gathered, plan: CharacteristicPlan, choices: Choices, detectors: _Detectors
+) -> Estimated:
+    readings = gathered.readings[plan.name]
     try:
         return baseline(readings, choices, detectors)
     except ValueError:
-        aside = ", ".join(f"{reason} {count:,}" for reason, count in readings.set_aside.items())
-        raise CommandError(
-            f"no stream of {readings.plan.name} has two subgroups to estimate from: of "
-            f"{readings.count:,} readings used; set aside: {aside or 'none'}"
-        ) from None
+        pass
+    wrong = [f"no stream of {plan.name} has two subgroups to estimate from"]
+    used = readings.count
+    wrong.append(f"  {used:,} {'reading was' if used == 1 else 'readings were'} used")
+    # Of a recording that holds other characteristics too, most is nobody's here.
+    aside = readings.set_aside if used else readings.set_aside | gathered.unclaimed
+    if aside:
+        wrong[-1] += f"; set aside {sum(aside.values()):,}:"
+        wrong += set_aside_words.lines(aside, gathered.set_aside_at)
+    elif not used:
+        wrong[-1] += ": the recording holds nothing of it"
+    if not used and "no-topic" in aside:
+        wrong.append(f"  {plan.name} listens to {plan.source.topic}")
+    raise CommandError("\n".join(wrong))
 
 
 def _write(args: argparse.Namespace, estimated: Estimated, choices: Choices) -> None:
@@ -212,11 +224,9 @@ def _show(args: argparse.Namespace, estimated: Estimated) -> None:
         document = as_json(estimated, written)
         sys.stdout.buffer.write(orjson.dumps(document, option=orjson.OPT_APPEND_NEWLINE))
         return
-    found = estimated.assessment.estimate
-    seconds = (found.last - found.first) / times.SECOND
     lines = [
         *baseline_words.verdict(estimated),
-        *baseline_words.body(estimated, found.subgroups / seconds if seconds else None),
+        *baseline_words.body(estimated),
         "",
         *baseline_words.next_steps(
             estimated, written, _as_named(args.config, args.to) if args.to else None, args.config

@@ -10,10 +10,11 @@ import os
 import sys
 from contextlib import ExitStack
 from pathlib import Path
+from typing import Any
 
 import orjson
 
-from monitor import files
+from monitor import files, times
 from monitor.commandline import COULD_NOT, DONE, WRONG, CommandError
 from monitor.configuration.problems import ConfigurationError
 from monitor.configuration.resolve import read_plan
@@ -94,6 +95,24 @@ def _complain(played: Played) -> None:
         print(note, file=sys.stderr)
 
 
+def _judged(played: Played) -> dict[str, Any]:
+    """By characteristic: how many subgroups there were, how many of them were judged, why streams
+    are not, and from when on by what they learned."""
+    found: dict[str, dict[str, Any]] = {
+        name: {"subgroups": 0, "judged": 0, "why_not": {}, "adopted": {}}
+        for name in sorted({each.characteristic for each in played.streams} | set(played.unread))
+    }
+    for each in played.streams:
+        own = found[each.characteristic]
+        own["subgroups"] += each.subgroups
+        own["judged"] += each.judged
+        if each.why is not None:
+            own["why_not"][each.stream] = each.why
+        if each.adopted is not None:
+            own["adopted"][each.stream] = times.format_time(each.adopted)
+    return found
+
+
 def _json(played: Played) -> bytes:
     counts = played.counts
     return orjson.dumps(
@@ -107,6 +126,7 @@ def _json(played: Played) -> bytes:
             "missing": counts.missing,
             "signals": counts.signals,
             "alerts": counts.alerts,
+            "judged": _judged(played),
             "seconds": round(played.seconds, 6),
         },
         option=orjson.OPT_APPEND_NEWLINE,

@@ -4,7 +4,8 @@ from __future__ import annotations
 
 import numpy as np
 import pytest
-from streams import SHEWHART, assessed, following, gathered, heads, kinds
+from plans import START
+from streams import MINUTE, SHEWHART, assessed, following, gathered, heads, kinds
 
 from monitor.baselining.material import Clues
 from monitor.methods.cycles import cycle
@@ -51,6 +52,46 @@ def test_one_step_in_the_middle_is_refused(chance: np.random.Generator) -> None:
     readings[2000:] += 0.5
 
     assert kinds(assessed(gathered(readings)))["wander"] == "refuse"
+
+
+def test_who_moved_and_when_is_told(chance: np.random.Generator) -> None:
+    readings = [chance.normal(size=(4000, 5)) for _ in range(3)]
+    readings[1][1000:] += 1.2
+    found = assessed(*heads(*readings))
+
+    (moved,) = found.estimate.moved
+    assert moved.stream == (("head", "2"),)
+    assert moved.by == pytest.approx(1.2, abs=0.1)
+    assert abs(moved.time - (START + 1001 * MINUTE)) < 5 * MINUTE
+    (why,) = (each.found for each in found.reasons if each.kind == "wander")
+    assert "head=2 by +1.2 g from about 2026-03-0" in why
+
+
+def test_the_stream_with_too_little_is_named(chance: np.random.Generator) -> None:
+    long, short = chance.normal(size=(2000, 5)), chance.normal(1, size=(52, 5))
+    found = assessed(*heads(long, short))
+
+    (why,) = (each.found for each in found.reasons if each.kind == "few")
+    assert why.startswith("head=2 has only 5")
+
+
+def test_a_promise_of_which_little_is_left_comes_first(chance: np.random.Generator) -> None:
+    found = assessed(gathered(following(chance, 0.5, 20_000)))
+
+    assert found.verdict == "provisional"
+    assert (found.reasons[0].kind, found.reasons[1].kind) == ("promise", "following")
+    assert "driftbell-replay tune" in found.reasons[0].do
+    few = assessed(gathered(chance.normal(size=(60, 5)), every=10**10))
+    assert few.reasons[0].do == "first estimate from a longer recording"
+
+
+def test_of_what_is_refused_no_promise_is_told(chance: np.random.Generator) -> None:
+    steps = np.cumsum(chance.normal(size=5000)) * 0.02
+    found = assessed(gathered(chance.normal(size=(5000, 5)) + steps[:, None]))
+
+    assert found.verdict == "refuse"
+    assert not {"promise", "long-promise"} & kinds(found).keys()
+    assert not any("of the promise" in each.found for each in found.reasons)
 
 
 @pytest.mark.parametrize("correlation", [0.3, 0.5, 0.8])

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import hashlib
 import json
+import re
 from pathlib import Path
 from typing import Any
 
@@ -11,6 +12,7 @@ import numpy as np
 import pytest
 import yaml
 from plans import START
+from scipy.signal import lfilter
 
 from monitor.__main__ import main as driftbell
 from monitor.configuration.resolve import read_plan
@@ -164,6 +166,41 @@ def test_few_readings_are_provisional_and_say_so_in_the_file(
     assert "200 independent subgroups" in note
 
 
+def test_a_promise_that_does_not_hold_is_the_headline(
+    bench: Bench, chance: np.random.Generator, capsys: pytest.CaptureFixture[str]
+) -> None:
+    # Each head's fill follows itself, subgroup after subgroup: an AR(1), its coefficient 0.7.
+    heads = {}
+    for head in ("1", "2"):
+        fill = lfilter([1], [1, -0.7], chance.normal(size=3000)).repeat(5)
+        heads[head] = 341.2 + fill + chance.normal(0, 1.9, len(fill))
+    bench.record(heads)
+
+    assert bench.run() == 0
+
+    said = " ".join(capsys.readouterr().out.split())
+    assert said.startswith("Provisional: centre and spread may be used for now, but not with these")
+    headline = said.partition(" - ")[0]
+    assert re.search(r"as often as once in [\d.]+ (min|h) with nothing wrong, instead of", headline)
+    assert "First let `driftbell-replay tune`" in headline
+    assert "But not yet with these detectors" in said
+    assert "it may ring as often as once in" in bench.written()["origin"]["note"]
+
+
+def test_where_nobody_listens_is_said(bench: Bench, capsys: pytest.CaptureFixture[str]) -> None:
+    bench.recording = bench.recording.with_suffix(".jsonl")
+    topic = "plant/jar-line-2/checkweigher-2"
+    line = json.dumps({"time": START / SECOND, "topic": topic, "payload": {"net": 341}})
+    bench.recording.write_text(f"{line}\n" * 3)
+
+    assert bench.run() == 1
+
+    said = capsys.readouterr().err
+    assert "0 readings were used; set aside 3:" in said
+    assert f"week-9.jsonl:1: {topic} " in said
+    assert "net-weight listens to plant/jar-line-2/checkweigher\n" in said
+
+
 def test_a_refused_baseline_is_not_written(
     bench: Bench, chance: np.random.Generator, capsys: pytest.CaptureFixture[str]
 ) -> None:
@@ -177,6 +214,9 @@ def test_a_refused_baseline_is_not_written(
     assert said.startswith("Refused")
     assert "the centre does not stay" in said.casefold()
     assert "Nothing is written" in said
+    assert "for now" not in said
+    assert "promise" not in said
+    assert "Nothing was found" not in said
     assert bench.baseline.read_text() == "as it was"
 
 
@@ -342,7 +382,9 @@ def test_of_several_characteristics_one_is_named(
     assert "--characteristic" in capsys.readouterr().err
     assert bench.run("--characteristic", "net-weight") == 0
     assert bench.run("--characteristic", "cap-torque") == 1
-    assert "no stream of cap-torque" in capsys.readouterr().err
+    said = capsys.readouterr().err
+    assert "no stream of cap-torque" in said
+    assert "the recording holds nothing of it" in said
 
 
 def test_it_does_not_become_a_part_of_the_configuration(

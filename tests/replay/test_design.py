@@ -192,6 +192,11 @@ def test_a_wrong_command_line_says_what_to_do(
     assert output.out == ""
 
 
+def test_a_run_length_that_is_too_much_to_compute(capsys: pytest.CaptureFixture[str]) -> None:
+    assert main(["design", "--ewma", "0.001,20"]) == 1
+    assert "lambda 0.001 is too small" in capsys.readouterr().err
+
+
 def test_an_interval_no_detector_has(capsys: pytest.CaptureFixture[str]) -> None:
     assert main(["design", "--catch", "1", "--run-length", "1.1"]) == 1
     assert "no cusum that is to catch 1" in capsys.readouterr().err

@@ -11,9 +11,11 @@ import select
 import subprocess
 import sys
 from collections.abc import Callable
+from datetime import UTC, datetime, timedelta
 from pathlib import Path
 from typing import Any
 
+import numpy as np
 import pytest
 
 from replay.__main__ import main
@@ -143,7 +145,56 @@ def test_json_counts(play: Play, config: str, write: Callable[[str, str], str]) 
         "missing": 3,
         "signals": 2,
         "alerts": 1,
+        "judged": {"net-weight": {"subgroups": 3, "judged": 3, "why_not": {}, "adopted": {}}},
     }
+
+
+def learning(write: Callable[[str, str], str], **baseline: object) -> str:
+    weight = DOCUMENT["characteristics"]["net-weight"] | {"baseline": baseline}
+    weight["source"] = weight["source"] | {"expected_rate": "2/min"}
+    return write("learn.yaml", json.dumps(DOCUMENT | {"characteristics": {"net-weight": weight}}))
+
+
+def test_silence_of_what_nobody_judged_is_no_good_news(
+    play: Play, write: Callable[[str, str], str], recording: str
+) -> None:
+    config = learning(write, learn=1000)
+
+    status, out, _ = play(config, recording)
+
+    assert status == 0
+    assert "net-weight: none of 4 subgroups was judged.\n  learning a baseline: 4 of 1000" in out
+    assert "No alert could be raised: no subgroup was judged." in out
+    told = counted(play, config, recording)["judged"]["net-weight"]
+    assert (told["subgroups"], told["judged"]) == (4, 0)
+    assert told["why_not"]["head=4;lane=1"].startswith("learning a baseline")
+
+
+@pytest.mark.parametrize("every", [30, 20])
+def test_from_when_on_a_learned_baseline_judges(
+    play: Play, write: Callable[[str, str], str], every: int
+) -> None:
+    # A thousand readings are enough where they reach over the 8 h that are asked for besides.
+    config = learning(write, learn=1000, over_at_least="8h", adopt=True)
+    values = np.random.default_rng(5).normal(340, 1, 1500)
+    start = datetime(2026, 3, 2, tzinfo=UTC)
+    moments = [start + timedelta(seconds=every * at) for at in range(len(values))]
+    rows = [
+        f"1,4,{at},{moment:%Y-%m-%dT%H:%M:%S}Z,{value:.3f}"
+        for at, (moment, value) in enumerate(zip(moments, values.tolist(), strict=True))
+    ]
+    path = write("day.csv", "\n".join(["lane,head,sequence,time,value", *rows]))
+
+    learned = max(1000, 8 * 3600 // every + 1)
+    told = counted(play, config, path)["judged"]["net-weight"]
+
+    assert told["judged"] == 1500 - learned
+    assert told["why_not"] == {}
+    adopted = datetime.fromisoformat(told["adopted"]["head=4;lane=1"])
+    assert adopted == moments[learned - 1]
+    out = play(config, path)[1]
+    assert f"net-weight: {1500 - learned} of 1,500 subgroups were judged." in out
+    assert f"adopted for 1 of 1 stream, at {adopted:%Y-%m-%d %H:%M:%S}Z" in out
 
 
 def test_a_table_gives_the_alerts_that_its_messages_gave(
