@@ -21,6 +21,9 @@ from monitor.solving import UnsolvableError
 _DIGITS = 7
 """Of a learned figure: more than any recording tells, and few enough to be written down."""
 
+_LEAST = 1e-100
+"""Of a sigma, as a configuration takes it: the square of a smaller one would be lost."""
+
 
 @dataclass(frozen=True, slots=True)
 class Proposed:
@@ -40,7 +43,11 @@ def propose(
 
     def detectors(baselines: Baselines) -> Callable[[Stream], tuple[DetectorPlan, ...]]:
         try:
-            judged = judgement(*_values(baselines, stream), learn.detectors)
+            values = _values(baselines, stream)
+            if values[1] < _LEAST:
+                wrong = f"a sigma of {values[1]:.2g} is too small to reckon with"
+                raise UnsolvableError("", wrong, "look whether the gauge is stuck")
+            judged = judgement(*values, learn.detectors)
         except UnsolvableError as error:
             unsolvable.append(error)
             return lambda _: ()
@@ -50,7 +57,8 @@ def propose(
     reasons = found.reasons
     if unsolvable:
         (error,) = unsolvable
-        wrong = f"its detectors cannot be worked out from it: {error.key} {error.wrong}"
+        why = f"{error.key} {error.wrong}".lstrip()
+        wrong = f"its detectors cannot be worked out from it: {why}"
         reasons = (Reason("refuse", "unsolvable", wrong, error.instead), *reasons)
     verdict = "refuse" if unsolvable else found.verdict
     mean, sigma, between = _values(found.baselines, stream)

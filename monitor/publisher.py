@@ -8,6 +8,8 @@ from __future__ import annotations
 from collections.abc import Sequence
 from typing import Protocol
 
+import structlog
+
 from monitor import health, messages, times
 from monitor.engine import Engine
 from monitor.explaining import evidence
@@ -18,6 +20,8 @@ from monitor.outbox import Outbox
 from monitor.outputs import Alert, Gone, Output, Points, SetAside
 from monitor.stream import StreamState
 from monitor.throttle import Throttle
+
+log = structlog.get_logger()
 
 _IN_FLIGHT = 1_000
 _MOST_WAITING = 10_000
@@ -131,6 +135,14 @@ class Publisher:
             proposal = state.learning.proposal
             if proposal is not self._proposals.get(state):
                 self._proposals[state] = proposal
+                if proposal is not None:
+                    log.info(
+                        "baseline proposed",
+                        stream=path,
+                        verdict=proposal["verdict"],
+                        adopted=proposal["adopted"],
+                        why=proposal["reasons"][0]["found"] if proposal["reasons"] else None,
+                    )
                 said = b"" if proposal is None else messages.encode(proposal)
                 link.publish(f"{self._root}/baseline/{path}", said, retain=True)
 

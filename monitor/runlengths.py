@@ -37,6 +37,8 @@ _NARROWEST = 150.0
 _LEAST_INTERVAL = 0.5
 """Of a CUSUM that is solved: below, its h would be no more than the room left to a single point."""
 
+_TRIES = 30
+
 _FARTHEST = 30
 """Points that zone rules may look back at in a simulation; some seconds as well."""
 
@@ -55,10 +57,9 @@ def run_length(
     """Average run length of ``scheme`` on subgroups of ``size`` after a ``shift`` of the mean, the
     spread of readings being ``ratio`` times the baseline's.
 
-    A chart of spread does not see the shift, one of location is not asked about the ratio. The clip
-    of an EWMA, which lengthens its run length a little, is left out. Raises ValueError for what
-    takes too long to compute: a CUSUM of an h, an EWMA of a lambda or zone rules of a reach beyond
-    use.
+    A chart of spread does not see the shift, one of location is not asked about the ratio. Raises
+    ValueError for what takes too long to compute: a CUSUM of an h, an EWMA of a lambda or zone
+    rules of a reach beyond use.
     """
     match scheme:
         case CusumPlan(chart="variance"):
@@ -84,6 +85,7 @@ def run_length(
                     shift,
                     direction=scheme.direction,
                     asymptotic=scheme.asymptotic,
+                    clip=scheme.clip,
                 )
             )
         case ShewhartPlan(chart="range" | "sd" | "variance" as statistic):
@@ -163,6 +165,7 @@ def solve(
     direction: Side = "both",
     head_start: float = 0.0,
     asymptotic: bool = False,
+    clip: float | None = None,
 ) -> Scheme:
     """The detector of that ``kind`` for a shift of ``catch`` whose run length is ``interval`` while
     the mean is off by ``ignore``; both are sizes, towards the direction watched, ``catch`` larger.
@@ -170,7 +173,7 @@ def solve(
     CUSUM: k midway between the two (E. S. Page 1954; optimal by G. V. Moustakides 1986), h solved;
     for a shift beyond all single points a smaller k, so that there is an h.
     EWMA: the λ that signals ``catch`` soonest, width solved. Shewhart: the normal quantile,
-    whatever ``catch`` is. ValueError where no setting has that interval.
+    whatever ``catch`` is. ``clip`` as planned. ValueError where no setting has that interval.
     """
     off = -ignore if direction == "down" else ignore
     match kind:
@@ -181,14 +184,16 @@ def solve(
             k = (catch + ignore) / 2
             k = most if ignore < most < k else k
             h = cusum.decision_interval(
-                k, interval, off, direction=direction, head_start=head_start
+                k, interval, off, direction=direction, head_start=head_start, clip=clip
             )
-            return CusumPlan("mean", k, h, head_start, direction=direction)
+            return CusumPlan("mean", k, h, head_start, clip, direction=direction)
         case "ewma":
             sides: Side = "both" if direction == "both" else "up"
             lam = ewma.best_weight(catch, interval, ignore, direction=sides)
-            width = ewma.width_for(lam, interval, off, direction=direction, asymptotic=asymptotic)
-            return EwmaPlan("mean", lam, width, asymptotic, direction=direction)
+            width = ewma.width_for(
+                lam, interval, off, direction=direction, asymptotic=asymptotic, clip=clip
+            )
+            return EwmaPlan("mean", lam, width, asymptotic, clip, direction=direction)
         case "shewhart":
             width = shewhart.width_for(interval, off, direction=direction)
             return ShewhartPlan("mean", width, (RulePlan("outside", width),), direction)
@@ -237,13 +242,15 @@ def solve_variance(
         return CusumPlan("variance", k, h, head_start, direction=direction, size=size)
     each_side = 2 * interval
     plan = both(each_side)
-    while head_start:  # what the start of both sums costs is not shared out evenly
+    if not head_start:
+        return plan
+    for _ in range(_TRIES):  # what the start of both sums costs is not shared out evenly
         excess = run_length(plan, size=size).subgroups / interval
         if abs(excess - 1) <= 1e-5:
-            break
+            return plan
         each_side /= excess
         plan = both(each_side)
-    return plan
+    raise ValueError("no setting gives that run length")
 
 
 def solve_spread_chart(
@@ -281,7 +288,7 @@ def quantile(
 
     Two sides are taken as independent, which they are but for shifts that neither tells from
     nothing wrong; a moving range's signals and those of rules that are simulated as coming at
-    random. The clip of a CUSUM or an EWMA is left out. ValueError as of :func:`run_length`.
+    random. ValueError as of :func:`run_length`, and where signals are too rare.
     """
     match scheme:
         case CusumPlan(chart="variance"):
@@ -289,7 +296,10 @@ def quantile(
             return either_until(waits, probability)
         case CusumPlan():
             sides = {"both": (shift, -shift), "up": (shift,), "down": (-shift,)}[scheme.direction]
-            waits = [cusum.wait(scheme.k, scheme.h, each, scheme.head_start) for each in sides]
+            waits = [
+                cusum.wait(scheme.k, scheme.h, each, scheme.head_start, scheme.clip)
+                for each in sides
+            ]
             return either_until(waits, probability)
         case EwmaPlan():
             _refuse_narrow(scheme)
@@ -299,6 +309,7 @@ def quantile(
                 shift,
                 direction=scheme.direction,
                 asymptotic=scheme.asymptotic,
+                clip=scheme.clip,
             )
             return either_until([wait], probability)
         case ShewhartPlan() if not _only_outside(scheme) and rules.exact(scheme.rules):

@@ -23,20 +23,15 @@ class UnsolvableError(ValueError):
 
 
 def solved(intent: Intent, baseline: BaselinePlan) -> Scheme:
-    """The scheme that rings once in ``intent.interval`` subgroups with nothing wrong.
-
-    A clip makes false alarms a little rarer still; it is left out of what is solved. Raises
-    UnsolvableError.
+    """The scheme that rings once in ``intent.interval`` subgroups with nothing wrong; with a clip
+    perhaps more rarely, since run lengths then jump. Raises UnsolvableError.
     """
     if intent.chart in SPREAD:
         return _spread(intent)
     error = standard_error(baseline, intent.size)
     scheme = _location(replace(intent, catch=None, ignore=0.0), *_sizes(intent, error))
     if isinstance(scheme, CusumPlan | EwmaPlan):
-        scheme = replace(scheme, clip=intent.clip, hold=intent.hold)
-        if isinstance(scheme, CusumPlan) and scheme.clip is not None and scheme.clip <= scheme.k:
-            wrong = f"is not above the k that was worked out ({scheme.k:.3g} standard errors)"
-            raise UnsolvableError("clip", wrong, "write a larger one, or leave it out")
+        scheme = replace(scheme, hold=intent.hold)
     return replace(scheme, chart=intent.chart)
 
 
@@ -59,8 +54,13 @@ def _location(intent: Intent, catch: float | None, ignore: float) -> Scheme:
             direction=intent.direction,
             head_start=intent.head_start,
             asymptotic=intent.asymptotic,
+            clip=intent.clip,
         )
     except ValueError:
+        if intent.clip is not None:
+            # Where that has no constants either, it says why.
+            free = _location(replace(intent, clip=None), catch, ignore)
+            raise UnsolvableError("clip", _too_tight(free), _WIDER) from None
         if catch is None:
             raise _too_often() from None
         wrong = f"cannot be told from nothing wrong ({catch:.2g} standard errors of the mean)"
@@ -69,6 +69,16 @@ def _location(intent: Intent, catch: float | None, ignore: float) -> Scheme:
         raise UnsolvableError(
             "catch", wrong, "write a larger one, less to ignore, or gather larger subgroups"
         ) from None
+
+
+_WIDER = "write a larger one, or leave it out"
+
+
+def _too_tight(free: Scheme) -> str:
+    """What is wrong with a clip where the scheme would be ``free`` without it."""
+    if isinstance(free, CusumPlan):
+        return f"leaves too little above the k that was worked out ({free.k:.3g} standard errors)"
+    return "is so small that no average could ever reach its limit"
 
 
 @lru_cache(maxsize=1024)

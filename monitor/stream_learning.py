@@ -14,6 +14,7 @@ from monitor.messages import BaselineMessage
 from monitor.pinning import pinned_judgement
 from monitor.plan import CharacteristicPlan, Judgement, LearnPlan, Stream
 from monitor.proposing import propose
+from monitor.solving import UnsolvableError
 from monitor.subgroups import Subgroup
 
 
@@ -38,8 +39,15 @@ class StreamLearning:
 
     @property
     def told(self) -> str | None:
-        """How far it is, in words; None where nothing is to be learned, or all was."""
-        return None if self._learner is None else self._learner.told
+        """Why it is not judged by what it learns, in words; None where nothing keeps it from that,
+        or it was not asked to."""
+        if self._learner is not None:
+            return self._learner.told
+        if self._plan is not None and self._plan.adopt and self.adopted is None:
+            return "the detectors cannot be worked out from the baseline it learned"
+        if self._plan is not None and self.adopted is None and self.proposal is not None:
+            return "a baseline was proposed and waits to be written down, or for adopt: true"
+        return None
 
     def restart(self) -> None:
         """The gauge is another: gather from nothing."""
@@ -74,11 +82,24 @@ class StreamLearning:
             self._start(plan)
             return
         self._plan = plan
-        if self.adopted is not None:
-            baseline = self.adopted.baseline
-            values = baseline.mean, baseline.sigma, baseline.sigma_between
-            anew = judging.judgement(*values, plan.detectors)
-            self.adopted = pinned_judgement(anew, self.adopted) if plan.adopt else None
+        if self._learner is None and self.proposal is not None:
+            until_now = self.adopted
+            self.adopted = self._adoptable(plan, self.proposal, until_now)
+            if (self.adopted is None) != (until_now is None):
+                self.proposal = {**self.proposal, "adopted": self.adopted is not None}
+
+    def _adoptable(
+        self, plan: LearnPlan, learned: BaselineMessage, now: Judgement | None
+    ) -> Judgement | None:
+        """What a trusted baseline gives under ``plan``, which may be another than it was learned
+        under: that asks for it only now, or for detectors that it cannot give."""
+        if not plan.adopt:
+            return None
+        values = learned["mean"], learned["sigma"], learned["sigma_between"]
+        try:
+            return pinned_judgement(judging.judgement(*values, plan.detectors), now)
+        except UnsolvableError:
+            return None
 
     def state(self) -> list[Any]:
         """What is remembered, as JSON values."""

@@ -28,7 +28,10 @@ from monitor.plan import (
     CharacteristicPlan,
     Chart,
     CusumPlan,
+    DeclaredDetector,
     EwmaPlan,
+    Intent,
+    LearnPlan,
     Plan,
     RulePlan,
     Scheme,
@@ -277,6 +280,44 @@ def test_the_configuration_is_the_one_in_force_then(tmp_path: Path) -> None:
     assert "today it is judged otherwise" in " ".join(lines(found))
     same = journals.write(tmp_path / "same.db", entries[:-1], batch=500)
     assert told(same, event["id"]).unchanged is True
+
+
+def test_by_a_baseline_that_the_stream_learned(tmp_path: Path) -> None:
+    """In the journal it is among what the stream remembers, not in the configuration."""
+    declared = (
+        DeclaredDetector(
+            "cusum", "cusum", Intent("cusum", "mean", 1e4, 3, catch=1.5), '{"detector":1}'
+        ),
+        DeclaredDetector(
+            "spread",
+            "cusum",
+            Intent("cusum", "variance", 1e4, 3, catch_ratio=1.5),
+            '{"detector":2}',
+        ),
+    )
+    learn = LearnPlan(1_000, 8 * 3_600 * SECOND, True, declared)
+    plan = replace(of("learned", CusumPlan("mean", 0.5, 4.0)), judgement=None, learn=learn)
+    chance = random.Random(5)
+    values = [chance.gauss(10.0, 1.0) for _ in range(3_010)]
+    values += [chance.gauss(13.0, 1.0) for _ in range(30)]
+    values += [chance.gauss(10.0, 1.0 if n < 300 else 3.0) for n in range(360)]
+    entries: list[Recorded] = [
+        Started(plans.START),
+        Configured(plans.START, Plan((plan,))),
+        Connected(plans.START, False),
+    ]
+    for n, value in enumerate(values):
+        at = plans.START + 10 * n * SECOND
+        body = {"v": round(value, 3), "t": at / SECOND, "n": n}
+        entries.append(Message(at, plan.source.topic, json.dumps(body).encode()))
+    path = journals.write(tmp_path / "j.db", entries, batch=500)
+    assert {event["detector"] for event in raised(path)} == {"cusum", "spread"}
+    for event in raised(path):
+        found = told(path, event["id"])
+        assert (found.source, found.agrees, found.unchanged) == ("entries", "exactly", True)
+        assert found.judgement is not None
+        assert event["baseline"] is not None
+        assert found.judgement.baseline.mean == event["baseline"]["mean"] != 10.0
 
 
 def test_an_alert_of_the_gauge_has_no_arithmetic(tmp_path: Path) -> None:

@@ -6,6 +6,7 @@ import random
 from dataclasses import replace
 from typing import Any
 
+import numpy as np
 import orjson
 import pytest
 from plans import GAUGE, START, characteristic, fold, reading
@@ -126,7 +127,8 @@ def test_not_asked_to_adopt_it_only_proposes() -> None:
     line = Line(learning(adopt=False))
     line.weigh(weights(1_100))
     assert (line.proposal["verdict"], line.proposal["adopted"]) == ("trust", False)
-    assert line.judging == (False, "no baseline")
+    waits = "a baseline was proposed and waits to be written down, or for adopt: true"
+    assert line.judging == (False, waits)
 
 
 def test_too_few_are_provisional_and_never_adopted() -> None:
@@ -226,6 +228,55 @@ def test_another_detector_judges_by_what_was_learned() -> None:
     assert line.stream.judgement is not None
     assert [each.name for each in line.stream.judgement.detectors] == ["s"]
     assert line.stream.judgement.baseline.mean == mean
+
+
+CATCHING = DeclaredDetector(
+    "cusum", "cusum", Intent("cusum", "individual", 1e5, 1, catch=2.0), '{"detector":2}'
+)
+HOPELESS = DeclaredDetector(
+    "cusum", "cusum", Intent("cusum", "individual", 1e5, 1, catch=0.001), '{"detector":3}'
+)
+
+
+def reload(line: Line, plan: CharacteristicPlan) -> None:
+    line.outputs += line.engine.fold(Configured(START + 100_000 * SECOND, Plan((plan,))))
+
+
+def test_detectors_that_it_cannot_give_wait_for_others() -> None:
+    """What was learned is kept: only the detectors of the new configuration ask too much of it."""
+    line = Line(learning(detectors=(CATCHING,)))
+    line.weigh(weights(1_000))
+    learned = line.stream.judgement
+    reload(line, learning(detectors=(HOPELESS,)))
+    why = "the detectors cannot be worked out from the baseline it learned"
+    assert line.judging == (False, why)
+    assert not line.proposal["adopted"]
+    line.weigh(weights(10, 3), first=5_000)
+    reload(line, learning(detectors=(CATCHING,)))
+    assert line.judging == (True, None)
+    assert line.proposal["adopted"]
+    assert line.stream.judgement == learned
+
+
+def test_a_trusted_proposal_is_adopted_once_that_is_asked_for() -> None:
+    line = Line(learning(adopt=False))
+    line.weigh(weights(1_000))
+    reload(line, learning(adopt=True))
+    assert line.judging == (True, None)
+    assert line.proposal["adopted"]
+    judged = line.stream.judgement
+    assert judged is not None
+    assert judged.baseline.mean == line.proposal["mean"]
+    reload(line, learning(adopt=False))
+    assert (line.judging[0], line.proposal["adopted"]) == (False, False)
+
+
+def test_a_spread_too_small_to_reckon_with_is_refused() -> None:
+    """Of noise of a gauge whose readings are 1e-200: squares of that are nothing."""
+    line = Line(learning(detectors=(CATCHING,)))
+    with np.errstate(divide="ignore", invalid="ignore"):
+        line.weigh(weights(1_000, mean=0.0, sigma=1e-200))
+    assert (line.proposal["verdict"], line.judging[0]) == ("refuse", False)
 
 
 def test_other_readings_are_learned_anew() -> None:

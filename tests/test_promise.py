@@ -129,8 +129,9 @@ def test_what_comes_with_an_intent_is_kept(resolved: Resolved) -> None:
     given = {"kind": "ewma", "catch": 1.5, "clip": 3, "limits": "asymptotic"}
     ewma = scheme(resolved(detectors(given)))
     assert (ewma.clip, ewma.asymptotic) == (3, True)
-    # A clip makes signals rarer, never more frequent.
-    assert runlengths.run_length(cusum).subgroups > SUBGROUPS
+    # A clip makes signals rarer: the promise is met with it, not exceeded.
+    assert runlengths.run_length(cusum).subgroups == pytest.approx(SUBGROUPS, rel=1e-4)
+    assert runlengths.run_length(ewma).subgroups == pytest.approx(SUBGROUPS, rel=2e-3)
 
 
 @pytest.mark.parametrize("ignore", [0.0, 0.3])
@@ -224,6 +225,52 @@ def test_windows_need_to_know_how_many_streams(resolved: Resolved) -> None:
     assert intent.size == 100  # 600 a minute over six streams
 
 
+def test_windows_need_to_know_how_many_readings(resolved: Resolved) -> None:
+    """What is to be caught and ignored is told by standard errors of what a window holds."""
+
+    def change(weight: dict[str, Any]) -> None:
+        weight["subgroup"] = {"window": "60s", "min_size": 3}
+        weight["source"]["expected_streams"] = 6
+        del weight["source"]["expected_rate"]
+
+    with pytest.raises(ConfigurationError) as caught:
+        resolved(change)
+    (problem,) = caught.value.problems
+    assert problem.key == "characteristics.weight.promise.false_alarm_every"
+    assert "expected_rate: in source" in problem.instead
+
+
+def own_for_two(weight: dict[str, Any]) -> None:
+    weight["source"]["expected_streams"] = 6
+    own = {f"head={head};lane=1": {"mean": 341.2, "sigma": 1.9} for head in (1, 2)}
+    weight["baseline"] = {"by_stream": own}
+
+
+def test_streams_that_are_not_judged_share_the_readings(resolved: Resolved) -> None:
+    """Two of six streams are judged: a third of the subgroups, and of the readings in windows."""
+    plan = resolved(own_for_two)
+    assert interval(plan, 0) == pytest.approx(2 * SUBGROUPS / 3)
+
+    def windows(weight: dict[str, Any]) -> None:
+        own_for_two(weight)
+        weight["subgroup"] = {"window": "60s", "min_size": 3}
+
+    plan = resolved(windows)
+    intent = plan.example()[1].detectors[0].intent
+    assert intent is not None
+    assert intent.size == 100
+    assert interval(plan, 0) == pytest.approx(2 * 14 * 24 * 60 * 2)
+
+
+def test_streams_that_will_have_learned_count(resolved: Resolved) -> None:
+    def change(weight: dict[str, Any]) -> None:
+        own_for_two(weight)
+        weight["baseline"] |= {"learn": 1000, "adopt": True}
+        weight["subgroup"] = {"window": "60s", "min_size": 3}
+
+    assert interval(resolved(change), 0) == pytest.approx(2 * 14 * 24 * 60 * 6)
+
+
 REFUSED: list[tuple[str, Change, str, str, str]] = [
     (
         "no promise",
@@ -292,8 +339,30 @@ REFUSED: list[tuple[str, Change, str, str, str]] = [
         "a clip below k",
         detectors({"kind": "cusum", "catch": 7, "clip": 3}),
         "detectors[0].clip",
-        "is not above the k",
+        "leaves too little above the k",
         "leave it out",
+    ),
+    (
+        "an average that never gets there",
+        detectors({"kind": "ewma", "catch": 2, "clip": 0.05}),
+        "detectors[0].clip",
+        "no average could ever reach its limit",
+        "leave it out",
+    ),
+    (
+        "two sums that both begin high",
+        detectors(
+            {
+                "kind": "cusum",
+                "chart": "variance",
+                "catch_ratio": 1.5,
+                "direction": "both",
+                "head_start": 0.9,
+            }
+        ),
+        "detectors[0].head_start",
+        "both sums would be high at first",
+        "such as 0.5",
     ),
     (
         "a promise to ring all the time",

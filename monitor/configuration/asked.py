@@ -62,9 +62,10 @@ class Asked:
     ) -> None:
         self._source, self._subgroup, self._promise = source, subgroup, promise
         self._shares = math.fsum(each.share for each in detectors)
-        gathered, rate, count = planned(subgroup), source.expected_rate, _streams(source, baseline)
-        self._size = pace.usual_size(gathered, rate, count)
-        self._pace = pace.usual_pace(gathered, rate, count)
+        gathered, rate, among = planned(subgroup), source.expected_rate, _shared(source, baseline)
+        self._size = pace.usual_size(gathered, rate, among)
+        self._pace = pace.usual_pace(gathered, rate, among)
+        self._knows_size = isinstance(gathered, ByCount) or rate is not None
 
     @property
     def size(self) -> int:
@@ -79,6 +80,9 @@ class Asked:
         if self._pace.each:
             wrong = "is of all streams together, and nobody wrote down how many there are"
             return [((), wrong, "write expected_streams: in source, such as 6")]
+        if not self._knows_size:
+            wrong = "takes limits for usual windows, and nobody wrote down how many readings come"
+            return [((), wrong, "write expected_rate: in source, such as 600/min")]
         return []
 
     def faults(self, detector: AnyDetector) -> list[Found]:
@@ -143,10 +147,8 @@ class Asked:
                 )
 
 
-def _streams(source: Source, baseline: Baseline) -> int | None:
-    if not source.keys():
-        return 1
+def _shared(source: Source, baseline: Baseline) -> pace.Shared:
     values = baseline.given
-    if values.common is None and values.by_stream:
-        return len(values.by_stream)
-    return source.expected_streams
+    only_those = values.common is None and not (baseline.learn and baseline.adopt)
+    named = len(values.by_stream)
+    return pace.shared(bool(source.keys()), named, only_those, source.expected_streams)

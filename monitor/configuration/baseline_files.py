@@ -89,6 +89,9 @@ def _content(
             return None
     else:
         wrong = f"{shown(node)} is not text"
-    instead = "write the path of a baseline file, relative to the configuration"
+    instead = (
+        "write the path of a baseline file, relative to the configuration; "
+        "`driftbell-replay baseline` makes one"
+    )
     flaws.append(Flaw(path, Problem(node.file, node.line, dotted(path), wrong, instead)))
     return None

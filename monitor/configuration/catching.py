@@ -6,6 +6,7 @@ Must not know words.
 
 from __future__ import annotations
 
+import math
 from dataclasses import dataclass
 from functools import lru_cache
 
@@ -67,9 +68,10 @@ def _quantile(
     scheme: Scheme, shift: float, probability: float, size: int, ratio: float
 ) -> float | None:
     try:
-        return runlengths.quantile(scheme, shift, probability, size=size, ratio=ratio)
+        found = runlengths.quantile(scheme, shift, probability, size=size, ratio=ratio)
     except ValueError:
         return None
+    return found if math.isfinite(found) else None
 
 
 def _delay(plan: CharacteristicPlan, subgroups: float, size: int) -> Delay:
@@ -78,6 +80,7 @@ def _delay(plan: CharacteristicPlan, subgroups: float, size: int) -> Delay:
     if coming is not None and (coming.each or count is not None):
         each = coming.seconds if coming.each or count is None else coming.seconds * count
     subgroup, pieces = plan.subgroup, float(size)
-    if isinstance(subgroup, ByCount) and subgroup.every is not None and rate and count and each:
-        pieces = each * rate / count  # those between the subgroups as well
+    sharing = pace.sharing(plan)
+    if isinstance(subgroup, ByCount) and subgroup.every is not None and rate and sharing and each:
+        pieces = each * rate / sharing  # those between the subgroups as well
     return Delay(subgroups, subgroups * pieces, None if each is None else subgroups * each)

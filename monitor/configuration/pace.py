@@ -26,23 +26,55 @@ def keys(plan: CharacteristicPlan) -> list[str]:
     return sorted([key for _, key in source.captures] + [key for key, _ in source.stream])
 
 
+@dataclass(frozen=True, slots=True)
+class Shared:
+    """How many streams share the readings, and how many of them are judged; None where nobody can
+    know."""
+
+    sharing: int | None
+    judged: int | None
+
+    @property
+    def parts(self) -> float:
+        """Subgroups of all streams to one that is judged."""
+        return 1.0 if self.sharing is None or self.judged is None else self.sharing / self.judged
+
+
+def shared(keyed: bool, named: int, only_those: bool, expected: int | None) -> Shared:
+    """Where ``named`` streams have a baseline of their own, and perhaps ``only_those`` have one;
+    ``expected`` are as many as somebody wrote down. Without stream keys there is one."""
+    if not keyed:
+        return Shared(1, 1)
+    if not (only_those and named):
+        return Shared(expected, expected)
+    return Shared(max(named, expected or 0), named)
+
+
+def _shared(plan: CharacteristicPlan) -> Shared:
+    learned = plan.learn is not None and plan.learn.adopt
+    only_those = plan.judgement is None and not learned
+    return shared(bool(keys(plan)), len(plan.by_stream), only_those, plan.source.expected_streams)
+
+
 def streams(plan: CharacteristicPlan) -> int | None:
-    """How many streams are judged; None where nobody can know."""
-    if not keys(plan):
-        return 1
-    if plan.judgement is None and plan.by_stream:
-        return len(plan.by_stream)
-    return plan.source.expected_streams
+    """How many streams are judged, once all have learned their baselines; None where nobody can
+    know."""
+    return _shared(plan).judged
+
+
+def sharing(plan: CharacteristicPlan) -> int | None:
+    """How many streams share the readings; None where nobody can know."""
+    return _shared(plan).sharing
 
 
 def least_streams(plan: CharacteristicPlan) -> int:
     """How many there will be at least: nobody writes down a key that has one value only."""
-    return streams(plan) or max(2 ** len(keys(plan)), len(plan.by_stream))
+    return sharing(plan) or max(2 ** len(keys(plan)), len(plan.by_stream))
 
 
 def size(plan: CharacteristicPlan) -> int:
     """Readings in a usual subgroup; the fewest it may have where that is unknown."""
-    return usual_size(plan.subgroup, plan.source.expected_rate, streams(plan))
+    return usual_size(plan.subgroup, plan.source.expected_rate, _shared(plan))
 
 
 def in_window(plan: CharacteristicPlan) -> float | None:
@@ -50,7 +82,7 @@ def in_window(plan: CharacteristicPlan) -> float | None:
     subgroup = plan.subgroup
     if not isinstance(subgroup, ByWindow):
         return None
-    return _in_window(subgroup, plan.source.expected_rate, streams(plan))
+    return _in_window(subgroup, plan.source.expected_rate, _shared(plan).sharing)
 
 
 def takes(plan: CharacteristicPlan) -> float | None:
@@ -63,29 +95,30 @@ def takes(plan: CharacteristicPlan) -> float | None:
 
 def pace(plan: CharacteristicPlan) -> Pace | None:
     """How often subgroups come; None without an expected rate, a window or ``every``."""
-    return usual_pace(plan.subgroup, plan.source.expected_rate, streams(plan))
+    return usual_pace(plan.subgroup, plan.source.expected_rate, _shared(plan))
 
 
-def usual_size(subgroup: SubgroupPlan, rate: float | None, count: int | None) -> int:
-    """``size`` of ``count`` streams with so many readings a second together."""
+def usual_size(subgroup: SubgroupPlan, rate: float | None, among: Shared) -> int:
+    """``size`` of streams with so many readings a second together."""
     if isinstance(subgroup, ByCount):
         return subgroup.size
-    return max(subgroup.min_size, round(_in_window(subgroup, rate, count) or 0))
+    return max(subgroup.min_size, round(_in_window(subgroup, rate, among.sharing) or 0))
 
 
-def usual_pace(subgroup: SubgroupPlan, rate: float | None, count: int | None) -> Pace | None:
-    """``pace`` of ``count`` streams with so many readings a second together."""
+def usual_pace(subgroup: SubgroupPlan, rate: float | None, among: Shared) -> Pace | None:
+    """``pace`` of streams with so many readings a second together."""
     match subgroup:
         case ByCount():
             least, planned = subgroup.size, subgroup.every
         case ByWindow():
             least, planned = subgroup.min_size, subgroup.window
-    gathering = 0.0 if rate is None else least / rate  # they cannot come faster than readings do
+    # They cannot come faster than readings do.
+    gathering = 0.0 if rate is None else least / rate * among.parts
     if planned is None:
         return Pace(gathering) if gathering else None
-    if count is None:
+    if among.judged is None:
         return Pace(planned / times.SECOND, each=True)
-    return Pace(max(planned / times.SECOND / count, gathering))
+    return Pace(max(planned / times.SECOND / among.judged, gathering))
 
 
 def _in_window(subgroup: ByWindow, rate: float | None, count: int | None) -> float | None:

@@ -65,6 +65,7 @@ Found = tuple[str, str, str]
 
 
 def _of(plan: CharacteristicPlan) -> Iterator[Found]:
+    yield from _unjudged(plan)
     yield from _filters(plan)
     yield from _resolution(plan)
     if isinstance(plan.subgroup, ByCount):
@@ -113,6 +114,14 @@ def _filters(plan: CharacteristicPlan) -> Iterator[Found]:
     if source.payload == "json" and any(p == source.value for p, _ in source.use_if):
         wrong = "keeps only some values of the reading itself, and so hides how they are spread"
         yield "source.use_if", wrong, "write plausible: with what the gauge can show at all"
+
+
+def _unjudged(plan: CharacteristicPlan) -> Iterator[Found]:
+    named, expected = len(plan.by_stream), plan.source.expected_streams or 0
+    if plan.judgement is None and plan.learn is None and named < expected:
+        those = f"{named} of the {expected} streams that are expected"
+        wrong = f"names {those}: the others are never judged"
+        yield "baseline.by_stream", wrong, "add theirs, or mean: and sigma: for all others"
 
 
 def _resolution(plan: CharacteristicPlan) -> Iterator[Found]:

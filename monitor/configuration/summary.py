@@ -7,6 +7,7 @@ printed.
 from __future__ import annotations
 
 import math
+from collections.abc import Iterator, Mapping
 from dataclasses import asdict
 from typing import Any
 
@@ -15,7 +16,7 @@ from monitor.configuration import catching, false_alarms, pace, verdicts
 from monitor.configuration.catching import Catching
 from monitor.configuration.config import Config
 from monitor.configuration.false_alarms import SHIFT, Ringing
-from monitor.configuration.pitfalls import pitfalls
+from monitor.configuration.pitfalls import Pitfall, pitfalls
 from monitor.configuration.sections.characteristic import Characteristic
 from monitor.configuration.verdicts import BudgetVerdict
 from monitor.detectors.charts import chart, standard_error
@@ -65,7 +66,10 @@ def summary(config: Config, settings: Settings) -> dict[str, Any]:
         ],
         "false_alarms": {"seconds": SHIFT, **asdict(total)},
         "budget": _as_dict(verdicts.of_budget(total, document.budget)),
-        "warnings": [asdict(each) for each in pitfalls(settings.plan)],
+        "warnings": [
+            asdict(each)
+            for each in (*_provisional(document.characteristics), *pitfalls(settings.plan))
+        ],
     }
 
 
@@ -73,6 +77,19 @@ def kept(found: dict[str, Any]) -> bool:
     """Whether nothing that was agreed is broken; what nobody can tell is not."""
     promises = [each["promise"] for each in found["characteristics"]]
     return all(each["kept"] is not False for each in [found["budget"], *promises] if each)
+
+
+def _provisional(sections: Mapping[str, Characteristic]) -> Iterator[Pitfall]:
+    """Baseline files that say of themselves that they are to be replaced."""
+    for name, section in sections.items():
+        file = section.baseline.file
+        note = file.origin.note if file else None
+        if note and note.startswith("Provisional"):
+            yield Pitfall(
+                f"characteristics.{name}.baseline.file",
+                "says of itself that it is provisional, so the promise may be kept less well",
+                "read its note, and estimate again as it says",
+            )
 
 
 def _agreed(plan: CharacteristicPlan, section: Characteristic) -> dict[str, Any]:
@@ -196,6 +213,7 @@ def _source(plan: SourcePlan) -> dict[str, Any]:
             "upper": upper if upper < 1e100 else None,
         },
         "expected_rate": plan.expected_rate,
+        "expected_streams": plan.expected_streams,
     }
 
 

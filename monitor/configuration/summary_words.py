@@ -17,6 +17,7 @@ from monitor.configuration.sections.base import either
 
 _WIDTH = 100
 _LABEL = 14
+_USELESS = 30 * 86_400.0  # seconds
 _BOUND = "\u00a0"  # no line is broken here; it is printed as a plain space
 
 Summary = dict[str, Any]
@@ -72,6 +73,11 @@ def _false_alarms(total: Summary, budget: Summary | None) -> Iterator[str]:
 def _budget(budget: Summary) -> str:
     agreed = f"{budget['alerts']:g} in {_duration(budget['seconds'])}"
     foreseen = spans.number(budget["foreseen"])
+    if budget["kept"] is None:
+        return (
+            f"whether the budget of {agreed} is kept cannot be told yet: about {foreseen} are "
+            "foreseen of what can be counted"
+        )
     if budget["kept"]:
         return f"within the budget of {agreed}: about {foreseen} are foreseen"
     return (
@@ -123,7 +129,7 @@ class _Speaker:
     def _promise(self, promise: Summary) -> str:
         agreed = f"one false alarm in {_duration(promise['seconds'])}"
         if promise["kept"] is None:
-            return f"{agreed}: nobody can tell whether it is kept"
+            return f"{agreed}: whether it is kept cannot be told yet"
         foreseen = (
             "none is ever foreseen"
             if promise["never"]
@@ -214,8 +220,14 @@ class _Speaker:
         else:
             yield (
                 f"{at} over all streams: one every {takes} in all, "
-                f"every N × {takes} in each of N equally busy streams"
+                f"{self._each(subgroup['takes'])} equally busy streams"
             )
+
+    def _each(self, takes: float) -> str:
+        count = self._plan["source"]["expected_streams"]
+        if count is None:
+            return f"every N × {spans.short(takes)} in each of N"
+        return f"every {spans.short(count * takes)} in each of {count}"
 
     def _window(self) -> Iterator[str]:
         subgroup = self._plan["subgroup"]
@@ -281,8 +293,9 @@ class _Speaker:
         if learns["adopt"]:
             detectors = ", ".join(learns["detectors"])
             yield f"one that may be trusted is judged by from then on, with {detectors}"
-        elif not (self._plan["baseline"] or self._plan["by_stream"]):
-            yield "until one is written down here nothing is judged"
+        if not (self._plan["baseline"] or self._plan["by_stream"]):
+            until = "then" if learns["adopt"] else "one is written down here"
+            yield f"until {until} nobody is rung, and what is wrong meanwhile becomes the usual"
 
     def _own(self, own: list[Summary], limits_of: str | None) -> Iterator[str]:
         means, sigmas = ([each[key] for each in own] for key in ("mean", "sigma"))
@@ -338,12 +351,14 @@ class _Speaker:
             else f"a lasting drift of {self._amount(catches['drift'])}"
         )
         delays = catches["half"], catches["nine_of_ten"]
+        if (delays[1]["seconds"] or 0.0) > _USELESS:
+            return f"does not catch {what} in any useful time: nine times in ten takes over 30 days"
         readings = [spans.number(max(1.0, each["pieces"])) for each in delays]
         if delays[0]["seconds"] is None:
             half, nine = f"{readings[0]} readings of its stream", readings[1]
         else:
             half, nine = (
-                f"{spans.short(each['seconds'])} ({count} readings)"
+                f"{_delay(each['seconds'])} ({count} readings)"
                 for each, count in zip(delays, readings, strict=True)
             )
         return f"catches {what} within {half} half the time, within {nine} nine times in ten"
@@ -399,9 +414,11 @@ class _Speaker:
             f"the centre is summed up, a sum above {self._amount(detector['limit'])} signals "
             f"(k {detector['k']:.4g}, h {detector['h']:.5g})"
         )
-        yield f"quickest for a lasting shift of {self._amount(detector['tuned_to'])}"
+        if detector["intent"] is None:
+            yield f"quickest for a lasting shift of {self._amount(detector['tuned_to'])}"
         if detector["start"]:
-            yield f"both sums start at {self._amount(detector['start'])}"
+            sums = "both sums start" if detector["direction"] == "both" else "the sum starts"
+            yield f"{sums} at {self._amount(detector['start'])}"
         yield from self._clip_and_after(detector, "the sum that signalled")
 
     def _variance_cusum(self, detector: Summary, charted: str) -> Iterator[str]:
@@ -458,6 +475,10 @@ class _Speaker:
         else:
             for side, key in sides:
                 yield f"on {side}: {' '.join(reaction[key]) or 'no reaction is written down'}"
+
+
+def _delay(seconds: float) -> str:
+    return spans.short(seconds) if seconds < 2 * 86_400 else spans.long(seconds)
 
 
 def _duration(seconds: float) -> str:

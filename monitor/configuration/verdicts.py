@@ -28,12 +28,13 @@ class PromiseVerdict:
 
 @dataclass(frozen=True, slots=True)
 class BudgetVerdict:
-    """False alarms in so many ``seconds``: accepted, and foreseen of all whose pace is known."""
+    """False alarms in so many ``seconds``: accepted, and foreseen of all whose pace is known;
+    ``kept`` is None where the others may make the difference."""
 
     alerts: float
     seconds: float
     foreseen: float
-    kept: bool
+    kept: bool | None
 
 
 def of_promise(plan: CharacteristicPlan, promise: Promise | None) -> PromiseVerdict | None:
@@ -54,4 +55,7 @@ def of_budget(total: Total, budget: Budget | None) -> BudgetVerdict | None:
         return None
     seconds = budget.per / times.SECOND
     foreseen = total.together * seconds / SHIFT
-    return BudgetVerdict(budget.alerts, seconds, foreseen, foreseen <= budget.alerts * _ROUNDING)
+    kept: bool | None = foreseen <= budget.alerts * _ROUNDING
+    if kept and (total.unknown or total.each_stream):
+        kept = None
+    return BudgetVerdict(budget.alerts, seconds, foreseen, kept)

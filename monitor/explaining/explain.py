@@ -10,7 +10,7 @@ from collections.abc import Callable
 from dataclasses import dataclass
 from typing import Literal
 
-from monitor import history, messages, times
+from monitor import history, judging, messages, times
 from monitor.engine import Engine
 from monitor.entries import State
 from monitor.excerpt import excerpt
@@ -23,6 +23,7 @@ from monitor.journal import JournalError
 from monitor.messages import AlertEvent
 from monitor.outputs import Alert, Points
 from monitor.plan import CharacteristicPlan, DetectorPlan, Judgement, Plan, Stream
+from monitor.solving import UnsolvableError
 
 _FURTHER = 5  # subgroups after the one that rang
 _PATIENCE = 20_000  # entries in which they are looked for
@@ -159,7 +160,10 @@ def _is_unchanged(
     if newest is None or detector is None:
         return None
     judgements = [
-        each.judgement_of(stream) for each in newest.characteristics if each.name == then.name
+        judgement
+        for each in newest.characteristics
+        if each.name == then.name
+        for judgement in (each.judgement_of(stream), _adopted(each, then.judgement_of(stream)))
     ]
     return any(
         judgement is not None
@@ -170,3 +174,16 @@ def _is_unchanged(
         )
         for judgement in judgements
     )
+
+
+def _adopted(now: CharacteristicPlan, then: Judgement | None) -> Judgement | None:
+    """What is judged by where streams adopt what they learn: the baseline that was in force goes
+    on. None where they do not, or it is too little for today's detectors."""
+    if now.learn is None or not now.learn.adopt or then is None:
+        return None
+    baseline = then.baseline
+    values = baseline.mean, baseline.sigma, baseline.sigma_between
+    try:
+        return judging.judgement(*values, now.learn.detectors)
+    except UnsolvableError:
+        return None

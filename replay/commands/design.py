@@ -98,7 +98,10 @@ def main(args: argparse.Namespace) -> int:
     worked_out = partial(
         design, scheme, ignore=ignore, told=told, rules=args.rules or OUTSIDE_LIMITS, rate=rate
     )
-    found = worked_out(shifts)
+    try:
+        found = worked_out(shifts)
+    except ValueError as error:
+        raise CommandError(f"{error}: ask for another setting") from None
     if args.html is not None:
         # A simulated curve is drawn through what is told: each of its points takes its time.
         low, high = min(shifts), max(shifts)

@@ -9,6 +9,7 @@ import random
 from pathlib import Path
 from typing import Any
 
+import numpy as np
 import pytest
 import yaml
 from plans import fresh, steps
@@ -136,9 +137,7 @@ def test_delays_as_times_need_the_number_of_streams(
     assert half["seconds"] == pytest.approx(6 * 0.5 * half["subgroups"])
 
 
-def test_pieces_between_subgroups_count(
-    tmp_path: Path, capsys: pytest.CaptureFixture[str]
-) -> None:
+def test_pieces_between_subgroups_count(tmp_path: Path, capsys: pytest.CaptureFixture[str]) -> None:
     """Five in each minute are judged, a hundred pass."""
     source = {"topic": "scale", "payload": "number", "expected_rate": "100/min"}
     _, out, _ = check(
@@ -164,6 +163,52 @@ def test_a_shewhart_chart_is_held_against_what_the_others_catch(
     assert cusum["catches"]["half"]["subgroups"] < shewhart["catches"]["half"]["subgroups"]
 
 
+def test_a_drift_that_is_caught_too_late_is_said_to_be(
+    tmp_path: Path, capsys: pytest.CaptureFixture[str]
+) -> None:
+    detectors = [{"kind": "cusum", "catch": 0.15}, {"kind": "shewhart"}]
+    _, out, _ = check(tmp_path, capsys, detectors=detectors)
+    said = "does not catch a lasting drift of 0.15 g in any useful time"
+    assert out.count(said) == 1
+    assert "catches a lasting drift of 0.15 g within" in out
+
+
+def test_streams_that_will_never_be_judged(
+    tmp_path: Path, capsys: pytest.CaptureFixture[str]
+) -> None:
+    source = {
+        "topic": "scale/{lane}",
+        "payload": "number",
+        "expected_rate": "600/min",
+        "expected_streams": 4,
+    }
+    own = {"by_stream": {"lane=1": {"mean": 341, "sigma": 1.9}}}
+    _, out, _ = check(tmp_path, capsys, source=source, baseline=own)
+    assert "names 1 of the 4 streams that are expected: the others are never judged" in out
+    own |= {"mean": 341, "sigma": 1.9}
+    _, out, _ = check(tmp_path, capsys, source=source, baseline=own)
+    assert "never judged" not in out
+
+
+def test_a_spread_caught_slowly_is_caught_all_the_same(
+    tmp_path: Path, capsys: pytest.CaptureFixture[str]
+) -> None:
+    """A sum with far to go shows no chance of a signal for the first hundred subgroups."""
+    slow = [{"kind": "cusum", "chart": "variance", "catch_ratio": 1.05}]
+    status, out, _ = check(tmp_path, capsys, "--json", detectors=slow)
+    (detector,) = json.loads(out)["characteristics"][0]["detectors"]
+    half, nine = (detector["catches"][key]["subgroups"] for key in ("half", "nine_of_ten"))
+    assert status == 0
+    (planned,) = detector["sums"]
+    chance = np.random.default_rng(4)
+    sums, waits = np.zeros(1_000), np.zeros(1_000)
+    for step in range(1, 3_000):
+        sums = np.maximum(0, sums + 1.05**2 * chance.chisquare(4, sums.size) / 4 - planned["k"])
+        waits[(sums > planned["h"]) & (waits == 0)] = step
+    assert half == pytest.approx(np.median(waits), rel=0.06)
+    assert nine == pytest.approx(np.quantile(waits, 0.9), rel=0.06)
+
+
 def test_what_is_still_to_be_learned(tmp_path: Path, capsys: pytest.CaptureFixture[str]) -> None:
     baseline = {"learn": 1000, "over_at_least": "8h", "adopt": True}
     status, out, _ = check(tmp_path, capsys, baseline=baseline, budget={"alerts": 1})
@@ -171,5 +216,7 @@ def test_what_is_still_to_be_learned(tmp_path: Path, capsys: pytest.CaptureFixtu
     assert "learned of each stream from 1,000 subgroups over 8h or more" in out
     assert "proposed on out/baseline/weight" in out
     assert "one that may be trusted is judged by from then on, with cusum" in out
-    assert "nobody can tell whether it is kept" in out
+    assert "whether it is kept cannot be told yet" in out
+    assert "whether the budget of 1 in 8h is kept cannot be told yet" in out
+    assert "until then nobody is rung" in out
     assert "not counted: weight, which learns its baseline first" in out

@@ -1,5 +1,6 @@
 """Run lengths of the CUSUM: against simulation, against each other, and far out."""
 
+import itertools
 import math
 
 import numpy as np
@@ -7,7 +8,7 @@ import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
-from monitor.methods.runlength.cusum import decision_interval, run_length
+from monitor.methods.runlength.cusum import decision_interval, run_length, wait
 
 SERIES = 20_000
 
@@ -51,6 +52,10 @@ def simulated(
         (0.25, 6, 0, 0.5, 2.5, "up"),
         (1.0, 2.0, 3, 0, 2.0, "up"),  # two clipped values come to h exactly: no signal
         (0.5, 5, 2, 0.5, 3.0, "up"),
+        (0.5, 4, 0, 0.99, None, "both"),  # both sums are high at first
+        (0.25, 6, 0, 0.9, None, "both"),
+        (0.25, 6, -0.5, 0.8, None, "both"),
+        (0, 5, 0.3, 0.7, None, "both"),
     ],
 )
 def test_against_simulation(
@@ -124,6 +129,31 @@ def test_a_clip_lengthens_the_interval_and_its_inverse_allows_for_it() -> None:
     h = decision_interval(0.5, 1e4, clip=3.0)
     assert h < decision_interval(0.5, 1e4)
     assert run_length(0.5, h, clip=3.0) == pytest.approx(1e4, rel=1e-4)
+
+
+def test_where_the_run_length_jumps_past_the_wanted_it_is_no_shorter() -> None:
+    """Values at a clip just above k take a sum up in equal steps, each of which is a jump."""
+    h = decision_interval(1.5, 1e3, clip=1.8)
+    assert 1e3 < run_length(1.5, h, clip=1.8) < 1e4
+    assert run_length(1.5, h * (1 - 1e-6), clip=1.8) < 1e3
+    h = decision_interval(1.0, 500.0, clip=2.0)
+    assert h == pytest.approx(2 * (2.0 - 1.0), abs=1e-6)
+    mean, error = simulated(1.0, h, 0, 0, 2.0, "both")
+    assert mean - 4 * error < run_length(1.0, h, clip=2.0) < mean + 4 * error
+
+
+def test_a_clip_delays_signals() -> None:
+    """Nine steps of 0.5 at most to a sum above 4.4: the median wait by simulation as well."""
+    rng = np.random.default_rng(3)
+    upper, over = np.zeros(SERIES), np.zeros(SERIES, bool)
+    left = []
+    for _ in range(20):
+        upper = np.maximum(0, upper + np.minimum(rng.standard_normal(SERIES) + 1, 1.0) - 0.5)
+        over |= upper > 4.4
+        left.append(1 - over.mean())
+    computed = list(itertools.islice(wait(0.5, 4.4, 1.0, clip=1.0), 20))
+    assert computed[:8] == pytest.approx([1.0] * 8)
+    assert computed == pytest.approx(left, abs=0.02)
 
 
 def test_a_clip_below_k_never_rises() -> None:

@@ -16,7 +16,12 @@ SERIES = 20_000
 
 
 def simulated(
-    lam: float, width: float, shift: float, asymptotic: bool, sides: str
+    lam: float,
+    width: float,
+    shift: float,
+    asymptotic: bool,
+    sides: str,
+    clip: float = math.inf,
 ) -> tuple[float, float]:
     """Mean run length of 20,000 series, and its standard error."""
     rng = np.random.default_rng(11)
@@ -26,7 +31,8 @@ def simulated(
     step = 0
     while average.size:
         step += 1
-        average = lam * (rng.standard_normal(average.size) + shift) + (1 - lam) * average
+        value = np.clip(rng.standard_normal(average.size) + shift, -clip, clip)
+        average = lam * value + (1 - lam) * average
         variance = lam**2 + (1 - lam) ** 2 * variance
         reach = width * math.sqrt(lam / (2 - lam) if asymptotic else variance)
         over = np.zeros(average.size, bool)
@@ -38,6 +44,50 @@ def simulated(
         average = average[~over]
     found = np.concatenate(lengths)
     return float(found.mean()), float(found.std() / math.sqrt(SERIES))
+
+
+@pytest.mark.parametrize(
+    ("lam", "width", "shift", "asymptotic", "sides", "clip"),
+    [
+        (0.1, 2.6, 0, True, "both", 2.0),
+        (0.1, 2.6, 1, False, "both", 1.5),
+        (0.2, 2.7, 0, True, "up", 3.0),
+        (0.5, 2.3, 0, False, "both", 2.5),
+        (0.02, 2.2, 0, False, "both", 2.0),
+    ],
+)
+def test_clipped_values_against_simulation(
+    lam: float, width: float, shift: float, asymptotic: bool, sides: str, clip: float
+) -> None:
+    mean, error = simulated(lam, width, shift, asymptotic, sides, clip)
+    computed = run_length(
+        lam,
+        width,
+        shift,
+        direction=sides,  # type: ignore[arg-type]
+        asymptotic=asymptotic,
+        clip=clip,
+    )
+    assert computed == pytest.approx(mean, abs=4 * error + 0.02 * mean)
+
+
+def test_a_wide_clip_changes_nothing() -> None:
+    free = run_length(0.1, 2.814, 0.3, asymptotic=True)
+    assert run_length(0.1, 2.814, 0.3, asymptotic=True, clip=7.0) == pytest.approx(free, rel=2e-3)
+
+
+def test_the_width_allows_for_the_clip() -> None:
+    width = width_for(0.2, 1e5, clip=2.0)
+    assert width < width_for(0.2, 1e5)
+    # Where the limit is a sum of values at the clip, the run length jumps past what is wanted.
+    assert 0.999e5 < run_length(0.2, width, clip=2.0) < 1.02e5
+
+
+def test_a_clip_that_no_average_gets_past() -> None:
+    """λ 0.2 for a run length of 10⁵ at values of 0.2 at most: even at 0.2 for ever it is short."""
+    assert run_length(0.2, 3.0, clip=0.9) == math.inf
+    with pytest.raises(ValueError, match="no setting"):
+        width_for(0.9, 1e5, clip=0.05)
 
 
 @pytest.mark.parametrize(
@@ -79,7 +129,7 @@ def test_far_out_exact_and_asymptotic_limits_agree(lam: float) -> None:
 @settings(max_examples=30)
 @given(
     st.floats(0.03, 1),
-    st.floats(1.5, 12),
+    st.floats(2.5, 12),  # shorter: none where the mean is off the other way
     st.sampled_from(["both", "up", "down"]),
     st.booleans(),
     st.floats(-0.2, 0.2),

@@ -22,7 +22,16 @@ def test_a_geometric_wait(average: float, probability: float) -> None:
 def test_waits_without_end_and_without_delay() -> None:
     assert geometric_until(math.inf, 0.5) == math.inf
     assert geometric_until(1.0, 0.9) == 1
-    assert either_until([itertools.repeat(1.0)], 0.5) == math.inf
+    with pytest.raises(ValueError, match="too rare"):
+        either_until([itertools.repeat(1.0)], 0.5)
+
+
+def test_a_long_way_to_go_is_no_wait_without_end() -> None:
+    """So many successes that there is no sign of an end for the first hundred steps."""
+    many, chance = 120, 0.3
+    moves = np.diag(np.full(many, 1 - chance)) + np.diag(np.full(many - 1, chance), 1)
+    found = either_until([chain(np.eye(many)[0], moves)], 0.5)
+    assert found == pytest.approx(stats.nbinom.ppf(0.5, many, chance) + many, abs=1)
 
 
 @given(st.floats(1e-7, 0.4), st.floats(0.01, 0.99))

@@ -97,7 +97,8 @@ class Characteristic(Section):
         description="how readings are gathered, such as {size: 5, max_gap: 30s}",
     )
     baseline: Baseline = Field(
-        description="the frozen centre and spread, such as {mean: 341.2, sigma: 1.9}, or {file: …}"
+        description="the frozen centre and spread, such as {mean: 341.2, sigma: 1.9}, or "
+        "{file: …}, or {learn: 1000} where none is known yet"
     )
     promise: Promise | None = Field(
         None, description="how often it may ring with nothing wrong: {false_alarm_every: 14d}"

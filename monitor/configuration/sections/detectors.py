@@ -22,6 +22,9 @@ from monitor.plan import Side
 WIDTH = 3.0
 """Of limits, in standard errors, where neither a width nor a promise is written."""
 
+_BOTH_HIGH = 0.8
+"""Of a head start: up to it the run lengths of two sums of variances are known."""
+
 _WIDTH = "a number of standard errors above 0, such as 3"
 _CATCH = "the smallest drift worth catching, in the gauge's unit, such as 1.5"
 _IGNORE = "the drift to leave alone, in the gauge's unit, such as 0.3"
@@ -232,6 +235,9 @@ class CusumDetector(Detector):
             room = "above 1" if self.watched == "up" else "above 0 and below 1"
             wrong = f"is not {room}, so that the sum would rise with nothing wrong"
             yield ("k",), wrong, f"write k {room} for {self.watched}, such as {self._usual_k}"
+        if self.watched == "both" and self.head_start > _BOTH_HIGH:
+            wrong = f"is more than {_BOTH_HIGH:g}: both sums would be high at first, and ring often"
+            yield ("head_start",), wrong, "write a smaller one, such as 0.5"
         if self.catch_ratio is not None and self.watched == "up" and self.catch_ratio < 1:
             wrong = "is a spread that shrinks, and only one that grows is watched"
             yield ("catch_ratio",), wrong, "write direction: down, or a ratio above 1"

@@ -7,7 +7,14 @@ from __future__ import annotations
 
 from typing import Annotated, Literal
 
-from pydantic import AfterValidator, BeforeValidator, Field, ValidationInfo, field_validator
+from pydantic import (
+    AfterValidator,
+    BeforeValidator,
+    Field,
+    ValidationInfo,
+    field_validator,
+    model_validator,
+)
 
 from monitor import filters
 from monitor.configuration.sections.base import Section, fault
@@ -125,6 +132,14 @@ class Source(Section):
             if key in value:
                 raise fault("is already a level of the topic", "write it in one place", key)
         return value
+
+    @model_validator(mode="after")
+    def _streams_have_keys(self) -> Source:
+        if self.expected_streams not in (None, 1) and not self.keys():
+            wrong = "is more than one, and nothing tells streams apart"
+            instead = "write stream keys: {name} for + in topic, or stream: {head: /head}"
+            raise fault(wrong, instead, "expected_streams")
+        return self
 
     def keys(self) -> list[str]:
         """The stream keys: topic levels first, then those of the payload."""

@@ -6,6 +6,7 @@ Knows sums of normal values. Must not know sigma, streams or alerts.
 from __future__ import annotations
 
 import math
+from collections.abc import Callable
 
 import numpy as np
 
@@ -16,6 +17,16 @@ from monitor.methods.runlength.roots import increasing_root
 from monitor.methods.runlength.waits import Wait, chain
 
 _HIGHEST = 300.0
+
+_BOTH_HIGH = 0.5
+"""Of a head start: above, the two sums may both be high at first."""
+
+_LONG = 600
+"""Steps that two sums may be followed together; some seconds to compute."""
+
+_NEGLIGIBLE = 1e-9
+
+_ABOVE = 1 + 1e-8
 
 
 def run_length(
@@ -31,8 +42,10 @@ def run_length(
 
     ``head_start`` is a fraction of h, below 1; ``clip`` limits each value (ValueError unless it is
     above k: the sums could not rise). ValueError for an h above 300. Both sides together follow
-    J. M. Lucas & R. B. Crosier 1982, exact because the two sums cannot both be high. Relative error
-    below 1e-6, with ``clip`` 1e-3. Check: k 0.5, h 5: 465.4 at shift 0, 10.38 at 1.
+    J. M. Lucas & R. B. Crosier 1982, exact because the two sums cannot both be high; while they are
+    from a head start above a half, they are followed together. Relative error below 1e-6, with
+    ``clip`` 1e-3; from a head start of 0.9 and more it is too low with ``clip``, or k near 0.
+    Check: k 0.5, h 5: 465.4 at shift 0, 10.38 at 1.
     """
     if clip is not None and clip <= k:
         raise ValueError(f"clip {clip} leaves nothing above k {k}: the sums would never rise")
@@ -42,16 +55,87 @@ def run_length(
         return _one_side(k, h, shift if direction == "up" else -shift, head_start, clip)[1]
     up = _one_side(k, h, shift, head_start, clip)
     down = up if shift == 0 else _one_side(k, h, -shift, head_start, clip)
+    # They fall by k a step, and wander as far as h in about h² steps.
+    if (
+        head_start > _BOTH_HIGH
+        and clip is None
+        and min(h * h, head_start * h / max(k, 1e-9)) < _LONG
+    ):
+        return _both_high(k, h, shift, head_start * h, up[0], down[0])
     return either(up, down)
 
 
-def wait(k: float, h: float, shift: float, head_start: float = 0.0) -> Wait:
+def _both_high(k: float, h: float, shift: float, start: float, up: float, down: float) -> float:
+    """Run length of two sums that both begin at ``start``; ``up`` and ``down`` are those of each by
+    itself, from 0.
+
+    Until one of them is 0 they fall together by 2k a step, so that one tells the other; from then
+    on they are never both high.
+    """
+    if math.inf in (up, down):
+        return math.inf
+    inverse = 1 / up + 1 / down
+    together, total = 2 * start, 1.0
+    values, chances = np.array([start]), np.ones(1)
+
+    def arriving(at: Array, weights: Array) -> Array:
+        """The probability that the upper sum comes to each of ``at``."""
+        moves = density(at[None, :] - values[:, None] - (shift - k))
+        return np.asarray(chances @ moves) * weights
+
+    nodes, quadrature = gauss_legendre(16 + math.ceil(1.6 * h))
+
+    def between(low: float, high: float) -> tuple[Array, Array]:
+        half = (high - low) / 2
+        return low + half * (nodes + 1), half * quadrature
+
+    from_up, from_down = _from(k, h, shift), _from(k, h, -shift)
+    while True:
+        together -= 2 * k
+        least = max(together, 0.0)
+        if least < h:
+            at, weights = between(least, h)
+            # The other sum at 0: L(u, 0) = L(u)·L'(0) / (L(0) + L'(0)).
+            total += float(arriving(at, weights) @ from_up(at)) / (up * inverse)
+            total += float(arriving(together - at, weights) @ from_down(at)) / (down * inverse)
+        if together <= 0:
+            at, weights = between(together, 0.0)
+            return total + float(arriving(at, weights).sum()) / inverse
+        at, weights = between(max(0.0, together - h), min(h, together))
+        values, chances = at, arriving(at, weights)
+        both = float(chances.sum())
+        total += both
+        if both / inverse < _NEGLIGIBLE * total:
+            return total
+
+
+def _from(k: float, h: float, shift: float) -> Callable[[Array], Array]:
+    """Run lengths of the upper sum from any others, by its integral equation."""
+    moves, absorbed = _moves(k, h, shift, 0.0)
+    sums = np.concatenate(([0.0], h / 2 * (gauss_legendre(absorbed.size - 2)[0] + 1)))
+    weights = np.concatenate(([0.0], h / 2 * gauss_legendre(absorbed.size - 2)[1]))
+    lengths = steps_to_absorption(moves, absorbed)[:-1]
+
+    def found(at: Array) -> Array:
+        onward = density(sums[None, :] - at[:, None] - (shift - k)) * weights
+        return np.asarray(1 + sf_array(at + shift - k) * lengths[0] + onward @ lengths)
+
+    return found
+
+
+def wait(
+    k: float, h: float, shift: float, head_start: float = 0.0, clip: float | None = None
+) -> Wait:
     """Of the upper sum, the chance to have given no signal yet, point after point."""
     if h > _HIGHEST:
         raise ValueError(f"h {h:g} is beyond {_HIGHEST:g}, as far as run lengths are computed")
-    moves, _ = _moves(k, h, shift, head_start * h)
+    if clip is None:
+        moves, _ = _moves(k, h, shift, head_start * h)
+        at = len(moves) - 1
+    else:
+        moves, _, at = _clipped(k, h, shift, head_start * h, clip, _cells(h))
     start = np.zeros(len(moves))
-    start[-1] = 1.0
+    start[at] = 1.0
     return chain(start, moves)
 
 
@@ -64,7 +148,8 @@ def decision_interval(
     head_start: float = 0.0,
     clip: float | None = None,
 ) -> float:
-    """The h whose run length at ``shift`` is ``wanted``, to 1e-7 of it (1e-5 with ``clip``).
+    """The h whose run length at ``shift`` is ``wanted``, to 1e-7 of it (1e-5 with ``clip``; where
+    the run length jumps past ``wanted``, as it then may, the h from which on it is longer).
 
     ValueError where even h = 0 runs longer, or none up to 300 so long: a shift above k is signalled
     soon. Check, at shift 0: k 0.5 and 1e6 give 12.657.
@@ -78,7 +163,10 @@ def decision_interval(
     sides = 2 if direction == "both" and shift == 0 else 1
     guess = min(_siegmund_interval(drift, wanted * sides), _HIGHEST)
     slope = -2 * drift if drift < -0.05 else 1 / guess
-    return increasing_root(excess, guess, slope, 1e-7 if clip is None else 1e-5, _HIGHEST)
+    if clip is None:
+        return increasing_root(excess, guess, slope, 1e-7, _HIGHEST)
+    # A jump is where clipped values alone add up to h; rounding must not put h below their sum.
+    return _ABOVE * increasing_root(excess, guess, slope, 1e-5, _HIGHEST, jumps=True)
 
 
 def _siegmund_interval(drift: float, wanted: float) -> float:
@@ -100,11 +188,21 @@ def _one_side(
     if clip is None:
         return _smooth(k, h, shift, start)
     # The cells' error falls with the square of their number: extrapolate from two (Richardson).
-    fine = max(80, math.ceil(6 * h))
-    rough = _clipped(k, h, shift, start, clip, fine // 2)
-    close = _clipped(k, h, shift, start, clip, fine)
+    fine = _cells(h)
+    rough, close = (
+        _clipped_lengths(*_clipped(k, h, shift, start, clip, each)) for each in (fine // 2, fine)
+    )
     zero, started = (c * (c / r) ** (1 / 3) for r, c in zip(rough, close, strict=True))
     return zero, started
+
+
+def _cells(h: float) -> int:
+    return max(80, math.ceil(6 * h))
+
+
+def _clipped_lengths(moves: Array, absorbed: Array, at: int) -> tuple[float, float]:
+    steps = steps_to_absorption(moves, absorbed)
+    return float(steps[0]), float(steps[at])
 
 
 def _smooth(k: float, h: float, shift: float, start: float) -> tuple[float, float]:
@@ -130,8 +228,9 @@ def _moves(k: float, h: float, shift: float, start: float) -> tuple[Array, Array
 
 def _clipped(
     k: float, h: float, shift: float, start: float, clip: float, cells: int
-) -> tuple[float, float]:
-    """A Markov chain on cells (D. Brook & D. A. Evans 1972) for values limited to ± ``clip``.
+) -> tuple[Array, Array, int]:
+    """A Markov chain on cells (D. Brook & D. A. Evans 1972) for values limited to ± ``clip``:
+    probabilities of moving and of signalling, and which state is the start (the first is 0).
 
     The values have atoms at ± clip, which make the run length jump at h less multiples of clip − k:
     cell borders lie there. A sum that rises by the clip alone has a state of its own, since it may
@@ -167,8 +266,7 @@ def _clipped(
         part = (target - grid[right - 1]) / (grid[right] - grid[right - 1])
         moves[origin[inside], landing[right]] += chance * part
         moves[origin[inside], landing[right - 1]] += chance * (1 - part)
-    steps = steps_to_absorption(moves, absorbed)
-    return float(steps[0]), float(steps[cell[-1] + 1])
+    return moves, absorbed, int(cell[-1]) + 1
 
 
 def _ladder(foot: float, rise: float, h: float) -> Array:

@@ -6,25 +6,18 @@ Knows weighted averages of normal values. Must not know sigma, streams or alerts
 from __future__ import annotations
 
 import math
-from collections.abc import Iterator
-from dataclasses import dataclass
 
 import numpy as np
 
-from monitor.methods.normal import Array, density, sf_array, upper_quantile
-from monitor.methods.quadrature import gauss_legendre
-from monitor.methods.runlength.chains import Side, steps_to_absorption
+from monitor.methods.normal import density, sf, upper_quantile
+from monitor.methods.runlength.averages import Average, ClippedAverage
+from monitor.methods.runlength.chains import Side
 from monitor.methods.runlength.roots import increasing_root
 from monitor.methods.runlength.waits import Wait, chain
 
-_FLOOR = 6.0
-"""A one-sided average is followed so many standard errors below its mean, and stopped there."""
-
-_SETTLED = 5e-5
-"""Exact limits count as settled once their variance falls short by this share."""
-
-_ALIKE = 16
-"""The moves of step i do for the i/16 steps around it: the variance grows ever more slowly."""
+_SLOW = 0.03
+"""A weight of which exact limits settle so slowly that a clip tells the same before and after: it
+is counted with settled limits alone."""
 
 
 def run_length(
@@ -34,17 +27,48 @@ def run_length(
     *,
     direction: Side = "both",
     asymptotic: bool = False,
+    clip: float | None = None,
 ) -> float:
     """Average run length of an EWMA of weight ``lam`` with limits ``width`` of its standard errors.
 
     S. V. Crowder 1987's integral equation; with exact limits (J. M. Lucas & M. S. Saccucci 1990) it
-    is stepped back from where they have settled. Relative error below 1e-4 with exact limits, else
-    1e-6. Check: λ 0.1, width 2.814, asymptotic: 499.6 at shift 0, 10.33 at 1.
+    is stepped back from where they have settled. ``clip`` limits each value. Relative error below
+    1e-4 with exact limits, else 1e-6; with a ``clip`` of 2 or more 2e-2.
+    Check: λ 0.1, width 2.814, asymptotic: 499.6 at shift 0, 10.33 at 1.
     """
-    average = _Average.of(lam, width, -shift if direction == "down" else shift, direction)
+    off = -shift if direction == "down" else shift
+    if clip is None:
+        return _length(Average.of(lam, width, off, direction), lam, asymptotic)
+    if not asymptotic and lam < _SLOW:
+        settled = run_length(lam, width, shift, direction=direction, asymptotic=True, clip=clip)
+        # Of values that spread less, limits lie farther off.
+        return settled * _settling(lam, width / _clipped_sd(clip), shift, direction)
+    # The cells' error falls with the square of their number: extrapolate from two (Richardson).
+    rough, close = (
+        _length(ClippedAverage.limited(lam, width, off, direction, clip, each), lam, asymptotic)
+        for each in (2, 1)
+    )
+    return close * (close / rough) ** (1 / 3) if rough < math.inf else rough
+
+
+def _settling(lam: float, width: float, shift: float, direction: Side) -> float:
+    """What exact limits do to the run length that settled ones have."""
+    exact = run_length(lam, width, shift, direction=direction)
+    return exact / run_length(lam, width, shift, direction=direction, asymptotic=True)
+
+
+def _clipped_sd(clip: float) -> float:
+    """Standard deviation of a normal value limited to ± ``clip``."""
+    tail, height = sf(clip), float(density(np.array(clip)))
+    return math.sqrt(max(1 - 2 * tail - 2 * clip * height + 2 * clip * clip * tail, 1e-9))
+
+
+def _length(average: Average, lam: float, asymptotic: bool) -> float:
     if asymptotic:
         return float(average.settled()[-1])
     onward = average.settled()[:-1]
+    if not np.isfinite(onward).all():
+        return math.inf
     for moves, steps in reversed(list(average.settling(lam))):
         for _ in range(steps):
             onward = 1 + moves @ onward
@@ -58,10 +82,17 @@ def wait(
     *,
     direction: Side = "both",
     asymptotic: bool = False,
+    clip: float | None = None,
 ) -> Wait:
     """The chance to have given no signal yet, point after point; arguments as of
-    :func:`run_length`."""
-    average = _Average.of(lam, width, -shift if direction == "down" else shift, direction)
+    :func:`run_length`, with whose ``clip`` slow weights are followed with settled limits."""
+    off = -shift if direction == "down" else shift
+    average = (
+        Average.of(lam, width, off, direction)
+        if clip is None
+        else ClippedAverage.limited(lam, width, off, direction, clip)
+    )
+    asymptotic = asymptotic or (clip is not None and lam < _SLOW)
     settled = average.moves(average.nodes, average.keep, average.add)
     first = average.add if asymptotic else 1.0
     states = average.moves(np.zeros(1), 0.0, first)[0]
@@ -80,20 +111,36 @@ def width_for(
     *,
     direction: Side = "both",
     asymptotic: bool = False,
+    clip: float | None = None,
 ) -> float:
     """The width whose run length at ``shift`` is ``wanted``, to 1e-7 of it
-    (1e-5 with exact limits). Check, asymptotic, at shift 0: λ 0.1 and 500 give 2.814.
+    (1e-5 with exact limits, 1e-3 with ``clip``). Check, asymptotic, at shift 0: λ 0.1 and 500 give
+    2.814. ValueError where no width has.
     """
 
     settled = _settled_width(lam, wanted, shift, direction, 1e-7)
-    if asymptotic:
+    if asymptotic and clip is None:
         return settled
 
     def excess(width: float) -> float:
-        return math.log(run_length(lam, width, shift, direction=direction) / wanted)
+        length = run_length(
+            lam, width, shift, direction=direction, asymptotic=asymptotic, clip=clip
+        )
+        return math.log(length / wanted)
 
-    # Exact limits change little, and cost more to evaluate.
-    return increasing_root(excess, settled, settled, 1e-5)
+    if clip is None:
+        # Exact limits change little, and cost more to evaluate.
+        return increasing_root(excess, settled, settled, 1e-5)
+    # Values at the clip for ever take the average to it.
+    most = clip * math.sqrt((2 - lam) / lam)
+    guess = min(settled, 0.98 * most)
+    if not asymptotic and lam < _SLOW:
+        # That ratio hardly changes, and costs much to evaluate.
+        wanted, asymptotic = wanted / _settling(lam, settled, shift, direction), True
+    found = increasing_root(excess, guess, guess, 1e-3, most, jumps=True)
+    if excess(found) == math.inf:
+        raise ValueError("no setting gives that run length")
+    return found
 
 
 def _settled_width(
@@ -152,63 +199,3 @@ def best_weight(
     return math.exp(
         at + (below * run * run - above * rise * rise) / (2 * (below * run + above * rise))
     )
-
-
-@dataclass(frozen=True, slots=True)
-class _Average:
-    """An EWMA in units of its own standard error, where its limits are constant:
-    y ← keep·y + add·x."""
-
-    nodes: Array
-    weights: Array
-    low: float
-    high: float
-    keep: float
-    add: float
-    shift: float
-    walled: bool
-
-    @classmethod
-    def of(cls, lam: float, width: float, shift: float, direction: Side) -> _Average:
-        add = math.sqrt(lam * (2 - lam))
-        walled = direction != "both"
-        low = min(0.0, shift * add / lam) - _FLOOR if walled else -width
-        nodes, weights = gauss_legendre(16 + math.ceil(1.1 * (width - low) / add))
-        half = (width - low) / 2
-        return cls(
-            low + half * (nodes + 1), half * weights, low, width, 1 - lam, add, shift, walled
-        )
-
-    def moves(self, y: Array, keep: float, add: float) -> Array:
-        """Probabilities of moving from each of ``y`` to each node, shape (y, nodes)."""
-        moves = density((self.nodes - keep * y[:, None]) / add - self.shift)
-        moves *= self.weights / add
-        if self.walled:
-            moves[:, 0] += sf_array((keep * y - self.low) / add + self.shift)
-        return moves
-
-    def settling(self, lam: float) -> Iterator[tuple[Array, int]]:
-        """Moves between nodes while exact limits settle, from the second point on, and how many
-        steps they do for."""
-        decay = math.log1p(-lam) if lam < 1 else -math.inf
-        last = max(1, math.ceil(math.log(_SETTLED) / (2 * decay)))
-        groups = []
-        while last > 1:
-            steps = 1 + last // _ALIKE
-            groups.append((last - steps / 2, steps))
-            last -= steps
-        for middle, steps in reversed(groups):
-            before = -math.expm1((2 * middle - 1) * decay)
-            after = -math.expm1((2 * middle + 1) * decay)
-            keep, add = self.keep * math.sqrt(before / after), self.add / math.sqrt(after)
-            yield self.moves(self.nodes, keep, add), steps
-
-    def settled(self) -> Array:
-        """Run lengths with settled limits, from each node and, last, from 0."""
-        y = np.append(self.nodes, 0.0)
-        moves = np.zeros((y.size, y.size))
-        moves[:, :-1] = self.moves(y, self.keep, self.add)
-        absorbed = sf_array((self.high - self.keep * y) / self.add - self.shift)
-        if not self.walled:
-            absorbed += sf_array((self.keep * y - self.low) / self.add + self.shift)
-        return steps_to_absorption(moves, absorbed)

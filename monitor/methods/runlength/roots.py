@@ -8,6 +8,9 @@ from __future__ import annotations
 import math
 from collections.abc import Callable
 
+_CLOSE = 1e-8
+"""Of a jump, on either side of it."""
+
 
 def increasing_root(
     f: Callable[[float], float],
@@ -15,18 +18,23 @@ def increasing_root(
     slope: float,
     tolerance: float = 1e-7,
     most: float = math.inf,
+    *,
+    jumps: bool = False,
 ) -> float:
     """The x > 0 with |f(x)| ≤ ``tolerance``, for an increasing ``f``.
 
     ``guess`` is a positive first try, ``slope`` roughly how fast f rises there. The secant method,
     kept inside the bracket that the signs of f have shown: three or four evaluations where f is
-    nearly straight, as log run lengths are. ValueError where f has no root up to ``most``.
+    nearly straight, as log run lengths are. Where f ``jumps`` past zero, the point just beyond.
+    ValueError where f has no root up to ``most``.
     """
     low, high = 0.0, math.inf
     x, value = guess, f(guess)
     for _ in range(100):
         if abs(value) <= tolerance:
             return x
+        if jumps and low > 0 and high - low < _CLOSE * high:
+            return high
         if value < 0:
             low = x
         else:

@@ -16,6 +16,12 @@ Wait = Iterator[float]
 _SETTLING = 16
 """Steps between looks at whether the chance of a signal still changes."""
 
+_ROUNDING = 1e-13
+"""A chance below it cannot be told from none."""
+
+_LONGEST = 20_000
+"""Steps until the chance of a signal must have settled; some seconds to compute."""
+
 
 def chain(states: Array, moves: Array) -> Wait:
     """The wait of a Markov chain that is absorbed: ``states`` (n,) holds the probabilities to begin
@@ -29,7 +35,7 @@ def either_until(waits: Sequence[Wait], probability: float) -> float:
     """The step by which one of independent ``waits`` is over with this ``probability`` in (0, 1).
 
     Once its start is forgotten the chance of a signal stays as it is, and what is left of the wait
-    is geometric. inf where signals are too rare to be told from rounding.
+    is geometric. ValueError where signals are too rare for that to be seen.
     """
     left, steps, remaining, before = 1 - probability, 0, 1.0, 0.0
     while True:
@@ -39,12 +45,13 @@ def either_until(waits: Sequence[Wait], probability: float) -> float:
             return float(steps)
         chance = 1 - after / remaining
         if steps % _SETTLING == 0:
-            if abs(chance - before) <= 1e-5 * chance + 1e-15:
+            # A sum that has far to go gives no sign of a signal at first.
+            if chance > _ROUNDING and abs(chance - before) <= 1e-5 * chance + 1e-15:
                 break
+            if steps > _LONGEST:
+                raise ValueError("signals are too rare to compute how long one takes")
             before = chance
         remaining = after
-    if chance < 1e-13:
-        return math.inf
     return steps + math.ceil(math.log(left / after) / math.log1p(-chance))
 
 
