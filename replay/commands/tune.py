@@ -9,6 +9,7 @@ import argparse
 import math
 import os
 import sys
+from collections import Counter
 from collections.abc import Sequence
 from dataclasses import replace
 from pathlib import Path
@@ -21,19 +22,22 @@ from monitor.commandline import COULD_NOT, DONE, WRONG, CommandError
 from monitor.configuration.config import load_measured
 from monitor.configuration.problems import ConfigurationError
 from monitor.configuration.resolve import read_plan
-from monitor.plan import CharacteristicPlan, Intent, Plan
+from monitor.configuration.sections.characteristic import Characteristic
+from monitor.plan import CharacteristicPlan, Plan
 from monitor.progress import Progress
 from monitor.times import SECOND, parse_duration
+from replay import set_aside_words
 from replay.commands import inputs
-from replay.readings import Readings, gather, sha256
+from replay.readings import Gathered, Readings, gather, sha256
 from replay.recordings import Recording
 from replay.tuning import labels
 from replay.tuning.as_json import as_json
 from replay.tuning.candidates import Request
+from replay.tuning.declared import declared, intents
 from replay.tuning.report import page, require_plotly
 from replay.tuning.result import Kind, Source
 from replay.tuning.study import study
-from replay.tuning.words import lines
+from replay.tuning.words import commented, lines
 
 _KINDS: tuple[Kind, ...] = ("cusum", "ewma", "shewhart")
 _EXAMPLES = (
@@ -120,7 +124,7 @@ def main(args: argparse.Namespace) -> int:
             file.write(page(result).encode())
     if args.to is not None and result.fragment:
         with files.replacing(args.to) as file:
-            file.write(result.fragment.encode())
+            file.write(commented(result).encode())
     if args.json:
         sys.stdout.buffer.write(orjson.dumps(as_json(result), option=orjson.OPT_APPEND_NEWLINE))
     elif files.STDOUT not in (args.to, args.html):
@@ -184,12 +188,27 @@ def _read(
         print(f"… and {more:,} more lines that could not be read", file=sys.stderr)
     for note in gathered.notes:
         print(note, file=sys.stderr)
-    return gathered.readings[characteristic.name]
+    readings = gathered.readings[characteristic.name]
+    if not readings.count:
+        raise CommandError(_why_none(gathered, characteristic.name))
+    return readings
+
+
+def _why_none(gathered: Gathered, name: str) -> str:
+    counts = Counter(gathered.readings[name].set_aside) + Counter(gathered.unclaimed)
+    said = f"the recordings hold no reading of {name}"
+    if not counts:
+        return f"{said}, nor anything that was set aside: is this the right file?"
+    told = set_aside_words.lines(counts, gathered.set_aside_at)
+    entries = f"{gathered.entries:,} message{'' if gathered.entries == 1 else 's'}"
+    read = f"{said}. Set aside, of {entries} or rows read for {name} alone:"
+    return "\n".join((read, *told))
 
 
 def _request(args: argparse.Namespace, characteristic: CharacteristicPlan) -> Request:
-    intents = _configured(characteristic)
-    catch = _drifts("--catch", args.catch) or _each([i.catch for i in intents])
+    section = load_measured(Path(args.config), os.environ).characteristics[characteristic.name]
+    asked = intents(characteristic)
+    catch = _drifts("--catch", args.catch) or _each([i.catch for i in asked])
     if not catch:
         raise CommandError(
             "--catch is needed: the drift worth catching, in the gauge's unit", WRONG
@@ -198,7 +217,7 @@ def _request(args: argparse.Namespace, characteristic: CharacteristicPlan) -> Re
         raise CommandError("--catch: a drift worth catching is above 0, such as 1.5", WRONG)
     ignore = _drifts("--ignore", args.ignore)
     if not ignore:
-        configured = _each([i.ignore for i in intents if i.catch is not None])
+        configured = _each([i.ignore for i in asked if i.catch is not None])
         ignore = tuple(each for each in configured if each < max(catch)) or (0.0,)
     if any(each < 0 for each in ignore) or min(ignore) >= max(catch):
         raise CommandError("--ignore: write drifts from 0 up, less than those to catch", WRONG)
@@ -210,7 +229,7 @@ def _request(args: argparse.Namespace, characteristic: CharacteristicPlan) -> Re
     if ratio <= 1:
         raise CommandError("--catch-ratio: write a number above 1, such as 1.5", WRONG)
     return Request(
-        promise=_promise(args, characteristic),
+        promise=_promise(args, section, characteristic.name),
         catch=catch,
         ignore=tuple(dict.fromkeys(ignore)),
         kinds=cast(tuple[Kind, ...], tuple(dict.fromkeys(kinds))),
@@ -220,30 +239,23 @@ def _request(args: argparse.Namespace, characteristic: CharacteristicPlan) -> Re
         shewharts=tuple(_positive("--shewhart", text) for text in args.shewhart),
         ratio=ratio,
         spread=args.catch_ratio is not None,
+        declared=declared(section, characteristic),
         seed=args.seed,
         jobs=max(args.jobs, 1),
     )
-
-
-def _configured(characteristic: CharacteristicPlan) -> list[Intent]:
-    """What the configured detectors are asked to do, those whose constants are worked out."""
-    judgement = characteristic.example()[1]
-    detectors = judgement.detectors if judgement is not None else ()
-    return [each.intent for each in detectors if each.intent is not None]
 
 
 def _each(values: Sequence[float | None]) -> tuple[float, ...]:
     return tuple(dict.fromkeys(value for value in values if value is not None))
 
 
-def _promise(args: argparse.Namespace, characteristic: CharacteristicPlan) -> float:
+def _promise(args: argparse.Namespace, section: Characteristic, name: str) -> float:
     if args.false_alarm_every is None:
-        document = load_measured(Path(args.config), os.environ)
-        promise = document.characteristics[characteristic.name].promise
+        promise = section.promise
         if promise is None:
             raise CommandError(
                 "--false-alarm-every is needed, such as 14d: the configuration promises nothing "
-                f"for {characteristic.name}",
+                f"for {name}",
                 WRONG,
             )
         return promise.false_alarm_every / SECOND

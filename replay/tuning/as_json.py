@@ -10,6 +10,7 @@ from dataclasses import asdict
 from typing import Any
 
 from monitor.times import format_time
+from replay.tuning.ranking import keeps
 from replay.tuning.result import Delay, Grouping, Part, Quantile, Range, Result, Setting
 
 
@@ -27,6 +28,7 @@ def as_json(result: Result) -> dict[str, Any]:
         "ignore": list(result.ignore),
         "catch_ratio": result.ratio,
         "trusted": result.trusted,
+        "with_care": result.with_care,
         "trust": result.trust,
         "recording": {
             **_part(result.whole),
@@ -101,6 +103,7 @@ def _setting(found: Setting, result: Result) -> dict[str, Any]:
         },
         "no_interval": found.no_interval or None,
         "meets": found.meets,
+        "keeps": keeps(found, result.promise),
         "delays": [_delay(each) for each in found.delays],
         "curve": [_delay(each) for each in found.curve],
         "events": None if events is None else asdict(events),

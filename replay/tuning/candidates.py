@@ -21,6 +21,7 @@ from monitor.plan import (
     Scheme,
     ShewhartPlan,
 )
+from replay.tuning.declared import Declared
 from replay.tuning.grouped import Grouped
 from replay.tuning.labels import Label
 from replay.tuning.result import Kind, Origin
@@ -36,7 +37,8 @@ class Request:
     """What was asked. ``promise`` is seconds between false alarms of the characteristic; ``catch``
     and ``ignore`` are in the gauge's unit; ``cusums`` hold (k, h), ``ewmas`` (λ, width),
     ``shewharts`` widths; ``ratio`` is how many times as large a spread is put in and, where
-    ``spread``, to be watched for; ``sizes`` of subgroups, none: as configured."""
+    ``spread``, to be watched for; ``sizes`` of subgroups, none: as configured; ``declared`` are the
+    detectors that stand in the configuration."""
 
     promise: float
     catch: tuple[float, ...]
@@ -49,6 +51,7 @@ class Request:
     ratio: float = 1.5
     spread: bool = False
     labels: tuple[Label, ...] = ()
+    declared: tuple[Declared, ...] = ()
     seed: int = 0
     jobs: int = 1
 

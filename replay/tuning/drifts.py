@@ -22,6 +22,9 @@ from replay.tuning.grouped import Grouped, GroupedStream
 from replay.tuning.stepping import Columns
 
 ONSETS = 200
+FEWEST = 50
+"""Places below which no delay is told: of fewer, too few lie beyond the nine in ten."""
+
 WARM = 300
 """Subgroups of undisturbed readings before each onset."""
 
@@ -42,6 +45,11 @@ class Onsets:
     places: tuple[Onset, ...]
     horizon: int
     chance: Values
+
+    def apart(self, grouped: Grouped) -> int:
+        """How many of them begin in a subgroup of their own: many places in next to no subgroups
+        say no more than few."""
+        return len({(o.stream, _own(grouped.streams[o.stream], o)) for o in self.places})
 
 
 @dataclass(frozen=True, slots=True)

@@ -289,9 +289,11 @@ class Result:
     ``ramp`` is the readings of a stream over which a ramp grows. ``resolution``: the gauge's step,
     None where none was found. ``set_aside`` are readings not used, by reason. ``trust`` is the
     answer in one sentence to: may I trust this recording? ``trusted`` is false where no interval
-    can be given at all. ``best`` is the place of the setting to take in ``settings``, None where
-    none meets the promise. ``settings`` are ordered: ranked ones first. ``fragment`` is the YAML
-    that puts ``best`` into the configuration; empty without one. ``events`` counts labelled events.
+    can be given at all; ``with_care``: one can, but not without reserve. ``best`` is the place of
+    the setting to take in ``settings``, None where none meets the promise. ``settings`` are
+    ordered: ranked ones first. ``fragment`` is the YAML that puts ``best`` into the configuration,
+    empty without one; ``notes`` are sentences on what it replaces and keeps. ``events`` counts
+    labelled events.
     """
 
     characteristic: str
@@ -315,6 +317,8 @@ class Result:
     refusals: tuple[Refusal, ...]
     trust: str
     trusted: bool
+    with_care: bool
     best: int | None
     fragment: str
+    notes: tuple[str, ...]
     events: int

@@ -13,7 +13,6 @@ from functools import partial
 import numpy as np
 
 from monitor import stream_names
-from monitor.commandline import CommandError
 from monitor.plan import CharacteristicPlan, Scheme
 from replay.readings import Readings
 from replay.tuning import fragment, looking, verdict
@@ -21,12 +20,12 @@ from replay.tuning.candidates import Candidate, Request, candidates, configured
 from replay.tuning.catching import Catcher, moments
 from replay.tuning.changed import Drift, resolution
 from replay.tuning.delays import Resampling
-from replay.tuning.drifts import Onsets, onsets
+from replay.tuning.drifts import FEWEST, Onsets, onsets
 from replay.tuning.grouped import Grouped
 from replay.tuning.judging import Judged, family, judge
 from replay.tuning.preparing import Held, Prepared, horizon, prepare
 from replay.tuning.ranking import ranked
-from replay.tuning.result import Delay, Result, Setting, Shape, Source
+from replay.tuning.result import Delay, Refusal, Result, Setting, Shape, Source
 from replay.tuning.showing import Place, setting
 
 OnProgress = Callable[[str], None]
@@ -44,9 +43,11 @@ _CURVED = 5
 
 @dataclass(frozen=True, slots=True)
 class _Drifts:
-    """Where drifts begin, and what of the gauge they must respect."""
+    """Where drifts begin, what of the gauge they must respect, and why no delay is told by them;
+    empty where one is."""
 
     begun: Onsets
+    too_few: str
     resampling: Resampling
     step: float | None
     plausible: tuple[float, float]
@@ -86,7 +87,11 @@ def study(
     schemes: list[tuple[_Batch, Scheme]] = []
     for batch in batches:
         progress(f"drifts for {len(batch.judged)} settings on {batch.held.found.said}")
-        delays = _delays(batch, prepared, drifts, request)
+        delays = (
+            [[] for _ in batch.judged]
+            if drifts.too_few
+            else _delays(batch, prepared, drifts, request)
+        )
         for judged, own in zip(batch.judged, delays, strict=True):
             found = batch.held.found
             settings.append(setting(judged, batch.grouped, batch.number, found, place, own))
@@ -98,14 +103,26 @@ def study(
         for number, (index, each) in enumerate(order)
         if number < _CURVED or each.origin == "configured"
     ]
-    curves = _curves({index: schemes[index] for index in curved}, prepared, drifts, request)
+    chosen = {} if drifts.too_few else {index: schemes[index] for index in curved}
+    curves = _curves(chosen, prepared, drifts, request)
     final = tuple(replace(each, curve=curves.get(index, ())) for index, each in order)
     best = 0 if final and final[0].rank == 1 else None
     running = prepared.running
     groupings = tuple(each.found for each in prepared.held)
     left_out = [name for batch in batches for name in batch.left_out]
-    refusals = verdict.refusals(groupings, final, request.promise, left_out, configured(plan)[1])
-    trusted, trust = verdict.trust(groupings, final, running.whole)
+    unmatched = configured(plan)[1]
+    refusals = [
+        *prepared.refusals,
+        *verdict.refusals(groupings, final, request.promise, running.whole, left_out, unmatched),
+    ]
+    if drifts.too_few:
+        more = verdict.longer(request.promise, running.whole)
+        refusals.append(Refusal("how late any drift is caught", drifts.too_few, more))
+    trust = verdict.trust(groupings, final, running.whole)
+    written = None
+    if best is not None:
+        held = prepared.held[final[best].grouping]
+        written = fragment.fragment(plan, final[best], held, request.declared)
     return Result(
         characteristic=plan.name,
         title=plan.title,
@@ -125,13 +142,13 @@ def study(
         streams=looking.streams(prepared.streams),
         groupings=groupings,
         settings=final,
-        refusals=(*prepared.refusals, *refusals),
-        trust=trust,
-        trusted=trusted,
+        refusals=tuple(refusals),
+        trust=trust.said,
+        trusted=trust.trusted,
+        with_care=trust.with_care,
         best=best,
-        fragment=""
-        if best is None
-        else fragment.fragment(plan, final[best], prepared.held[final[best].grouping]),
+        fragment="" if written is None else written.text,
+        notes=() if written is None else written.notes,
         events=len(request.labels),
     )
 
@@ -140,17 +157,29 @@ def _drifts(plan: CharacteristicPlan, prepared: Prepared, request: Request) -> _
     grouped = prepared.held[0].ours
     rng = np.random.default_rng(request.seed)
     begun = onsets(grouped, horizon(prepared.held, request.catch[0]), rng)
-    if not begun.places:
-        raise CommandError(
-            "the recording is too short to put drifts into its last part: record for longer"
-        )
     step = plan.resolution if plan.resolution is not None else resolution(prepared.streams)
     return _Drifts(
         begun,
+        _too_few(begun, prepared.held[0], request.catch[0]),
         Resampling(moments(grouped, begun, prepared.running), rng),
         step,
         (plan.source.plausible_lower, plan.source.plausible_upper),
     )
+
+
+def _too_few(begun: Onsets, held: Held, catch: float) -> str:
+    apart = begun.apart(held.ours)
+    if apart < FEWEST:
+        return (
+            f"the last part has {apart} subgroups for drifts to begin in, and {FEWEST} are needed"
+        )
+    floor = (held.textbook.floor(catch) or 0.0) * held.textbook.readings
+    if begun.horizon < floor:
+        return (
+            f"drifts can be followed for {begun.horizon} readings, and the best CUSUM takes "
+            f"{floor:.0f} on average"
+        )
+    return ""
 
 
 def _batches(

@@ -6,62 +6,86 @@ Knows finished groupings and settings. Must not know how they were judged.
 from __future__ import annotations
 
 from collections.abc import Iterator, Sequence
+from dataclasses import dataclass
 
 from monitor.configuration import spans
 from replay.tuning.result import Grouping, Refusal, Setting
+from replay.tuning.running import PROVE
 from replay.tuning.showing import NOT_EXPONENTIAL, TOO_FEW
+from replay.tuning.tails import FAR
 
 _SHIFT = 0.99 * 8 * 3_600.0
 """A recording of a shift need not begin with its first reading and end with its last."""
 
 
-def trust(
-    groupings: Sequence[Grouping], settings: Sequence[Setting], running: float
-) -> tuple[bool, str]:
-    """Whether any interval can be given, and what a colleague would say of a recording of so many
-    ``running`` seconds."""
+@dataclass(frozen=True, slots=True)
+class Trust:
+    """Whether any interval can be given, whether only ``with_care``, and that as a sentence."""
+
+    trusted: bool
+    with_care: bool
+    said: str
+
+
+def longer(promise: float, running: float) -> str:
+    """What to do about a recording of so many ``running`` seconds that is too short; how long one
+    must be at least to be asked for ``promise`` seconds, where it is not."""
+    needed = promise / FAR / (1 - PROVE)
+    if running >= needed:
+        return "record for longer"
+    return f"record for longer: about {spans.long(needed)} of recording for {spans.long(promise)}"
+
+
+def trust(groupings: Sequence[Grouping], settings: Sequence[Setting], running: float) -> Trust:
+    """What a colleague would say of a recording of so many ``running`` seconds."""
     steady = [each for each in groupings if not each.wander.wanders]
     if not steady:
-        return False, (
-            "No: the process wanders, so what it did here does not say how often it would ring."
+        return Trust(
+            False,
+            False,
+            "No: the process wanders, so what it did here does not say how often it would ring.",
         )
     told = [each for each in settings if each.extrapolated is not None]
     if not told:
-        return False, "No: it is too short, or too odd, to say how often anything would ring."
+        said = "No: it is too short, or too odd, to say how often anything would ring."
+        return Trust(False, False, said)
     longest = max(each.supports for each in steady)
     said = f"es, for up to {spans.long(longest)} between false alarms"
     if len(steady) < len(groupings):
         wandering = ", ".join(each.said for each in groupings if each.wander.wanders)
-        return True, f"In part: y{said}, but not with {wandering}, where it wanders."
+        return Trust(True, True, f"In part: y{said}, but not with {wandering}, where it wanders.")
     if any(each.wander.growth is None for each in steady):
-        return True, f"With care: y{said}, but it is too short to see whether the process wanders."
+        why = "but it is too short to see whether the process wanders."
+        return Trust(True, True, f"With care: y{said}, {why}")
     if running < _SHIFT:
-        return True, (
-            f"With care: y{said}, but it is shorter than a shift of 8 h, and has not seen what one "
-            "brings."
-        )
-    return True, f"Y{said}."
+        why = "but it is shorter than a shift of 8 h, and has not seen what one brings."
+        return Trust(True, True, f"With care: y{said}, {why}")
+    return Trust(True, False, f"Y{said}.")
 
 
 def refusals(
     groupings: Sequence[Grouping],
     settings: Sequence[Setting],
     promise: float,
+    running: float,
     left_out: Sequence[str],
     unmatched: Sequence[str],
 ) -> tuple[Refusal, ...]:
-    """Everything that was not answered; ``left_out`` are settings whose limits could not be worked
-    out, ``unmatched`` configured detectors that cannot be judged."""
-    return tuple(_refused(groupings, settings, promise, left_out, unmatched))
+    """Everything that a recording of so many ``running`` seconds does not answer; ``left_out`` are
+    settings whose limits could not be worked out, ``unmatched`` configured detectors that cannot be
+    judged."""
+    return tuple(_refused(groupings, settings, promise, running, left_out, unmatched))
 
 
 def _refused(
     groupings: Sequence[Grouping],
     settings: Sequence[Setting],
     promise: float,
+    running: float,
     left_out: Sequence[str],
     unmatched: Sequence[str],
 ) -> Iterator[Refusal]:
+    more = longer(promise, running)
     for each in groupings:
         if each.wander.wanders:
             yield Refusal(
@@ -76,16 +100,16 @@ def _refused(
                 f"a promise of {spans.long(promise)} with {each.said}",
                 f"that is more than 50 times the last part of the recording, which supports "
                 f"{spans.long(each.supports)}",
-                "record for longer, or promise less",
+                f"promise less, or {more}",
             )
     if left_out:
         yield Refusal(
             _named(left_out),
             "one part of the recording holds too few peaks of the statistic to work out a limit",
-            "record for longer, or take smaller subgroups",
+            f"take smaller subgroups, or {more}",
         )
     for why, instead in (
-        (TOO_FEW, "record for longer"),
+        (TOO_FEW, more),
         (NOT_EXPONENTIAL, "take a detector that clips, such as a CUSUM, or larger subgroups"),
     ):
         names = [each.name for each in settings if each.no_interval == why]

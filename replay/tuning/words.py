@@ -10,12 +10,16 @@ from collections.abc import Iterator, Sequence
 
 from monitor.configuration import spans
 from monitor.times import format_time
-from replay.tuning.ranking import at_catch
+from replay.tuning.ranking import at_catch, has_interval, keeps
 from replay.tuning.result import Delay, Grouping, Quantile, Range, Result, Setting
+from replay.tuning.verdict import longer
 
 _WIDTH = 96
 _ROWS = 12
-_CURVES = 3
+_CLIP = (
+    " Clip: what lies further out counts as so many standard errors, so that one wild reading "
+    "cannot ring by itself."
+)
 
 
 def lines(result: Result) -> Iterator[str]:
@@ -32,16 +36,22 @@ def lines(result: Result) -> Iterator[str]:
     yield from _wrapped(
         f"Asked: one false alarm in {spans.long(result.promise)}, all streams together, each "
         "setting being the only detector. Seen: counted in the last "
-        f"{spans.long(result.proof.running)}; one in: by the statistic's tail there, from - to "
-        "with 90 %."
+        f"{spans.long(result.proof.running)}; one in: by the statistic's tail there (how fast ever "
+        "larger values of it become rarer, carried on), from - to with 90 %. Not shown: this "
+        "recording leaves it open. Limits worked out here are set wider on purpose, because the "
+        "tail is known from this recording only; the figure of check is the textbook's."
+        f"{_CLIP if _clips(shown) else ''}"
     )
     yield from _aligned(_alarms(result, shown))
     if left:
-        yield f"… and {left} more settings: --json has them all"
+        yield f"… and {left} more setting{'s' if left > 1 else ''}: --json has them all"
     yield ""
     yield from _section("How late would it catch a drift?")
-    yield from _wrapped(_about_delays(result))
-    yield from _aligned(_delays(result, shown))
+    if any(each.delays for each in result.settings):
+        yield from _wrapped(_about_delays(result))
+        yield from _aligned(_delays(result, shown))
+    else:
+        yield "This recording is too short to tell."
     yield ""
     if result.events:
         yield from _section("What of the labelled events?")
@@ -56,12 +66,16 @@ def lines(result: Result) -> Iterator[str]:
     if result.best is None:
         yield from _wrapped(_nothing(result))
     else:
-        yield from _wrapped(
-            f"{result.settings[result.best].name}, held against centre and spread of the first "
-            f"part of the recording. These keys replace those in {result.characteristic}:"
-        )
+        for note in result.notes:
+            yield from _wrapped(note)
         yield ""
         yield from result.fragment.rstrip().splitlines()
+
+
+def commented(result: Result) -> str:
+    """The fragment as a file: what it replaces and keeps stands above it, as comments."""
+    told = [f"# {line}" for note in result.notes for line in _wrapped(note)]
+    return "\n".join((*told, result.fragment))
 
 
 def _section(question: str) -> Iterator[str]:
@@ -85,20 +99,26 @@ def _trust(result: Result) -> Iterator[str]:
         f"Settings were fitted on the first {spans.long(result.fit.running)} and are proved on the "
         f"last {spans.long(result.proof.running)}."
     )
-    for each in result.groupings:
-        yield from _wrapped(_grouping(each), "- ")
+    for number, each in enumerate(result.groupings):
+        yield from _wrapped(_grouping(each, has_interval(result, number)), "- ")
+    yield from _wrapped(
+        "A process wanders where its mean itself moves on and on, so that one part of a recording "
+        "does not foretell the next: then means of 200 subgroups vary more, for their length, than "
+        "means of 50, by the factor in brackets."
+    )
 
 
-def _grouping(found: Grouping) -> str:
+def _grouping(found: Grouping, told: bool) -> str:
     if found.wander.growth is None:
         wander = "too few to see whether the process wanders"
     elif found.wander.wanders:
         wander = f"the process wanders ({found.wander.growth:.2g}, limit {found.wander.limit:g})"
     else:
         wander = f"no wander ({found.wander.growth:.2g}, limit {found.wander.limit:g})"
+    most = f"at most {spans.long(found.supports)} can be told" if told else "nothing can be told"
     return (
         f"{found.said}: {found.fit:,} and {found.proof:,} subgroups; neighbours correlate "
-        f"{found.correlation:.2f}; {wander}; at most {spans.long(found.supports)} can be told"
+        f"{found.correlation:.2f}; {wander}; {most}"
     )
 
 
@@ -118,11 +138,15 @@ def _alarms(result: Result, shown: Sequence[Setting]) -> list[tuple[str, ...]]:
             ", ".join(f"{key} {value:g}" for key, value in each.constants),
             f"{each.observed.alarms:,}",
             _interval(each),
-            "yes" if each.meets else "no",
+            keeps(each, result.promise),
         )
         for each in shown
     ]
     return rows
+
+
+def _clips(shown: Sequence[Setting]) -> bool:
+    return any(key == "clip" for each in shown for key, _ in each.constants)
 
 
 def _interval(found: Setting) -> str:
@@ -153,7 +177,7 @@ def _about_delays(result: Result) -> str:
         f"{result.ramp} readings, a spread {result.ratio:g} times as large. Half and nine in ten "
         "(from - to with 90 %) are caught within so many pieces of the drifting stream, or so "
         "long: this is a step's unless another is named. "
-        "The floor is the average of the CUSUM made for that step in the textbook's world."
+        "Floor: the average of the best CUSUM for that step in the textbook's world."
     )
 
 
@@ -225,7 +249,8 @@ def _nothing(result: Result) -> str:
             f"The longest interval shown of one that does catch them is "
             f"{spans.long(_shown_to_keep(longest))}, of {longest.name}. "
         )
-    return f"{said}Promise less, catch a larger drift, or record for longer."
+    more = longer(result.promise, result.whole.running)
+    return f"{said}Promise less, catch a larger drift, or {more}."
 
 
 def _catches(found: Setting, result: Result) -> bool:

@@ -91,8 +91,10 @@ def trustworthy(settings: int = 14) -> Result:
         trust="Yes: 68 h of six streams keep to their centres, and subgroups are nearly "
         "independent.",
         trusted=True,
+        with_care=False,
         best=0,
         fragment=FRAGMENT,
+        notes=("It replaces cusum and keeps shewhart-mean.",),
         events=0,
     )
 
@@ -134,6 +136,7 @@ def refused() -> Result:
         trusted=False,
         best=None,
         fragment="",
+        notes=(),
     )
 
 

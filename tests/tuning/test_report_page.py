@@ -95,7 +95,7 @@ def test_what_runs_now_is_always_in_sight() -> None:
 @MADE
 def test_each_delay_stands_beside_its_setting(made: Callable[[], Result]) -> None:
     result = made()
-    found = rows(tables(parsed(shown(result)).one("late"), "Textbook floor"))
+    found = rows(tables(parsed(shown(result)).one("late"), "Floor"))
     assert len(found) == sum(len(setting.delays) for setting in result.settings)
     # 1.9 · 70 and 70 pieces, 0.6 s each, as results.py puts them into the first setting.
     first = next(row for row in found if row[0] == result.settings[0].name)
@@ -122,6 +122,43 @@ def test_an_interval_beyond_the_recording_is_told_as_a_bound() -> None:
     assert "rings once in at least 19 days" in found.all("p", "answer")[0].text()
     (cells,) = (row for row in rows(tables(found.one("rung"), "Keeps")) if best.name in row[0])
     assert cells[4].startswith("at least 19 days")
+
+
+@pytest.mark.parametrize(
+    ("trusted", "with_care", "badge"),
+    [
+        (True, False, "✓ May be trusted"),
+        (True, True, "! With care"),
+        (False, False, "✗ May not be trusted"),
+    ],
+)
+def test_the_badge_says_what_the_sentence_says(trusted: bool, with_care: bool, badge: str) -> None:
+    result = replace(trustworthy(), trusted=trusted, with_care=with_care)
+    found = parsed(shown(result)).all("p", "verdict")[0].text()
+    assert found.startswith(badge)
+
+
+def test_what_is_left_open_is_no_failure() -> None:
+    """Of the fifth setting 5 alarms in 27 h are seen; of the other, none contradicts 14 days."""
+    result = trustworthy()
+    quiet = replace(result.settings[0], meets=False, rank=None, unranked="too short", name="quiet")
+    found = parsed(shown(replace(result, settings=(*result.settings[1:], quiet), best=None)))
+    marks = {row[0].split()[0]: row[1] for row in rows(tables(found.one("rung"), "Keeps the"))}
+    assert marks["quiet"].startswith("? not shown")
+    assert marks["ewma-mean-5-5"].startswith("✗ no")
+
+
+def test_without_delays_the_page_says_why_there_are_none() -> None:
+    result = trustworthy()
+    settings = tuple(replace(each, delays=(), curve=()) for each in result.settings)
+    section = parsed(shown(replace(result, settings=settings))).one("late")
+    assert section.text().endswith("The recording is too short to tell.")
+
+
+def test_what_the_configuration_replaces_and_keeps_stands_above_it() -> None:
+    section = parsed(shown(trustworthy())).one("configuration").text()
+    note, *_ = trustworthy().notes
+    assert section.index(note) < section.index(FRAGMENT.split()[0])
 
 
 def test_refusals_say_what_why_and_what_instead() -> None:

@@ -186,22 +186,97 @@ def test_what_could_be_promised_is_said(
     assert said in out
 
 
+def changed(path: Path, **keys: Any) -> str:
+    """The line's configuration with other keys of its characteristic, in a file."""
+    document = copy.deepcopy(DOCUMENT)
+    document["characteristics"]["net-weight"] |= keys
+    path.write_text(yaml.safe_dump(document))
+    return str(path)
+
+
+def keys_of(fragment: Path) -> dict[str, Any]:
+    (keys,) = yaml.safe_load(fragment.read_text())["characteristics"].values()
+    found: dict[str, Any] = keys
+    return found
+
+
+INTENDED: dict[str, Any] = {
+    "promise": {"false_alarm_every": "14d"},
+    "detectors": [
+        {"kind": "shewhart", "chart": "mean"},
+        {"kind": "cusum", "catch": 3, "ignore": 2, "share": 2},
+        {"kind": "cusum", "chart": "variance", "catch_ratio": 1.5},
+        {"kind": "ewma", "name": "slow", "lambda": 0.1, "width": 1.5},
+    ],
+}
+
+
 @pytest.mark.parametrize("kind", ["cusum", "ewma"])
-def test_check_accepts_the_fragment(
-    capsys: pytest.CaptureFixture[str], tmp_path: Path, config: str, week: str, kind: str
+def test_check_accepts_the_fragment_which_keeps_the_other_detectors(
+    capsys: pytest.CaptureFixture[str], tmp_path: Path, week: str, kind: str
 ) -> None:
+    source = {**DOCUMENT["characteristics"]["net-weight"]["source"], "expected_streams": 6}
+    config = changed(tmp_path / "line.yaml", source=source, **INTENDED)
     fragment = tmp_path / "best.yaml"
     arguments = ["--catch", "1.5", "--false-alarm-every", "6h", "--kind", kind, "--size", "10"]
-    arguments += ["--to", str(fragment)]
-    assert main(["tune", config, week, *arguments]) == 0
-    assert fragment.read_text() in capsys.readouterr().out
-    document = copy.deepcopy(DOCUMENT)
-    (keys,) = yaml.safe_load(fragment.read_text())["characteristics"].values()
-    document["characteristics"]["net-weight"] |= keys
+    assert main(["tune", config, week, *arguments, "--to", str(fragment)]) == 0
+    out = capsys.readouterr().out
+    keys = keys_of(fragment)
     assert keys["subgroup"] == {"size": 10, "max_gap": "30s"}
-    merged = tmp_path / "merged.yaml"
-    merged.write_text(yaml.safe_dump(document))
-    assert driftbell(["check", str(merged)]) == 0
+    kept, new, spread = keys["detectors"]
+    assert (kept, spread) == (INTENDED["detectors"][0], INTENDED["detectors"][2])
+    # Its share is that of the two it replaces, so that the others' part of the promise stays.
+    assert (new["kind"], new["share"]) == (kind, 3)
+    said = "It replaces cusum and slow and keeps shewhart-mean and cusum-variance."
+    streams = "The recording holds 2 streams; any other (6 are expected) is held against the values"
+    for text in (said, streams, "a file: or learn: too"):
+        assert text in " ".join(out.split())
+        assert text in " ".join(fragment.read_text().replace("\n# ", " ").split())
+    baseline = keys["baseline"]
+    own = list(baseline["by_stream"].values())
+    assert len(own) == 2
+    assert baseline["mean"] == pytest.approx(np.mean([each["mean"] for each in own]), abs=1e-3)
+    sigma = np.sqrt(np.mean([each["sigma"] ** 2 for each in own]))
+    assert baseline["sigma"] == pytest.approx(sigma, abs=1e-3)
+    merged = changed(tmp_path / "merged.yaml", source=source, **INTENDED | keys)
+    assert driftbell(["check", merged]) == 0
+
+
+def test_a_kept_chart_must_fit_the_subgroup(
+    capsys: pytest.CaptureFixture[str], tmp_path: Path, config: str, week: str
+) -> None:
+    fragment = tmp_path / "best.yaml"
+    arguments = ["--catch", "1.5", "--false-alarm-every", "6h", "--kind", "cusum", "--size", "1"]
+    assert main(["tune", config, week, *arguments, "--to", str(fragment)]) == 0
+    assert [each["kind"] for each in keys_of(fragment)["detectors"]] == ["cusum"]
+    out = " ".join(capsys.readouterr().out.split())
+    assert "shewhart-range is left out: a chart of range needs two readings or more" in out
+
+
+def test_the_new_detector_takes_no_name_that_stays(
+    capsys: pytest.CaptureFixture[str], tmp_path: Path, week: str
+) -> None:
+    detectors = [{"kind": "shewhart", "chart": "range", "name": "cusum"}]
+    config = changed(tmp_path / "line.yaml", detectors=detectors)
+    fragment = tmp_path / "best.yaml"
+    assert main(["tune", config, week, *ASKED, "--kind", "cusum", "--to", str(fragment)]) == 0
+    new, kept = keys_of(fragment)["detectors"]
+    assert (new["name"], kept["name"]) == ("tuned", "cusum")
+    merged = changed(tmp_path / "merged.yaml", **keys_of(fragment))
+    assert driftbell(["check", merged]) == 0
+
+
+def test_what_stands_there_and_does_best_is_left_alone(
+    capsys: pytest.CaptureFixture[str], tmp_path: Path, week: str
+) -> None:
+    """A Shewhart chart of means is far too late for 1.5 g, which the CUSUM that stands catches."""
+    detectors = [{"kind": "cusum", "k": 0.85, "h": 5.5}, {"kind": "shewhart", "chart": "range"}]
+    config = changed(tmp_path / "line.yaml", detectors=detectors)
+    fragment = tmp_path / "best.yaml"
+    asked = ["--catch", "1.5", "--false-alarm-every", "1h", "--kind", "shewhart"]
+    assert main(["tune", config, week, *asked, "--to", str(fragment)]) == 0
+    assert "Nothing need change: cusum, as it stands in net-weight" in capsys.readouterr().out
+    assert keys_of(fragment) == {"detectors": detectors}
 
 
 def test_a_promise_longer_than_the_recording_supports(
@@ -219,6 +294,9 @@ def test_a_promise_longer_than_the_recording_supports(
     assert not to.exists()
     assert "was not written" in said
     assert all(each["interval"]["low"] <= 50 * 0.4 * ROWS for each in found["settings"])
+    assert {each["keeps"] for each in found["settings"]} <= {"no", "not shown"}
+    # 6 days / 50 / 0.4 are 7.2 h.
+    assert any("about 7.2 h of recording for 6 days" in e["instead"] for e in found["refused"])
     assert main(["tune", *asked, "--false-alarm-every", "2d"]) == 0
     assert to.exists()
 
@@ -249,6 +327,55 @@ def test_settings_without_a_limit_are_told(
     refused = {each["what"]: each["why"] for each in found["refused"]}
     assert "too few peaks" in refused["cusum, catch 1.5, size 5"]
     assert "too few peaks" in refused["an interval for cusum 0.5,5, size 5; as configured: cusum"]
+
+
+@pytest.mark.parametrize(
+    ("readings", "drift", "why"),
+    [
+        (200, "1.5", "subgroups for drifts to begin in, and 50 are needed"),
+        (1_000, "0.5", "and the best CUSUM takes"),
+    ],
+)
+def test_next_to_nothing_is_told_by_no_figures(
+    capsys: pytest.CaptureFixture[str],
+    tmp_path: Path,
+    config: str,
+    readings: int,
+    drift: str,
+    why: str,
+) -> None:
+    """The last part of 200 readings holds 8 subgroups of each head; that of 1,000 enough of them,
+    but drifts go on for less long than the best CUSUM takes."""
+    path = recording(tmp_path / "short.csv", steady()[:readings])
+    asked = (config, path, "--catch", drift, "--false-alarm-every", "1d", "--cusum", "0.5,5")
+    assert main(["tune", *asked]) == 0
+    out = " ".join(capsys.readouterr().out.split())
+    assert why in out
+    assert "This recording is too short to tell." in out
+    if readings == 200:
+        assert "nothing can be told" in out
+        assert "can be told" not in out.replace("nothing can be told", "")
+    found = tune(capsys, *asked)
+    assert all(each["delays"] == each["curve"] == [] for each in found["settings"])
+    if readings == 200:
+        assert {each["keeps"] for each in found["settings"]} == {"not shown"}
+
+
+def test_why_no_reading_was_found(
+    capsys: pytest.CaptureFixture[str], tmp_path: Path, config: str
+) -> None:
+    topic = DOCUMENT["characteristics"]["net-weight"]["source"]["topic"]
+    path = tmp_path / "other.jsonl"
+    lines = [{"time": 1, "topic": "plant/elsewhere", "payload": 1}] * 3
+    lines += [{"time": 2, "topic": topic, "payload": {"t": 2, "net": 341}}]
+    path.write_text("".join(json.dumps(line) + "\n" for line in lines))
+    assert main(["tune", config, str(path), *ASKED]) == 1
+    said = capsys.readouterr().err
+    assert "no reading of net-weight. Set aside, of 4 messages" in said
+    assert [line.split()[:2] for line in said.splitlines()[1::2]] == [
+        ["no-topic", "3"],
+        ["no-stream", "1"],
+    ]
 
 
 def test_labelled_events_are_scored_and_left_out(
@@ -316,6 +443,24 @@ def test_promise_and_drift_of_the_configuration(
     assert found["catch"] == [1.5]
     solved = by_name(found)["as configured: cusum"]
     assert solved["interval"]["low"] < 86_400 < (solved["interval"]["high"] or np.inf)
+
+
+def test_what_is_caught_where_the_baseline_is_still_to_be_learned(
+    capsys: pytest.CaptureFixture[str], tmp_path: Path, week: str
+) -> None:
+    source = {**DOCUMENT["characteristics"]["net-weight"]["source"], "expected_streams": 2}
+    intent = {"kind": "cusum", "catch": 1.25, "ignore": 0.25}
+    learned = changed(
+        tmp_path / "line.yaml",
+        source=source,
+        baseline={"learn": 1000},
+        promise={"false_alarm_every": "1d"},
+        detectors=[intent, {"kind": "shewhart", "chart": "range"}],
+    )
+    fragment = tmp_path / "best.yaml"
+    found = tune(capsys, learned, week, "--kind", "cusum", "--to", str(fragment))
+    assert (found["catch"], found["ignore"]) == ([1.25], [0.25])
+    assert [each.get("chart") for each in keys_of(fragment)["detectors"]] == [None, "range"]
 
 
 def test_windows(capsys: pytest.CaptureFixture[str], tmp_path: Path, week: str) -> None:

@@ -24,6 +24,7 @@ a:focus-visible, button:focus-visible, summary:focus-visible { outline: 3px soli
 .verdict { border-left: .4rem solid #0b5c8a; background: #f1f5f8; padding: .6rem .9rem;
   max-width: 52rem }
 .verdict.no { border-left: .4rem double #a8541a; background: #fbf4ee }
+.verdict.care { border-left: .4rem dashed #6b5a00; background: #f8f6e9 }
 .verdict strong { display: block }
 .caution { border: 1px solid #8794a0; padding: .5rem .9rem; max-width: 52rem }
 nav ol { padding-left: 1.4rem; margin: .3rem 0 }

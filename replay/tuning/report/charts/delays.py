@@ -67,7 +67,7 @@ def _curve(
                 y=[y for _, y in floor],
                 mode="lines",
                 line={"color": look.FLOOR, "width": 2, "dash": "dash"},
-                name="textbook floor (an average)",
+                name="best CUSUM for that step (an average)",
                 hovertemplate="floor at %{x:.4g}: %{y:.4g} pieces<extra></extra>",
             )
         )

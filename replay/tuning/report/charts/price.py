@@ -44,7 +44,7 @@ def chart(result: Result) -> Chart | None:
     look.upright(drawn, result.promise, f"asked: {spans.long(result.promise)}")
     for meets, name, symbol, color in (
         (True, "keeps the promise", "circle", look.OWN),
-        (False, "does not", "circle-open", look.MUTED),
+        (False, "not shown to keep it", "circle-open", look.MUTED),
     ):
         these = [point for point in points if point[0].meets is meets]
         if these:

@@ -47,9 +47,11 @@ def chart(result: Result) -> Chart | None:
 
 
 _CAPTION = (
-    "How much more means of many subgroups spread than independent ones would (dashed: 1). A curve "
-    "that levels out belongs to a process that comes back to its centre; one that climbs from 50 "
-    "to 200 (dotted) to one that wanders, whose false alarms nobody can promise."
+    "A process wanders where its mean itself moves on and on, so that one part of a recording does "
+    "not foretell the next. Drawn is how much more means of many subgroups spread than independent "
+    "ones would (dashed: 1). A curve that levels out belongs to a process that comes back to its "
+    "centre; one that climbs from 50 to 200 (dotted) to one that wanders, whose false alarms "
+    "nobody can promise."
 )
 
 

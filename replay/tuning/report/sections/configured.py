@@ -8,7 +8,7 @@ from __future__ import annotations
 from html import escape
 
 from replay.tuning.report import chosen, markup
-from replay.tuning.result import Result
+from replay.tuning.result import Result, Setting
 
 
 def render(result: Result) -> str:
@@ -20,17 +20,19 @@ def render(result: Result) -> str:
             "do what the section before this one says."
         )
     return (
-        markup.paragraph(
-            f"This puts {best.name} in force, with the baseline of the first part. Then run "
-            "driftbell check on the whole configuration: it says how often everything together "
-            "will ring."
-        )
+        "".join(map(markup.paragraph, result.notes))
+        + markup.paragraph("Then run driftbell check on the whole configuration.")
         + f'<pre id="fragment" tabindex="0" aria-label="Configuration to copy"><code>'
         f"{escape(result.fragment)}</code></pre>"
-        '<p><button type="button" data-copies="fragment" hidden>Copy</button></p>'
-        + markup.paragraph(
-            "A baseline freezes how the process ran in the first part, faults included. Let "
-            "somebody who knows the line look at it before it is adopted.",
-            "caution",
-        )
+        '<p><button type="button" data-copies="fragment" hidden>Copy</button></p>' + _frozen(best)
+    )
+
+
+def _frozen(best: Setting) -> str:
+    if best.origin == "configured":
+        return ""
+    return markup.paragraph(
+        "A baseline freezes how the process ran in the first part, faults included. Let "
+        "somebody who knows the line look at it before it is adopted.",
+        "caution",
     )

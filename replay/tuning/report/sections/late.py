@@ -18,15 +18,15 @@ _COLUMNS = (
     "Caught",
     "Half within",
     "Nine in ten within",
-    "Textbook floor",
+    "Floor: best CUSUM for that step, average",
 )
 _SHOWN = 8
 _FLOOR = (
-    "The floor is the average delay of the CUSUM tuned to that very step, with the same interval "
+    "The floor is the average delay of the best CUSUM for that very step, with the same interval "
     "between false alarms, in the textbook's world: independent normal readings, and a start from "
-    "rest. What was delivered comes from your readings, with their correlation and their steps. "
-    "No setting with that interval can do much better than the floor: one below it rings more "
-    "often than was asked, one far above it leaves something to gain."
+    "rest. What was delivered comes from your readings, with their correlation and their steps, "
+    "and is told by its half and its nine in ten, not by its average: it may lie on either side. "
+    "A setting far above the floor leaves something to gain."
 )
 
 
@@ -35,7 +35,7 @@ def render(result: Result) -> str:
     few, rest = chosen.few(result), chosen.rest(result)
     found = chosen.drifts(result.settings)
     if not found:
-        return markup.paragraph("No drifts were put in: there was nothing to measure them with.")
+        return markup.paragraph("The recording is too short to tell.")
     parts = [
         markup.paragraph(
             "Drifts were put into the recorded readings of the last part, one at a time, at many "

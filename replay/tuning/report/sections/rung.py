@@ -8,10 +8,18 @@ from __future__ import annotations
 from collections.abc import Sequence
 
 from monitor.configuration import spans
+from replay.tuning.ranking import keeps
 from replay.tuning.report import chosen, markup, words
 from replay.tuning.report.charts import promised, streams
 from replay.tuning.report.markup import Text
 from replay.tuning.result import Result, Setting
+
+_WORDS = (
+    "“By the tail” carries on how fast ever larger values of the setting's statistic become rarer. "
+    "“Not shown” is no failure: this recording leaves it open. Limits worked out here are set "
+    "wider on purpose, because the tail is known from this recording only; the figure of driftbell "
+    "check is the textbook's."
+)
 
 
 def render(result: Result) -> str:
@@ -20,9 +28,12 @@ def render(result: Result) -> str:
     if not result.settings:
         parts = [markup.paragraph("No setting was tried.")]
     else:
-        parts = [markup.table(_caption(result), _columns(result), _rows(few, result))]
+        parts = [
+            markup.paragraph(_WORDS),
+            markup.table(_caption(result), _columns(result), _rows(few, result)),
+        ]
     if rest:
-        title = f"{len(rest):,} more settings"
+        title = words.plural(len(rest), "more setting")
         inner = markup.table(f"{title}, in order", _columns(result), _rows(rest, result))
         parts.append(markup.fold(title, inner))
     if any(setting.observed.interval or setting.extrapolated for setting in few):
@@ -84,7 +95,8 @@ def _keeps(setting: Setting, result: Result) -> Text:
         return markup.with_note("✓ yes, take it", f"rank {setting.rank}")
     if setting.rank is not None:
         return markup.with_note("✓ yes", f"rank {setting.rank}")
-    return markup.with_note("✓ yes, not ranked" if setting.meets else "✗ no", setting.unranked)
+    word = {"yes": "✓ yes, not ranked", "no": "✗ no", "not shown": "? not shown"}
+    return markup.with_note(word[keeps(setting, result.promise)], setting.unranked)
 
 
 def _late(setting: Setting, result: Result) -> Text:
@@ -107,7 +119,7 @@ def _events(few: Sequence[Setting], rest: Sequence[Setting], result: Result) -> 
     )
     told = markup.table(caption, columns, _event_rows(few))
     if rows := _event_rows(rest):
-        title = f"{len(rows):,} more settings on the events"
+        title = f"{words.plural(len(rows), 'more setting')} on the events"
         told += markup.fold(title, markup.table(title, columns, rows))
     return told
 

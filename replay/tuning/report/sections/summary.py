@@ -39,8 +39,12 @@ def render(result: Result, questions: Sequence[tuple[str, str]]) -> str:
 
 def _verdict(result: Result) -> str:
     """Whether the recording may be trusted, with a sign and a word besides the colour."""
-    word = "✓ May be trusted" if result.trusted else "✗ May not be trusted"
-    kind = "verdict" if result.trusted else "verdict no"
+    if not result.trusted:
+        word, kind = "✗ May not be trusted", "verdict no"
+    elif result.with_care:
+        word, kind = "! With care", "verdict care"
+    else:
+        word, kind = "✓ May be trusted", "verdict"
     return f'<p class="{kind}"><strong>{word}</strong>{markup.inline(result.trust)}</p>'
 
 

@@ -5,9 +5,8 @@ Knows what makes a recording worth judging by. Must not know settings.
 
 from __future__ import annotations
 
-from collections.abc import Iterator
-
 from monitor.configuration import spans
+from replay.tuning.ranking import has_interval
 from replay.tuning.report import chosen, markup, words
 from replay.tuning.report.charts import wander
 from replay.tuning.report.markup import Text
@@ -114,17 +113,20 @@ def _groupings(result: Result) -> str:
             "Wander",
             "Longest interval it supports",
         ),
-        (row for grouping in result.groupings for row in _grouping(grouping)),
+        (
+            _grouping(grouping, has_interval(result, number))
+            for number, grouping in enumerate(result.groupings)
+        ),
     )
 
 
-def _grouping(grouping: Grouping) -> Iterator[tuple[Text, ...]]:
+def _grouping(grouping: Grouping, told: bool) -> tuple[Text, ...]:
     sign = "✗" if grouping.wander.wanders else "?" if grouping.wander.growth is None else "✓"
-    yield (
+    return (
         grouping.said,
         f"{grouping.fit:,}",
         f"{grouping.proof:,}",
         f"{grouping.correlation:+.2f}",
         f"{sign} {wander.sentence(grouping)}",
-        "none" if grouping.wander.wanders else spans.long(grouping.supports),
+        spans.long(grouping.supports) if told else "none",
     )
