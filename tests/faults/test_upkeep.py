@@ -108,7 +108,8 @@ def test_pruned_and_exported_under_load(
     # What is left begins with its state, so its alerts are those that were given live.
     later = undisturbed(daemon.configuration, tmp_path / "new.jsonl")
     assert later == alerts[-len(later) :]
-    assert 10 < len(later) < len(alerts)
+    # How many depends on the pace of the run, since alerts end and rejoin by the clock.
+    assert 0 < len(later) < len(alerts)
 
 
 def test_a_second_daemon_under_load(broker: Broker, tmp_path: Path) -> None:
