@@ -14,6 +14,7 @@ from brokers import Broker, Client, Embedded, Mosquitto
 from daemons import ALERTS, CONFIGURATION, ROOT, Launched, launched, started, until, weighing
 
 from monitor.entries import Configured
+from monitor.plan import CusumPlan
 from monitor.times import SECOND
 
 START = 1_772_433_672 * SECOND
@@ -221,4 +222,47 @@ def test_what_was_configured_once_is_given_up_though_we_never_were_there(
             client.publish("line-2/capper/torque", b"2.0")
         until(lambda: daemon.count() > 0, "a torque", daemon.is_running)
         assert [topic for topic, _ in daemon.journaled()] == ["line-2/capper/torque"]
+        assert daemon.stop() == 0
+
+
+def promising(catch: float) -> Any:
+    def change(document: Any) -> None:
+        weight = document["characteristics"]["net-weight"]
+        weight["source"]["expected_rate"] = "600/min"
+        weight["promise"] = {"false_alarm_every": "14d"}
+        weight["detectors"] = [{"kind": "cusum", "catch": catch}]
+
+    return change
+
+
+def sum_limit(daemon: Launched) -> float:
+    newest = configurations(daemon)[-1].plan
+    (weight,) = [each for each in newest.characteristics if each.name == "net-weight"]
+    _, judgement = weight.example()
+    assert judgement is not None
+    (detector,) = judgement.detectors
+    assert isinstance(detector.scheme, CusumPlan)
+    return detector.scheme.h
+
+
+def test_a_promise_is_worked_out_at_a_reload(broker: Broker, tmp_path: Path) -> None:
+    """Another catch gives another limit at once; one that cannot be is refused, and the old goes
+    on."""
+    with started(tmp_path / "a", broker.port) as daemon, Client(broker.port) as client:
+        client.subscribe(ALERTS)
+        limits = []
+        for times, catch in enumerate((6.0, 3.0), start=1):
+            edit(daemon, promising(catch))
+            hang_up(daemon)
+            until(lambda times=times: len(configurations(daemon)) == times + 1, "the reload")
+            limits.append(sum_limit(daemon))
+        assert limits[0] < limits[1]
+        edit(daemon, promising(0.0001))
+        hang_up(daemon)
+        assert "cannot be told from nothing wrong" in daemon.await_logged(REFUSED)["problems"]
+        for number in range(1, 21, 2):
+            client.publish_all(pair(number, 346.0))
+        (raised,) = client.wait_for(bool)
+        assert raised.body["rule"] == "cusum-upper"
+        assert sum_limit(daemon) == limits[1]
         assert daemon.stop() == 0
