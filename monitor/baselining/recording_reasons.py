@@ -48,8 +48,8 @@ def amount(estimate: Estimate) -> Iterator[Reason]:
         yield Reason(
             "provisional",
             "short",
-            f"the readings span {spans.long(span / times.SECOND)}: what changes in the course "
-            "of a shift had no chance to show",
+            f"the readings span {spans.long(span / times.SECOND)}: what changes within a "
+            "shift had no chance to show",
             "estimate again from 8 h or more, over a change of material if there is one",
         )
 

@@ -71,7 +71,7 @@ def main(args: argparse.Namespace) -> int:
         _check_target(args)
     choices = _choices(args)
     configured = _plan(args.config, {})
-    plan = _chosen(configured, args.characteristic)
+    plan = inputs.chosen(configured, args.characteristic)
     layout, interval = inputs.layout(configured, args.column), inputs.interval(args.interval)
     recordings = [Recording(path) for path in args.recordings]
     progress = Progress()
@@ -134,21 +134,6 @@ def _plan(path: str, baselines: Mapping[str, Mapping[str, Any]]) -> Plan:
         return read_plan(Path(path), os.environ, baselines)
     except ConfigurationError as error:
         raise CommandError(str(error), WRONG) from None
-
-
-def _chosen(plan: Plan, name: str | None) -> CharacteristicPlan:
-    names = [each.name for each in plan.characteristics]
-    if name is None and len(names) > 1:
-        raise CommandError(
-            f"the configuration has {', '.join(names)}: say whose baseline with --characteristic",
-            WRONG,
-        )
-    found = [each for each in plan.characteristics if name in (None, each.name)]
-    if not found:
-        raise CommandError(
-            f"--characteristic {name}: the configuration has {', '.join(names)}", WRONG
-        )
-    return found[0]
 
 
 class _Detectors:

@@ -10,7 +10,7 @@ import difflib
 from collections.abc import Callable, Mapping, Sequence
 
 from monitor.commandline import WRONG, CommandError
-from monitor.plan import Plan
+from monitor.plan import CharacteristicPlan, Plan
 from monitor.progress import Progress
 from monitor.times import parse_duration
 from replay.recordings import Chunk
@@ -47,6 +47,20 @@ def layout(plan: Plan, columns: Sequence[str]) -> Layout:
     """How tables are read; ``columns`` as ``--column`` has them. Raises CommandError."""
     only = plan.characteristics[0].name if len(plan.characteristics) == 1 else None
     return Layout(_keys(plan), _headers(columns, plan), only)
+
+
+def chosen(plan: Plan, name: str | None) -> CharacteristicPlan:
+    """The characteristic of that ``--characteristic``, or the only one. Raises CommandError."""
+    names = [each.name for each in plan.characteristics]
+    if name is None and len(names) > 1:
+        raise CommandError(
+            f"the configuration has {', '.join(names)}: say which with --characteristic", WRONG
+        )
+    if name is not None and name not in names:
+        raise CommandError(
+            f"--characteristic {name}: the configuration has {', '.join(names)}", WRONG
+        )
+    return plan.characteristics[0 if name is None else names.index(name)]
 
 
 def interval(text: str) -> int:

@@ -107,7 +107,7 @@ def main(args: argparse.Namespace) -> int:
     if args.html is not None:
         require_plotly()
     plan = _plan(args.config)
-    characteristic = _chosen(plan, args.characteristic)
+    characteristic = inputs.chosen(plan, args.characteristic)
     request = _request(args, characteristic)
     progress = Progress()
     try:
@@ -155,17 +155,6 @@ def _plan(path: str) -> Plan:
         return read_plan(Path(path), os.environ)
     except ConfigurationError as error:
         raise CommandError(str(error), WRONG) from None
-
-
-def _chosen(plan: Plan, name: str | None) -> CharacteristicPlan:
-    names = [each.name for each in plan.characteristics]
-    if name is None:
-        if len(names) > 1:
-            raise CommandError(f"--characteristic is needed: one of {', '.join(names)}", WRONG)
-        return plan.characteristics[0]
-    if name not in names:
-        raise CommandError(f"--characteristic {name}: there is {', '.join(names)}", WRONG)
-    return plan.characteristics[names.index(name)]
 
 
 def _read(

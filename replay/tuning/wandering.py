@@ -1,45 +1,25 @@
 """Whether subgroup means keep to a centre, or wander: then no recording foretells false alarms.
 
-Knows block means of standardised values. Must not know detectors.
+Knows variance ratios of standardised values. Must not know detectors.
 """
 
 from __future__ import annotations
 
 from collections.abc import Sequence
 
+from monitor.methods.wander import GROWTH, LONG, SHORT, variance_ratio
 from replay.readings import Values
 from replay.tuning.result import Wander
 
-SHORT, LONG = 50, 200
-LIMIT = 1.5
+LIMIT = GROWTH
 _LENGTHS = (1, 2, 5, 10, 20, SHORT, 100, LONG, 500, 1_000, 2_000)
 _FEWEST = 10  # degrees of freedom; fewer say little of a variance
 
 
-def variance_ratio(streams: Sequence[Values], length: int) -> float | None:
-    """m·var(means of m)/var for m = ``length``, pooled over streams about each one's own mean.
-
-    A. W. Lo & A. C. MacKinlay 1988, Review of Financial Studies 1, use it for another end. None
-    where there are fewer than ten degrees of freedom.
-    """
-    squares = freedom = single = count = 0.0
-    for values in streams:
-        whole = len(values) // length
-        single += float(((values - values.mean()) ** 2).sum()) if len(values) else 0.0
-        count += max(len(values) - 1, 0)
-        if whole < 2:
-            continue
-        means = values[: whole * length].reshape(whole, length).mean(axis=1)
-        squares += float(((means - means.mean()) ** 2).sum())
-        freedom += whole - 1
-    if freedom < _FEWEST or not single:
-        return None
-    return length * (squares / freedom) / (single / count)
-
-
 def wander(streams: Sequence[Values]) -> Wander:
     """The verdict on standardised subgroup means, one array a stream."""
-    found = [(m, ratio) for m in _LENGTHS if (ratio := variance_ratio(streams, m)) is not None]
+    judged = [(m, *variance_ratio(streams, m)) for m in _LENGTHS]
+    found = [(m, ratio) for m, ratio, freedom in judged if freedom >= _FEWEST]
     ratios = dict(found)
     growth = ratios[LONG] / ratios[SHORT] if LONG in ratios and ratios[SHORT] > 0 else None
     return Wander(

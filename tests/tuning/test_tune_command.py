@@ -486,7 +486,10 @@ def test_windows(capsys: pytest.CaptureFixture[str], tmp_path: Path, week: str) 
         ([*ASKED, "--catch-ratio", "1"], "--catch-ratio: write a number above 1"),
         (["--catch", "much", "--false-alarm-every", "1d"], "--catch much: write a number"),
         (["--catch", "1", "--false-alarm-every", "soon"], "--false-alarm-every: 'soon' is not"),
-        ([*ASKED, "--characteristic", "torque"], "--characteristic torque: there is net-weight"),
+        (
+            [*ASKED, "--characteristic", "torque"],
+            "--characteristic torque: the configuration has net-",
+        ),
         ([*ASKED, "--json", "--to", "-"], "only one of --to -, --html - and --json"),
     ],
 )
