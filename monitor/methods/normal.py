@@ -36,3 +36,11 @@ def sf_array(x: Array) -> Array:
     scaled = (x * math.sqrt(0.5)).ravel()
     tail = np.fromiter(map(math.erfc, scaled.tolist()), np.float64, scaled.size)
     return np.asarray(0.5 * tail.reshape(x.shape))
+
+
+def sf_within(x: Array, low: float, high: float) -> Array:
+    """:func:`sf_array` of each element limited to ``low`` and ``high``; any shape."""
+    tail = np.where(x <= low, sf(low), sf(high))
+    inside = (x > low) & (x < high)
+    tail[inside] = sf_array(x[inside])
+    return tail

@@ -6,23 +6,26 @@ Knows weighted averages of normal values. Must not know what is asked of them.
 from __future__ import annotations
 
 import math
-from collections.abc import Iterator
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
+from typing import Self
 
 import numpy as np
 
-from monitor.methods.normal import Array, density, sf, sf_array
+from monitor.methods.normal import Array, density, sf_array, sf_within
 from monitor.methods.quadrature import gauss_legendre
 from monitor.methods.runlength.chains import Side, steps_to_absorption
 
 _FLOOR = 6.0
 """A one-sided average is followed so many standard errors below its mean, and stopped there."""
 
-_SETTLED = 5e-5
+_SETTLED = 1e-3
 """Exact limits count as settled once their variance falls short by this share."""
 
-_ALIKE = 16
-"""The moves of step i do for the i/16 steps around it: the variance grows ever more slowly."""
+_ALIKE = 10
+"""The moves of step i do for the i/10 steps around it: the variance grows ever more slowly."""
+
+_NEVER = -650.0
+"""Of a logarithm: the processor is slow with numbers smaller than about e to the -700."""
 
 _CELLS = 6
 """In what one value adds: their error falls with the square of their number."""
@@ -47,48 +50,72 @@ class Average:
         add = math.sqrt(lam * (2 - lam))
         walled = direction != "both"
         low = min(0.0, shift * add / lam) - _FLOOR if walled else -width
-        nodes, weights = gauss_legendre(16 + math.ceil(1.1 * (width - low) / add))
-        half = (width - low) / 2
-        return cls(
-            low + half * (nodes + 1), half * weights, low, width, 1 - lam, add, shift, walled
-        )
+        nodes, weights = _between(low, width, add)
+        return cls(nodes, weights, low, width, 1 - lam, add, shift, walled)
+
+    def _resolving(self, add: float) -> Self:
+        """With as many nodes as values need that ``add`` so much."""
+        nodes, weights = _between(self.low, self.high, add)
+        return replace(self, nodes=nodes, weights=weights)
 
     def moves(self, y: Array, keep: float, add: float) -> Array:
         """Probabilities of moving from each of ``y`` to each node, shape (y, nodes)."""
-        moves = density((self.nodes - keep * y[:, None]) / add - self.shift)
-        moves *= self.weights / add
+        moves = self._relative(y, keep, add)
+        # The quadrature errs by some 1e-5, which thousands of steps would add up.
+        moves *= ((1 - self.absorbed(y, keep, add)) / moves.sum(axis=1))[:, None]
+        return moves
+
+    def _relative(self, y: Array, keep: float, add: float) -> Array:
+        # φ in place and in as few passes as can be: most of the time goes here.
+        half = math.sqrt(0.5)
+        moves = self.nodes * (half / add) - ((keep * y / add + self.shift) * half)[:, None]
+        np.multiply(moves, moves, out=moves)
+        np.negative(moves, out=moves)
+        np.maximum(moves, _NEVER, out=moves)
+        np.exp(moves, out=moves)
+        moves *= self.weights / (add * math.sqrt(2 * math.pi))
         if self.walled:
             moves[:, 0] += sf_array((keep * y - self.low) / add + self.shift)
         return moves
 
-    def settling(self, lam: float) -> Iterator[tuple[Array, int]]:
-        """Moves between nodes while exact limits settle, from the second point on, and how many
-        steps they do for."""
+    def settling(self, lam: float) -> list[tuple[Array, int]]:
+        """Moves while exact limits settle, from the first point on to :attr:`nodes`, and how many
+        steps each do for; the first has one row, the start.
+
+        In units of a standard error that is small at first a single value adds much, and few nodes
+        are enough.
+        """
         decay = math.log1p(-lam) if lam < 1 else -math.inf
+        grid, moves = self, []
         last = max(1, math.ceil(math.log(_SETTLED) / (2 * decay)))
-        groups = []
         while last > 1:
             steps = 1 + last // _ALIKE
-            groups.append((last - steps / 2, steps))
-            last -= steps
-        for middle, steps in reversed(groups):
+            middle = last - steps / 2
             before = -math.expm1((2 * middle - 1) * decay)
             after = -math.expm1((2 * middle + 1) * decay)
             keep, add = self.keep * math.sqrt(before / after), self.add / math.sqrt(after)
-            yield self.moves(self.nodes, keep, add), steps
+            last -= steps
+            coarse = self._resolving(add)
+            if 4 * coarse.nodes.size <= 3 * grid.nodes.size:
+                moves.append((grid.moves(coarse.nodes, keep, add), 1))
+                grid, steps = coarse, steps - 1
+            if steps:
+                moves.append((grid.moves(grid.nodes, keep, add), steps))
+        moves.append((grid.moves(np.zeros(1), 0.0, 1.0), 1))
+        return moves[::-1]
 
     def settled(self) -> Array:
         """Run lengths with settled limits, from each node and, last, from 0."""
         y = np.append(self.nodes, 0.0)
         moves = np.zeros((y.size, y.size))
-        moves[:, :-1] = self.moves(y, self.keep, self.add)
-        return steps_to_absorption(moves, self.absorbed(y))
+        moves[:, :-1] = self._relative(y, self.keep, self.add)
+        return steps_to_absorption(moves, self.absorbed(y, self.keep, self.add))
 
-    def absorbed(self, y: Array) -> Array:
-        """Probabilities of a signal from each of ``y``, with settled limits."""
-        absorbed = sf_array((self.high - self.keep * y) / self.add - self.shift)
+    def absorbed(self, y: Array, keep: float, add: float) -> Array:
+        """Probabilities of a signal from each of ``y``, shape (y,)."""
+        absorbed = sf_array((self.high - keep * y) / add - self.shift)
         if not self.walled:
-            absorbed += sf_array((self.keep * y - self.low) / self.add + self.shift)
+            absorbed += sf_array((keep * y - self.low) / add + self.shift)
         return absorbed
 
 
@@ -98,6 +125,7 @@ class ClippedAverage(Average):
     piece's expectation is exact, the atoms at ± clip included."""
 
     clip: float
+    coarser: int
 
     @classmethod
     def limited(
@@ -105,13 +133,16 @@ class ClippedAverage(Average):
     ) -> ClippedAverage:
         """With cells ``coarser`` times as wide as they should be."""
         of = Average.of(lam, width, shift, direction)
-        cells = max(24, math.ceil(_CELLS * (of.high - of.low) / of.add)) // coarser
-        nodes = np.linspace(of.low, of.high, cells + 1)
+        nodes = _evenly(of.low, of.high, of.add, coarser)
         rest = of.keep, of.add, of.shift, of.walled
-        return cls(nodes, np.ones(cells + 1), of.low, of.high, *rest, clip)
+        return cls(nodes, np.ones(nodes.size), of.low, of.high, *rest, clip, coarser)
 
-    def moves(self, y: Array, keep: float, add: float) -> Array:
-        """Probabilities of moving from each of ``y`` to each node, shape (y, nodes)."""
+    def _resolving(self, add: float) -> Self:
+        """With as many nodes as values need that ``add`` so much."""
+        nodes = _evenly(self.low, self.high, add, self.coarser)
+        return replace(self, nodes=nodes, weights=np.ones(nodes.size))
+
+    def _relative(self, y: Array, keep: float, add: float) -> Array:
         step = (self.high - self.low) / (self.nodes.size - 1)
         at = (self.nodes - keep * y[:, None]) / add
         above, below = add * self._mean_above(at), add * self._mean_below(at)
@@ -124,16 +155,16 @@ class ClippedAverage(Average):
             moves[:, 0] -= self._beyond(-at[:, 0], -self.shift)
         return np.maximum(moves, 0.0)
 
-    def absorbed(self, y: Array) -> Array:
-        """Probabilities of a signal from each of ``y``, with settled limits."""
-        absorbed = self._beyond((self.high - self.keep * y) / self.add, self.shift)
+    def absorbed(self, y: Array, keep: float, add: float) -> Array:
+        """Probabilities of a signal from each of ``y``, shape (y,)."""
+        absorbed = self._beyond((self.high - keep * y) / add, self.shift)
         if not self.walled:
-            absorbed += self._beyond((self.keep * y - self.low) / self.add, -self.shift)
+            absorbed += self._beyond((keep * y - self.low) / add, -self.shift)
         return absorbed
 
     def _beyond(self, x: Array, shift: float) -> Array:
         """P(a value > x); towards the other side with both signs turned."""
-        tail = sf_array(np.clip(x, -self.clip, self.clip) - shift)
+        tail = sf_within(x - shift, -self.clip - shift, self.clip - shift)
         return np.where(x < -self.clip, 1.0, np.where(x >= self.clip, 0.0, tail))
 
     def _mean_above(self, x: Array) -> Array:
@@ -147,7 +178,28 @@ class ClippedAverage(Average):
 
 def _limited_above(x: Array, shift: float, clip: float) -> Array:
     """E max(X − x, 0) of a normal X about ``shift`` limited to ± ``clip``: ∫ P(X > t) dt from x."""
-    inside = np.clip(x, -clip, clip) - shift
-    rest = float(density(np.array(clip - shift))) - (clip - shift) * sf(clip - shift)
-    tail = density(inside) - inside * sf_array(inside) - rest
-    return np.maximum(tail, 0.0) + np.maximum(-clip - x, 0.0)
+    inside = np.abs(x) < clip
+    above = np.zeros(x.shape)
+    above[inside] = _mean_excess(x[inside] - shift) - _mean_excess(np.array([clip - shift]))
+    whole = _mean_excess(np.array([-clip - shift, clip - shift]))
+    low = x <= -clip
+    above[low] = whole[0] - whole[1] - clip - x[low]
+    return np.maximum(above, 0.0)
+
+
+def _mean_excess(x: Array) -> Array:
+    """E max(Z − x, 0) of a standard normal Z."""
+    return density(x) - x * sf_array(x)
+
+
+def _between(low: float, high: float, add: float) -> tuple[Array, Array]:
+    """Nodes and weights that resolve a normal density of standard deviation ``add``."""
+    # Few different numbers of them: they take long to find.
+    nodes, weights = gauss_legendre(16 * math.ceil(1 + 0.075 * (high - low) / add))
+    half = (high - low) / 2
+    return low + half * (nodes + 1), half * weights
+
+
+def _evenly(low: float, high: float, add: float, coarser: int) -> Array:
+    cells = max(24, math.ceil(_CELLS * (high - low) / add)) // coarser
+    return np.linspace(low, high, cells + 1)

@@ -10,7 +10,7 @@ from collections.abc import Callable
 
 import numpy as np
 
-from monitor.methods.normal import Array, density, sf, sf_array
+from monitor.methods.normal import Array, density, sf, sf_array, sf_within
 from monitor.methods.quadrature import gauss_legendre
 from monitor.methods.runlength.chains import Side, either, steps_to_absorption
 from monitor.methods.runlength.roots import increasing_root
@@ -246,8 +246,8 @@ def _clipped(
     states = np.arange(sums.size)
     cell = states[ladders[0].size : -ladders[1].size]
 
-    values = np.clip(borders[None, :] - sums[:, None] + k, -clip, clip)
-    above = sf_array(values - shift)
+    values = borders[None, :] - sums[:, None] + k
+    above = sf_within(values - shift, -clip - shift, clip - shift)
     top, bottom = sf(clip - shift), sf(clip + shift)
     moves = np.zeros((sums.size, sums.size))
     moves[:, 0] = sf(-clip - shift) - above[:, 0]
@@ -266,7 +266,10 @@ def _clipped(
         part = (target - grid[right - 1]) / (grid[right] - grid[right - 1])
         moves[origin[inside], landing[right]] += chance * part
         moves[origin[inside], landing[right - 1]] += chance * (1 - part)
-    return moves, absorbed, int(cell[-1]) + 1
+    # In the order of sums all moves are short ones, which elimination makes use of.
+    order = np.argsort(sums, kind="stable")
+    at = int(np.flatnonzero(order == cell[-1] + 1)[0])
+    return moves[np.ix_(order, order)], absorbed[order], at
 
 
 def _ladder(foot: float, rise: float, h: float) -> Array:

@@ -33,7 +33,7 @@ def run_length(
 
     S. V. Crowder 1987's integral equation; with exact limits (J. M. Lucas & M. S. Saccucci 1990) it
     is stepped back from where they have settled. ``clip`` limits each value. Relative error below
-    1e-4 with exact limits, else 1e-6; with a ``clip`` of 2 or more 2e-2.
+    5e-4 with exact limits, else 1e-6; with a ``clip`` of 2 or more 2e-2.
     Check: λ 0.1, width 2.814, asymptotic: 499.6 at shift 0, 10.33 at 1.
     """
     off = -shift if direction == "down" else shift
@@ -69,10 +69,10 @@ def _length(average: Average, lam: float, asymptotic: bool) -> float:
     onward = average.settled()[:-1]
     if not np.isfinite(onward).all():
         return math.inf
-    for moves, steps in reversed(list(average.settling(lam))):
+    for moves, steps in reversed(average.settling(lam)):
         for _ in range(steps):
             onward = 1 + moves @ onward
-    return 1 + float((average.moves(np.zeros(1), 0.0, 1.0) @ onward)[0])
+    return float(onward[0])
 
 
 def wait(
@@ -93,15 +93,13 @@ def wait(
         else ClippedAverage.limited(lam, width, off, direction, clip)
     )
     asymptotic = asymptotic or (clip is not None and lam < _SLOW)
-    settled = average.moves(average.nodes, average.keep, average.add)
-    first = average.add if asymptotic else 1.0
-    states = average.moves(np.zeros(1), 0.0, first)[0]
-    yield float(states.sum())
-    for moves, steps in () if asymptotic else average.settling(lam):
+    first = [(average.moves(np.zeros(1), 0.0, average.add), 1)]
+    states = np.ones(1)
+    for moves, steps in first if asymptotic else average.settling(lam):
         for _ in range(steps):
             states = states @ moves
             yield float(states.sum())
-    yield from chain(states, settled)
+    yield from chain(states, average.moves(average.nodes, average.keep, average.add))
 
 
 def width_for(
@@ -118,9 +116,10 @@ def width_for(
     2.814. ValueError where no width has.
     """
 
-    settled = _settled_width(lam, wanted, shift, direction, 1e-7)
-    if asymptotic and clip is None:
-        return settled
+    if clip is None:
+        if asymptotic:
+            return _settled_width(lam, wanted, shift, direction, 1e-7)
+        return _exact_width(lam, wanted, shift, direction)
 
     def excess(width: float) -> float:
         length = run_length(
@@ -128,9 +127,7 @@ def width_for(
         )
         return math.log(length / wanted)
 
-    if clip is None:
-        # Exact limits change little, and cost more to evaluate.
-        return increasing_root(excess, settled, settled, 1e-5)
+    settled = _settled_width(lam, wanted, shift, direction, 1e-3)
     # Values at the clip for ever take the average to it.
     most = clip * math.sqrt((2 - lam) / lam)
     guess = min(settled, 0.98 * most)
@@ -143,24 +140,56 @@ def width_for(
     return found
 
 
+def _exact_width(lam: float, wanted: float, shift: float, direction: Side) -> float:
+    def excess(width: float) -> float:
+        return math.log(run_length(lam, width, shift, direction=direction) / wanted)
+
+    settled = _settled_width(lam, wanted, shift, direction, 5e-6)
+    change = excess(settled)
+    if abs(change) < 2e-3:
+        # Exact limits cost more to evaluate, and change as much at widths so near each other.
+        return _settled_width(lam, wanted * math.exp(-change), shift, direction, 5e-6, settled)
+    slope = _slope(settled - _centre(lam, shift, direction))
+    return increasing_root(excess, settled, slope, 1e-5)
+
+
 def _settled_width(
-    lam: float, wanted: float, shift: float, direction: Side, tolerance: float
+    lam: float,
+    wanted: float,
+    shift: float,
+    direction: Side,
+    tolerance: float,
+    guess: float | None = None,
 ) -> float:
     def excess(width: float) -> float:
         length = run_length(lam, width, shift, direction=direction, asymptotic=True)
         return math.log(length / wanted)
 
-    # A first guess: points taken as independent or, for a small λ, as a continuous process that
-    # crosses w at the rate λ·w·φ(w) (S. O. Rice 1944), about the mean that the average settles at.
-    centre = (-shift if direction == "down" else shift) * math.sqrt((2 - lam) / lam)
-    if direction == "both":
-        centre = abs(centre)
+    centre = _centre(lam, shift, direction)
+    guess = guess or max(0.1, centre + _reach(lam, wanted, shift, direction))
+    return increasing_root(excess, guess, _slope(guess - centre), tolerance)
+
+
+def _reach(lam: float, wanted: float, shift: float, direction: Side) -> float:
+    """A first guess at how far above the centre the width lies: points taken as independent or, for
+    a small λ, as a continuous process that crosses w at the rate λ·w·φ(w) (S. O. Rice 1944), seen
+    only at steps (H. Chernoff 1965, Ann. Math. Statist. 36)."""
     each_side = wanted * (2 if direction == "both" and shift == 0 else 1)
     reach = independent = upper_quantile(min(0.3, 1 / each_side))
     for _ in range(3):
         reach = math.sqrt(2 * math.log(max(1.1, 0.4 * lam * reach * each_side)))
-    reach = min(reach, independent)
-    return increasing_root(excess, max(0.1, centre + reach), reach, tolerance)
+    return min(reach - 0.583 * math.sqrt(lam * (2 - lam)), independent)
+
+
+def _centre(lam: float, shift: float, direction: Side) -> float:
+    """What the average settles at, in its standard errors, towards the nearer limit."""
+    centre = (-shift if direction == "down" else shift) * math.sqrt((2 - lam) / lam)
+    return abs(centre) if direction == "both" else centre
+
+
+def _slope(reach: float) -> float:
+    """How fast ln(run length) rises with a width ``reach`` above the centre: of 1/(w·φ(w))."""
+    return max(reach, 1.5) - 1 / max(reach, 1.5)
 
 
 def best_weight(
@@ -175,11 +204,11 @@ def best_weight(
 
     def delay(log_lam: float) -> float:
         lam = math.exp(log_lam)
-        width = _settled_width(lam, wanted, ignored, direction, 1e-4)
+        width = _settled_width(lam, wanted, ignored, direction, 1e-3)
         return run_length(lam, width, shift, direction=direction, asymptotic=True)
 
     step, lowest = 0.4, math.log(0.003)
-    guess = 0.75 * shift * shift / math.log(wanted)
+    guess = 0.75 * shift * (shift - ignored) / math.log(wanted)
     at = min(max(math.log(guess), lowest), -step)
     delays = {at: delay(at)}
     while True:

@@ -69,6 +69,22 @@ def run_length(
     return Simulated(mean, spread / math.sqrt(signals))
 
 
+def first_signals(
+    rules: Sequence[Rule], series: Array, *, direction: Side = "both"
+) -> NDArray[np.int64]:
+    """The point, from 1, at which the first of ``rules`` signals in each of ``series``, a column
+    each and a row a point; one more than there are where none does."""
+    count, width = series.shape
+    watches = [_watch(rule, direction) for rule in rules]
+    memories = [np.zeros((rows, width)) for rows, _ in watches]
+    found = np.full(width, count + 1)
+    for at, z in enumerate(series, 1):
+        for i, (_, watch) in enumerate(watches):
+            memories[i], met = watch(memories[i], z)
+            found[met] = np.minimum(found[met], at)
+    return found
+
+
 def _watch(rule: Rule, direction: Side) -> tuple[int, Watch]:
     """How many rows of memory the rule needs, all 0 before the first point, and its step."""
     up, down = direction != "down", direction != "up"
