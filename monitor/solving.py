@@ -13,6 +13,10 @@ from monitor import runlengths
 from monitor.detectors.charts import SPREAD, standard_error
 from monitor.plan import BaselinePlan, CusumPlan, EwmaPlan, Intent, Scheme
 
+_REMEMBERED = 65_536
+"""Solutions; all of a configuration is asked for more than once, in the same order, so that one
+solution more than are remembered would have each worked out anew."""
+
 
 class UnsolvableError(ValueError):
     """No constants do what is asked. ``key`` of the detector is what stands in the way."""
@@ -40,7 +44,7 @@ def _sizes(intent: Intent, error: float) -> tuple[float | None, float]:
     return None if intent.catch is None else intent.catch / error, intent.ignore / error
 
 
-@lru_cache(maxsize=16_384)
+@lru_cache(maxsize=_REMEMBERED)
 def _location(intent: Intent, catch: float | None, ignore: float) -> Scheme:
     """A scheme for the mean or the median; ``catch`` and ``ignore`` in standard errors."""
     try:

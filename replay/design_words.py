@@ -9,6 +9,7 @@ import math
 import textwrap
 from collections.abc import Iterator, Sequence
 
+from monitor.configuration import spans
 from monitor.plan import CusumPlan, EwmaPlan
 from monitor.runlengths import RunLength
 from replay.design import Design, settings
@@ -47,9 +48,10 @@ def span(seconds: float) -> str:
     """A time in the largest unit it fills, to three digits."""
     if math.isinf(seconds):
         return "never"
+    if seconds >= spans.NEVER:
+        return spans.long(seconds)
     unit, name = next((each for each in _TIMES if seconds >= each[0]), _TIMES[-1])
-    number = seconds / unit
-    return f"{number:,.0f} {name}" if 1e3 <= number < 1e6 else f"{number:.3g} {name}"
+    return f"{seconds / unit:.3g} {name}"
 
 
 def fragment(found: Design) -> str:
@@ -128,9 +130,17 @@ def sentence(found: Design) -> str:
 
 
 def _once(found: Design) -> str:
-    if math.isinf(found.interval.subgroups):
+    subgroups = found.interval.subgroups
+    if math.isinf(subgroups):
         return "never"
-    return f"once in {length(found.interval.subgroups)} subgroups{_time(found, found.interval)}"
+    count = f"{length(subgroups)} subgroups"
+    if found.rate is None:
+        seldom = subgroups >= spans.UNCOUNTED
+        return f"practically never ({count})" if seldom else f"once in {count}"
+    seconds = subgroups / found.rate
+    if seconds >= spans.NEVER:
+        return f"practically never ({span(seconds)}: {count})"
+    return f"once in {count} ({span(seconds)})"
 
 
 def _time(found: Design, run_length: RunLength) -> str:

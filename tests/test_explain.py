@@ -129,9 +129,15 @@ def emptied(journal: Path, tmp_path_factory: pytest.TempPathFactory) -> Path:
     path = tmp_path_factory.mktemp("j") / "emptied.db"
     with closing(sqlite3.connect(journal)) as old, closing(sqlite3.connect(path)) as new:
         old.backup(new)
-        new.execute("DELETE FROM entries WHERE position < (SELECT max(position) FROM entries)")
-        new.execute("DELETE FROM bases")
-        new.commit()
+    return without_readings(path)
+
+
+def without_readings(path: Path) -> Path:
+    """The journal at ``path``, from which they are deleted."""
+    with closing(sqlite3.connect(path)) as db:
+        db.execute("DELETE FROM entries WHERE position < (SELECT max(position) FROM entries)")
+        db.execute("DELETE FROM bases")
+        db.commit()
     return path
 
 
@@ -217,6 +223,39 @@ def test_both_ways_give_the_same_steps(journal: Path, emptied: Path) -> None:
                 assert a is None or a == pytest.approx(b, rel=1e-9, abs=1e-9)
             assert one.terms == pytest.approx(other.terms, rel=1e-6, abs=1e-6)
     assert compared > 200
+
+
+def clipped_at_the_width(seed: int) -> list[Recorded]:
+    """Many values beyond the clip: of an average that starts afresh, the first such lies exactly on
+    its limit, and whether it rings is decided by the last digit."""
+    chance = random.Random(seed)
+    at_the_width = [
+        of(f"{direction}-{lam}", EwmaPlan("mean", lam, 2.5, clip=2.5, direction=direction), size=1)
+        for lam in (0.05, 0.2, 0.7)
+        for direction in ("both", "up")
+    ]
+    entries: list[Recorded] = [
+        Started(plans.START),
+        Configured(plans.START, Plan(tuple(at_the_width))),
+        Connected(plans.START, False),
+    ]
+    for n in range(1_500):
+        at = plans.START + n * SECOND
+        for each in at_the_width:
+            wild = chance.choice((-4.0, 0.0, 4.0)) if n % 60 < 20 else 0.0
+            body = {"v": round(10.0 + wild + chance.gauss(0.0, 0.5), 3), "t": at / SECOND, "n": n}
+            entries.append(Message(at, each.source.topic, json.dumps(body).encode()))
+    return entries
+
+
+def test_a_point_exactly_on_the_limit_is_judged_as_the_detector_did(tmp_path: Path) -> None:
+    path = without_readings(journals.write(tmp_path / "j.db", clipped_at_the_width(1), batch=500))
+    events = raised(path)
+    assert len(events) > 50
+    for event in events:
+        found = told(path, event["id"])
+        assert found.source == "evidence"
+        assert found.agrees != "no", (event["text"], found.working)
 
 
 def test_the_arithmetic_adds_up(journal: Path) -> None:

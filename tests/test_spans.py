@@ -42,8 +42,22 @@ def test_short(seconds: float, said: str) -> None:
         (518_400.0, "6 days"),
         (3e7, "347 days"),
         (1e8, "3.2 years"),
-        (1e12, "more than a thousand years"),
+        (3.1e10, "982 years"),
+        (1e12, "over 1,000 years"),
     ],
 )
 def test_long(seconds: float, said: str) -> None:
     assert spans.long(seconds) == said
+
+
+def test_what_comes_too_seldom_to_be_seen_comes_practically_never() -> None:
+    each, things = " in each stream", "subgroups"
+    assert spans.once(518_400.0, each, 3e5, things) == (
+        "once in 6 days in each stream (300,000 subgroups)"
+    )
+    assert spans.once(3.1e10, "", 9e9, things) == "once in 982 years (9,000,000,000 subgroups)"
+    said = "practically never (over 1,000 years in each stream)"
+    assert spans.once(3.2e10, each, 9e9, things) == said
+    assert spans.once_among(9e11, things) == "once in 900,000,000,000 subgroups"
+    said = "practically never (over 1,000,000,000,000 subgroups)"
+    assert spans.once_among(1e197, things) == said

@@ -12,6 +12,7 @@ import signal
 import sys
 import tempfile
 import time
+from dataclasses import replace
 from pathlib import Path
 
 import orjson
@@ -139,6 +140,7 @@ class _Run:
         False where it was stopped.
         """
         begun = time.monotonic()
+        self.clock = replace(self.clock, begun=time.time_ns() // 1_000)
         for message in self._messages:
             if self._stopping:
                 return False

@@ -17,6 +17,7 @@ from pydantic import ValidationError
 from pydantic.fields import FieldInfo
 from pydantic_core import ErrorDetails
 
+from monitor.configuration import decimal_comma
 from monitor.configuration.problems import Path, Problem, dotted
 from monitor.configuration.sections.base import FAULT, Section, either
 from monitor.configuration.sections.document import NOT_BUILT_KEYS, NOT_BUILT_VALUES
@@ -189,6 +190,13 @@ def _subject(node: Node, path: Path) -> str:
     return "the value" if path and path[-1] in _HIDDEN else shown(node)
 
 
+def _with_point(node: Node, *, whole: bool = False) -> str | None:
+    """What to write for a number with a decimal comma; None where that is not what it is."""
+    if not isinstance(node.value, str) or isinstance(node.value, Filled):
+        return None
+    return decimal_comma.instead(node.source, whole=whole)
+
+
 def _unknown_key(trace: _Trace, tree: Node) -> tuple[Complaint, set[str]]:
     """The complaint, and which keys will have been meant."""
     node, path = _locate(tree, trace.path)
@@ -212,6 +220,8 @@ def _own(context: dict[str, Any], trace: _Trace, tree: Node) -> Iterator[Complai
             continue
         if isinstance(node.value, Filled):
             wrong = "is not what belongs here, once its variables are filled in"
+        if with_point := _with_point(node):  # a duration, a size or a rate
+            wrong, instead = decimal_comma.HOLDS_ONE, with_point
         if not isinstance(node.value, dict | list):
             wrong = f"{_subject(node, real)} {wrong}"
         yield Complaint(path, _problem(node, real, wrong, instead))
@@ -237,6 +247,9 @@ def _refused(detail: ErrorDetails, trace: _Trace, tree: Node) -> Complaint:
     subject = "the name" if trace.key else _subject(node, path)
     if kind in _TYPES and isinstance(node.value, str) and not isinstance(scalar(node.source), str):
         wrong, hint = "{shown} is text, since it stands in quotes", "it without quotes"
+    with_point = _with_point(node, whole=kind == "int_type") if kind in _TYPES else None
+    if with_point and kind == "float_type":
+        wrong = f"{{shown}} {decimal_comma.HOLDS_ONE}"
     wrong = wrong.format(shown=subject, **detail.get("ctx", {}))
-    problem = _problem(node, path, wrong, f"write {hint}")
+    problem = _problem(node, path, wrong, with_point or f"write {hint}")
     return Complaint(trace.path, problem, absent=kind == "missing")

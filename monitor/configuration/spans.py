@@ -9,6 +9,12 @@ from __future__ import annotations
 _DAY = 86_400.0
 _YEAR = 365.25 * _DAY
 
+NEVER = 1_000 * _YEAR
+"""Seconds; nobody can tell what comes as seldom from what never comes."""
+
+UNCOUNTED = 1e12
+"""As many of anything as nobody sees: at ten a second they take over 3,000 years."""
+
 
 def number(value: float) -> str:
     """Two digits, three of larger numbers: ``0.17``, ``14``, ``1,050,000``."""
@@ -36,5 +42,20 @@ def long(seconds: float) -> str:
     ):
         if seconds < limit:
             return f"{number(seconds / unit)} {name}"
-    years = seconds / _YEAR
-    return f"{number(years)} years" if years < 1_000 else "more than a thousand years"
+    return f"{number(seconds / _YEAR)} years" if seconds < NEVER else "over 1,000 years"
+
+
+def once(seconds: float, where: str, count: float, things: str) -> str:
+    """How often something comes that comes after so many seconds, in which there are so many
+    things: ``once in 12 days in each stream (2,070,000 subgroups)``."""
+    span = f"{long(seconds)}{where}"
+    if seconds < NEVER:
+        return f"once in {span} ({number(count)} {things})"
+    return f"practically never ({span})"
+
+
+def once_among(count: float, things: str) -> str:
+    """How often something comes that comes after so many things: ``once in 370 subgroups``."""
+    if count < UNCOUNTED:
+        return f"once in {number(count)} {things}"
+    return f"practically never (over {UNCOUNTED:,.0f} {things})"

@@ -369,11 +369,10 @@ class _Speaker:
             return "never"
         if subgroups is None:
             return "at intervals that are too much to compute"
-        count = f"once in {spans.number(subgroups)} subgroups"
         if seconds is None:
-            return count
+            return spans.once_among(subgroups, "subgroups")
         each = " in each stream" if self._plan["subgroup"]["each_stream"] else ""
-        return f"once in {spans.long(seconds)}{each} ({count.removeprefix('once in ')})"
+        return spans.once(seconds, each, subgroups, "subgroups")
 
     def _shewhart(self, detector: Summary, charted: str) -> Iterator[str]:
         centre, limits = self._amount(detector["centre"]), self._between(detector)

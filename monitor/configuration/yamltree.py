@@ -13,6 +13,7 @@ from typing import Any
 
 import yaml
 
+from monitor.configuration import decimal_comma
 from monitor.configuration.problems import Path, Problem, dotted
 
 Scalar = str | int | float | bool | None
@@ -287,7 +288,9 @@ class _Composer:
             if _UNPRINTABLE.search(name):
                 raise self._unreadable(key, f"the key {name!a} is no text", "write a plain key")
             node = replace(self._node(self._next(), (*path, name), depth + 1), line=self._line(key))
-            if name == _MERGE and key.implicit[0]:
+            if event.flow_style and node.source == "" and self._is_cut(entries, key, node):
+                self._mend(key, path, entries)
+            elif name == _MERGE and key.implicit[0]:
                 inherited += node.value if isinstance(node.value, list) else [node]
             elif name in entries:
                 wrong = f"stands twice in one mapping, first in line {entries[name].line}"
@@ -302,6 +305,24 @@ class _Composer:
                     event, path, "<< takes a mapping or a list of mappings", "name one by its alias"
                 )
         return self._collection(event, entries, entries.values())
+
+    def _is_cut(self, entries: dict[str, Node], key: Any, node: Node) -> bool:
+        """Whether a key without a value is what a decimal comma cut off the value before it:
+        ``{catch: 0,8}`` is the number 0 and a key 8."""
+        if node.value is not None or not key.implicit[0] or not entries:
+            return False
+        before = list(entries.values())[-1]
+        whole = isinstance(before.value, int)
+        return whole and decimal_comma.is_cut(before.source, key.value)
+
+    def _mend(self, key: Any, path: Path, entries: dict[str, Node]) -> None:
+        """Put the number together again, so that all else is judged by what was meant."""
+        name, before = list(entries.items())[-1]
+        text = f"{before.source},{key.value}"
+        wrong = f"{text} {decimal_comma.HOLDS_ONE}, which in braces begins another key"
+        self._flaw(key, (*path, name), wrong, decimal_comma.instead(text) or "")
+        value = scalar(decimal_comma.pointed(text) or "")
+        entries[name] = replace(before, value=value, source=text)
 
     def _collection(
         self, event: Any, value: list[Node] | dict[str, Node], children: Collection[Node]

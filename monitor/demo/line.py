@@ -46,6 +46,9 @@ BASELINES = {
     GLUE_TEMPERATURE: Normal(165.0, 0.6),
 }
 UNITS = {NET_WEIGHT: "g", CAP_TORQUE: "N·m", GLUE_TEMPERATURE: "°C"}
+UNDATED = {CAP_TORQUE}
+"""What is measured by a gauge that sends no time."""
+
 TOLERANCE = (331.0, 352.0)  # g; the checkweigher rejects outside it
 
 SPACING = {

@@ -15,7 +15,7 @@ from dataclasses import dataclass
 from pathlib import Path
 
 from monitor import times
-from monitor.demo.line import UNITS
+from monitor.demo.line import UNDATED, UNITS
 from monitor.demo.scenes import Cause, Scene
 from monitor.demo.score import Finding, elapsed
 from monitor.messages import AlertEvent, CountsField
@@ -24,11 +24,13 @@ from monitor.messages import AlertEvent, CountsField
 @dataclass(frozen=True, slots=True)
 class Clock:
     """The line's clock: ``start`` in µs since 1970, ``seconds`` of line time to run, ``speed`` in
-    line seconds a second."""
+    line seconds a second; ``begun`` is when it began to run by this computer's clock,
+    where that is not its own."""
 
     start: int
     seconds: float
     speed: float
+    begun: int | None = None
 
     def at(self, elapsed_seconds: float) -> int:
         """The instant, µs since 1970."""
@@ -37,6 +39,11 @@ class Clock:
     def face(self, elapsed_seconds: float) -> str:
         """``06:41:12``, UTC."""
         return times.format_time(self.at(elapsed_seconds))[11:19]
+
+    def elapsed_at(self, instant: int) -> float:
+        """Seconds of line time at an instant of this computer's clock."""
+        begun = self.start if self.begun is None else self.begun
+        return (instant - begun) / times.SECOND * self.speed
 
 
 _INDENT = " " * 10
@@ -54,9 +61,9 @@ def opening(scene: Scene, clock: Clock, broker: str, folder: Path) -> str:
     if clock.speed > 1:
         lines.append(
             _filled(
-                "The torque gauge sends bare numbers, which are dated by their arrival: in a"
-                " sentence on torque the clock is this computer's, for which the line runs"
-                f" {clock.speed:.0f} times too fast."
+                "The torque gauge sends bare numbers, which are dated by their arrival. The broker"
+                " and the journal have that by this computer's clock, for which the line runs"
+                f" {clock.speed:.0f} times too fast; here it is turned into the line's time."
             )
         )
     return "\n".join([*lines, ""])
@@ -64,12 +71,22 @@ def opening(scene: Scene, clock: Clock, broker: str, folder: Path) -> str:
 
 def alert(event: AlertEvent, clock: Clock) -> str:
     """One alert, at the line's time: what happened, then what to do about it."""
-    what = f"{clock.face(elapsed(event))}  {event['text']}"
+    what = f"{clock.face(elapsed(event))}  {_at_the_line(event, clock)}"
     to_do = event["reaction"] if event["event"] in ("raised", "rejoined") else []
     return "\n".join(
         _filled(paragraph, subsequent=_INDENT)
         for paragraph in [what, *(_INDENT + each for each in to_do)]
     )
+
+
+def _at_the_line(event: AlertEvent, clock: Clock) -> str:
+    """The sentence, with the line's time also where a gauge gave none: its arrivals lie as close
+    together as the line is fast, so that a change would seem to begin after it was found."""
+    shift, text = event["shift"], event["text"]
+    if event["characteristic"] not in UNDATED or shift is None:
+        return text
+    onset = times.parse_iso_time(shift["onset"])
+    return text.replace(shift["onset"][11:19], clock.face(clock.elapsed_at(onset)))
 
 
 def progress(reached: float, clock: Clock, sent: int) -> str:
@@ -95,7 +112,7 @@ def closing(
     rows += [_row(finding, clock, missed) for finding in findings]
     widths = [max(map(len, column)) for column in zip(*rows, strict=True)]
     table = ["  " + "  ".join(map(str.ljust, row, widths)).rstrip() for row in rows]
-    rang = " ".join(f"{clock.face(elapsed(event))} {event['text']}" for event in false)
+    rang = " ".join(f"{clock.face(elapsed(event))} {_at_the_line(event, clock)}" for event in false)
     notes = [f"False alarms: {rang or 'none.'}"]
     if stopped is not None:
         notes.append(f"Stopped early, {stopped:.0f} s into the line's {clock.seconds:.0f} s.")

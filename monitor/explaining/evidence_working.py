@@ -147,13 +147,17 @@ def _averages(
         else:
             variance = (lam * error) ** 2 + (1.0 - lam) ** 2 * variance
         reach = scheme.width * math.sqrt(variance)
-        outside = abs(average - centre) > reach
+        lower, upper = centre - reach, centre + reach
+        # As the detector compares, to the last digit: where a clip equals the width, an average
+        # that starts afresh comes to lie exactly on its limit.
+        above, below = average > upper, average < lower
+        outside = (above and scheme.direction != "down") or (below and scheme.direction != "up")
         done.append(
             replace(
                 step,
                 value=average,
-                lower=centre - reach,
-                upper=centre + reach,
+                lower=lower,
+                upper=upper,
                 terms={"weighted": weighted, "kept": kept},
                 signalled=outside,
             )

@@ -291,15 +291,15 @@ def _chance(plan: CharacteristicPlan, detector: DetectorPlan) -> str:
         return "how often it rings with nothing wrong is too much to compute"
     if math.isinf(ringing.subgroups):
         return "with nothing wrong it never rings"
-    time = ""
+    once = spans.once_among(ringing.subgroups, "subgroups")
     if ringing.seconds is not None:
         coming = pace.pace(plan)
         each = "each" if coming is not None and coming.each else "any"
         where = f" in {each} stream" if pace.keys(plan) else ""
-        time = f", which is once in {spans.long(ringing.seconds)}{where}"
+        once = spans.once(ringing.seconds, where, ringing.subgroups, "subgroups")
     return (
-        f"with nothing wrong {detector.name} rings once in {spans.number(ringing.subgroups)} "
-        f"subgroups{time}, by the textbook; most real lines ring more often"
+        f"with nothing wrong {detector.name} rings {once}, by the textbook; "
+        "most real lines ring more often"
     )
 
 

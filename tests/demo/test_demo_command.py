@@ -36,6 +36,11 @@ def run(command: list[str], environment: dict[str, str]) -> subprocess.Completed
     return subprocess.run(command, env=environment, capture_output=True, text=True, timeout=120)
 
 
+def seconds(face: str) -> int:
+    hours, minutes, rest = map(int, face.split(":"))
+    return hours * 3_600 + minutes * 60 + rest
+
+
 def test_finds_both_causes_and_nothing_else(environment: dict[str, str]) -> None:
     demo = run(DEMO, environment)
     assert demo.returncode == 0, demo.stderr
@@ -46,6 +51,10 @@ def test_finds_both_causes_and_nothing_else(environment: dict[str, str]) -> None
     assert "Check fill head 4 for drips or a slow valve. Isolate and lock out" in words
     assert re.search(r"fill head 4 drifts up \S+ \d+ s, \d+ readings \+0\.\d+ g \+0\.\d+ g", words)
     assert re.search(r"capping torque loosens \S+ \d+ s, \d+ readings −0\.\d+ N·m", words)
+    told = re.findall(r"(\S+) (?:Net|Capping) .*? since about (?:\S+ )?(\S+) UTC", words)
+    assert len(told) == 2
+    for found, onset in told:  # within the line's twelve minutes, and over midnight too
+        assert 0 < (seconds(found) - seconds(onset)) % 86_400 < 720
     assert "False alarms: none." in words
     assert "Messages: 8,071 sent, 8,071 read; set aside: 7 repeated." in words
 

@@ -11,6 +11,7 @@ from monitor.demo import telling
 from monitor.demo.scenes import SCENES, Cause
 from monitor.demo.score import Finding, score
 from monitor.demo.telling import Clock
+from monitor.times import SECOND
 
 HEAD, TORQUE = SCENES["demo"].causes
 CLOCK = Clock(start=0, seconds=720.0, speed=36.0)
@@ -91,6 +92,19 @@ def test_growth_and_its_average() -> None:
     for until in (130.0, 150.0, 300.0):
         upto = [ramp.grown(t) for t in steps if t <= until]
         assert ramp.average(until) == pytest.approx(sum(upto) / len(upto), abs=1e-3)
+
+
+def test_a_gauge_without_time_is_told_at_the_line_s_time_all_the_same() -> None:
+    # 10 s by this computer's clock after it began, the line is 360 s on.
+    clock = Clock(start=0, seconds=720.0, speed=36.0, begun=1_000 * SECOND)
+    shift = {"estimate": -0.08, "onset": "1970-01-01T00:16:50.000Z"}
+    text = "Capping torque has fallen since about 00:16:50 UTC."
+    undated = event(90, characteristic="cap-torque", text=text, shift=shift, reaction=[])
+    assert telling.alert(undated, clock) == (
+        "00:07:30  Capping torque has fallen since about 00:06:00 UTC."
+    )
+    dated = event(90, text=text, shift=shift, reaction=[])
+    assert telling.alert(dated, clock).endswith(text)
 
 
 def test_an_alert_is_told_with_the_line_s_time_and_what_to_do() -> None:

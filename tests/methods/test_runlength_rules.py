@@ -2,6 +2,7 @@
 
 import math
 
+import numpy as np
 import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
@@ -108,3 +109,14 @@ def test_a_rise_is_to_the_upper_side_what_a_fall_is_to_the_lower(shift: float) -
     up = rules.run_length(chosen, shift, direction="up")
     down = rules.run_length(chosen, -shift, direction="down")
     assert up == pytest.approx(down, rel=1e-9)
+
+
+def test_first_signals_of_given_series_are_where_the_rule_is_met_first() -> None:
+    """Worked by hand: eight on one side, two of three beyond 2; the last column signals nowhere."""
+    series = np.zeros((10, 4))
+    series[:, 0] = 1
+    series[[3, 5, 6], 1] = 2.5
+    series[[0, 9], 2] = 2.5, -3.5
+    found = simulation.first_signals([OUTSIDE, TWO_OF_THREE, RUN], series)
+
+    assert found.tolist() == [8, 6, 10, 11]

@@ -136,6 +136,19 @@ def test_a_terminal_hears_a_sentence_too(tmp_path: Path) -> None:
     assert "the floor is 16.48." in text
 
 
+def test_what_nobody_will_see_is_called_so(tmp_path: Path) -> None:
+    target = tmp_path / "design.html"
+
+    def said(*more: str) -> str:
+        assert main(["design", "--cusum", "0.5,40", "--html", str(target), *more]) == 0
+        return target.read_text()
+
+    assert "rings practically never (7.5e+17 subgroups) with nothing wrong" in said()
+    text = said("--rate", "2/s")
+    assert "rings practically never (over 1,000 years: 7.5e+17 subgroups) with" in text
+    assert "<td>over 1,000 years</td>" in text
+
+
 def test_a_pipe_gets_the_table(capsys: pytest.CaptureFixture[str]) -> None:
     assert main(["design", "--cusum", "0.5,5", "--rate", "2/s"]) == 0
     rows = [line.split() for line in capsys.readouterr().out.splitlines()]
