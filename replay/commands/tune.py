@@ -8,6 +8,7 @@ from __future__ import annotations
 import argparse
 import math
 import os
+import shutil
 import sys
 from collections import Counter
 from collections.abc import Sequence
@@ -23,7 +24,7 @@ from monitor.configuration.config import load_measured
 from monitor.configuration.problems import ConfigurationError
 from monitor.configuration.resolve import read_plan
 from monitor.configuration.sections.characteristic import Characteristic
-from monitor.plan import CharacteristicPlan, Plan
+from monitor.plan import CharacteristicPlan, Intent, Plan
 from monitor.progress import Progress
 from monitor.times import SECOND, parse_duration
 from replay import set_aside_words
@@ -36,8 +37,14 @@ from replay.tuning.candidates import Request
 from replay.tuning.declared import declared, intents
 from replay.tuning.report import page, require_plotly
 from replay.tuning.result import Kind, Source
+from replay.tuning.shares import role_of
 from replay.tuning.study import study
 from replay.tuning.words import commented, lines
+
+_UNBROKEN = 160
+"""Columns where there is no terminal, so that a row of a table is a line."""
+
+_LEAST = 60
 
 _KINDS: tuple[Kind, ...] = ("cusum", "ewma", "shewhart")
 _EXAMPLES = (
@@ -69,12 +76,14 @@ def configure(parser: argparse.ArgumentParser) -> None:
     asked.add_argument(
         "--false-alarm-every",
         metavar="14d",
-        help="running time between false alarms, all streams together (default: the promise)",
+        help="running time between false alarms, all streams and detectors together (default: the "
+        "promise)",
     )
     asked.add_argument(
         "--catch-ratio",
         metavar="R",
-        help="watch the spread as well, for one R times as large (1.5 is put in without it)",
+        help="watch the spread as well, for one R times as large (default: as configured; where "
+        "none is, 1.5 is put in, and not watched for)",
     )
     tried = parser.add_argument_group("what is tried")
     tried.add_argument("--kind", metavar="K,K", help="cusum, ewma, shewhart (default: all)")
@@ -128,7 +137,8 @@ def main(args: argparse.Namespace) -> int:
     if args.json:
         sys.stdout.buffer.write(orjson.dumps(as_json(result), option=orjson.OPT_APPEND_NEWLINE))
     elif files.STDOUT not in (args.to, args.html):
-        print("\n".join(lines(result)))
+        columns = shutil.get_terminal_size((_UNBROKEN, 24)).columns
+        print("\n".join(lines(result, max(columns, _LEAST))))
     if args.to is not None and not result.fragment:
         print(
             f"{args.to} was not written: no setting is shown to keep the promise", file=sys.stderr
@@ -214,11 +224,12 @@ def _request(args: argparse.Namespace, characteristic: CharacteristicPlan) -> Re
     strange = [kind for kind in kinds if kind not in _KINDS]
     if strange:
         raise CommandError(f"--kind {strange[0]}: write {', '.join(_KINDS)}", WRONG)
-    ratio = 1.5 if args.catch_ratio is None else _number("--catch-ratio", args.catch_ratio)
-    if ratio <= 1:
-        raise CommandError("--catch-ratio: write a number above 1, such as 1.5", WRONG)
+    standing = declared(section, characteristic)
+    watched = any(role_of(each) == "spread" for each in standing)
+    ratio = _ratio(args, asked)
     return Request(
         promise=_promise(args, section, characteristic.name),
+        promised=None if section.promise is None else section.promise.false_alarm_every / SECOND,
         catch=catch,
         ignore=tuple(dict.fromkeys(ignore)),
         kinds=cast(tuple[Kind, ...], tuple(dict.fromkeys(kinds))),
@@ -227,11 +238,21 @@ def _request(args: argparse.Namespace, characteristic: CharacteristicPlan) -> Re
         ewmas=tuple(_ewma(text) for text in args.ewma),
         shewharts=tuple(_positive("--shewhart", text) for text in args.shewhart),
         ratio=ratio,
-        spread=args.catch_ratio is not None,
-        declared=declared(section, characteristic),
+        spread=args.catch_ratio is not None or watched,
+        declared=standing,
         seed=args.seed,
         jobs=max(args.jobs, 1),
     )
+
+
+def _ratio(args: argparse.Namespace, asked: Sequence[Intent]) -> float:
+    if args.catch_ratio is None:
+        growing = (each.catch_ratio for each in asked)
+        return next((ratio for ratio in growing if ratio is not None and ratio > 1), 1.5)
+    ratio = _number("--catch-ratio", args.catch_ratio)
+    if ratio <= 1:
+        raise CommandError("--catch-ratio: write a number above 1, such as 1.5", WRONG)
+    return ratio
 
 
 def _each(values: Sequence[float | None]) -> tuple[float, ...]:

@@ -11,13 +11,22 @@ from typing import Any
 
 from monitor.times import format_time
 from replay.tuning.ranking import keeps
-from replay.tuning.result import Delay, Grouping, Part, Quantile, Range, Result, Setting
+from replay.tuning.result import (
+    Delay,
+    Grouping,
+    Part,
+    Quantile,
+    Range,
+    Result,
+    Setting,
+    Shown,
+    Together,
+)
 
 
 def as_json(result: Result) -> dict[str, Any]:
     """Durations are seconds of running time, ``readings`` pieces of the drifting stream, instants
     ISO 8601; what is too long for a number, or unlimited, is null."""
-    best = None if result.best is None else result.settings[result.best]
     return {
         "characteristic": result.characteristic,
         "unit": result.unit,
@@ -39,9 +48,29 @@ def as_json(result: Result) -> dict[str, Any]:
             "streams": {each.stream: each.readings for each in result.streams},
         },
         "groupings": [_grouping(each) for each in result.groupings],
+        "together": None if result.together is None else _together(result.together),
         "settings": [_setting(each, result) for each in result.settings],
         "refused": [asdict(each) for each in result.refusals],
-        "best": None if best is None else {"name": best.name, **_as_configured(best, result)},
+        "best": _taken(result.best, result),
+        "best_spread": _taken(result.best_spread, result),
+    }
+
+
+def _taken(place: int | None, result: Result) -> dict[str, Any] | None:
+    if place is None:
+        return None
+    found = result.settings[place]
+    return {"name": found.name, **_as_configured(found, result)}
+
+
+def _together(found: Together) -> dict[str, Any]:
+    return {
+        "name": found.name,
+        "detectors": list(found.detectors),
+        "not_in_delays": list(found.unfollowed),
+        "signals": found.signals,
+        "standing": found.standing,
+        **_shown(found),
     }
 
 
@@ -78,8 +107,6 @@ def _grouping(found: Grouping) -> dict[str, Any]:
 
 
 def _setting(found: Setting, result: Result) -> dict[str, Any]:
-    told = found.extrapolated
-    events = found.events
     return {
         "name": found.name,
         "rank": found.rank,
@@ -88,6 +115,15 @@ def _setting(found: Setting, result: Result) -> dict[str, Any]:
         **_as_configured(found, result),
         "catch": found.catch,
         "ignore": found.ignore,
+        **_shown(found),
+    }
+
+
+def _shown(found: Shown) -> dict[str, Any]:
+    told = found.extrapolated
+    events = found.events
+    return {
+        "asked": found.asked,
         "false_alarms": {
             "seen": found.observed.alarms,
             "seconds": found.observed.seconds,
@@ -103,7 +139,7 @@ def _setting(found: Setting, result: Result) -> dict[str, Any]:
         },
         "no_interval": found.no_interval or None,
         "meets": found.meets,
-        "keeps": keeps(found, result.promise),
+        "keeps": keeps(found),
         "delays": [_delay(each) for each in found.delays],
         "curve": [_delay(each) for each in found.curve],
         "events": None if events is None else asdict(events),

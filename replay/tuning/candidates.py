@@ -8,7 +8,7 @@ from __future__ import annotations
 
 import itertools
 import math
-from collections.abc import Iterator
+from collections.abc import Iterator, Sequence
 from dataclasses import dataclass, replace
 
 from monitor.plan import (
@@ -25,17 +25,21 @@ from replay.tuning.declared import Declared
 from replay.tuning.grouped import Grouped
 from replay.tuning.labels import Label
 from replay.tuning.result import Kind, Origin
+from replay.tuning.shares import configured_part, part, role
 
 CLIP = 3.0
 """Standard errors; one wild reading must not ring by itself, nor decide the fit."""
+
+AS_CONFIGURED = "as configured: "
 
 _HEAVIEST = 0.3  # λ above which a clipped average could hardly reach its limit
 
 
 @dataclass(frozen=True, slots=True)
 class Request:
-    """What was asked. ``promise`` is seconds between false alarms of the characteristic; ``catch``
-    and ``ignore`` are in the gauge's unit; ``cusums`` hold (k, h), ``ewmas`` (λ, width),
+    """What was asked. ``promise`` is seconds between false alarms of the characteristic, all its
+    detectors together, and ``promised`` what stands in the configuration, None where nothing does;
+    ``catch`` and ``ignore`` are in the gauge's unit; ``cusums`` hold (k, h), ``ewmas`` (λ, width),
     ``shewharts`` widths; ``ratio`` is how many times as large a spread is put in and, where
     ``spread``, to be watched for; ``sizes`` of subgroups, none: as configured; ``declared`` are the
     detectors that stand in the configuration."""
@@ -43,6 +47,7 @@ class Request:
     promise: float
     catch: tuple[float, ...]
     ignore: tuple[float, ...] = (0.0,)
+    promised: float | None = None
     kinds: tuple[Kind, ...] = ("cusum", "ewma", "shewhart")
     sizes: tuple[int, ...] = ()
     cusums: tuple[tuple[float, float], ...] = ()
@@ -58,7 +63,8 @@ class Request:
 
 @dataclass(frozen=True, slots=True)
 class Candidate:
-    """One setting to try; with origin ``calibrated`` the limit in its scheme means nothing yet."""
+    """One setting to try; with origin ``calibrated`` the limit in its scheme means nothing yet.
+    ``part`` of the promised rate of false alarms is its own."""
 
     name: str
     kind: Kind
@@ -66,6 +72,7 @@ class Candidate:
     origin: Origin
     catch: float | None = None
     ignore: float | None = None
+    part: float = 1.0
 
 
 def limit(scheme: Scheme) -> float:
@@ -94,7 +101,16 @@ def candidates(
     if not isinstance(grouped.plan, ByCount):
         chart = "mean"
     found = [*_worked_out(request, chart, error, interval, grouped.size), *_given(request, chart)]
-    return [replace(each, name=f"{each.name}, size {grouped.size}") for each in found]
+    return [
+        replace(each, name=f"{each.name}, size {grouped.size}", part=_part(each.scheme, request))
+        for each in found
+    ]
+
+
+def _part(scheme: Scheme, request: Request) -> float:
+    kind = "shewhart" if isinstance(scheme, ShewhartPlan) else "cusum"
+    own = role(kind, scheme.chart, scheme.direction)
+    return 1.0 if own is None else part(own, request.declared, request.spread)
 
 
 def _worked_out(
@@ -119,9 +135,15 @@ def _worked_out(
             )
     if request.spread and size > 1 and "cusum" in request.kinds:
         yield Candidate(
-            f"cusum, chart variance, catch_ratio {request.ratio:g}",
+            f"cusum, catch_ratio {request.ratio:g}",
             "cusum",
-            CusumPlan("variance", variance_reference(request.ratio), 1.0, direction="up"),
+            CusumPlan(
+                "variance",
+                _written(variance_reference(request.ratio)),
+                1.0,
+                direction="up",
+                size=size,
+            ),
             "calibrated",
         )
 
@@ -130,6 +152,11 @@ def variance_reference(ratio: float) -> float:
     """k of the CUSUM of S²/σ² for a spread ``ratio`` times as large: 2 ln r · r²/(r² − 1), by the
     likelihood ratio (D. M. Hawkins & D. H. Olwell 1998, Cumulative Sum Charts)."""
     return 2 * math.log(ratio) * ratio**2 / (ratio**2 - 1)
+
+
+def _written(value: float) -> float:
+    """As many digits as anybody copies."""
+    return float(f"{value:.5g}")
 
 
 def _for(kind: Kind, chart: Chart, catch: float, ignore: float, interval: float) -> Scheme:
@@ -161,7 +188,9 @@ def _given(request: Request, chart: Chart) -> Iterator[Candidate]:
         yield Candidate(f"shewhart {width:g}", "shewhart", scheme, "given")
 
 
-def configured(plan: CharacteristicPlan) -> tuple[list[Candidate], list[str]]:
+def configured(
+    plan: CharacteristicPlan, declared: Sequence[Declared]
+) -> tuple[list[Candidate], list[str]]:
     """The configuration's own detectors, and the names of those that arrays cannot carry out."""
     found: list[Candidate] = []
     left: list[str] = []
@@ -185,5 +214,7 @@ def configured(plan: CharacteristicPlan) -> tuple[list[Candidate], list[str]]:
             if isinstance(scheme, EwmaPlan)
             else "shewhart"
         )
-        found.append(Candidate(f"as configured: {each.name}", kind, scheme, "configured"))
+        own = configured_part(each.name, declared)
+        name = f"{AS_CONFIGURED}{each.name}"
+        found.append(Candidate(name, kind, scheme, "configured", part=own))
     return found, left

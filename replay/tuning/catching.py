@@ -28,6 +28,9 @@ FLOORS = 15
 LEAST = 40
 """A drift is followed for so many floors, and at least so many subgroups."""
 
+JOINTLY = -1
+"""The key of what several settings do together."""
+
 
 @dataclass(frozen=True, slots=True)
 class Textbook:
@@ -87,9 +90,13 @@ class Catcher:
             warm(detectors, self._before)
             self._warmed.append((tuple(keys), detectors))
 
-    def catch(self, drift: Drift, wanted: Sequence[int]) -> dict[int, Delay]:
-        """The delays of the ``wanted`` settings, by key."""
+    def catch(
+        self, drift: Drift, wanted: Sequence[int], jointly: Sequence[int] = ()
+    ) -> dict[int, Delay]:
+        """The delays of the ``wanted`` settings, by key; under ``JOINTLY`` that of whichever of
+        the settings named so, all of them wanted too, is first."""
         found: dict[int, Delay] = {}
+        joint: Values | None = None
         if not wanted:
             return found
         horizon = self._horizon(drift)
@@ -113,6 +120,11 @@ class Catcher:
             late = np.where(caught, np.maximum(seconds[at], 0.0), np.inf)
             for row, each in enumerate(rows):
                 found[keys[each]] = self._delay(drift, horizon, readings[row], late[row])
+                if keys[each] in jointly:
+                    own = np.stack((readings[row], late[row]))
+                    joint = own if joint is None else np.minimum(joint, own)
+        if joint is not None:
+            found[JOINTLY] = self._delay(drift, horizon, joint[0], joint[1])
         return found
 
     def _horizon(self, drift: Drift) -> int:

@@ -9,25 +9,30 @@ from collections.abc import Sequence
 from dataclasses import dataclass
 from typing import Any
 
+from monitor.configuration.asked import by_intent
 from monitor.configuration.presets import PRESETS
 from monitor.configuration.sections.characteristic import Characteristic
 from monitor.configuration.sections.detectors import (
     AnyDetector,
+    CusumDetector,
     ShewhartDetector,
     default_chart,
 )
-from monitor.plan import CharacteristicPlan, DeclaredDetector, DetectorPlan, Intent
+from monitor.plan import CharacteristicPlan, DeclaredDetector, DetectorPlan, Intent, Side
 
 
 @dataclass(frozen=True, slots=True)
 class Declared:
-    """One detector: its name, ``kind`` and ``chart`` however they came about, its ``share`` of
-    the promise, and its ``keys`` as they are written."""
+    """One detector: its name, ``kind``, ``chart`` and watched ``side`` however they came about, its
+    ``share`` of the promise, whether its constants are worked out ``by_promise``, and its ``keys``
+    as they are written."""
 
     name: str
     kind: str
     chart: str
+    side: Side
     share: float
+    by_promise: bool
     keys: dict[str, Any]
 
 
@@ -51,9 +56,21 @@ def declared(section: Characteristic, plan: CharacteristicPlan) -> tuple[Declare
         known = plan.learn.detectors
     usual = default_chart(section.subgroup)
     return tuple(
-        Declared(named.name, each.kind, each.chart or usual, each.share, _keys(each))
+        Declared(
+            named.name,
+            each.kind,
+            each.chart or usual,
+            _side(each),
+            each.share,
+            by_intent(each, section.promise),
+            _keys(each),
+        )
         for each, named in zip(section.detectors, known, strict=True)
     )
+
+
+def _side(section: AnyDetector) -> Side:
+    return section.watched if isinstance(section, CusumDetector) else section.direction
 
 
 def _keys(section: AnyDetector) -> dict[str, Any]:

@@ -48,9 +48,10 @@ def family(candidate: Candidate) -> Scheme:
 
 
 def judge(grouped: Grouped, members: Sequence[Candidate], interval: float) -> list[Judged]:
-    """Every member of one family; ``interval`` is the promise in subgroups of all streams.
+    """Every member of one family; ``interval`` is the promise in subgroups of all streams, of which
+    each has its part.
 
-    A calibrated limit is set so far beyond the promise that the last part may be expected to prove
+    A calibrated limit is set so far beyond that part that the last part may be expected to prove
     it: by what 90 % leaves open of both parts' estimates. Where no tail can be fitted a calibrated
     member is left out.
     """
@@ -66,7 +67,8 @@ def judge(grouped: Grouped, members: Sequence[Candidate], interval: float) -> li
         if candidate.origin == "calibrated":
             if fitted is None or proved is None:
                 continue
-            at = float(f"{fitted.level(interval * margin(fitted, proved, interval)):.5g}")
+            aim = interval / candidate.part
+            at = float(f"{fitted.level(aim * margin(fitted, proved, aim)):.5g}")
         found.append(
             Judged(
                 candidate,

@@ -1,4 +1,4 @@
-"""Which settings come first: those that keep the promise, by how late they catch.
+"""Which settings come first: those that keep their part of the promise, by how late they catch.
 
 Knows finished settings. Must not know how they were judged.
 """
@@ -10,27 +10,59 @@ from collections.abc import Sequence
 from dataclasses import replace
 from typing import Literal
 
-from replay.tuning.result import Delay, Result, Setting
+from replay.tuning.result import Delay, Result, Setting, Shown
 
 
 def ranked(settings: Sequence[Setting], catch: float) -> list[tuple[int, Setting]]:
-    """Settings with their places in ``settings``, ranked ones first, then the others as they
-    came."""
-    order = sorted(
-        range(len(settings)),
-        key=lambda i: (_why_not(settings[i], catch) != "", _key(settings[i], catch)),
-    )
+    """Settings with their places in ``settings``: ranked ones of the mean first, then those of the
+    spread, which are ranked among themselves, then the others as they came."""
+    groups: dict[tuple[bool, bool], list[int]] = {}
+    for index, each in enumerate(settings):
+        groups.setdefault((_why_not(each, catch) != "", each.of_spread), []).append(index)
     found = []
-    for place, index in enumerate(order, 1):
+    for unranked, of_spread in ((False, False), (False, True)):
+        chosen = groups.get((unranked, of_spread), [])
+        chosen.sort(key=lambda index: _key(settings[index], catch))
+        found += [
+            (index, replace(settings[index], rank=place, unranked=""))
+            for place, index in enumerate(chosen, 1)
+        ]
+    for index in sorted(groups.get((True, False), []) + groups.get((True, True), [])):
         each = settings[index]
-        why = _why_not(each, catch)
-        found.append((index, replace(each, rank=None if why else place, unranked=why)))
+        found.append((index, replace(each, rank=None, unranked=_why_not(each, catch))))
     return found
 
 
-def at_catch(setting: Setting, catch: float) -> Delay | None:
+def to_take(settings: Sequence[Setting]) -> tuple[int | None, int | None]:
+    """The places of the best setting of ranked ``settings``, and of the best of the spread that can
+    stand beside it: on the same subgroups, and held against the same baseline."""
+    if not settings or settings[0].of_spread or settings[0].rank is None:
+        return None, None
+    best = settings[0]
+    beside = (
+        place
+        for place, each in enumerate(settings)
+        if each.of_spread
+        and each.rank is not None
+        and each.grouping == best.grouping
+        and (each.origin == "configured") == (best.origin == "configured")
+    )
+    return 0, next(beside, None)
+
+
+def at_catch(shown: Shown, catch: float) -> Delay | None:
     """The delay after a step of that size."""
-    return next((d for d in setting.delays if d.shape == "step" and d.amount == catch), None)
+    return next((d for d in shown.delays if d.shape == "step" and d.amount == catch), None)
+
+
+def at_spread(shown: Shown) -> Delay | None:
+    """The delay after the spread that was put in."""
+    return next((d for d in shown.delays if d.shape == "spread"), None)
+
+
+def that_ranks(setting: Setting, catch: float) -> Delay | None:
+    """The delay that the setting is ranked by."""
+    return at_spread(setting) if setting.of_spread else at_catch(setting, catch)
 
 
 def has_interval(result: Result, grouping: int) -> bool:
@@ -38,26 +70,24 @@ def has_interval(result: Result, grouping: int) -> bool:
     return any(s.grouping == grouping and s.extrapolated is not None for s in result.settings)
 
 
-def keeps(setting: Setting, promise: float) -> Literal["yes", "no", "not shown"]:
-    """Whether it rings no more often than once in ``promise`` seconds: "no" where all of an
-    interval is shorter, "not shown" where the recording leaves it open."""
-    if setting.meets:
+def keeps(shown: Shown) -> Literal["yes", "no", "not shown"]:
+    """Whether it rings no more often than it is asked to: "no" where all of an interval is shorter,
+    "not shown" where the recording leaves it open."""
+    if shown.meets:
         return "yes"
-    told = (setting.observed.interval, setting.extrapolated and setting.extrapolated.interval)
-    short = any(found and found.high is not None and found.high < promise for found in told)
+    told = (shown.observed.interval, shown.extrapolated and shown.extrapolated.interval)
+    short = any(found and found.high is not None and found.high < shown.asked for found in told)
     return "no" if short else "not shown"
 
 
 def _why_not(setting: Setting, catch: float) -> str:
-    if setting.chart == "variance":
-        return "it watches the spread, not the mean"
-    delay = at_catch(setting, catch)
+    delay = that_ranks(setting, catch)
     if not setting.meets:
         if setting.extrapolated is None:
             return setting.no_interval
         if setting.extrapolated.interval.high is None:
             return "the recording is too short to show that it keeps the promise"
-        return "the lower end of its interval is shorter than the promise"
+        return "the lower end of its interval is shorter than what is asked of it"
     if delay is None:
         return "the recording is too short to tell how late it catches a drift"
     if delay.late_readings.value is None:
@@ -66,7 +96,7 @@ def _why_not(setting: Setting, catch: float) -> str:
 
 
 def _key(setting: Setting, catch: float) -> tuple[float, float]:
-    delay = at_catch(setting, catch)
+    delay = that_ranks(setting, catch)
     if delay is None:
         return math.inf, math.inf
     late, median = delay.late_readings.value, delay.median_readings.value

@@ -127,11 +127,12 @@ class Grouping:
 
 @dataclass(frozen=True, slots=True)
 class Alarm:
-    """A signal in the last part: the instant of the subgroup's last reading, and the stream."""
+    """A signal in the last part: the instant of the subgroup's last reading, and the stream;
+    ``direction`` is None for a spread or a pattern that has none."""
 
     time: int
     stream: str
-    direction: Literal["up", "down"]
+    direction: Literal["up", "down"] | None
 
 
 @dataclass(frozen=True, slots=True)
@@ -244,10 +245,13 @@ class Setting:
     ``h``, ``clip``, ``lambda``, ``width``, …). ``catch`` and ``ignore`` are what it was made for,
     None where constants were given. ``grouping`` is its place in ``Result.groupings``.
     ``no_interval`` says why ``extrapolated`` is None; empty where it is not. ``meets``: the lower
-    end of its interval is no shorter than the promise. ``rank`` counts from 1 among those that do,
-    by the 90 % point of the delay at the first ``catch``; None for others, and then ``unranked``
-    says why. ``delays`` at the sizes asked for; ``curve`` are steps of several sizes, for the best
-    ones only, empty for others. ``alarms`` are at most 500, the first ones.
+    end of its interval is no shorter than ``asked``, which is its part of the promise in the
+    configuration it is tried for: seconds between its own false alarms. ``rank`` counts from 1
+    among those that do and watch the mean, by the 90 % point of the delay at the first ``catch``,
+    and again from 1 among those that watch the spread, by that of the spread that was put in; None
+    for others, and then ``unranked`` says why. ``delays`` at the sizes asked for; ``curve`` are
+    steps of several sizes, for the best ones only, empty for others. ``alarms`` are at most 500,
+    the first ones.
     """
 
     name: str
@@ -266,9 +270,50 @@ class Setting:
     curve: tuple[Delay, ...]
     events: EventScore | None
     alarms: tuple[Alarm, ...]
+    asked: float
     meets: bool
     rank: int | None
     unranked: str
+
+    @property
+    def of_spread(self) -> bool:
+        """Whether it watches the spread, not the mean."""
+        return self.chart == "variance"
+
+
+@dataclass(frozen=True, slots=True)
+class Together:
+    """All configured detectors on every stream at once, as the crew hears them today.
+
+    ``detectors`` are their names; all are in ``observed``, counted by the engine's own alerts: as
+    one what several detectors signal on one side of a stream until it has returned to normal, again
+    what rings after that. ``signals`` is how many signals that were. ``standing`` is the share of
+    the streams' time in the last part that an alert was open in: nothing more could ring there, and
+    ``observed.seconds`` leaves it out. ``extrapolated`` adds up the rates of the detectors: its
+    lower end is safe, since what rings together is counted twice; its upper end is that of the
+    detector that rings most. ``delays`` and ``curve`` are of whichever detector is first; those in
+    ``unfollowed`` are not among them, and could only be earlier. ``asked`` is the promise.
+    """
+
+    name: str
+    detectors: tuple[str, ...]
+    unfollowed: tuple[str, ...]
+    grouping: int
+    observed: Observed
+    signals: int
+    standing: float
+    extrapolated: Extrapolated | None
+    no_interval: str
+    delays: tuple[Delay, ...]
+    curve: tuple[Delay, ...]
+    events: EventScore | None
+    alarms: tuple[Alarm, ...]
+    asked: float
+    meets: bool
+
+
+Shown = Setting | Together
+"""What a row of a table may be of."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -284,16 +329,18 @@ class Refusal:
 class Result:
     """Everything that one characteristic's recordings said.
 
-    ``promise`` is the asked seconds between false alarms. ``catch`` and ``ignore`` are as asked, in
-    the gauge's unit, the first of ``catch`` ranks; ``ratio`` is the spread that was put in.
-    ``ramp`` is the readings of a stream over which a ramp grows. ``resolution``: the gauge's step,
-    None where none was found. ``set_aside`` are readings not used, by reason. ``trust`` is the
-    answer in one sentence to: may I trust this recording? ``trusted`` is false where no interval
-    can be given at all; ``with_care``: one can, but not without reserve. ``best`` is the place of
-    the setting to take in ``settings``, None where none meets the promise. ``settings`` are
-    ordered: ranked ones first. ``fragment`` is the YAML that puts ``best`` into the configuration,
-    empty without one; ``notes`` are sentences on what it replaces and keeps. ``events`` counts
-    labelled events.
+    ``promise`` is the asked seconds between false alarms of all detectors together. ``catch`` and
+    ``ignore`` are as asked, in the gauge's unit, the first of ``catch`` ranks; ``ratio`` is the
+    spread that was put in. ``ramp`` is the readings of a stream over which a ramp grows.
+    ``resolution``: the gauge's step, None where none was found. ``set_aside`` are readings not
+    used, by reason. ``trust`` is the answer in one sentence to: may I trust this recording?
+    ``trusted`` is false where no interval can be given at all; ``with_care``: one can, but not
+    without reserve. ``best`` is the place of
+    the setting to take in ``settings``, None where none meets the promise, and ``best_spread`` that
+    of the one to take for the spread. ``settings`` are ordered: ranked ones first, of the mean and
+    then of the spread. ``together`` is what runs today, None where no stream has a baseline yet.
+    ``fragment`` is the YAML that puts the best into the configuration, empty without one;
+    ``notes`` are sentences on what it replaces and keeps. ``events`` counts labelled events.
     """
 
     characteristic: str
@@ -319,6 +366,8 @@ class Result:
     trusted: bool
     with_care: bool
     best: int | None
+    best_spread: int | None
+    together: Together | None
     fragment: str
     notes: tuple[str, ...]
     events: int

@@ -32,7 +32,7 @@ from replay.tuning.running import PROVE, Running
 from replay.tuning.scoring import score
 from replay.tuning.tails import TailFit
 
-_ALARMS = 500
+ALARMS = 500
 _POINTS = 200
 
 WANDERS = "the process wanders: no recording foretells its false alarms"
@@ -65,11 +65,7 @@ def setting(
     wanders = found.wander.wanders
     observed = _observed(grouped, counted, place, found, wanders)
     extrapolated, why, lowest = _extrapolated(judged, found)
-    contradicted = (
-        observed.interval is not None
-        and observed.interval.high is not None
-        and observed.interval.high < place.promise
-    )
+    asked = place.promise / candidate.part
     return Setting(
         name=candidate.name,
         kind=candidate.kind,
@@ -89,10 +85,17 @@ def setting(
             place.labels, place.streams, _instants(grouped, judged.signals), place.running
         ),
         alarms=_alarms(grouped, counted, place),
-        meets=place.promise <= min(lowest, found.supports) and not contradicted,
+        asked=asked,
+        meets=asked <= min(lowest, found.supports) and not contradicted(observed, asked),
         rank=None,
         unranked="",
     )
+
+
+def contradicted(observed: Observed, asked: float) -> bool:
+    """Whether the count by itself is of an interval shorter than ``asked`` seconds."""
+    counted = observed.interval
+    return counted is not None and counted.high is not None and counted.high < asked
 
 
 def constants(scheme: Scheme) -> tuple[tuple[str, float], ...]:
@@ -174,8 +177,8 @@ def _alarms(grouped: Grouped, counted: Sequence[Signals], place: Place) -> tuple
         Alarm(time, name, "up" if upper else "down")
         for name, stream, each in zip(place.streams, grouped.streams, counted, strict=True)
         for time, upper in zip(
-            stream.last[each.at[:_ALARMS]].tolist(), each.up[:_ALARMS].tolist(), strict=True
+            stream.last[each.at[:ALARMS]].tolist(), each.up[:ALARMS].tolist(), strict=True
         )
     ]
     found.sort(key=lambda alarm: alarm.time)
-    return tuple(found[:_ALARMS])
+    return tuple(found[:ALARMS])

@@ -17,16 +17,18 @@ from monitor.plan import CharacteristicPlan, Scheme
 from replay.readings import Readings
 from replay.tuning import fragment, looking, verdict
 from replay.tuning.candidates import Candidate, Request, candidates, configured
-from replay.tuning.catching import Catcher, moments
+from replay.tuning.catching import JOINTLY, Catcher, moments
 from replay.tuning.changed import Drift, resolution
 from replay.tuning.delays import Resampling
 from replay.tuning.drifts import FEWEST, Onsets, onsets
 from replay.tuning.grouped import Grouped
+from replay.tuning.hearing import hear
 from replay.tuning.judging import Judged, family, judge
 from replay.tuning.preparing import Held, Prepared, horizon, prepare
-from replay.tuning.ranking import ranked
-from replay.tuning.result import Delay, Refusal, Result, Setting, Shape, Source
+from replay.tuning.ranking import ranked, to_take
+from replay.tuning.result import Delay, Refusal, Result, Setting, Shape, Source, Together
 from replay.tuning.showing import Place, setting
+from replay.tuning.together import together
 
 OnProgress = Callable[[str], None]
 """Told what is being done."""
@@ -38,7 +40,7 @@ _CURVE = (0.5, 0.75, 1.0, 1.25, 1.5, 2.0, 3.0)
 """Sizes of steps that curves are drawn through, times the drift to catch."""
 
 _CURVED = 5
-"""So many of the best settings get a curve, and every configured one."""
+"""So many of the best settings for the mean get a curve, and every configured one."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -66,6 +68,13 @@ class _Batch:
     judged: list[Judged]
     left_out: list[str]
 
+    @property
+    def configured(self) -> tuple[int, ...]:
+        """The places of the configured detectors among ``judged``."""
+        return tuple(
+            place for place, each in enumerate(self.judged) if each.candidate.origin == "configured"
+        )
+
 
 def study(
     readings: Readings, sources: Sequence[Source], request: Request, progress: OnProgress
@@ -85,32 +94,41 @@ def study(
     batches = list(_batches(plan, prepared, request, progress))
     settings: list[Setting] = []
     schemes: list[tuple[_Batch, Scheme]] = []
+    running_now: Together | None = None
+    unmatched = configured(plan, request.declared)[1]
     for batch in batches:
         progress(f"drifts for {len(batch.judged)} settings on {batch.held.found.said}")
-        delays = (
-            [[] for _ in batch.judged]
+        found = batch.held.found
+        delays, jointly = (
+            ([[] for _ in batch.judged], [])
             if drifts.too_few
             else _delays(batch, prepared, drifts, request)
         )
         for judged, own in zip(batch.judged, delays, strict=True):
-            found = batch.held.found
             settings.append(setting(judged, batch.grouped, batch.number, found, place, own))
             schemes.append((batch, judged.scheme))
+        if batch.grouped is batch.held.theirs:
+            progress("alerts of all configured detectors together")
+            alone = settings[len(settings) - len(batch.judged) :]
+            heard = hear(plan, batch.grouped)
+            running_now = together(
+                plan, batch.grouped, heard, alone, unmatched, jointly, found, batch.number, place
+            )
     order = ranked(settings, request.catch[0])
     progress("drifts of several sizes for the best")
-    curved = [
-        index
-        for number, (index, each) in enumerate(order)
-        if number < _CURVED or each.origin == "configured"
-    ]
+    best_first = [index for index, each in order if not each.of_spread][:_CURVED]
+    curved = dict.fromkeys(
+        best_first + [index for index, each in order if each.origin == "configured"]
+    )
     chosen = {} if drifts.too_few else {index: schemes[index] for index in curved}
     curves = _curves(chosen, prepared, drifts, request)
+    if running_now is not None:
+        running_now = replace(running_now, curve=curves.get(JOINTLY, ()))
     final = tuple(replace(each, curve=curves.get(index, ())) for index, each in order)
-    best = 0 if final and final[0].rank == 1 else None
+    best, best_spread = to_take(final)
     running = prepared.running
     groupings = tuple(each.found for each in prepared.held)
     left_out = [name for batch in batches for name in batch.left_out]
-    unmatched = configured(plan)[1]
     refusals = [
         *prepared.refusals,
         *verdict.refusals(groupings, final, request.promise, running.whole, left_out, unmatched),
@@ -122,7 +140,8 @@ def study(
     written = None
     if best is not None:
         held = prepared.held[final[best].grouping]
-        written = fragment.fragment(plan, final[best], held, request.declared)
+        spread = None if best_spread is None else final[best_spread]
+        written = fragment.fragment(plan, final[best], spread, held, request)
     return Result(
         characteristic=plan.name,
         title=plan.title,
@@ -147,6 +166,8 @@ def study(
         trusted=trust.trusted,
         with_care=trust.with_care,
         best=best,
+        best_spread=best_spread,
+        together=running_now,
         fragment="" if written is None else written.text,
         notes=() if written is None else written.notes,
         events=len(request.labels),
@@ -193,10 +214,8 @@ def _batches(
                 (held.ours, candidates(request, held.ours, textbook.error, textbook.interval))
             )
         if held.theirs is not None:
-            tries.append((held.theirs, configured(plan)[0]))
+            tries.append((held.theirs, configured(plan, request.declared)[0]))
         for grouped, tried in tries:
-            if not tried:
-                continue
             progress(f"false alarms of {len(tried)} settings on {held.found.said}")
             families: dict[Scheme, list[Candidate]] = {}
             for candidate in tried:
@@ -215,8 +234,9 @@ def _batches(
 
 def _delays(
     batch: _Batch, prepared: Prepared, drifts: _Drifts, request: Request
-) -> list[list[Delay]]:
-    """Of every setting of the batch: the first drift to catch in all shapes, and its own."""
+) -> tuple[list[list[Delay]], list[Delay]]:
+    """Of every setting of the batch: the first drift to catch in all shapes, and its own; and of
+    all configured ones together."""
     catcher = _catcher(batch, prepared, drifts)
     catcher.warm({index: one.scheme for index, one in enumerate(batch.judged)})
     everyone = range(len(batch.judged))
@@ -230,10 +250,14 @@ def _delays(
     for catch in request.catch[1:]:
         own = [i for i in everyone if batch.judged[i].candidate.catch == catch]
         wanted.append((drifts.of("step", catch), own))
+    jointly: list[Delay] = []
     for drift, keys in wanted:
-        for key, delay in catcher.catch(drift, keys).items():
+        caught = catcher.catch(drift, keys, batch.configured)
+        if JOINTLY in caught:
+            jointly.append(caught.pop(JOINTLY))
+        for key, delay in caught.items():
             found[key].append(delay)
-    return found
+    return found, jointly
 
 
 def _curves(
@@ -242,15 +266,21 @@ def _curves(
     drifts: _Drifts,
     request: Request,
 ) -> dict[int, tuple[Delay, ...]]:
+    """Of every chosen setting by its place, and of all configured ones together."""
     batches = {id(batch): batch for batch, _ in chosen.values()}
     found: dict[int, list[Delay]] = {index: [] for index in chosen}
     for batch in batches.values():
         catcher = _catcher(batch, prepared, drifts)
         catcher.warm({i: scheme for i, (one, scheme) in chosen.items() if one is batch})
+        together_now = [
+            i
+            for i, (one, _) in chosen.items()
+            if one is batch and batch.grouped is batch.held.theirs
+        ]
         for share in _CURVE:
             drift = drifts.of("step", share * request.catch[0])
-            for index, delay in catcher.catch(drift, tuple(chosen)).items():
-                found[index].append(delay)
+            for index, delay in catcher.catch(drift, tuple(chosen), together_now).items():
+                found.setdefault(index, []).append(delay)
     return {index: tuple(delays) for index, delays in found.items()}
 
 

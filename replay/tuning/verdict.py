@@ -29,7 +29,7 @@ class Trust:
 
 def longer(promise: float, running: float) -> str:
     """What to do about a recording of so many ``running`` seconds that is too short; how long one
-    must be at least to be asked for ``promise`` seconds, where it is not."""
+    must be at least to be asked for an interval of ``promise`` seconds, where it is not."""
     needed = promise / FAR / (1 - PROVE)
     if running >= needed:
         return "record for longer"
@@ -85,8 +85,9 @@ def _refused(
     left_out: Sequence[str],
     unmatched: Sequence[str],
 ) -> Iterator[Refusal]:
-    more = longer(promise, running)
-    for each in groupings:
+    more = longer(max(promise, _least_asked(settings, promise)), running)
+    for number, each in enumerate(groupings):
+        asked = _least_asked([s for s in settings if s.grouping == number], promise)
         if each.wander.wanders:
             yield Refusal(
                 f"any interval with {each.said}",
@@ -95,12 +96,13 @@ def _refused(
                 "find what moved the process, and label it with --events if it was a real cause; "
                 "or take longer subgroups, or leave such a drift alone with --ignore",
             )
-        elif promise > each.supports:
+        elif asked > each.supports:
+            part = "that" if asked <= promise else f"a part of it, one in {spans.long(asked)},"
             yield Refusal(
                 f"a promise of {spans.long(promise)} with {each.said}",
-                f"that is more than 50 times the last part of the recording, which supports "
+                f"{part} is more than 50 times the last part of the recording, which supports "
                 f"{spans.long(each.supports)}",
-                f"promise less, or {more}",
+                f"promise less, or {longer(asked, running)}",
             )
     if left_out:
         yield Refusal(
@@ -118,9 +120,15 @@ def _refused(
     for name in unmatched:
         yield Refusal(
             f"the configured detector {name}",
-            "tune judges CUSUM, EWMA and the Shewhart chart of means with its rule outside",
-            "play the recording to see what it rings",
+            "by itself tune judges CUSUM, EWMA and the Shewhart chart of means with its rule "
+            "outside",
+            "see what all configured detectors ring together, or play the recording",
         )
+
+
+def _least_asked(settings: Sequence[Setting], promise: float) -> float:
+    """The shortest interval that any of the settings is asked for by its part of the promise."""
+    return min((each.asked for each in settings), default=promise)
 
 
 def _named(names: Sequence[str]) -> str:

@@ -30,6 +30,7 @@ from replay.tuning.result import (
     Source,
     StreamFound,
     Tail,
+    Together,
     Wander,
 )
 
@@ -93,6 +94,8 @@ def trustworthy(settings: int = 14) -> Result:
         trusted=True,
         with_care=False,
         best=0,
+        best_spread=None,
+        together=_together(),
         fragment=FRAGMENT,
         notes=("It replaces cusum and keeps shewhart-mean.",),
         events=0,
@@ -135,6 +138,13 @@ def refused() -> Result:
         trust="No: the process wanders, so that no false-alarm interval can be promised.",
         trusted=False,
         best=None,
+        together=replace(
+            _together(),
+            observed=Observed(3, PROOF, None),
+            extrapolated=None,
+            no_interval="the process wanders",
+            meets=False,
+        ),
         fragment="",
         notes=(),
     )
@@ -232,9 +242,36 @@ def _setting(place: int) -> Setting:
         curve=tuple(_delay("step", size, place) for size in sizes),
         events=None,
         alarms=alarms,
+        asked=14 * DAY,
         meets=meets,
         rank=place + 1 if meets else None,
         unranked="" if meets else "the lower end of its interval is shorter than the promise",
+    )
+
+
+def _together() -> Together:
+    """Three detectors that rang three times: twice on head 2, once without a direction."""
+    alarms = tuple(
+        Alarm(SPLIT + int(share * PROOF * 1e6), HEADS[head], direction)
+        for share, head, direction in ((0.2, 1, "up"), (0.5, 1, "down"), (0.8, 4, None))
+    )
+    seconds = 0.99 * PROOF
+    return Together(
+        name="all configured detectors together",
+        detectors=("cusum", "shewhart-mean", "cusum-variance"),
+        unfollowed=(),
+        grouping=0,
+        observed=Observed(3, seconds, Range(seconds / 7.75, seconds / 0.82)),
+        signals=7,
+        standing=0.01,
+        extrapolated=Extrapolated(0.4 * DAY, 2.5, Range(0.16 * DAY, 0.9 * DAY)),
+        no_interval="",
+        delays=tuple(_delay(shape, amount, 4) for shape, amount in DRIFTS),
+        curve=(),
+        events=None,
+        alarms=alarms,
+        asked=14 * DAY,
+        meets=False,
     )
 
 

@@ -78,7 +78,7 @@ def test_given_and_configured() -> None:
         shewhart(chart="range"),
         size=5,
     )
-    found, left = configured(plan)
+    found, left = configured(plan, ())
     assert [each.name for each in found] == ["as configured: cusum", "as configured: shewhart-2"]
     assert limit(found[1].scheme) == 3.5
     assert left == ["shewhart", "shewhart-3"]

@@ -10,7 +10,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Callable
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 
 import numpy as np
 import pytest
@@ -156,6 +156,44 @@ def test_stated_intervals_hold_the_truth_for_every_kind(process: Process) -> Non
         assert tally.promised >= tally.stated / 2, kind
         assert tally.kept >= 0.95 * tally.promised, kind
         assert np.median(tally.factors) < 12, kind
+
+
+def test_stated_intervals_of_the_spread_hold_the_truth() -> None:
+    """Truth is the exact run length of the CUSUM of the variance (independent normal readings)."""
+    rng = np.random.default_rng(7)
+    request = Request(promise=1.0, catch=(1.0,), kinds=("cusum",), spread=True)
+    stated = held = promised = kept = 0
+    for _ in range(20):
+        values = rng.normal(size=5 * SUBGROUPS)
+        readings = StreamReadings((), np.arange(len(values)), values, np.empty(0, np.int64))
+        one = group(
+            ByCount(5),
+            readings,
+            fit_to=int(0.59 * len(values)),
+            prove_from=int(0.6 * len(values)),
+            left_out=(),
+            baseline=BaselinePlan(0.0, 1.0, 0.0, ""),
+        )
+        assert one is not None
+        line = Grouped(ByCount(5), 5, (one,))
+        (tried,) = (e for e in candidates(request, line, 1.0, 1e4) if e.scheme.chart == "variance")
+        interval = 0.5 * line.proof
+        (judged,) = judge(line, [replace(tried, part=1.0)], interval)
+        true = runlengths.run_length(judged.scheme, size=5).subgroups
+        assert judged.proved is not None
+        if not judged.proved.exponential:
+            continue
+        told = judged.proved.interval(limit(judged.scheme))
+        factor = judged.proved.factor(told)
+        stated += 1
+        held += told / factor <= true <= told * factor
+        if told / factor >= interval:
+            promised += 1
+            kept += true >= interval
+    assert stated >= 15
+    assert held >= 0.85 * stated
+    assert promised >= stated / 2
+    assert kept >= 0.95 * promised
 
 
 def test_a_wandering_process_is_refused() -> None:

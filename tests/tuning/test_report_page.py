@@ -72,7 +72,9 @@ def test_every_setting_stands_once_in_the_comparison(result: Result) -> None:
         for table in tables(section, "Keeps the promise?")
         for row in table.all("tbody")[0].all("tr")
     ]
-    assert sorted(named) == sorted(setting.name for setting in result.settings)
+    assert result.together is not None
+    assert named[0] == result.together.name  # what runs today is looked at first
+    assert sorted(named[1:]) == sorted(setting.name for setting in result.settings)
 
 
 def test_two_hundred_settings_leave_few_open_and_a_file_that_can_be_sent() -> None:
@@ -96,7 +98,10 @@ def test_what_runs_now_is_always_in_sight() -> None:
 def test_each_delay_stands_beside_its_setting(made: Callable[[], Result]) -> None:
     result = made()
     found = rows(tables(parsed(shown(result)).one("late"), "Floor"))
-    assert len(found) == sum(len(setting.delays) for setting in result.settings)
+    assert result.together is not None
+    today = [row for row in found if row[0] == result.together.name]
+    assert len(today) == len(result.together.delays)
+    assert len(found) == len(today) + sum(len(setting.delays) for setting in result.settings)
     # 1.9 · 70 and 70 pieces, 0.6 s each, as results.py puts them into the first setting.
     first = next(row for row in found if row[0] == result.settings[0].name)
     assert first[2] == "70 pieces, 42 s 63 to 80"
@@ -110,6 +115,46 @@ def test_the_answer_says_the_best_settings_figures() -> None:
     assert "about 40 days, somewhere from 19 to 84 days" in said
     assert "asked was 14 days" in said
     assert "within 133 pieces of the stream (80 s) nine times in ten" in said
+
+
+def test_what_runs_today_stands_beside_the_candidates() -> None:
+    """As results.py has it: 3 alerts of 7 signals in 26.7 h; rates added up to once in 0.4 days."""
+    result = trustworthy()
+    found = parsed(shown(result))
+    row = rows(tables(found.one("rung"), "Keeps the promise?"))[0]
+    name, keeps, seen, counted, by_tail, late = row
+    assert "what runs today: cusum, shewhart-mean, cusum-variance" in name
+    assert "7 signals in all; one stood open for 1 % of the time" in name
+    assert (keeps, seen) == ("✗ no", "3 in 27 h")
+    assert counted.startswith("8.9 h")
+    assert by_tail == "9.6 h 3.8 to 22 h; rates added up"
+    assert late.startswith("177 pieces")
+    told = found.all("p", "answer")[0].text()
+    assert "What runs now, all of it together, rings once in about 9.6 h" in told
+    for name in ("promised", "streams"):
+        (plot,) = (p for p in found.all("div", "plot") if p.attributes["id"] == name)
+        assert "all configured detectors together" in plot.attributes["aria-label"]
+
+
+def test_without_a_baseline_nothing_runs_today() -> None:
+    found = parsed(shown(replace(trustworthy(), together=None)))
+    assert "together" not in rows(tables(found.one("rung"), "Keeps"))[0][0]
+    assert "What runs now" not in found.all("p", "answer")[0].text()
+
+
+def test_what_is_asked_of_a_part_is_said() -> None:
+    result = trustworthy()
+    best = replace(result.settings[0], asked=3 * 14 * 86_400.0)
+    spread = replace(result.settings[3], unranked="", rank=1)
+    settings = (best, *result.settings[1:3], spread, *result.settings[4:])
+    found = parsed(shown(replace(result, settings=settings, best_spread=3)))
+    told = found.all("p", "answer")[0].text()
+    assert "asked was 42 days, its part of one in 14 days for all detectors" in told
+    assert f"For the spread, {spread.name} goes beside it." in told
+    marks = {row[0].split()[0]: row for row in rows(tables(found.one("rung"), "Keeps"))}
+    assert marks[best.name][1] == "✓ yes, take it rank 1; asked: one in 42 days"
+    assert marks[spread.name][1] == "✓ yes, take it rank 1 for the spread"
+    assert marks[spread.name][5].endswith("of a spread 1.5 times as wide")
 
 
 def test_an_interval_beyond_the_recording_is_told_as_a_bound() -> None:

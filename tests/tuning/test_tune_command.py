@@ -12,57 +12,12 @@ from typing import Any
 import numpy as np
 import pytest
 import yaml
+from tuned_line import ASKED, DOCUMENT, ROWS, START, by_name, recording, steady, tune
 
 from monitor.__main__ import main as driftbell
 from monitor.configuration import spans
 from monitor.times import SECOND, format_time, parse_iso_time
 from replay.__main__ import main
-
-DOCUMENT: dict[str, Any] = {
-    "version": 1,
-    "broker": {"host": "localhost"},
-    "outputs": {"root": "plant/jar-line-2/monitor"},
-    "journal": {"path": "line.db"},
-    "characteristics": {
-        "net-weight": {
-            "title": "Net weight, 340 g jar",
-            "unit": "g",
-            "resolution": 0.1,
-            "source": {
-                "topic": "plant/jar-line-2/checkweigher/1/reading",
-                "payload": "json",
-                "value": "/net",
-                "time": "/t",
-                "stream": {"head": "/head"},
-                "plausible": {"lower": 300, "upper": 380},
-                "expected_rate": "60/min",
-            },
-            "subgroup": {"size": 5, "max_gap": "30s"},
-            "baseline": {"mean": 341.2, "sigma": 1.9},
-            "detectors": [
-                {"kind": "cusum", "k": 0.5, "h": 5},
-                {"kind": "shewhart", "chart": "range"},
-            ],
-        }
-    },
-}
-START = parse_iso_time("2026-03-02T06:00:00Z")
-ROWS = 25_000
-"""Readings of two heads in turn, one a second: seven hours."""
-
-
-def recording(path: Path, values: np.ndarray) -> str:
-    rows = ["time,head,value"]
-    rows += [
-        f"{format_time(START + place * SECOND)},{place % 2 + 1},{value:.1f}"
-        for place, value in enumerate(values.tolist())
-    ]
-    path.write_text("\n".join(rows) + "\n")
-    return str(path)
-
-
-def steady(seed: int = 1) -> np.ndarray:
-    return np.random.default_rng(seed).normal(341.2, 1.9, ROWS)
 
 
 @pytest.fixture(scope="module")
@@ -75,19 +30,6 @@ def config(tmp_path_factory: pytest.TempPathFactory) -> str:
 @pytest.fixture(scope="module")
 def week(tmp_path_factory: pytest.TempPathFactory) -> str:
     return recording(tmp_path_factory.mktemp("recording") / "week.csv", steady())
-
-
-def tune(capsys: pytest.CaptureFixture[str], *arguments: str) -> dict[str, Any]:
-    assert main(["tune", *arguments, "--json"]) == 0
-    found: dict[str, Any] = json.loads(capsys.readouterr().out)
-    return found
-
-
-ASKED = ("--catch", "1.5", "--false-alarm-every", "1d")
-
-
-def by_name(found: dict[str, Any]) -> dict[str, dict[str, Any]]:
-    return {each["name"]: each for each in found["settings"]}
 
 
 def test_the_whole_answer(capsys: pytest.CaptureFixture[str], config: str, week: str) -> None:
@@ -154,7 +96,8 @@ def test_the_same_seed_gives_the_same_answer(
     )
     assert first == again
     assert first["settings"][0]["constants"] == other["settings"][0]["constants"]
-    assert first["settings"][0]["delays"] != other["settings"][0]["delays"]
+    name = "as configured: cusum"
+    assert by_name(first)[name]["delays"] != by_name(other)[name]["delays"]
 
 
 def test_questions_in_the_readers_order(
@@ -215,6 +158,8 @@ INTENDED: dict[str, Any] = {
 def test_check_accepts_the_fragment_which_keeps_the_other_detectors(
     capsys: pytest.CaptureFixture[str], tmp_path: Path, week: str, kind: str
 ) -> None:
+    """One promise for all: that which was asked for, shared out as before. CUSUMs are for the
+    spread too."""
     source = {**DOCUMENT["characteristics"]["net-weight"]["source"], "expected_streams": 6}
     config = changed(tmp_path / "line.yaml", source=source, **INTENDED)
     fragment = tmp_path / "best.yaml"
@@ -223,13 +168,23 @@ def test_check_accepts_the_fragment_which_keeps_the_other_detectors(
     out = capsys.readouterr().out
     keys = keys_of(fragment)
     assert keys["subgroup"] == {"size": 10, "max_gap": "30s"}
+    assert keys["promise"] == {"false_alarm_every": "6h"}
     kept, new, spread = keys["detectors"]
-    assert (kept, spread) == (INTENDED["detectors"][0], INTENDED["detectors"][2])
+    assert kept == INTENDED["detectors"][0]
     # Its share is that of the two it replaces, so that the others' part of the promise stays.
     assert (new["kind"], new["share"]) == (kind, 3)
-    said = "It replaces cusum and slow and keeps shewhart-mean and cusum-variance."
-    streams = "The recording holds 2 streams; any other (6 are expected) is held against the values"
-    for text in (said, streams, "a file: or learn: too"):
+    said = ["The promise is one false alarm in 6 h instead of 14 days, of all detectors together."]
+    if kind == "cusum":
+        assert (spread["chart"], "share" in spread, spread["h"] > 0) == ("variance", False, True)
+        said.append("They replace cusum, slow and cusum-variance and keep shewhart-mean.")
+        said.append("size 10 to one in 10 h; cusum, catch_ratio 1.5, size 10 to")
+        said.append("The limits of shewhart-mean are worked out from what the promise leaves them")
+    else:
+        assert spread == INTENDED["detectors"][2]
+        said.append("It replaces cusum and slow and keeps shewhart-mean and cusum-variance.")
+    said.append("The recording holds 2 streams; any other (6 are expected) is held against")
+    said.append("a file: or learn: too")
+    for text in said:
         assert text in " ".join(out.split())
         assert text in " ".join(fragment.read_text().replace("\n# ", " ").split())
     baseline = keys["baseline"]
@@ -239,7 +194,11 @@ def test_check_accepts_the_fragment_which_keeps_the_other_detectors(
     sigma = np.sqrt(np.mean([each["sigma"] ** 2 for each in own]))
     assert baseline["sigma"] == pytest.approx(sigma, abs=1e-3)
     merged = changed(tmp_path / "merged.yaml", source=source, **INTENDED | keys)
-    assert driftbell(["check", merged]) == 0
+    capsys.readouterr()
+    assert driftbell(["check", merged, "--json"]) == 0
+    (checked,) = json.loads(capsys.readouterr().out)["characteristics"]
+    assert checked["promise"]["seconds"] == 6 * 3_600
+    assert checked["promise"]["kept"] is True
 
 
 def test_a_kept_chart_must_fit_the_subgroup(
@@ -295,8 +254,8 @@ def test_a_promise_longer_than_the_recording_supports(
     assert "was not written" in said
     assert all(each["interval"]["low"] <= 50 * 0.4 * ROWS for each in found["settings"])
     assert {each["keeps"] for each in found["settings"]} <= {"no", "not shown"}
-    # 6 days / 50 / 0.4 are 7.2 h.
-    assert any("about 7.2 h of recording for 6 days" in e["instead"] for e in found["refused"])
+    # It joins a chart of range, so half of the promise is its part: 12 days / 50 / 0.4 are 14.4 h.
+    assert any("about 14 h of recording for 12 days" in e["instead"] for e in found["refused"])
     assert main(["tune", *asked, "--false-alarm-every", "2d"]) == 0
     assert to.exists()
 
@@ -419,13 +378,15 @@ def test_a_spread_is_watched_where_asked(
     capsys: pytest.CaptureFixture[str], config: str, week: str
 ) -> None:
     found = tune(capsys, config, week, *ASKED, "--kind", "cusum", "--catch-ratio", "2")
-    spread = by_name(found)["cusum, chart variance, catch_ratio 2, size 5"]
+    spread = by_name(found)["cusum, catch_ratio 2, size 5"]
     # 2 ln r · r²/(r² − 1), by the likelihood ratio.
-    assert spread["constants"]["k"] == pytest.approx(2 * np.log(2) * 4 / 3)
+    assert spread["constants"]["k"] == pytest.approx(2 * np.log(2) * 4 / 3, rel=1e-4)
     delay = {each["shape"]: each for each in spread["delays"]}["spread"]
     assert delay["amount"] == 2
     assert delay["readings"]["late"]["value"] < 100
-    assert spread["unranked"] == "it watches the spread, not the mean"
+    assert spread["rank"] == 1
+    assert found["best_spread"]["name"] == spread["name"]
+    assert found["best"]["name"] == "cusum, catch 1.5, size 5"
 
 
 def test_promise_and_drift_of_the_configuration(
@@ -511,3 +472,50 @@ def test_a_recording_that_says_nothing(
         path = recording(tmp_path / "short.csv", values)
         assert main(["tune", config, path, *ASKED]) == 1
         assert said in capsys.readouterr().err
+
+
+@pytest.mark.parametrize("columns", [80, 120])
+def test_nothing_sticks_out_of_the_terminal(
+    capsys: pytest.CaptureFixture[str],
+    monkeypatch: pytest.MonkeyPatch,
+    config: str,
+    week: str,
+    columns: int,
+) -> None:
+    monkeypatch.setenv("COLUMNS", str(columns))
+    asked = [*ASKED, "--size", "5,10", "--catch-ratio", "1.5"]
+    assert main(["tune", config, week, *asked]) == 0
+    out = capsys.readouterr().out
+    told, _ = out.split("\ncharacteristics:\n")
+    assert max(map(len, told.splitlines())) <= columns
+    assert "now all configured detectors together" in told
+    assert told.count("for the spread, ranked by one 1.5 times as large:") == 2
+
+
+def test_what_watches_the_spread_today_is_looked_for_too(
+    capsys: pytest.CaptureFixture[str], tmp_path: Path, week: str
+) -> None:
+    """Without ``--catch-ratio``: the ratio is that of the configuration."""
+    source = {**DOCUMENT["characteristics"]["net-weight"]["source"], "expected_streams": 2}
+    detectors = [
+        {"kind": "cusum", "catch": 1.5},
+        {"kind": "cusum", "chart": "variance", "catch_ratio": 1.75},
+    ]
+    promise = {"false_alarm_every": "6h"}
+    config = changed(tmp_path / "line.yaml", source=source, promise=promise, detectors=detectors)
+    found = tune(capsys, config, week)
+    spread = [each for each in found["settings"] if each["chart"] == "variance"]
+    names = {"cusum, catch_ratio 1.75, size 5", "as configured: cusum-variance"}
+    assert {each["name"] for each in spread} == names
+    ranks = [each["rank"] for each in spread if each["rank"] is not None]
+    assert ranks == list(range(1, len(ranks) + 1)) != []
+    late = [
+        delay["readings"]["late"]["value"]
+        for each in spread[: len(ranks)]
+        for delay in each["delays"]
+        if delay["shape"] == "spread"
+    ]
+    assert late == sorted(late)
+    assert {each["asked"] for each in found["settings"] if "shewhart" not in each["name"]} == {
+        2 * 6 * 3_600
+    }

@@ -7,7 +7,8 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 
-from replay.tuning.result import Delay, Grouping, Result, Setting, Shape
+from replay.tuning.ranking import at_catch
+from replay.tuning.result import Delay, Grouping, Result, Setting, Shape, Shown
 
 _FEW = 8
 _STREAMS = 8
@@ -16,11 +17,17 @@ _SHAPES: tuple[Shape, ...] = ("step", "ramp", "spread")
 
 def few(result: Result) -> tuple[Setting, ...]:
     """The settings that are open to the eye: the first ones, the best, and what runs now."""
+    taken = (result.best, result.best_spread)
     return tuple(
         setting
         for place, setting in enumerate(result.settings)
-        if place < _FEW or place == result.best or setting.origin == "configured"
+        if place < _FEW or place in taken or setting.origin == "configured"
     )[: 2 * _FEW]
+
+
+def with_today(result: Result, settings: Sequence[Setting]) -> tuple[Shown, ...]:
+    """What all configured detectors do together, where they are judged, before ``settings``."""
+    return (*settings,) if result.together is None else (result.together, *settings)
 
 
 def rest(result: Result) -> tuple[Setting, ...]:
@@ -34,6 +41,11 @@ def best(result: Result) -> Setting | None:
     return None if result.best is None else result.settings[result.best]
 
 
+def best_spread(result: Result) -> Setting | None:
+    """The setting to take for the spread, if there is one."""
+    return None if result.best_spread is None else result.settings[result.best_spread]
+
+
 def grouping(result: Result) -> Grouping | None:
     """The way of gathering readings whose baseline the page draws: that of the best setting, else
     of the first one."""
@@ -44,10 +56,9 @@ def grouping(result: Result) -> Grouping | None:
     return result.groupings[0] if result.groupings else None
 
 
-def first_step(setting: Setting, result: Result) -> Delay | None:
-    """The setting's delay at the drift that ranks: a step of the first size to catch."""
-    wanted = result.catch[0] if result.catch else None
-    return next((d for d in setting.delays if d.shape == "step" and d.amount == wanted), None)
+def first_step(shown: Shown, result: Result) -> Delay | None:
+    """The delay at the first size to catch, put in as a step."""
+    return at_catch(shown, result.catch[0]) if result.catch else None
 
 
 def drifts(settings: Sequence[Setting]) -> list[tuple[Shape, float]]:

@@ -20,6 +20,8 @@ from replay.tuning.result import (
     Refusal,
     Result,
     Setting,
+    Shown,
+    Together,
 )
 
 _KINDS = {"cusum": "CUSUM", "ewma": "EWMA", "shewhart": "Shewhart chart"}
@@ -81,6 +83,8 @@ def time_range(found: Range) -> str:
 
 def counted(observed: Observed) -> tuple[str, str]:
     """How often a setting rang with nothing wrong, by counting; and how sure that is."""
+    if not observed.seconds:
+        return "not given", "an alert was open all the time"
     if observed.interval is None:
         return "not given", "the process wanders"
     if not observed.alarms:
@@ -88,14 +92,17 @@ def counted(observed: Observed) -> tuple[str, str]:
     return spans.long(observed.seconds / observed.alarms), time_range(observed.interval)
 
 
-def by_tail(setting: Setting) -> tuple[str, str]:
+def by_tail(shown: Shown) -> tuple[str, str]:
     """How often it will ring with nothing wrong, by its tail, and how sure that is; or why not."""
-    found = setting.extrapolated
+    found = shown.extrapolated
     if found is None:
-        return "not given", setting.no_interval
+        return "not given", shown.no_interval
     if found.interval.high is None:
         return f"at least {spans.long(found.interval.low)}", "more than it can tell; 90 %"
-    return spans.long(found.seconds), f"{time_range(found.interval)}; factor {found.factor:.2g}"
+    told = time_range(found.interval)
+    if isinstance(shown, Together):
+        return spans.long(found.seconds), f"{told}; rates added up"
+    return spans.long(found.seconds), f"{told}; factor {found.factor:.2g}"
 
 
 def pieces(found: Quantile, horizon: int) -> str:
@@ -171,6 +178,16 @@ def purpose(setting: Setting, grouping: Grouping, unit: str) -> str:
         parts.append(made)
     parts.append(_ORIGINS[setting.origin])
     return "; ".join(parts)
+
+
+def today(now: Together) -> str:
+    """What is counted in the row of all configured detectors, in a line."""
+    told = f"what runs today: {', '.join(now.detectors)}; as the crew hears alerts"
+    if now.signals:
+        told += f", {plural(now.signals, 'signal')} in all"
+    if now.standing >= 0.001:
+        told += f"; one stood open for {100 * now.standing:.2g} % of the time"
+    return told
 
 
 def shortened(text: str, length: int = 46) -> str:

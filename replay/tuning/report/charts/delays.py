@@ -12,14 +12,18 @@ import plotly.graph_objects as go
 from replay.tuning.report import words
 from replay.tuning.report.charts import look
 from replay.tuning.report.markup import Chart
-from replay.tuning.result import Delay, Quantile, Result, Setting
+from replay.tuning.result import Delay, Quantile, Result, Shown
 
 _CURVES = len(look.SERIES) - 1
 
 
-def with_curves(result: Result) -> list[Setting]:
-    """The settings whose curves are drawn, the best first."""
-    return [setting for setting in result.settings if setting.curve][:_CURVES]
+def with_curves(result: Result) -> list[Shown]:
+    """What curves are drawn of: the best settings for the mean, and what runs today."""
+    drawn: list[Shown] = [s for s in result.settings if s.curve and not s.of_spread]
+    now = result.together
+    if now is None or not now.curve:
+        return drawn[:_CURVES]
+    return [*drawn[: _CURVES - 1], now]
 
 
 def curves(result: Result) -> list[Chart]:
@@ -34,7 +38,7 @@ def curves(result: Result) -> list[Chart]:
     ]
 
 
-def _scale(settings: Sequence[Setting]) -> tuple[float, float]:
+def _scale(settings: Sequence[Shown]) -> tuple[float, float]:
     lengths = [length for setting in settings for d in setting.curve for length in _lengths(d)]
     return min(lengths, default=1.0), max(lengths, default=10.0)
 
@@ -47,7 +51,7 @@ def _lengths(delay: Delay) -> list[float]:
 
 
 def _curve(
-    result: Result, settings: Sequence[Setting], late: bool, scale: tuple[float, float]
+    result: Result, settings: Sequence[Shown], late: bool, scale: tuple[float, float]
 ) -> Chart:
     unit = f", {result.unit}" if result.unit else ""
     title = "nine in ten caught within" if late else "half of them caught within"
@@ -103,7 +107,7 @@ def _curve(
 
 
 def _line(
-    setting: Setting,
+    setting: Shown,
     points: Sequence[tuple[float, Quantile, int]],
     color: str,
     dash: str,
@@ -139,7 +143,7 @@ def _reach(found: Quantile, up: bool) -> float:
     return abs(end - found.value) if end is not None else 0.0
 
 
-def _said(result: Result, settings: Sequence[Setting], late: bool) -> str:
+def _said(result: Result, settings: Sequence[Shown], late: bool) -> str:
     told = []
     for setting in settings:
         steps = ", ".join(

@@ -13,13 +13,16 @@ from monitor.configuration import spans
 from replay.tuning.report import chosen, words
 from replay.tuning.report.charts import look
 from replay.tuning.report.markup import Chart
-from replay.tuning.result import Result, Setting
+from replay.tuning.result import Result, Shown
+
+_LINES = 3
 
 
 def chart(result: Result) -> Chart | None:
     """Every setting as a point: how seldom it rings against how late it is."""
-    points = []
-    for setting in result.settings:
+    points: list[tuple[Shown, float, float]] = []
+    mean = [each for each in result.settings if not each.of_spread]
+    for setting in chosen.with_today(result, mean):
         delay = chosen.first_step(setting, result)
         found = setting.extrapolated
         if found is None or found.interval.high is None:
@@ -29,7 +32,7 @@ def chart(result: Result) -> Chart | None:
     if len(points) < 3:
         return None
     late = [pieces for _, _, pieces in points]
-    intervals = [seconds for _, seconds, _ in points] + [result.promise]
+    intervals = [seconds for _, seconds, _ in points] + [each.asked for each, _, _ in points]
     drawn = look.figure(
         420,
         margin={"l": 64, "r": 24, "t": 96, "b": 52},
@@ -41,18 +44,23 @@ def chart(result: Result) -> Chart | None:
             "pieces until nine in ten are caught", **look.lengths(min(late), max(late))
         ),
     )
-    look.upright(drawn, result.promise, f"asked: {spans.long(result.promise)}")
+    asked = sorted({each.asked for each, _, _ in points})
+    for place, seconds in enumerate(asked[:_LINES]):
+        look.upright(drawn, seconds, "asked: " * (place == 0) + spans.long(seconds))
     for meets, name, symbol, color in (
         (True, "keeps the promise", "circle", look.OWN),
         (False, "not shown to keep it", "circle-open", look.MUTED),
     ):
-        these = [point for point in points if point[0].meets is meets]
+        these = [p for p in points if p[0].meets is meets and p[0] is not result.together]
         if these:
             drawn.add_trace(_points(these, name, symbol, color))
     best = chosen.best(result)
     these = [point for point in points if point[0] is best]
     if these:
         drawn.add_trace(_points(these, "the one to take", "star-diamond", look.INK, size=15))
+    these = [point for point in points if point[0] is result.together]
+    if these:
+        drawn.add_trace(_points(these, "what runs now, together", "square", look.FLOOR, size=12))
     kept = sum(1 for point in points if point[0].meets)
     said = (
         f"{words.plural(len(points), 'setting')}, {kept} of them keep the promise: the seldomer a "
@@ -62,13 +70,13 @@ def chart(result: Result) -> Chart | None:
         f"Every setting whose interval this recording can tell, at a step of "
         f"{words.amount(result.catch[0], result.unit)}. Low is early, right is quiet; a setting "
         "keeps the promise only where its whole interval, not only its point, lies right of the "
-        "line."
+        "line (the one of its part, where several share the promise)."
     )
     return Chart("price", drawn.to_json(), said, caption)
 
 
 def _points(
-    points: Sequence[tuple[Setting, float, float]],
+    points: Sequence[tuple[Shown, float, float]],
     name: str,
     symbol: str,
     color: str,

@@ -13,13 +13,13 @@ from monitor.configuration import spans
 from replay.tuning.report import words
 from replay.tuning.report.charts import look
 from replay.tuning.report.markup import Chart
-from replay.tuning.result import Result, Setting
+from replay.tuning.result import Result, Shown
 
 _ROW, _HEAD, _FOOT = 54, 66, 52
 
 
-def chart(result: Result, settings: Sequence[Setting]) -> Chart:
-    """A row a setting: counted and by the tail, with the promise as a line through all."""
+def chart(result: Result, settings: Sequence[Shown]) -> Chart:
+    """A row a setting: counted and by the tail, with what is asked of it as a mark across."""
     low, high = _span(result, settings)
     found = look.figure(
         _ROW * len(settings) + _HEAD + _FOOT,
@@ -33,7 +33,10 @@ def chart(result: Result, settings: Sequence[Setting]) -> Chart:
             showline=False,
         ),
     )
-    look.upright(found, result.promise, f"asked: {spans.long(result.promise)}")
+    if all(each.asked == result.promise for each in settings):
+        look.upright(found, result.promise, f"asked: {spans.long(result.promise)}")
+    else:
+        _asked(found, settings)
     for place, setting in enumerate(settings):
         top = float(-place)
         named = words.shortened(setting.name)
@@ -55,16 +58,40 @@ def chart(result: Result, settings: Sequence[Setting]) -> Chart:
     return Chart("promised", found.to_json(), _said(result, settings), _CAPTION)
 
 
+def _asked(found: go.Figure, settings: Sequence[Shown]) -> None:
+    """A stroke across each row, since each is asked for its own part of the promise."""
+    levels: list[float | None] = []
+    for place in range(len(settings)):
+        levels += [-place - 0.02, -place - 0.5, None]
+    found.add_trace(
+        go.Scatter(
+            x=[seconds for each in settings for seconds in (each.asked, each.asked, None)],
+            y=levels,
+            mode="lines",
+            line={"color": look.FLOOR, "width": 3},
+            name="asked of it",
+            hoverinfo="text",
+            hovertext=[
+                text
+                for each in settings
+                for text in (*[f"asked: one in {spans.long(each.asked)}"] * 2, "")
+            ],
+            cliponaxis=False,
+        )
+    )
+
+
 _CAPTION = (
     "Each row is a setting. Square: what the counted false alarms support; circle: the tail of its "
     "statistic, extrapolated. The lines hold the truth with 90 %; an arrow has no upper end (none "
     "was seen, or more than the recording can tell). A setting keeps the promise where the lower "
-    "end of its interval is no shorter than what was asked."
+    "end of its interval is no shorter than what was asked of it: where several share the promise, "
+    "its part (the brown stroke)."
 )
 
 
-def _span(result: Result, settings: Sequence[Setting]) -> tuple[float, float]:
-    ends = [result.promise]
+def _span(result: Result, settings: Sequence[Shown]) -> tuple[float, float]:
+    ends = [result.promise, *(each.asked for each in settings)]
     for setting in settings:
         for found in (
             setting.observed.interval,
@@ -75,7 +102,7 @@ def _span(result: Result, settings: Sequence[Setting]) -> tuple[float, float]:
     return max(min(ends) / 2, 0.5), min(max(ends) * 2, 3e12)
 
 
-def _intervals(found: go.Figure, setting: Setting, top: float, high: float, legend: bool) -> None:
+def _intervals(found: go.Figure, setting: Shown, top: float, high: float, legend: bool) -> None:
     seen, tail = setting.observed, setting.extrapolated
     if seen.interval is not None:
         centre = seen.seconds / seen.alarms if seen.alarms else None
@@ -129,7 +156,7 @@ def _bar(
     )
 
 
-def _said(result: Result, settings: Sequence[Setting]) -> str:
+def _said(result: Result, settings: Sequence[Shown]) -> str:
     told = []
     for setting in settings:
         seen, tail = words.counted(setting.observed), words.by_tail(setting)

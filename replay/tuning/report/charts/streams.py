@@ -15,25 +15,27 @@ from monitor.configuration import spans
 from replay.tuning.report import chosen, words
 from replay.tuning.report.charts import look, outlines
 from replay.tuning.report.markup import Chart
-from replay.tuning.result import Alarm, Baseline, Outline, Result, Setting
+from replay.tuning.result import Alarm, Baseline, Outline, Result, Shown
 
 # With its margins the whole must fit a page of A4, about 1,000 pixels high.
 _PANEL, _LINE, _HEAD, _FOOT = 116, 30, 28, 50
 _PANELS = 500
 _ROWS = 6
+_NAME = 40
+"""Letters of a setting's name that fit a phone beside its count."""
 _INSIDE = 2.3263  # 98 % of a normal distribution lie within so many standard deviations
 _DAY = 86_400_000  # plotly's milliseconds
 _TICKS = (
     {"dtickrange": [None, _DAY - 1], "value": "%H:%M\n%-d %b %Y"},
     {"dtickrange": [_DAY, None], "value": "%-d %b\n%Y"},
 )
-_UP, _DOWN = "triangle-up", "triangle-down"
+_SYMBOLS = {"up": "triangle-up", "down": "triangle-down", None: "diamond"}
 
 
 def chart(result: Result) -> Chart:
     """Panels of the streams above, a line a setting with its alarms below."""
     places = chosen.streams(result)
-    settings = chosen.few(result)[:_ROWS]
+    settings = _rows(result)
     grouping = chosen.grouping(result)
     heights = [min(_PANEL, _PANELS / len(places))] * len(places)
     if settings:
@@ -67,10 +69,19 @@ def chart(result: Result) -> Chart:
     return Chart("streams", found.to_json(), _said(result, settings, len(places)), _CAPTION)
 
 
+def _rows(result: Result) -> list[Shown]:
+    """The best settings, and below them what runs today."""
+    rows: list[Shown] = list(chosen.few(result)[:_ROWS])
+    if result.together is not None:
+        rows[_ROWS - 1 :] = [result.together]
+    return rows
+
+
 _CAPTION = (
     "Blue line: mean of the readings in each stretch of time; blue band: where 98 % of them lie. "
     "Brown line: the baseline from the first part; dotted: where 98 % should lie by it. Triangles "
-    "point the way of an alarm; those in the panels are of the setting on the first line below. "
+    "point the way of an alarm, a diamond stands where it has none; those in the panels are of the "
+    "setting on the first line below. "
     "With a mouse, drag across to look closer and double-click to go back."
 )
 
@@ -110,7 +121,7 @@ def _panel(
             found.add_trace(_marks(chosen_ones, [level] * len(chosen_ones)), row=row, col=1)
 
 
-def _lines(found: go.Figure, row: int, settings: Sequence[Setting], result: Result) -> None:
+def _lines(found: go.Figure, row: int, settings: Sequence[Shown], result: Result) -> None:
     for place, setting in enumerate(settings):
         level = float(-place)
         rule = {"color": look.GRID, "width": 1}
@@ -127,7 +138,7 @@ def _lines(found: go.Figure, row: int, settings: Sequence[Setting], result: Resu
             yanchor="bottom",
             yshift=5,
             showarrow=False,
-            text=f"{look.plain(words.shortened(setting.name))}: {seen}",
+            text=f"{look.plain(words.shortened(setting.name, _NAME))}: {seen}",
             font={"size": 12, "color": look.INK},
             row=row,
             col=1,
@@ -142,14 +153,14 @@ def _marks(alarms: Sequence[Alarm], levels: Sequence[float]) -> go.Scatter:
         y=levels,
         mode="markers",
         marker={
-            "symbol": [_UP if alarm.direction == "up" else _DOWN for alarm in alarms],
+            "symbol": [_SYMBOLS[alarm.direction] for alarm in alarms],
             "size": 10,
             "color": look.INK,
         },
         hoverinfo="text",
         hovertext=[
             look.plain(
-                f"{words.moment(alarm.time)} UTC: {alarm.direction}, "
+                f"{words.moment(alarm.time)} UTC: {alarm.direction or 'no direction'}, "
                 f"{words.stream_name(alarm.stream)}"
             )
             for alarm in alarms
@@ -205,7 +216,7 @@ def _parts(found: go.Figure, result: Result) -> None:
         )
 
 
-def _said(result: Result, settings: Sequence[Setting], drawn: int) -> str:
+def _said(result: Result, settings: Sequence[Shown], drawn: int) -> str:
     streams = words.plural(len(result.streams), "stream")
     told = f"{drawn} of {streams} drawn" if drawn < len(result.streams) else streams
     rang = "; ".join(

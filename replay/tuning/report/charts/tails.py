@@ -19,12 +19,12 @@ from replay.tuning.tails import scale_of
 _POINTS = 60
 
 
-def chart(place: int, setting: Setting, grouping: Grouping, promise: float) -> Chart | None:
+def chart(place: int, setting: Setting, grouping: Grouping) -> Chart | None:
     """How often each level was reached, with the fitted line carried on to the limit."""
     tail = setting.tail
     if tail is None or not tail.levels:
         return None
-    wanted = 1 / (promise * grouping.rate)
+    wanted = 1 / (setting.asked * grouping.rate)
     end = max(tail.limit, tail.levels[-1]) * 1.08
     line = [tail.threshold + (end - tail.threshold) * i / _POINTS for i in range(_POINTS + 1)]
     fitted = [rate_at(tail, level) for level in line]
@@ -76,7 +76,8 @@ def chart(place: int, setting: Setting, grouping: Grouping, promise: float) -> C
 
 def rate_at(tail: Tail, level: float) -> float:
     """The fitted line: exp(−(g(level) − g(threshold)) / scale) · rate."""
-    beyond = scale_of(level, tail.weight) - scale_of(tail.threshold, tail.weight)
+    threshold = scale_of(tail.threshold, tail.weight, tail.unit)
+    beyond = scale_of(level, tail.weight, tail.unit) - threshold
     return math.exp(-beyond / tail.scale) * tail.rate
 
 

@@ -11,7 +11,7 @@ from monitor.configuration import spans
 from replay.tuning.report import chosen, markup, words
 from replay.tuning.report.charts import delays, price
 from replay.tuning.report.markup import Text
-from replay.tuning.result import Delay, Result, Setting, Shape
+from replay.tuning.result import Delay, Result, Setting, Shape, Shown
 
 _COLUMNS = (
     "Setting",
@@ -50,13 +50,22 @@ def render(result: Result) -> str:
     parts.append(markup.paragraph(_FLOOR, "small"))
     if (cost := price.chart(result)) is not None:
         parts += [markup.heading("What does ringing less often cost?"), markup.chart(cost)]
-    parts += [_drift(result, few, rest, shape, amount) for shape, amount in found]
+    shown = chosen.with_today(result, few)
+    parts += [_drift(result, shown, rest, shape, amount) for shape, amount in found]
+    if result.together is not None and (missing := result.together.unfollowed):
+        parts.append(
+            markup.paragraph(
+                f"{words.begun(result.together.name)}: {', '.join(missing)} could not be followed "
+                "here, and could only make it sooner.",
+                "small",
+            )
+        )
     return "".join(parts)
 
 
 def _drift(
     result: Result,
-    few: Sequence[Setting],
+    few: Sequence[Shown],
     rest: Sequence[Setting],
     shape: Shape,
     amount: float,
@@ -73,9 +82,7 @@ def _drift(
     return told
 
 
-def _measured(
-    settings: Sequence[Setting], shape: Shape, amount: float
-) -> list[tuple[Setting, Delay]]:
+def _measured(settings: Sequence[Shown], shape: Shape, amount: float) -> list[tuple[Shown, Delay]]:
     return [
         (setting, delay)
         for setting in settings
@@ -84,7 +91,7 @@ def _measured(
     ]
 
 
-def _rows(measured: Sequence[tuple[Setting, Delay]]) -> list[tuple[Text, ...]]:
+def _rows(measured: Sequence[tuple[Shown, Delay]]) -> list[tuple[Text, ...]]:
     return [
         (
             setting.name,

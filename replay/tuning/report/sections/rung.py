@@ -8,17 +8,24 @@ from __future__ import annotations
 from collections.abc import Sequence
 
 from monitor.configuration import spans
-from replay.tuning.ranking import keeps
+from replay.tuning.ranking import keeps, that_ranks
 from replay.tuning.report import chosen, markup, words
 from replay.tuning.report.charts import promised, streams
 from replay.tuning.report.markup import Text
-from replay.tuning.result import Result, Setting
+from replay.tuning.result import Result, Setting, Shown, Together
 
 _WORDS = (
     "“By the tail” carries on how fast ever larger values of the setting's statistic become rarer. "
     "“Not shown” is no failure: this recording leaves it open. Limits worked out here are set "
     "wider on purpose, because the tail is known from this recording only; the figure of driftbell "
     "check is the textbook's."
+)
+_TODAY = (
+    "All configured detectors together are counted as the crew hears alerts: what several of them "
+    "signal on one side of a stream is one alert until it is back to normal, and what comes after "
+    "that rings again. Their interval by the tails adds up the rates of each, which is a little "
+    "too often, since some of it rings together. A detector among others is asked for its part of "
+    "the promise only, which is shared out as in the configuration."
 )
 
 
@@ -30,7 +37,10 @@ def render(result: Result) -> str:
     else:
         parts = [
             markup.paragraph(_WORDS),
-            markup.table(_caption(result), _columns(result), _rows(few, result)),
+            *([] if result.together is None else [markup.paragraph(_TODAY)]),
+            markup.table(
+                _caption(result), _columns(result), _rows(chosen.with_today(result, few), result)
+            ),
         ]
     if rest:
         title = words.plural(len(rest), "more setting")
@@ -39,7 +49,7 @@ def render(result: Result) -> str:
     if any(setting.observed.interval or setting.extrapolated for setting in few):
         parts += [
             markup.heading("Promise against delivered"),
-            markup.chart(promised.chart(result, few)),
+            markup.chart(promised.chart(result, chosen.with_today(result, few))),
         ]
     if result.streams:
         parts += [
@@ -47,7 +57,8 @@ def render(result: Result) -> str:
             markup.chart(streams.chart(result)),
         ]
     if result.events:
-        parts += [markup.heading("Your labelled events"), _events(few, rest, result)]
+        shown = chosen.with_today(result, few)
+        parts += [markup.heading("Your labelled events"), _events(shown, rest, result)]
     return "".join(parts)
 
 
@@ -55,8 +66,9 @@ def _caption(result: Result) -> str:
     return (
         f"Settings side by side, in the last part: {spans.long(result.proof.running)} of running "
         f"time, of which nothing was used to fit. Asked: one false alarm in "
-        f"{spans.long(result.promise)}, all streams together. Ranked by how late they catch, among "
-        "those that keep the promise."
+        f"{spans.long(result.promise)}, all streams and detectors together. Ranked by how late "
+        "they catch, among those that keep what is asked of them; those for the spread among "
+        "themselves."
     )
 
 
@@ -72,39 +84,52 @@ def _columns(result: Result) -> tuple[str, ...]:
     )
 
 
-def _rows(settings: Sequence[Setting], result: Result) -> list[tuple[Text, ...]]:
-    return [_row(setting, result) for setting in settings]
+def _rows(shown: Sequence[Shown], result: Result) -> list[tuple[Text, ...]]:
+    return [_row(each, result) for each in shown]
 
 
-def _row(setting: Setting, result: Result) -> tuple[Text, ...]:
-    what = words.purpose(setting, result.groupings[setting.grouping], result.unit)
+def _row(shown: Shown, result: Result) -> tuple[Text, ...]:
     return (
-        markup.with_note(setting.name, what),
-        _keeps(setting, result),
-        markup.with_note(
-            f"{setting.observed.alarms:,}", f"in {spans.long(setting.observed.seconds)}"
-        ),
-        markup.with_note(*words.counted(setting.observed)),
-        markup.with_note(*words.by_tail(setting)),
-        _late(setting, result),
+        markup.with_note(shown.name, _what(shown, result)),
+        _keeps(shown, result),
+        markup.with_note(f"{shown.observed.alarms:,}", f"in {spans.long(shown.observed.seconds)}"),
+        markup.with_note(*words.counted(shown.observed)),
+        markup.with_note(*words.by_tail(shown)),
+        _late(shown, result),
     )
 
 
-def _keeps(setting: Setting, result: Result) -> Text:
-    if setting is chosen.best(result):
-        return markup.with_note("✓ yes, take it", f"rank {setting.rank}")
-    if setting.rank is not None:
-        return markup.with_note("✓ yes", f"rank {setting.rank}")
-    word = {"yes": "✓ yes, not ranked", "no": "✗ no", "not shown": "? not shown"}
-    return markup.with_note(word[keeps(setting, result.promise)], setting.unranked)
+def _what(shown: Shown, result: Result) -> str:
+    if isinstance(shown, Together):
+        return words.today(shown)
+    return words.purpose(shown, result.groupings[shown.grouping], result.unit)
 
 
-def _late(setting: Setting, result: Result) -> Text:
-    delay = chosen.first_step(setting, result)
+def _keeps(shown: Shown, result: Result) -> Text:
+    asked = "" if shown.asked == result.promise else f"asked: one in {spans.long(shown.asked)}"
+    word = {"yes": "✓ yes", "no": "✗ no", "not shown": "? not shown"}[keeps(shown)]
+    if isinstance(shown, Together):
+        return markup.with_note(word, asked)
+    if shown.rank is None:
+        word += ", not ranked" if keeps(shown) == "yes" else ""
+        return markup.with_note(word, "; ".join(filter(None, (shown.unranked, asked))))
+    if shown in (chosen.best(result), chosen.best_spread(result)):
+        word += ", take it"
+    rank = f"rank {shown.rank}" + (" for the spread" if shown.of_spread else "")
+    return markup.with_note(word, "; ".join(filter(None, (rank, asked))))
+
+
+def _late(shown: Shown, result: Result) -> Text:
+    if isinstance(shown, Setting) and shown.of_spread:
+        delay = that_ranks(shown, result.catch[0])
+        if delay is not None:
+            told, _ = words.delay(delay, late=True)
+            return markup.with_note(told, f"of {words.drift(delay, result)}")
+    delay = chosen.first_step(shown, result)
     return "not measured" if delay is None else markup.with_note(*words.delay(delay, late=True))
 
 
-def _events(few: Sequence[Setting], rest: Sequence[Setting], result: Result) -> str:
+def _events(few: Sequence[Shown], rest: Sequence[Setting], result: Result) -> str:
     columns = (
         "Setting",
         "Real causes caught",
@@ -124,7 +149,7 @@ def _events(few: Sequence[Setting], rest: Sequence[Setting], result: Result) -> 
     return told
 
 
-def _event_rows(settings: Sequence[Setting]) -> list[tuple[Text, ...]]:
+def _event_rows(settings: Sequence[Shown]) -> list[tuple[Text, ...]]:
     def told(seconds: float | None) -> str:
         return "–" if seconds is None else spans.long(seconds)
 

@@ -10,7 +10,7 @@ from collections.abc import Sequence
 from monitor.configuration import spans
 from replay.tuning.report import chosen, markup, words
 from replay.tuning.report.markup import Html, Text
-from replay.tuning.result import Result, Setting
+from replay.tuning.result import Result, Setting, Shown
 
 CAUTION = (
     "This report advises people. It is not a safety function, nothing may rely on it to stop a "
@@ -55,10 +55,11 @@ def _answer(result: Result, best: Setting | None) -> Text:
         told = f"Of {tried}, none can be recommended for one false alarm in {asked}."
         if result.refusals:
             told += f" Refused: {words.refusal(result.refusals[0])}"
-        return told
+        return told + _today(result)
     name = f"<strong>{markup.inline(best.name)}</strong>"
     told = f" ({words.detector(best)}, {words.constants(best)})."
-    told += f" With nothing wrong it rings once in {_delivered(best)}; asked was {asked}."
+    told += f" With nothing wrong it rings once in {_delivered(best)}; "
+    told += f"asked was {_asked(best, result)}."
     delay = chosen.first_step(best, result)
     if delay is not None and delay.late_readings.value is not None:
         told += f" It catches {words.drift(delay, result)} within "
@@ -69,10 +70,41 @@ def _answer(result: Result, best: Setting | None) -> Text:
         if delay.median_readings.value is not None:
             told += f", half the time within {spans.number(delay.median_readings.value)}"
         told += "."
-    return Html(f"Of {tried}, take {name}{markup.inline(told)}")
+    spread = chosen.best_spread(result)
+    if spread is not None:
+        told += f" For the spread, {spread.name} goes beside it."
+    return Html(f"Of {tried}, take {name}{markup.inline(told + _today(result))}")
 
 
-def _delivered(best: Setting) -> str:
+def _asked(best: Setting, result: Result) -> str:
+    whole = spans.long(result.promise)
+    if best.asked == result.promise:
+        return whole
+    return f"{spans.long(best.asked)}, its part of one in {whole} for all detectors"
+
+
+def _today(result: Result) -> str:
+    """What runs now, in a sentence: the reader decides whether to change it."""
+    now = result.together
+    if now is None:
+        return ""
+    if now.observed.interval is None and now.extrapolated is None:
+        return ""
+    if now.extrapolated is not None:
+        often = _delivered(now)
+    else:
+        often = words.joined(words.counted(now.observed))
+    told = f" What runs now, all of it together, rings once in {often}"
+    delay = chosen.first_step(now, result)
+    if delay is not None and delay.late_readings.value is not None:
+        told += (
+            f", and catches that step within {spans.number(delay.late_readings.value)} pieces "
+            "nine times in ten"
+        )
+    return f"{told}."
+
+
+def _delivered(best: Shown) -> str:
     if best.extrapolated is None:
         return words.joined(words.counted(best.observed))
     if best.extrapolated.interval.high is None:
@@ -82,7 +114,10 @@ def _delivered(best: Setting) -> str:
 
 
 def _key(result: Result, best: Setting | None) -> list[tuple[str, Text]]:
-    pairs = [_tile("Asked", spans.long(result.promise), "between false alarms")]
+    note = "between false alarms"
+    if best is not None and best.asked != result.promise:
+        note += f" of all detectors; {spans.long(best.asked)} of this one"
+    pairs = [_tile("Asked", spans.long(result.promise), note)]
     if best is None:
         supports = max((grouping.supports for grouping in result.groupings), default=0.0)
         if result.trusted and supports:

@@ -50,6 +50,18 @@ def _facts(result: Result) -> list[tuple[str, Text]]:
             "recording, and wherever the process wanders.",
         ),
         (
+            "Parts of the promise",
+            "The promise is of all detectors together. A setting that joins others is asked for "
+            "its share of it, by the shares of the detectors it replaces and of those that stay.",
+        ),
+        (
+            "All together",
+            "What is configured now ran through the engine itself, alerts, their return to normal "
+            "and all. Time in which an alert was open is left out, since nothing more can ring in "
+            "it. Lower end of the interval: rates added up; upper end: that of the detector which "
+            "rings most.",
+        ),
+        (
             "Drifts",
             f"Put into readings, not into means. Sizes to catch: "
             f"{', '.join(words.amount(size, result.unit) for size in result.catch) or 'none'}; "
@@ -62,7 +74,7 @@ def _facts(result: Result) -> list[tuple[str, Text]]:
         bounds = ", ".join(f"{clip:g}" for clip in clips)
         why = "so that one wild reading cannot ring by itself"
         said = f"Where a setting says so, its inputs end at ±{bounds} standard errors, {why}."
-        told.insert(3, ("Clip", said))
+        told.insert(len(told) - 1, ("Clip", said))
     return told
 
 
@@ -70,7 +82,7 @@ def _tails(result: Result) -> str:
     drawn: list[str] = []
     for setting in chosen.few(result):
         grouping = result.groupings[setting.grouping]
-        found = tails.chart(len(drawn), setting, grouping, result.promise)
+        found = tails.chart(len(drawn), setting, grouping)
         if found is not None and len(drawn) < _TAILS:
             drawn.append(markup.chart(found))
     if not drawn:
