@@ -5,75 +5,25 @@ Knows the order of the steps. Must not know how any of them is done, or how a re
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterator, Sequence
-from concurrent.futures import ThreadPoolExecutor
-from dataclasses import dataclass, replace
-from functools import partial
-
-import numpy as np
+from collections.abc import Sequence
+from dataclasses import replace
 
 from monitor import stream_names
-from monitor.plan import CharacteristicPlan, Scheme
+from monitor.plan import Scheme
 from replay.readings import Readings
-from replay.tuning import fragment, looking, verdict
-from replay.tuning.candidates import Candidate, Request, candidates, configured
-from replay.tuning.catching import JOINTLY, Catcher, moments
-from replay.tuning.changed import Drift, resolution
-from replay.tuning.delays import Resampling
-from replay.tuning.drifts import FEWEST, Onsets, onsets
-from replay.tuning.grouped import Grouped
+from replay.tuning import batches, fragment, lateness, looking, verdict
+from replay.tuning.batches import Batch, OnProgress
+from replay.tuning.candidates import Request, configured
+from replay.tuning.catching import JOINTLY
 from replay.tuning.hearing import hear
-from replay.tuning.judging import Judged, family, judge
-from replay.tuning.preparing import Held, Prepared, horizon, prepare
+from replay.tuning.preparing import prepare
 from replay.tuning.ranking import ranked, to_take
-from replay.tuning.result import Delay, Refusal, Result, Setting, Shape, Source, Together
+from replay.tuning.result import Refusal, Result, Setting, Source, Together
 from replay.tuning.showing import Place, setting
 from replay.tuning.together import together
 
-OnProgress = Callable[[str], None]
-"""Told what is being done."""
-
-RAMP = 200
-"""Readings of a stream over which a ramp grows."""
-
-_CURVE = (0.5, 0.75, 1.0, 1.25, 1.5, 2.0, 3.0)
-"""Sizes of steps that curves are drawn through, times the drift to catch."""
-
 _CURVED = 5
 """So many of the best settings for the mean get a curve, and every configured one."""
-
-
-@dataclass(frozen=True, slots=True)
-class _Drifts:
-    """Where drifts begin, what of the gauge they must respect, and why no delay is told by them;
-    empty where one is."""
-
-    begun: Onsets
-    too_few: str
-    resampling: Resampling
-    step: float | None
-    plausible: tuple[float, float]
-
-    def of(self, shape: Shape, amount: float) -> Drift:
-        return Drift(shape, amount, RAMP, self.step, self.plausible)
-
-
-@dataclass(frozen=True, slots=True)
-class _Batch:
-    """Settings judged together: on the same subgroups, against the same baselines."""
-
-    number: int
-    held: Held
-    grouped: Grouped
-    judged: list[Judged]
-    left_out: list[str]
-
-    @property
-    def configured(self) -> tuple[int, ...]:
-        """The places of the configured detectors among ``judged``."""
-        return tuple(
-            place for place, each in enumerate(self.judged) if each.candidate.origin == "configured"
-        )
 
 
 def study(
@@ -84,25 +34,25 @@ def study(
     plan = readings.plan
     progress("looking at the recording")
     prepared = prepare(plan, readings.streams, request)
-    drifts = _drifts(plan, prepared, request)
+    drifts = lateness.put_in(plan, prepared, request)
     place = Place(
         prepared.running,
         request.labels,
         tuple(stream_names.name(each.stream) for each in prepared.streams),
         request.promise,
     )
-    batches = list(_batches(plan, prepared, request, progress))
+    all_batches = list(batches.batches(plan, prepared, request, progress))
     settings: list[Setting] = []
-    schemes: list[tuple[_Batch, Scheme]] = []
+    schemes: list[tuple[Batch, Scheme]] = []
     running_now: Together | None = None
     unmatched = configured(plan, request.declared)[1]
-    for batch in batches:
+    for batch in all_batches:
         progress(f"drifts for {len(batch.judged)} settings on {batch.held.found.said}")
         found = batch.held.found
         delays, jointly = (
             ([[] for _ in batch.judged], [])
             if drifts.too_few
-            else _delays(batch, prepared, drifts, request)
+            else lateness.delays(batch, prepared, drifts, request)
         )
         for judged, own in zip(batch.judged, delays, strict=True):
             settings.append(setting(judged, batch.grouped, batch.number, found, place, own))
@@ -121,14 +71,14 @@ def study(
         best_first + [index for index, each in order if each.origin == "configured"]
     )
     chosen = {} if drifts.too_few else {index: schemes[index] for index in curved}
-    curves = _curves(chosen, prepared, drifts, request)
+    curves = lateness.curves(chosen, prepared, drifts, request)
     if running_now is not None:
         running_now = replace(running_now, curve=curves.get(JOINTLY, ()))
     final = tuple(replace(each, curve=curves.get(index, ())) for index, each in order)
     best, best_spread = to_take(final)
     running = prepared.running
     groupings = tuple(each.found for each in prepared.held)
-    left_out = [name for batch in batches for name in batch.left_out]
+    left_out = [name for batch in all_batches for name in batch.left_out]
     refusals = [
         *prepared.refusals,
         *verdict.refusals(groupings, final, request.promise, running.whole, left_out, unmatched),
@@ -152,7 +102,7 @@ def study(
         catch=request.catch,
         ignore=request.ignore,
         ratio=request.ratio,
-        ramp=RAMP,
+        ramp=lateness.RAMP,
         resolution=drifts.step,
         whole=looking.part(prepared.streams, running, running.first, running.last),
         fit=looking.part(prepared.streams, running, running.first, prepared.fit_to),
@@ -171,120 +121,4 @@ def study(
         fragment="" if written is None else written.text,
         notes=() if written is None else written.notes,
         events=len(request.labels),
-    )
-
-
-def _drifts(plan: CharacteristicPlan, prepared: Prepared, request: Request) -> _Drifts:
-    grouped = prepared.held[0].ours
-    rng = np.random.default_rng(request.seed)
-    begun = onsets(grouped, horizon(prepared.held, request.catch[0]), rng)
-    step = plan.resolution if plan.resolution is not None else resolution(prepared.streams)
-    return _Drifts(
-        begun,
-        _too_few(begun, prepared.held[0], request.catch[0]),
-        Resampling(moments(grouped, begun, prepared.running), rng),
-        step,
-        (plan.source.plausible_lower, plan.source.plausible_upper),
-    )
-
-
-def _too_few(begun: Onsets, held: Held, catch: float) -> str:
-    apart = begun.apart(held.ours)
-    if apart < FEWEST:
-        return (
-            f"the last part has {apart} subgroups for drifts to begin in, and {FEWEST} are needed"
-        )
-    floor = (held.textbook.floor(catch) or 0.0) * held.textbook.readings
-    if begun.horizon < floor:
-        return (
-            f"drifts can be followed for {begun.horizon} readings, and the best CUSUM takes "
-            f"{floor:.0f} on average"
-        )
-    return ""
-
-
-def _batches(
-    plan: CharacteristicPlan, prepared: Prepared, request: Request, progress: OnProgress
-) -> Iterator[_Batch]:
-    for number, held in enumerate(prepared.held):
-        tries: list[tuple[Grouped, list[Candidate]]] = []
-        if held.asked:
-            textbook = held.textbook
-            tries.append(
-                (held.ours, candidates(request, held.ours, textbook.error, textbook.interval))
-            )
-        if held.theirs is not None:
-            tries.append((held.theirs, configured(plan, request.declared)[0]))
-        for grouped, tried in tries:
-            progress(f"false alarms of {len(tried)} settings on {held.found.said}")
-            families: dict[Scheme, list[Candidate]] = {}
-            for candidate in tried:
-                families.setdefault(family(candidate), []).append(candidate)
-            one = partial(judge, grouped, interval=held.interval)
-            if request.jobs > 1:
-                with ThreadPoolExecutor(request.jobs) as pool:
-                    done = list(pool.map(one, families.values()))
-            else:
-                done = [one(members) for members in families.values()]
-            judged = [each for members in done for each in members]
-            known = {each.candidate.name for each in judged}
-            left_out = [each.name for each in tried if each.name not in known]
-            yield _Batch(number, held, grouped, judged, left_out)
-
-
-def _delays(
-    batch: _Batch, prepared: Prepared, drifts: _Drifts, request: Request
-) -> tuple[list[list[Delay]], list[Delay]]:
-    """Of every setting of the batch: the first drift to catch in all shapes, and its own; and of
-    all configured ones together."""
-    catcher = _catcher(batch, prepared, drifts)
-    catcher.warm({index: one.scheme for index, one in enumerate(batch.judged)})
-    everyone = range(len(batch.judged))
-    first = request.catch[0]
-    found: list[list[Delay]] = [[] for _ in everyone]
-    wanted: list[tuple[Drift, Sequence[int]]] = [
-        (drifts.of("step", first), everyone),
-        (drifts.of("ramp", first), everyone),
-        (drifts.of("spread", request.ratio), everyone),
-    ]
-    for catch in request.catch[1:]:
-        own = [i for i in everyone if batch.judged[i].candidate.catch == catch]
-        wanted.append((drifts.of("step", catch), own))
-    jointly: list[Delay] = []
-    for drift, keys in wanted:
-        caught = catcher.catch(drift, keys, batch.configured)
-        if JOINTLY in caught:
-            jointly.append(caught.pop(JOINTLY))
-        for key, delay in caught.items():
-            found[key].append(delay)
-    return found, jointly
-
-
-def _curves(
-    chosen: dict[int, tuple[_Batch, Scheme]],
-    prepared: Prepared,
-    drifts: _Drifts,
-    request: Request,
-) -> dict[int, tuple[Delay, ...]]:
-    """Of every chosen setting by its place, and of all configured ones together."""
-    batches = {id(batch): batch for batch, _ in chosen.values()}
-    found: dict[int, list[Delay]] = {index: [] for index in chosen}
-    for batch in batches.values():
-        catcher = _catcher(batch, prepared, drifts)
-        catcher.warm({i: scheme for i, (one, scheme) in chosen.items() if one is batch})
-        together_now = [
-            i
-            for i, (one, _) in chosen.items()
-            if one is batch and batch.grouped is batch.held.theirs
-        ]
-        for share in _CURVE:
-            drift = drifts.of("step", share * request.catch[0])
-            for index, delay in catcher.catch(drift, tuple(chosen), together_now).items():
-                found.setdefault(index, []).append(delay)
-    return {index: tuple(delays) for index, delays in found.items()}
-
-
-def _catcher(batch: _Batch, prepared: Prepared, drifts: _Drifts) -> Catcher:
-    return Catcher(
-        batch.grouped, drifts.begun, prepared.running, drifts.resampling, batch.held.textbook
     )
