@@ -91,7 +91,7 @@ def assess(
     shrunk = None
     if all(each.values.sigma > 0 for each in found.each):
         skewness = found.shape.skewness if found.shape is not None and skewed(found) else 0.0
-        shrunk = delivered(used, found, detectors(written), found.inflation, skewness)
+        shrunk = delivered(used, found, detectors(written), skewness)
     why = reasons(found, off, left_out, clues, shrunk, unit)
     skipped = tuple(each.stream for each in streams if len(each) < 2)
     return Assessment(word(why), why, written, found, off, shrunk, skipped)

@@ -17,6 +17,7 @@ import numpy as np
 
 from monitor import runlengths
 from monitor.baselining.estimating import Estimate
+from monitor.baselining.following import OVERSHOOT, Following, widened
 from monitor.baselining.material import StreamSubgroups
 from monitor.baselining.resampling import RESAMPLES, Errors, resampled
 from monitor.detectors.charts import SPREAD
@@ -35,8 +36,6 @@ _SHIFTS, _RATIOS = 9, 5
 _STREAMS = 12
 """Of so many streams the run lengths are computed; of more, of so many among them."""
 _LONGEST = 1e300
-_OVERSHOOT = 1.166
-"""By which a normal sum passes its limit on average, twice over (D. Siegmund 1985)."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -74,19 +73,19 @@ def delivered(
     streams: Sequence[StreamSubgroups],
     estimate: Estimate,
     detectors: Callable[[Stream], Sequence[DetectorPlan]],
-    inflation: float,
     skewness: float,
 ) -> Delivered | None:
     """What ``detectors`` (of each stream) keep of their promise under the estimated baseline.
 
-    ``inflation`` and ``skewness`` are those of standardised means, 1 and 0 where they are not told
-    from none. None where nothing can be computed.
+    ``skewness`` is that of standardised means, 0 where it is not told from none. None where nothing
+    can be computed.
     """
     by_name = {each.stream: each for each in streams}
     chosen = _spread_out([each.stream for each in estimate.each], _STREAMS)
     if not any(detectors(stream) for stream in chosen):
         return None
     errors = resampled(by_name, estimate, chosen)
+    means = Following(estimate.memory)
     promised = following = skewed = 0.0
     actual = np.zeros(RESAMPLES)
     estimated = np.zeros(RESAMPLES)
@@ -98,24 +97,24 @@ def delivered(
         for detector in detectors(stream):
             scheme = detector.scheme
             off = 0.0 if detector.intent is None else detector.intent.ignore / error
-            sums_up = not isinstance(scheme, ShewhartPlan) and not _is_spread(scheme)
-            wider = math.sqrt(inflation) if sums_up else 1.0
             try:
-                surface = _Surface(scheme, size, errors[stream])
-                reference = surface.reference(off)
+                alone = _Surface(scheme, size, errors[stream])
+                reference = alone.reference(off)
                 if not math.isfinite(reference):
                     continue
-                plain = surface.of_errors(1.0)
-                widened = plain if wider == 1 else surface.of_errors(wider)
-                exact, exactly_widened = surface.exact(1.0), surface.exact(wider)
+                plain, exact = alone.of_errors(), alone.exact()
+                followed, exactly_followed = plain, exact
+                if estimate.follows and not _is_spread(scheme):
+                    together = alone.following(means)
+                    followed, exactly_followed = together.of_errors(), together.exact()
             except ValueError:
                 left_out[detector.name] = None
                 continue
             left = _skewed(scheme, skewness)
             promised += weight / reference
             estimated += weight / plain
-            actual += weight / (widened * left)
-            following += weight / exactly_widened
+            actual += weight / (followed * left)
+            following += weight / exactly_followed
             skewed += weight / (exact * left)
     if not promised:
         return None
@@ -149,23 +148,37 @@ class _Surface:
             raise ValueError("its rules must be simulated")
         self._scheme, self._size = scheme, size
         self._spread = _is_spread(scheme)
-        self._shifts = errors.shift
-        self._ratios = errors.sigma if self._spread else errors.error
+        self._errors = errors
+        self._wider = self._longer = 1.0
+
+    def following(self, means: Following) -> _Surface:
+        """The same on means that follow each other."""
+        surface = _Surface(self._scheme, self._size, self._errors)
+        surface._wider = means.wider(self._scheme)
+        surface._longer = means.longer(self._scheme)
+        if surface._wider != 1.0:
+            # How much they follow each other is an estimate as well.
+            error = self._errors.error * self._errors.inflation
+            surface._errors = replace(self._errors, error=error)
+        return surface
 
     def reference(self, off: float) -> float:
         """What is promised: while the mean is off by ``off`` standard errors to the side watched,
         with nothing else wrong."""
         return self._run_length(-off if self._scheme.direction == "down" else off, 1.0)
 
-    def exact(self, wider: float) -> float:
-        """With an exact centre, and a spread ``wider`` times what it is taken for."""
-        return self._run_length(0.0, wider)
+    def exact(self) -> float:
+        """With an exact centre and spread."""
+        return self._run_length(0.0, 1.0)
 
-    def of_errors(self, wider: float) -> Array:
-        """Of each baseline, with a spread ``wider`` times what its error makes of it."""
+    def of_errors(self) -> Array:
+        """Of each baseline."""
+        errors = self._errors
         # Beyond the middle 98 % nothing is asked.
-        shifts = np.clip(self._shifts, *np.quantile(self._shifts, (0.01, 0.99)))
-        ratios = wider * np.clip(self._ratios, *np.quantile(self._ratios, (0.01, 0.99)))
+        shifts, ratios = (
+            np.clip(each, *np.quantile(each, (0.01, 0.99)))
+            for each in (errors.shift, errors.sigma if self._spread else errors.error)
+        )
         over_shift = np.linspace(shifts.min(), shifts.max(), 1 if self._spread else _SHIFTS)
         over_ratio = np.linspace(ratios.min(), ratios.max(), _RATIOS)
         logs = np.log([[self._run_length(s, r) for s in over_shift] for r in over_ratio])
@@ -180,7 +193,9 @@ class _Surface:
         return np.asarray(np.exp(stacked[at, which] * (1 - part) + stacked[at + 1, which] * part))
 
     def _run_length(self, shift: float, ratio: float) -> float:
-        return min(_run_length(self._scheme, self._size, shift, ratio), _LONGEST)
+        scheme = widened(self._scheme, self._wider)
+        found = _run_length(scheme, self._size, shift / self._wider, ratio)
+        return min(self._longer * found, _LONGEST)
 
 
 def _run_length(scheme: Scheme, size: int, shift: float, ratio: float) -> float:
@@ -208,7 +223,7 @@ def _skewed(scheme: Scheme, skewness: float) -> float:
     signs = (1.0, -1.0) if both else (1.0,) if scheme.direction == "up" else (-1.0,)
     match scheme:
         case CusumPlan():
-            reach = scheme.h + _OVERSHOOT
+            reach = scheme.h + OVERSHOOT
             rates = [math.exp((2 * scheme.k - tilt(scheme.k, s * skewness)) * reach) for s in signs]
             return len(signs) / sum(rates)
         case EwmaPlan():

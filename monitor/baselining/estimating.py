@@ -96,8 +96,8 @@ class Estimate:
     """All streams. ``common`` are values for all of them together.
 
     ``correlation``: of subgroup means at lag 1. ``follows``: whether successive means follow each
-    other more than chance explains; ``inflation``: then, by how much the variance of a long mean is
-    that of independent ones. ``heads`` compares the streams' means, None where there is but one;
+    other more than chance explains; ``memory``: then, their autocorrelations, lags 0 …, as far as
+    they reach, else 1 alone. ``heads`` compares the streams' means, None where there is but one;
     ``differ`` says whether means or spreads of streams do. ``shape`` is of the standardised means.
     ``moved``, where the centre seems to wander: the streams that moved, the one that did so most
     first. ``between`` is how sigma_between was estimated.
@@ -108,7 +108,7 @@ class Estimate:
     single: bool
     correlation: float
     follows: bool
-    inflation: float
+    memory: Array
     heads: Comparison | None
     differ: bool
     spread_ratio: float
@@ -118,6 +118,11 @@ class Estimate:
     first: int
     last: int
     between: BetweenBy
+
+    @property
+    def inflation(self) -> float:
+        """By how much the variance of a long mean is that of independent ones."""
+        return autocorrelation.inflation(self.memory)
 
     @property
     def subgroups(self) -> int:
@@ -160,9 +165,13 @@ def estimate(
     lags = min(_LAGS, max(2, max(map(len, streams)) // 4))
     correlation = autocorrelation.correlations(standard, lags)
     total = sum(map(len, streams))
-    inflation = autocorrelation.inflation(correlation, total)
-    follows = inflation > _ALIKE and autocorrelation.independence_p(correlation, total) < _DOUBT
-    inflation = inflation if follows else 1.0
+    memory = autocorrelation.memory(correlation, total)
+    follows = (
+        autocorrelation.inflation(memory) > _ALIKE
+        and autocorrelation.independence_p(correlation, total) < _DOUBT
+    )
+    memory = memory if follows else np.ones(1)
+    inflation = autocorrelation.inflation(memory)
     each = tuple(
         _stream(s, z, sigma, between, inflation) for s, z in zip(streams, standard, strict=True)
     )
@@ -180,7 +189,7 @@ def estimate(
         single,
         float(correlation[1]) if math.isfinite(correlation[1]) else 0.0,
         follows,
-        inflation,
+        memory,
         heads,
         (heads is not None and heads.p < DIFFER) or spreads_differ,
         spread_ratio,
@@ -201,7 +210,7 @@ def behaving(all_of: Estimate, inside: Estimate) -> Estimate:
         each=tuple(effective),
         correlation=inside.correlation,
         follows=inside.follows,
-        inflation=inside.inflation,
+        memory=inside.memory,
         heads=inside.heads,
         differ=inside.differ,
         spread_ratio=inside.spread_ratio,

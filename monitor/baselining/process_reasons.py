@@ -14,6 +14,7 @@ from monitor.baselining.estimating import Estimate
 from monitor.baselining.material import Clues
 from monitor.baselining.reason import Reason, part
 from monitor.methods.f_ratio import f_cdf, f_sf
+from monitor.methods.swings import LEAST
 
 _MIXED = 0.02
 """Of the variance, between sources that take turns, from which on a stream is refused as mixed."""
@@ -29,8 +30,25 @@ _NAMED = 2
 def wander(estimate: Estimate, unit: str) -> Iterator[Reason]:
     """Does the centre stay?"""
     found = estimate.wander
-    if found is not None and found.may_wander:
-        growth = found.long_ratio / found.short_ratio
+    if found is None:
+        yield Reason(
+            "provisional",
+            "wander-unseen",
+            f"whether the centre stays cannot be seen: that takes a stream of {LEAST} subgroups "
+            "or more",
+            "estimate again from a longer recording",
+        )
+    elif found.may_wander:
+        if found.by == "stretches":
+            slow = (
+                f"means of {found.long} subgroups vary {found.growth:.2g} times as much as means "
+                f"of {found.short} foretell"
+            )
+        else:
+            slow = (
+                f"swings over {found.long} subgroups or more are {found.growth:.2g} times as "
+                f"strong as those over {found.short} to {found.long} foretell"
+            )
         so = (
             "the centre does not stay"
             if found.wanders
@@ -40,8 +58,7 @@ def wander(estimate: Estimate, unit: str) -> Iterator[Reason]:
         yield Reason(
             "refuse" if found.wanders else "provisional",
             "wander",
-            f"{so} (it wanders): means of {found.long} subgroups vary {growth:.2g} times as much "
-            f"as means of {found.short} foretell{then}{_where(estimate, unit)}",
+            f"{so} (it wanders): {slow}{then}{_where(estimate, unit)}",
             "find what moves it (a warm-up, a change of material, an adjustment, one step in "
             "the middle) and record again without it; if it always moves so and that does no "
             "harm, gather longer subgroups, or write ignore: with what is harmless",

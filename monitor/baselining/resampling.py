@@ -12,7 +12,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -26,17 +26,20 @@ RESAMPLES = 1_000
 
 _SEED = 7_870
 _BLOCKS = 300
+_LEAST = 1e-300
 
 
 @dataclass(frozen=True, slots=True)
 class Errors:
     """How wrong each resample's baseline is, shape (RESAMPLES,): the true mean off the baseline's,
     in the baseline's standard errors; the true standard error of a mean over the baseline's; the
-    true sigma over the baseline's."""
+    true sigma over the baseline's; the true spread of long means over what the recording makes of
+    it, each against that of single ones."""
 
     shift: Array
     error: Array
     sigma: Array
+    inflation: Array
 
 
 def resampled(
@@ -44,32 +47,42 @@ def resampled(
 ) -> dict[Stream, Errors]:
     """The errors of the baselines of the ``chosen`` streams; always the same for the same input."""
     chance = np.random.default_rng(_SEED)
-    inflation, between = estimate.inflation, estimate.between
+    # The variance of long means from M lags errs by about √(2(2M + 1)/N) of itself, as one from
+    # blocks of 2M + 1 does.
+    longest, between = 2 * len(estimate.memory) - 1, estimate.between
     if estimate.differ:
-        return {
+        own = {
             each: _errors(
-                _drawn(_blocks(streams[each], inflation), chance),
+                _drawn(_blocks(streams[each], longest), chance),
                 estimate.by_stream[each],
                 between,
             )
             for each in chosen
         }
+        # How far means follow each other is estimated from all streams together.
+        return {
+            each: replace(
+                found,
+                inflation=found.inflation ** math.sqrt(len(streams[each]) / estimate.subgroups),
+            )
+            for each, found in own.items()
+        }
     blocks = np.concatenate(
-        [_blocks(streams[each.stream], inflation) for each in estimate.each], axis=1
+        [_blocks(streams[each.stream], longest) for each in estimate.each], axis=1
     )
     together = _errors(_drawn(blocks, chance), estimate.common, between)
     return dict.fromkeys(chosen, together)
 
 
 _Sums = NDArray[np.float64]
-"""Shape (6, m), over m blocks, resamples or whatever: subgroups, Σmean, Σmean², Σ1/n, Σ(n−1)s²,
-Σ(n−1)."""
+"""Shape (8, m), over m blocks, resamples or whatever: subgroups, Σmean, Σmean², Σ1/n, Σ(n−1)s²,
+Σ(n−1); and, over their blocks, Σ(Σmean)² and Σ(subgroups)²."""
 
 
-def _blocks(stream: StreamSubgroups, inflation: float) -> _Sums:
+def _blocks(stream: StreamSubgroups, longest: int) -> _Sums:
     """Sums over blocks of neighbours, long enough to hold what makes them follow each other."""
     count = len(stream)
-    length = max(1, math.ceil(count / _BLOCKS), min(math.ceil(4 * (inflation - 1)), count // 12))
+    length = max(1, math.ceil(count / _BLOCKS), min(longest, count // 12))
     # About its own centre, so that squares keep their digits.
     centred = stream.mean - stream.mean.mean()
     rows = np.stack(
@@ -83,7 +96,8 @@ def _blocks(stream: StreamSubgroups, inflation: float) -> _Sums:
         )
     )
     edges = np.arange(count // length) * length  # the last block takes what is left over
-    return np.asarray(np.add.reduceat(rows, edges, axis=1))
+    blocks = np.add.reduceat(rows, edges, axis=1)
+    return np.vstack((blocks, blocks[1] ** 2, blocks[0] ** 2))
 
 
 def _drawn(blocks: _Sums, chance: np.random.Generator) -> _Sums:
@@ -98,8 +112,9 @@ def _drawn(blocks: _Sums, chance: np.random.Generator) -> _Sums:
 
 
 def _errors(sums: _Sums, values: Values, between: BetweenBy) -> Errors:
-    count, total, squares, inverse, within, freedom = sums
+    count, total, squares, inverse, within, freedom, of_blocks, lengths = sums
     mean = total / count
+    length = lengths / count
     variance = np.maximum(squares / count - mean**2, 0.0) * count / np.maximum(count - 1, 1.0)
     within = within / np.maximum(freedom, 1.0)
     inverse = inverse / count
@@ -112,4 +127,9 @@ def _errors(sums: _Sums, values: Values, between: BetweenBy) -> Errors:
     # Of single readings the spread is that of the means.
     sigma = strays if freedom[0] == 0 else np.sqrt(within / within[0])
     shift = (mean[0] - mean[1:]) / own
-    return Errors(shift, truth / own, 1 / np.maximum(sigma[1:], 1e-3))
+    # The mean of a block varies as long means do.
+    long = np.sqrt(
+        np.maximum(of_blocks / count - length * mean**2, 0.0) / np.maximum(variance, _LEAST)
+    )
+    inflation = long[0] / np.maximum(long[1:], 1e-3 * max(long[0], _LEAST))
+    return Errors(shift, truth / own, 1 / np.maximum(sigma[1:], 1e-3), inflation)

@@ -1,13 +1,16 @@
 """Whether the means of a process keep to a centre at all.
 
-Knows variances of means over stretches of different length. Must not know charts or baselines.
+Knows variances of means over stretches of different length, and which test a length allows. Must
+not know charts or baselines.
 """
 
 from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass
+from typing import Literal
 
+from monitor.methods import swings
 from monitor.methods.f_ratio import f_sf
 from monitor.methods.normal import Array
 
@@ -15,32 +18,37 @@ GROWTH = 1.5
 """VR over stretches four times as long may be larger by so much before it counts as wandering."""
 
 LONG, SHORT = 200, 50
-_STRETCHES = 12
-"""Of the long ones, together: fewer cannot tell."""
-_LEAST = 5
-_SURE, _DOUBTFUL = 0.01, 0.05
+_FEWEST = 11
+"""Degrees of freedom between the long ones; with fewer, swings tell more."""
+_SURE = 0.01
+_DOUBTFUL = {"stretches": 0.05, "swings": 0.02}
+"""Both come about once in fifty where nothing wanders: the chance of stretches is overstated."""
 
 
 @dataclass(frozen=True, slots=True)
 class Wander:
-    """Variance ratios VR(m) = m·var(means of m)/var over short stretches and ones ``long`` values
-    long; ``p`` is the chance of such growth where the long ones add nothing."""
+    """``growth``: by how much what is slow varies more than what is quicker foretells; ``p``: the
+    chance of such growth where it does not.
 
+    By ``stretches``: means of ``long`` values against means of ``short`` ones. By ``swings``: those
+    over ``long`` values or more against those over ``short`` to ``long``.
+    """
+
+    by: Literal["stretches", "swings"]
     short: int
     long: int
-    short_ratio: float
-    long_ratio: float
+    growth: float
     p: float
 
     @property
     def wanders(self) -> bool:
         """Whether no frozen centre describes the process."""
-        return self.long_ratio > GROWTH * self.short_ratio and self.p < _SURE
+        return self.growth > GROWTH and self.p < _SURE
 
     @property
     def may_wander(self) -> bool:
         """Whether it looks so, though chance may do that as well."""
-        return self.long_ratio > GROWTH * self.short_ratio and self.p < _DOUBTFUL
+        return self.growth > GROWTH and self.p < _DOUBTFUL[self.by]
 
 
 def variance_ratio(series: Sequence[Array], length: int) -> tuple[float, int]:
@@ -67,20 +75,19 @@ def variance_ratio(series: Sequence[Array], length: int) -> tuple[float, int]:
 
 
 def wander(series: Sequence[Array]) -> Wander | None:
-    """Compares stretches of 200 with stretches of 50, or shorter ones, four to one, where the
-    series are short; None where they are too short to tell. Stretches that follow each other only
-    for a while leave VR level; a walk makes it grow fourfold."""
-    total = sum(map(len, series))
-    long = min(LONG, total // (_STRETCHES + len(series)))
-    short = long * SHORT // LONG
-    if short < _LEAST:
+    """Compares variance ratios over stretches of 200 and of 50, where the series have enough of
+    them: where values follow each other only for a while both are alike, and a walk makes the one
+    over longer stretches up to four times as large. Shorter series are judged by their swings.
+    None where they are too short for that as well."""
+    long_ratio, freedom = variance_ratio(series, LONG)
+    short_ratio, short_freedom = variance_ratio(series, SHORT)
+    if freedom >= _FEWEST and short_ratio:
+        # The short stretches lie in the long ones: what is left of them is independent of those,
+        # and the comparison with all of them errs on the side of saying nothing.
+        growth = long_ratio / short_ratio
+        return Wander("stretches", SHORT, LONG, growth, f_sf(growth, freedom, short_freedom))
+    found = swings.swings(series)
+    if found is None:
         return None
-    long = short * LONG // SHORT
-    long_ratio, freedom = variance_ratio(series, long)
-    short_ratio, short_freedom = variance_ratio(series, short)
-    if freedom < 2 or not short_ratio:
-        return None
-    # The short stretches lie in the long ones: what is left of them is independent of those, and
-    # the comparison with all of them errs on the side of saying nothing.
-    p = f_sf(long_ratio / short_ratio, freedom, short_freedom)
-    return Wander(short, long, short_ratio, long_ratio, p)
+    longest = max(map(len, series))
+    return Wander("swings", longest // swings.QUICK, longest // swings.SLOW, found.growth, found.p)

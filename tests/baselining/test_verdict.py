@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+import re
+
 import numpy as np
 import pytest
 from plans import START
@@ -52,6 +54,53 @@ def test_one_step_in_the_middle_is_refused(chance: np.random.Generator) -> None:
     readings[2000:] += 0.5
 
     assert kinds(assessed(gathered(readings)))["wander"] == "refuse"
+
+
+@pytest.mark.parametrize(("count", "step"), [(300, 0.15), (600, 0.1)])
+def test_a_short_recording_shows_a_walking_centre(
+    chance: np.random.Generator, count: int, step: float
+) -> None:
+    """``step``: the walk's, in standard errors of a mean of five."""
+    verdicts = []
+    for _ in range(20):
+        walk = np.cumsum(chance.normal(size=(count, 1))) * step * 5**-0.5
+        found = assessed(gathered(chance.normal(size=(count, 5)) + walk[:, None]), scheme=None)
+        verdicts.append(kinds(found).get("wander"))
+        if verdicts[-1]:
+            (why,) = (each.found for each in found.reasons if each.kind == "wander")
+            assert re.search(
+                r"swings over \d+ subgroups or more are [0-9.e+]+ times as strong", why
+            )
+
+    assert verdicts.count("refuse") >= 15
+
+
+@pytest.mark.parametrize(
+    ("correlation", "recordings"),
+    [
+        *((each, 40) for each in (0.0, 0.5)),
+        *(pytest.param(each, 600, marks=pytest.mark.long) for each in (0.0, 0.5, 0.8)),
+    ],
+)
+def test_a_short_recording_of_a_steady_process_is_hardly_ever_refused(
+    chance: np.random.Generator, correlation: float, recordings: int
+) -> None:
+    refused = [
+        assessed(gathered(following(chance, correlation, 400)), scheme=None).verdict == "refuse"
+        for _ in range(recordings)
+    ]
+
+    assert sum(refused) <= 0.02 * recordings + 2.3 * (0.02 * recordings) ** 0.5
+
+
+@pytest.mark.parametrize(("count", "said"), [(90, "provisional"), (150, None)])
+def test_what_is_too_short_to_show_wandering_says_so(
+    chance: np.random.Generator, count: int, said: str | None
+) -> None:
+    """Of twelve streams alike, enough subgroups otherwise."""
+    found = assessed(*heads(*chance.normal(340, 2, (12, count, 5))))
+
+    assert kinds(found).get("wander-unseen") == said
 
 
 def test_who_moved_and_when_is_told(chance: np.random.Generator) -> None:

@@ -50,10 +50,29 @@ def test_streams_have_centres_of_their_own() -> None:
 
     assert found is not None
     assert not found.wanders
-    assert (found.short, found.long) == (50, 200)
+    assert (found.by, found.short, found.long) == ("stretches", 50, 200)
+
+
+def test_short_series_are_judged_by_their_swings() -> None:
+    values = np.random.default_rng(7).normal(size=2_400)
+    long, short = wander([values]), wander([values[:2_399]])
+
+    assert long is not None
+    assert long.by == "stretches"
+    assert short is not None
+    assert (short.by, short.short, short.long) == ("swings", 99, 399)
+
+
+def test_many_short_streams_tell_together() -> None:
+    chance = np.random.default_rng(8)
+    series = list(chance.normal(size=(100, 100)) + np.linspace(0, 0.8, 100))
+    found = wander(series)
+
+    assert found is not None
+    assert found.wanders
 
 
 def test_too_few_cannot_tell() -> None:
-    assert wander([np.random.default_rng(6).normal(size=100)]) is None
+    assert wander([np.random.default_rng(6).normal(size=99)]) is None
     assert wander([]) is None
     assert variance_ratio([np.ones(5)], 5) == (0.0, 0)
