@@ -9,10 +9,13 @@ from __future__ import annotations
 import argparse
 import importlib
 import os
+import re
 import sys
 from collections.abc import Mapping, Sequence
 
 DONE, COULD_NOT, WRONG = 0, 1, 2
+
+_NEGATIVE = re.compile(r"-[0-9.]")
 
 
 class CommandError(Exception):
@@ -51,7 +54,7 @@ def run(
             module = importlib.import_module(path)
             module.configure(sub)
             sub.set_defaults(main=module.main)
-    args = parser.parse_args(words)
+    args = parser.parse_args(_with_negatives(words))
     try:
         status: int = args.main(args)
         sys.stdout.flush()
@@ -65,3 +68,15 @@ def run(
     except KeyboardInterrupt:
         return COULD_NOT
     return status
+
+
+def _with_negatives(words: Sequence[str]) -> list[str]:
+    """``--shifts -1,0`` as ``--shifts=-1,0``: argparse would take the number for an option."""
+    told: list[str] = []
+    for word in words:
+        before = told[-1] if told else ""
+        if _NEGATIVE.match(word) and before.startswith("--") and "=" not in before:
+            told[-1] = f"{before}={word}"
+        else:
+            told.append(word)
+    return told

@@ -344,7 +344,7 @@ REFUSED: list[tuple[str, Change, str, str, str]] = [
     ),
     (
         "an average that never gets there",
-        detectors({"kind": "ewma", "catch": 2, "clip": 0.05}),
+        detectors({"kind": "ewma", "catch": 9, "clip": 0.05}),
         "detectors[0].clip",
         "no average could ever reach its limit",
         "leave it out",

@@ -235,6 +235,19 @@ def promising(catch: float) -> Any:
     return change
 
 
+def with_an_average(document: Any) -> None:
+    promising(60.0)(document)  # more than any single reading hides
+    document["characteristics"]["net-weight"]["detectors"][0]["kind"] = "ewma"
+
+
+def test_an_average_for_an_enormous_drift_stops_no_daemon(broker: Broker, tmp_path: Path) -> None:
+    with started(tmp_path / "a", broker.port) as daemon:
+        edit(daemon, with_an_average)
+        hang_up(daemon)
+        until(lambda: len(configurations(daemon)) == 2, "the reload")
+        assert daemon.stop() == 0
+
+
 def sum_limit(daemon: Launched) -> float:
     newest = configurations(daemon)[-1].plan
     (weight,) = [each for each in newest.characteristics if each.name == "net-weight"]

@@ -9,6 +9,7 @@ import pytest
 import yaml
 
 from monitor.__main__ import main
+from monitor.configuration import catching
 from monitor.configuration.problems import ConfigurationError
 from monitor.configuration.resolve import read_plan
 from monitor.plan import CharacteristicPlan, CusumPlan, RulePlan, ShewhartPlan
@@ -95,6 +96,18 @@ def test_constants_are_worked_out_from_a_promise(write: Write) -> None:
         assert found == solve_variance(1.5, interval, size=5, direction=direction)  # type: ignore[arg-type]
     ranges = {"kind": "shewhart", "chart": "range"}
     assert scheme(write(ranges, promise=PROMISE)) == solve_spread_chart("range", interval, 5)
+
+
+def test_a_spread_that_shrinks_is_caught_as_soon_by_either_way_to_write_it(write: Write) -> None:
+    caught = []
+    for ratio in (1.4, 1 / 1.4):
+        asked = {"kind": "cusum", "chart": "variance", "catch_ratio": ratio, "direction": "down"}
+        plan = write(asked, promise=PROMISE)
+        assert plan.judgement is not None
+        caught.append(catching.of_detector(plan, plan.judgement.detectors[0]))
+    assert caught[0] == caught[1]
+    assert caught[0] is not None
+    assert caught[0].ratio == pytest.approx(1 / 1.4)
 
 
 CUSUM = {"kind": "cusum", "chart": "variance", "k": 1.46, "h": 12}

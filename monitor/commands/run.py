@@ -58,6 +58,10 @@ def _again(path: Path, before: Settings) -> Settings | None:
     except ConfigurationError as error:
         log.error("the changed configuration is not used", problems=str(error))
         return None
+    except Exception:
+        # Ours, not the user's: no reason to stop watching.
+        log.exception("the changed configuration is not used: it could not be worked out")
+        return None
     for name in ("broker", "root", "points", "journal", "retention"):
         if getattr(settings, name) != getattr(before, name):
             log.error("the changed configuration is not used: restart for this", changed=name)

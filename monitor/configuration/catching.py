@@ -58,6 +58,8 @@ def of_detector(plan: CharacteristicPlan, detector: DetectorPlan) -> Catching | 
             shift = -shift if intent.direction == "down" else shift
     if drift is None and ratio is None:
         return None
+    if ratio is not None and intent.direction == "down":
+        ratio = min(ratio, 1 / ratio)  # either is meant, see runlengths.solve_variance
     found = [_quantile(scheme, shift, each, size, ratio or 1.0) for each in (HALF, NINE_OF_TEN)]
     half, nine = (None if each is None else _delay(plan, each, size) for each in found)
     return None if half is None or nine is None else Catching(drift, ratio, half, nine)

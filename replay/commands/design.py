@@ -33,6 +33,9 @@ shifts and widths are in standard errors of the charted statistic, run lengths i
 _SHIFTS = (0.0, 0.5, 1.0, 2.0)
 _CURVE = 40
 
+_SHORTEST = 2.0
+"""Subgroups between false alarms; more often than every other one is no question."""
+
 
 def configure(parser: argparse.ArgumentParser) -> None:
     """Declare the arguments."""
@@ -71,8 +74,7 @@ def configure(parser: argparse.ArgumentParser) -> None:
     parser.add_argument(
         "--shifts",
         metavar="S,S,...",
-        help="where to look; where the first is negative, --shifts=-1,0,1 (default 0,0.5,1,2, "
-        "negative with --direction down)",
+        help="where to look (default 0,0.5,1,2, negative with --direction down)",
     )
     parser.add_argument("--json", action="store_true", help="one JSON object on stdout")
     parser.add_argument("--html", metavar="FILE.html", help="write a page with the curve")
@@ -158,11 +160,11 @@ def _solved(args: argparse.Namespace, catch: float, ignore: float, rate: float |
     if catch <= ignore:
         raise CommandError(f"--ignore {ignore:g} is no smaller than --catch {catch:g}", WRONG)
     if args.run_length is not None:
-        interval = _number("--run-length", args.run_length, low=1, high=1e15)
+        interval = _number("--run-length", args.run_length, low=_SHORTEST, high=1e15)
     else:
         assert rate is not None  # refused above
         interval = _duration(args.false_alarm_every) * rate
-        _within("--false-alarm-every", "times --rate", interval, 1, 1e15)
+        _within("--false-alarm-every", "times --rate", interval, _SHORTEST, 1e15)
     kind: runlengths.Kind = args.kind or "cusum"
     try:
         return runlengths.solve(
@@ -177,7 +179,7 @@ def _solved(args: argparse.Namespace, catch: float, ignore: float, rate: float |
     except ValueError:
         raise CommandError(
             f"no {kind} that is to catch {catch:g} and ignore {ignore:g} has a run length of "
-            f"{interval:,.6g}: ask for another, or for a larger --catch"
+            f"{interval:,.6g}: ask for a longer one, a larger --catch or a smaller --head-start"
         ) from None
 
 
@@ -200,7 +202,8 @@ def _number(option: str, text: str, *, low: float, high: float = 20) -> float:
     try:
         number = float(text)
     except ValueError:
-        raise CommandError(f"{option} {text}: {text.strip()!r} is not a number", WRONG) from None
+        said = f"{text.strip()!r} is not a number" if text.strip() else "a number is missing"
+        raise CommandError(f"{option} {text}: {said}".replace(" :", ":"), WRONG) from None
     _within(option, text, number, low, high)
     return number
 

@@ -56,6 +56,7 @@ def simulated(
         (0.25, 6, 0, 0.9, None, "both"),
         (0.25, 6, -0.5, 0.8, None, "both"),
         (0, 5, 0.3, 0.7, None, "both"),
+        (0.05, 20, 0, 0.9, None, "both"),  # both stay high for hundreds of steps
     ],
 )
 def test_against_simulation(
@@ -178,3 +179,13 @@ def test_a_shift_beyond_k_cannot_be_ignored_for_long() -> None:
 def test_an_interval_too_high_to_compute_says_so() -> None:
     with pytest.raises(ValueError, match="as far as run lengths are computed"):
         run_length(0.5, 1e9)
+
+
+@pytest.mark.parametrize(("k", "h", "clip"), [(0.5, 5.0, 3.0), (0.01, 100.0, None)])
+def test_two_high_sums_that_cannot_be_followed_are_refused(
+    k: float, h: float, clip: float | None
+) -> None:
+    with pytest.raises(ValueError, match=r"head start of 0\.9"):
+        run_length(k, h, head_start=0.9, clip=clip)
+    assert run_length(k, h, head_start=0.9, clip=clip, direction="up") > 1
+    assert run_length(k, h, head_start=0.5, clip=clip) > 1

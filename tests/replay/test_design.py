@@ -60,7 +60,7 @@ def test_a_head_start_and_a_side(capsys: pytest.CaptureFixture[str]) -> None:
     down = design(capsys, "--cusum", "0.5,5", "--direction", "down")
     assert list(lengths(down)) == [-2, -1, -0.5, 0]
     assert lengths(down)[0] == pytest.approx(2 * 465.4, rel=1e-3)
-    up = design(capsys, "--cusum", "0.5,5", "--direction", "up", "--shifts=-1,0,1")
+    up = design(capsys, "--cusum", "0.5,5", "--direction", "up", "--shifts", "-1,0,1")
     assert lengths(up, "floor")[-1] is None
 
 
@@ -183,7 +183,10 @@ def test_the_page_needs_nothing_from_outside(tmp_path: Path) -> None:
         (["--cusum", "0.5,5", "--limits", "exact"], "--limits goes with an EWMA"),
         (["--cusum", "0.5,5", "--rules", "nelson-1984"], "--rules goes with --shewhart"),
         (["--cusum", "0.5,5", "--ignore", "0.1"], "--ignore goes with --catch"),
-        (["--cusum", "0.5,5", "--shifts", "0,,1"], "'' is not a number"),
+        (["--cusum", "0.5,5", "--shifts", "0,,1"], "--shifts: a number is missing"),
+        (["--cusum", "-0.5,4"], "--cusum: K must be from"),
+        (["--cusum", "0.5,4", "--rate", "-5/min"], "--rate -5/min: write a number above 0"),
+        (["--catch", "1", "--run-length", "1.5"], "must be from 2"),
         (["--cusum", "0.5,5", "--rate", "fast"], "such as 120/min"),
         (["--catch", "1"], "needs one of --run-length and --false-alarm-every"),
         (["--catch", "1", "--false-alarm-every", "14d"], "needs --rate"),
@@ -211,5 +214,5 @@ def test_a_run_length_that_is_too_much_to_compute(capsys: pytest.CaptureFixture[
 
 
 def test_an_interval_no_detector_has(capsys: pytest.CaptureFixture[str]) -> None:
-    assert main(["design", "--catch", "1", "--run-length", "1.1"]) == 1
+    assert main(["design", "--catch", "1", "--run-length", "2.1", "--direction", "up"]) == 1
     assert "no cusum that is to catch 1" in capsys.readouterr().err

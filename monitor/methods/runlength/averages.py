@@ -6,6 +6,7 @@ Knows weighted averages of normal values. Must not know what is asked of them.
 from __future__ import annotations
 
 import math
+from collections.abc import Iterator
 from dataclasses import dataclass, replace
 from typing import Self
 
@@ -18,17 +19,24 @@ from monitor.methods.runlength.chains import Side, steps_to_absorption
 _FLOOR = 6.0
 """A one-sided average is followed so many standard errors below its mean, and stopped there."""
 
-_SETTLED = 1e-3
+_FAR = 12.0
+"""Nor is one that is watched on both sides followed farther, where its mean is off to one side so
+that it would hardly ever cross the limit on the other: e to the −2cw times as often, the mean being
+off by c standard errors of the average and the limit at w."""
+
+_SETTLED = 2e-3
 """Exact limits count as settled once their variance falls short by this share."""
 
-_ALIKE = 10
-"""The moves of step i do for the i/10 steps around it: the variance grows ever more slowly."""
+_ALIKE = 5
+"""Of steps up to the i-th the last i/5 are taken alike: the variance grows ever more slowly."""
 
 _NEVER = -650.0
 """Of a logarithm: the processor is slow with numbers smaller than about e to the -700."""
 
 _CELLS = 6
 """In what one value adds: their error falls with the square of their number."""
+
+_FEWEST_CELLS = 100
 
 
 @dataclass(frozen=True, slots=True)
@@ -48,8 +56,11 @@ class Average:
     @classmethod
     def of(cls, lam: float, width: float, shift: float, direction: Side) -> Average:
         add = math.sqrt(lam * (2 - lam))
-        walled = direction != "both"
-        low = min(0.0, shift * add / lam) - _FLOOR if walled else -width
+        low, walled = -width, direction != "both"
+        if walled:
+            low = min(0.0, shift * add / lam) - _FLOOR
+        elif width > _FAR and abs(shift) * add / lam > 1:
+            low, walled, shift = -_FAR, True, abs(shift)
         nodes, weights = _between(low, width, add)
         return cls(nodes, weights, low, width, 1 - lam, add, shift, walled)
 
@@ -78,31 +89,39 @@ class Average:
             moves[:, 0] += sf_array((keep * y - self.low) / add + self.shift)
         return moves
 
-    def settling(self, lam: float) -> list[tuple[Array, int]]:
-        """Moves while exact limits settle, from the first point on to :attr:`nodes`, and how many
-        steps each do for; the first has one row, the start.
+    def settling(self, lam: float) -> Iterator[tuple[Array, int]]:
+        """Moves while exact limits settle, backwards: from those that end at :attr:`nodes` to those
+        of the first point, which have one row, the start; and how many steps each do for.
 
         In units of a standard error that is small at first a single value adds much, and few nodes
-        are enough.
+        are enough. Steps that differ little are taken alike, so that they take the average's own
+        mean and variance just as far together.
         """
         decay = math.log1p(-lam) if lam < 1 else -math.inf
-        grid, moves = self, []
+        grid = self
         last = max(1, math.ceil(math.log(_SETTLED) / (2 * decay)))
         while last > 1:
             steps = 1 + last // _ALIKE
-            middle = last - steps / 2
-            before = -math.expm1((2 * middle - 1) * decay)
-            after = -math.expm1((2 * middle + 1) * decay)
-            keep, add = self.keep * math.sqrt(before / after), self.add / math.sqrt(after)
-            last -= steps
-            coarse = self._resolving(add)
+            first, last_variance = last - steps, -math.expm1(2 * last * decay)
+            first_variance = -math.expm1(2 * first * decay)
+            kept = math.exp(steps * decay) * math.sqrt(first_variance / last_variance)
+            keep = kept ** (1 / steps)
+            add = math.sqrt(1 - keep * keep)
+            # What a shift of 1 has done to the mean, before and after.
+            first_mean, last_mean = (
+                -math.expm1(i * decay) / math.sqrt(variance) * self.add / lam
+                for i, variance in ((first, first_variance), (last, last_variance))
+            )
+            share = (last_mean - kept * first_mean) * (1 - keep) / (add * (1 - kept))
+            grid = replace(grid, shift=self.shift * share)
+            coarse = grid._resolving(add)
             if 4 * coarse.nodes.size <= 3 * grid.nodes.size:
-                moves.append((grid.moves(coarse.nodes, keep, add), 1))
+                yield grid.moves(coarse.nodes, keep, add), 1
                 grid, steps = coarse, steps - 1
             if steps:
-                moves.append((grid.moves(grid.nodes, keep, add), steps))
-        moves.append((grid.moves(np.zeros(1), 0.0, 1.0), 1))
-        return moves[::-1]
+                yield grid.moves(grid.nodes, keep, add), steps
+            last = first
+        yield replace(grid, shift=self.shift).moves(np.zeros(1), 0.0, 1.0), 1
 
     def settled(self) -> Array:
         """Run lengths with settled limits, from each node and, last, from 0."""
@@ -133,13 +152,13 @@ class ClippedAverage(Average):
     ) -> ClippedAverage:
         """With cells ``coarser`` times as wide as they should be."""
         of = Average.of(lam, width, shift, direction)
-        nodes = _evenly(of.low, of.high, of.add, coarser)
+        nodes = _evenly(of.low, of.high, of.add, clip, coarser)
         rest = of.keep, of.add, of.shift, of.walled
         return cls(nodes, np.ones(nodes.size), of.low, of.high, *rest, clip, coarser)
 
     def _resolving(self, add: float) -> Self:
         """With as many nodes as values need that ``add`` so much."""
-        nodes = _evenly(self.low, self.high, add, self.coarser)
+        nodes = _evenly(self.low, self.high, add, self.clip, self.coarser)
         return replace(self, nodes=nodes, weights=np.ones(nodes.size))
 
     def _relative(self, y: Array, keep: float, add: float) -> Array:
@@ -200,6 +219,14 @@ def _between(low: float, high: float, add: float) -> tuple[Array, Array]:
     return low + half * (nodes + 1), half * weights
 
 
-def _evenly(low: float, high: float, add: float, coarser: int) -> Array:
-    cells = max(24, math.ceil(_CELLS * (high - low) / add)) // coarser
-    return np.linspace(low, high, cells + 1)
+def _evenly(low: float, high: float, add: float, clip: float, coarser: int) -> Array:
+    """From where a value at the clip just comes to the limit, run lengths jump: half way between
+    two nodes that costs least."""
+    least = max(_FEWEST_CELLS, math.ceil(_CELLS * (high - low) / add)) // coarser
+    keep = math.sqrt(max(0.0, 1 - add * add))
+    jump = (high - add * clip) / keep if keep else high
+    if not low < jump < high:
+        return np.linspace(low, high, least + 1)
+    cells = np.arange(least, least + least // 4)
+    off = np.abs(cells * (jump - low) / (high - low) % 1 - 0.5)
+    return np.linspace(low, high, int(cells[off.argmin()]) + 1)

@@ -21,8 +21,8 @@ _HIGHEST = 300.0
 _BOTH_HIGH = 0.5
 """Of a head start: above, the two sums may both be high at first."""
 
-_LONG = 600
-"""Steps that two sums may be followed together; some seconds to compute."""
+_MUCH = 2e7
+"""Steps that two sums are followed together, times moves in each; half a second to compute."""
 
 _NEGLIGIBLE = 1e-9
 
@@ -43,8 +43,8 @@ def run_length(
     ``head_start`` is a fraction of h, below 1; ``clip`` limits each value (ValueError unless it is
     above k: the sums could not rise). ValueError for an h above 300. Both sides together follow
     J. M. Lucas & R. B. Crosier 1982, exact because the two sums cannot both be high; while they are
-    from a head start above a half, they are followed together. Relative error below 1e-6, with
-    ``clip`` 1e-3; from a head start of 0.9 and more it is too low with ``clip``, or k near 0.
+    from a head start above a half, they are followed together: ValueError where that takes too
+    long, and with ``clip``. Relative error below 1e-6, with ``clip`` 1e-3.
     Check: k 0.5, h 5: 465.4 at shift 0, 10.38 at 1.
     """
     if clip is not None and clip <= k:
@@ -55,14 +55,20 @@ def run_length(
         return _one_side(k, h, shift if direction == "up" else -shift, head_start, clip)[1]
     up = _one_side(k, h, shift, head_start, clip)
     down = up if shift == 0 else _one_side(k, h, -shift, head_start, clip)
+    if head_start <= _BOTH_HIGH:
+        return either(up, down)
     # They fall by k a step, and wander as far as h in about h² steps.
-    if (
-        head_start > _BOTH_HIGH
-        and clip is None
-        and min(h * h, head_start * h / max(k, 1e-9)) < _LONG
-    ):
-        return _both_high(k, h, shift, head_start * h, up[0], down[0])
-    return either(up, down)
+    steps = min(h * h, head_start * h / max(k, 1e-9))
+    if clip is not None or steps * _nodes(h) ** 2 > _MUCH:
+        raise ValueError(
+            f"two sums from a head start of {head_start:g}: only up to {_BOTH_HIGH:g} their run "
+            "length can be computed with a clip or so small a k"
+        )
+    return _both_high(k, h, shift, head_start * h, up[0], down[0])
+
+
+def _nodes(h: float) -> int:
+    return 16 + math.ceil(1.6 * h)
 
 
 def _both_high(k: float, h: float, shift: float, start: float, up: float, down: float) -> float:
@@ -83,7 +89,7 @@ def _both_high(k: float, h: float, shift: float, start: float, up: float, down: 
         moves = density(at[None, :] - values[:, None] - (shift - k))
         return np.asarray(chances @ moves) * weights
 
-    nodes, quadrature = gauss_legendre(16 + math.ceil(1.6 * h))
+    nodes, quadrature = gauss_legendre(_nodes(h))
 
     def between(low: float, high: float) -> tuple[Array, Array]:
         half = (high - low) / 2
@@ -214,7 +220,7 @@ def _moves(k: float, h: float, shift: float, start: float) -> tuple[Array, Array
     """E. S. Page's integral equation by Gauss–Legendre quadrature, an atom at 0 before the nodes,
     the start behind them (J. M. Lucas & R. B. Crosier 1982, appendix): probabilities of moving, and
     of signalling."""
-    nodes, weights = gauss_legendre(16 + math.ceil(1.6 * h))
+    nodes, weights = gauss_legendre(_nodes(h))
     n = nodes.size + 2
     sums = np.empty(n)
     sums[0], sums[1:-1], sums[-1] = 0.0, h / 2 * (nodes + 1), start
@@ -242,19 +248,27 @@ def _clipped(
     borders[0] = 0.0
     centres = (borders[1:] + borders[:-1]) / 2
     ladders = _ladder(0.0, rise, h), _ladder(start, rise, h)
+    # In the order of sums all moves are short ones, which elimination makes use of.
     sums = np.concatenate((ladders[0], centres, ladders[1]))
-    states = np.arange(sums.size)
-    cell = states[ladders[0].size : -ladders[1].size]
+    order = np.argsort(sums, kind="stable")
+    places = np.argsort(order)
+    cell = places[ladders[0].size : -ladders[1].size]
+    sums, states = sums[order], np.arange(sums.size)
 
-    values = borders[None, :] - sums[:, None] + k
+    # Of the borders only those near enough for a value that is not clipped.
+    near = min(borders.size, math.ceil(2 * clip / width) + 2)
+    first = np.searchsorted(borders, sums - fall, side="right") - 1
+    first = np.clip(first, 0, borders.size - near)
+    borders_near = first[:, None] + np.arange(near)
+    values = borders[borders_near] - sums[:, None] + k
     above = sf_within(values - shift, -clip - shift, clip - shift)
     top, bottom = sf(clip - shift), sf(clip + shift)
     moves = np.zeros((sums.size, sums.size))
-    moves[:, 0] = sf(-clip - shift) - above[:, 0]
-    moves[:, cell] = above[:, :-1] - above[:, 1:]
-    absorbed = above[:, -1] - top
+    moves[states[:, None], cell[borders_near[:, :-1]]] = above[:, :-1] - above[:, 1:]
+    moves[:, 0] += np.where(first == 0, sf(-clip - shift) - above[:, 0], 0.0)
+    absorbed = np.where(first + near == borders.size, above[:, -1] - top, 0.0)
 
-    for rung in (states[: cell[0]], states[cell[-1] + 1 :]):
+    for rung in (places[: ladders[0].size], places[-ladders[1].size :]):
         moves[rung[:-1], rung[1:]] += top
         absorbed[rung[-1]] += top
     grid, landing = np.concatenate(([0.0], centres)), np.concatenate(([0], cell))
@@ -266,10 +280,7 @@ def _clipped(
         part = (target - grid[right - 1]) / (grid[right] - grid[right - 1])
         moves[origin[inside], landing[right]] += chance * part
         moves[origin[inside], landing[right - 1]] += chance * (1 - part)
-    # In the order of sums all moves are short ones, which elimination makes use of.
-    order = np.argsort(sums, kind="stable")
-    at = int(np.flatnonzero(order == cell[-1] + 1)[0])
-    return moves[np.ix_(order, order)], absorbed[order], at
+    return moves, absorbed, int(places[-ladders[1].size])
 
 
 def _ladder(foot: float, rise: float, h: float) -> Array:

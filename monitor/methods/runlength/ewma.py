@@ -20,6 +20,10 @@ _SLOW = 0.03
 is counted with settled limits alone."""
 
 
+_LEAST = 0.003
+"""Weight worth trying: at less, hundreds of points are needed to see any shift."""
+
+
 def run_length(
     lam: float,
     width: float,
@@ -33,7 +37,7 @@ def run_length(
 
     S. V. Crowder 1987's integral equation; with exact limits (J. M. Lucas & M. S. Saccucci 1990) it
     is stepped back from where they have settled. ``clip`` limits each value. Relative error below
-    5e-4 with exact limits, else 1e-6; with a ``clip`` of 2 or more 2e-2.
+    2e-3 with exact limits, else 1e-5; with a ``clip``, it and the width 2 or more, 3e-2.
     Check: λ 0.1, width 2.814, asymptotic: 499.6 at shift 0, 10.33 at 1.
     """
     off = -shift if direction == "down" else shift
@@ -41,26 +45,33 @@ def run_length(
         return _length(Average.of(lam, width, off, direction), lam, asymptotic)
     if not asymptotic and lam < _SLOW:
         settled = run_length(lam, width, shift, direction=direction, asymptotic=True, clip=clip)
-        # Of values that spread less, limits lie farther off.
-        return settled * _settling(lam, width / _clipped_sd(clip), shift, direction)
+        return settled * _settling(lam, width, shift, direction, clip)
     # The cells' error falls with the square of their number: extrapolate from two (Richardson).
     rough, close = (
-        _length(ClippedAverage.limited(lam, width, off, direction, clip, each), lam, asymptotic)
-        for each in (2, 1)
+        ClippedAverage.limited(lam, width, off, direction, clip, each) for each in (2, 1)
     )
-    return close * (close / rough) ** (1 / 3) if rough < math.inf else rough
+    far, near = _length(rough, lam, asymptotic), _length(close, lam, asymptotic)
+    if math.inf in (far, near):
+        return near
+    finer = (close.nodes.size - 1) / (rough.nodes.size - 1)
+    return near * (near / far) ** (1 / (finer**2 - 1))
 
 
-def _settling(lam: float, width: float, shift: float, direction: Side) -> float:
-    """What exact limits do to the run length that settled ones have."""
-    exact = run_length(lam, width, shift, direction=direction)
-    return exact / run_length(lam, width, shift, direction=direction, asymptotic=True)
+def _settling(lam: float, width: float, shift: float, direction: Side, clip: float) -> float:
+    """What exact limits do to the run length of clipped values that settled ones have: the same as
+    with normal values of their mean and spread, as many values make up an average."""
+    mean, sd = _clipped(shift, clip)
+    exact = run_length(lam, width / sd, mean / sd, direction=direction)
+    return exact / run_length(lam, width / sd, mean / sd, direction=direction, asymptotic=True)
 
 
-def _clipped_sd(clip: float) -> float:
-    """Standard deviation of a normal value limited to ± ``clip``."""
-    tail, height = sf(clip), float(density(np.array(clip)))
-    return math.sqrt(max(1 - 2 * tail - 2 * clip * height + 2 * clip * clip * tail, 1e-9))
+def _clipped(shift: float, clip: float) -> tuple[float, float]:
+    """Mean and standard deviation of a normal value about ``shift`` limited to ± ``clip``."""
+    low, high = -clip - shift, clip - shift
+    (at_low, at_high), inside = density(np.array([low, high])), sf(low) - sf(high)
+    mean = low * sf(-low) + high * sf(high) + at_low - at_high
+    square = low * low * sf(-low) + high * high * sf(high) + inside + low * at_low - high * at_high
+    return shift + float(mean), math.sqrt(max(float(square - mean * mean), 1e-9))
 
 
 def _length(average: Average, lam: float, asymptotic: bool) -> float:
@@ -69,9 +80,10 @@ def _length(average: Average, lam: float, asymptotic: bool) -> float:
     onward = average.settled()[:-1]
     if not np.isfinite(onward).all():
         return math.inf
-    for moves, steps in reversed(average.settling(lam)):
+    for moves, steps in average.settling(lam):
         for _ in range(steps):
-            onward = 1 + moves @ onward
+            onward = moves @ onward
+            onward += 1
     return float(onward[0])
 
 
@@ -95,7 +107,7 @@ def wait(
     asymptotic = asymptotic or (clip is not None and lam < _SLOW)
     first = [(average.moves(np.zeros(1), 0.0, average.add), 1)]
     states = np.ones(1)
-    for moves, steps in first if asymptotic else average.settling(lam):
+    for moves, steps in first if asymptotic else reversed(list(average.settling(lam))):
         for _ in range(steps):
             states = states @ moves
             yield float(states.sum())
@@ -133,7 +145,7 @@ def width_for(
     guess = min(settled, 0.98 * most)
     if not asymptotic and lam < _SLOW:
         # That ratio hardly changes, and costs much to evaluate.
-        wanted, asymptotic = wanted / _settling(lam, settled, shift, direction), True
+        wanted, asymptotic = wanted / _settling(lam, guess, shift, direction, clip), True
     found = increasing_root(excess, guess, guess, 1e-3, most, jumps=True)
     if excess(found) == math.inf:
         raise ValueError("no setting gives that run length")
@@ -198,16 +210,21 @@ def best_weight(
     """The λ that signals a ``shift`` > 0 soonest among those whose run length at the shift
     ``ignored`` is ``wanted``.
 
-    To about 5 %, within which the delay hardly moves, and not below 0.003. Judged with settled
-    limits: a shift meets an average that has long been running.
+    To about 5 %, within which the delay hardly moves, and not below 0.003, nor below a hundredth of
+    ``ignored``, where too much lies between the mean and its limit to compute. Judged with settled
+    limits: a shift meets an average that has long been running. ValueError where no λ has it.
     """
 
     def delay(log_lam: float) -> float:
         lam = math.exp(log_lam)
-        width = _settled_width(lam, wanted, ignored, direction, 1e-3)
+        try:
+            width = _settled_width(lam, wanted, ignored, direction, 1e-3)
+        except ValueError:
+            return math.inf
         return run_length(lam, width, shift, direction=direction, asymptotic=True)
 
-    step, lowest = 0.4, math.log(0.003)
+    step = 0.4
+    lowest = min(math.log(max(_LEAST, ignored / 100)), -step)
     guess = 0.75 * shift * (shift - ignored) / math.log(wanted)
     at = min(max(math.log(guess), lowest), -step)
     delays = {at: delay(at)}
@@ -215,16 +232,18 @@ def best_weight(
         for neighbour in (max(at - step, lowest), min(at + step, 0.0)):
             if neighbour not in delays:
                 delays[neighbour] = delay(neighbour)
-        best = min(delays, key=delays.__getitem__)
+        # Short run lengths are had with large weights only.
+        best = min(delays, key=lambda tried: (delays[tried], -tried))
         if best == at:
             break
         at = best
+    if delays[at] == math.inf:
+        raise ValueError("no setting gives that run length")
     left, right = max(at - step, lowest), min(at + step, 0.0)
-    if at in (left, right):
-        return math.exp(at)
-    # The vertex of the parabola through the three.
+    # The vertex of the parabola through the three, where it is one.
     below, above = delays[left] - delays[at], delays[right] - delays[at]
     rise, run = at - left, right - at
-    return math.exp(
-        at + (below * run * run - above * rise * rise) / (2 * (below * run + above * rise))
-    )
+    bend = 2 * (below * run + above * rise)
+    if at in (left, right) or not 0 < bend < math.inf:
+        return math.exp(at)
+    return math.exp(at + (below * run * run - above * rise * rise) / bend)
