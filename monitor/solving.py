@@ -17,6 +17,9 @@ _REMEMBERED = 65_536
 """Solutions; all of a configuration is asked for more than once, in the same order, so that one
 solution more than are remembered would have each worked out anew."""
 
+_BOTH_HIGH = 0.5
+"""Of a head start: up to it, two sums are never both high."""
+
 
 class UnsolvableError(ValueError):
     """No constants do what is asked. ``key`` of the detector is what stands in the way."""
@@ -61,6 +64,11 @@ def _location(intent: Intent, catch: float | None, ignore: float) -> Scheme:
             clip=intent.clip,
         )
     except ValueError:
+        if intent.head_start > _BOTH_HIGH and intent.direction == "both":
+            # Where a lower one has no constants either, it says why.
+            _location(replace(intent, head_start=_BOTH_HIGH), catch, ignore)
+            wrong = "lets both sums begin so high that how often they ring cannot be computed"
+            raise UnsolvableError("head_start", wrong, "write 0.5 or less") from None
         if intent.clip is not None:
             # Where that has no constants either, it says why.
             free = _location(replace(intent, clip=None), catch, ignore)
