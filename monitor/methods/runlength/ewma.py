@@ -54,7 +54,7 @@ def run_length(
     if math.inf in (far, near):
         return near
     finer = (close.nodes.size - 1) / (rough.nodes.size - 1)
-    return near * (near / far) ** (1 / (finer**2 - 1))
+    return near * math.pow(near / far, 1 / (finer * finer - 1))
 
 
 def _settling(lam: float, width: float, shift: float, direction: Side, clip: float) -> float:
