@@ -16,7 +16,7 @@ from monitor.baselining.reason import Reason, part
 from monitor.methods.f_ratio import f_cdf, f_sf
 from monitor.methods.swings import LEAST
 
-_MIXED = 0.02
+MIXED = 0.02
 """Of the variance, between sources that take turns, from which on a stream is refused as mixed."""
 _STRATIFIED, _THINLY = 0.75, 0.9
 _SURE, _RARE = 1e-6, 1e-3
@@ -84,7 +84,7 @@ def _where(estimate: Estimate, unit: str) -> str:
 def mixed(estimate: Estimate, clues: Clues) -> Iterator[Reason]:
     """Do several sources share a stream?"""
     cycle = clues.cycle
-    if cycle is not None and cycle.share > _MIXED:
+    if cycle is not None and cycle.share > MIXED:
         yield Reason(
             "refuse",
             "mixed",

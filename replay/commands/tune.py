@@ -26,7 +26,7 @@ from monitor.configuration.resolve import read_plan
 from monitor.configuration.sections.characteristic import Characteristic
 from monitor.plan import CharacteristicPlan, Intent, Plan
 from monitor.progress import Progress
-from monitor.times import SECOND, parse_duration
+from monitor.times import SECOND, format_time, parse_duration
 from replay import set_aside_words
 from replay.commands import inputs
 from replay.readings import Gathered, Readings, gather, sha256
@@ -123,8 +123,7 @@ def main(args: argparse.Namespace) -> int:
         readings = _read(args, characteristic, progress)
         sources = [Source(path, sha256(path)) for path in args.recordings]
         if args.events is not None:
-            names = [stream_names.name(each.stream) for each in readings.streams]
-            request = replace(request, labels=labels.read(args.events, names))
+            request = replace(request, labels=_labels(args.events, readings))
         result = study(readings, sources, request, lambda text: progress(lambda: text))
     finally:
         progress.clear()
@@ -193,6 +192,20 @@ def _read(
     return readings
 
 
+def _labels(path: str, readings: Readings) -> tuple[labels.Label, ...]:
+    found = labels.read(path, [stream_names.name(each.stream) for each in readings.streams])
+    first = min(int(each.time[0]) for each in readings.streams)
+    last = max(int(each.time[-1]) for each in readings.streams)
+    reached = labels.within(found, first, last)
+    if len(reached) < len(found):
+        print(
+            f"{path}: {len(found) - len(reached):,} of {len(found):,} events left out: the "
+            f"recording runs from {format_time(first)} to {format_time(last)}",
+            file=sys.stderr,
+        )
+    return reached
+
+
 def _why_none(gathered: Gathered, name: str) -> str:
     counts = Counter(gathered.readings[name].set_aside) + Counter(gathered.unclaimed)
     said = f"the recordings hold no reading of {name}"
@@ -227,6 +240,8 @@ def _request(args: argparse.Namespace, characteristic: CharacteristicPlan) -> Re
     standing = declared(section, characteristic)
     watched = any(role_of(each) == "spread" for each in standing)
     ratio = _ratio(args, asked)
+    if args.jobs < 1:
+        raise CommandError("--jobs: write a whole number from 1 up", WRONG)
     return Request(
         promise=_promise(args, section, characteristic.name),
         promised=None if section.promise is None else section.promise.false_alarm_every / SECOND,
@@ -241,7 +256,7 @@ def _request(args: argparse.Namespace, characteristic: CharacteristicPlan) -> Re
         spread=args.catch_ratio is not None or watched,
         declared=standing,
         seed=args.seed,
-        jobs=max(args.jobs, 1),
+        jobs=args.jobs,
     )
 
 

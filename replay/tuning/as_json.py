@@ -53,6 +53,7 @@ def as_json(result: Result) -> dict[str, Any]:
         "refused": [asdict(each) for each in result.refusals],
         "best": _taken(result.best, result),
         "best_spread": _taken(result.best_spread, result),
+        "breaking": list(result.breaking),
     }
 
 

@@ -12,14 +12,20 @@ from monitor.plan import CharacteristicPlan
 from replay.tuning.candidates import AS_CONFIGURED, Request
 from replay.tuning.declared import Declared
 from replay.tuning.preparing import Held
+from replay.tuning.ranking import keeps
 from replay.tuning.replacing import SEVERAL, Settled
 from replay.tuning.result import Setting
 
 
 def unchanged(
-    characteristic: str, best: Setting, spread: Setting | None, request: Request
+    characteristic: str,
+    best: Setting,
+    spread: Setting | None,
+    settings: Sequence[Setting],
+    request: Request,
 ) -> Iterator[str]:
-    """Where what stands there does best."""
+    """Where what stands there does best; all ``settings`` as in :func:`noted`."""
+    yield from _too_often(request.declared, settings)
     name = best.name.removeprefix(AS_CONFIGURED)
     also = (
         "" if spread is None else f", and {spread.name.removeprefix(AS_CONFIGURED)} for the spread"
@@ -38,10 +44,17 @@ def unchanged(
 
 
 def noted(
-    plan: CharacteristicPlan, settled: Settled, held: Held, request: Request, promises: bool
+    plan: CharacteristicPlan,
+    settled: Settled,
+    settings: Sequence[Setting],
+    held: Held,
+    request: Request,
+    promises: bool,
 ) -> Iterator[str]:
-    """What the fragment replaces, keeps and leaves out; whether it ``promises`` anything."""
+    """What the fragment replaces, keeps and leaves out, the gravest first; whether it ``promises``
+    anything. All ``settings`` say what those that are kept did by themselves."""
     kept = settled.kept
+    yield from _too_often(kept, settings)
     names = " and ".join(each.setting.name for each in settled.new)
     keys = "subgroup, baseline, promise" if promises else "subgroup, baseline"
     yield (
@@ -81,6 +94,41 @@ def noted(
             "held against the values of all together. Where others bring more readings, it rings "
             "more often in proportion."
         )
+
+
+def breaking(kept: Sequence[Declared], settings: Sequence[Setting]) -> list[Setting]:
+    """What those of the ``kept`` detectors did by themselves that broke their part of the promise
+    on this very recording, whatever the textbook says of them."""
+    judged = {each.name: each for each in settings if each.origin == "configured"}
+    found = [judged.get(f"{AS_CONFIGURED}{each.name}") for each in kept]
+    return [each for each in found if each is not None and keeps(each) == "no"]
+
+
+def _too_often(kept: Sequence[Declared], settings: Sequence[Setting]) -> Iterator[str]:
+    for each in breaking(kept, settings):
+        alarms, asked = each.observed.alarms, spans.long(each.asked)
+        yield (
+            f"Caution: {each.name.removeprefix(AS_CONFIGURED)} stays, and does not keep its part "
+            f"of the promise. As configured it rang {alarms:,} time{'' if alarms == 1 else 's'} in "
+            f"the last {spans.long(each.observed.seconds)} with nothing wrong, where one in "
+            f"{asked} was asked of it. {_instead(each, settings)}"
+        )
+
+
+def _instead(found: Setting, settings: Sequence[Setting]) -> str:
+    able = (
+        each
+        for each in settings
+        if each.meets
+        and each.origin != "configured"
+        and each.grouping == found.grouping
+        and (each.kind, each.chart) == (found.kind, found.chart)
+    )
+    other = next(able, None)
+    if other is None:
+        return "Nothing here is shown to do better: take it out, or bear with what it rings."
+    constants = ", ".join(f"{key}: {value:g}" for key, value in other.constants)
+    return f"Write {constants} for it, which is shown to keep it, or take it out."
 
 
 def _promised(settled: Settled, request: Request, promises: bool) -> Iterator[str]:

@@ -59,8 +59,9 @@ def judge(grouped: Grouped, members: Sequence[Candidate], interval: float) -> li
     paths = [path(scheme, stream) for stream in grouped.streams]
     peaks = [each.peaks() for each in paths]
     unit = max(float(np.median([each.unit() for each in paths])), 1e-9)
-    fitted = _tail(grouped, peaks, scheme, unit, proof=False)
-    proved = _tail(grouped, peaks, scheme, unit, proof=True)
+    usual = _usual(scheme, grouped)
+    fitted = _tail(grouped, peaks, scheme, unit, usual, proof=False)
+    proved = _tail(grouped, peaks, scheme, unit, usual, proof=True)
     found = []
     for candidate in members:
         at = limit(candidate.scheme)
@@ -119,8 +120,28 @@ def _weight(scheme: Scheme) -> float | None:
     return scheme.lam if isinstance(scheme, EwmaPlan) else 1.0
 
 
+def _usual(scheme: Scheme, grouped: Grouped) -> float | None:
+    """The scale of the tail where readings are normal, of what nothing clips: 1 for points and
+    averages, whose tails are told in that measure; for a sum of variances that of
+    :func:`tails.of_variances`. None for sums of means, which hardly feel one reading."""
+    if isinstance(scheme, EwmaPlan):
+        return 1.0 if scheme.clip is None else None
+    if not isinstance(scheme, CusumPlan):
+        return 1.0
+    if scheme.chart != "variance" or scheme.direction != "up" or scheme.clip is not None:
+        return None
+    ratios = [float(np.nanmean(each.sd**2)) / each.sigma**2 for each in grouped.streams]
+    return tails.of_variances(scheme.k, max(ratios), grouped.size)
+
+
 def _tail(
-    grouped: Grouped, peaks: Sequence[Peaks], scheme: Scheme, unit: float, *, proof: bool
+    grouped: Grouped,
+    peaks: Sequence[Peaks],
+    scheme: Scheme,
+    unit: float,
+    usual: float | None,
+    *,
+    proof: bool,
 ) -> TailFit | None:
     levels: list[Values] = []
     places = []
@@ -137,4 +158,4 @@ def _tail(
         [len(stream) for stream in grouped.streams],
         grouped.proof if proof else grouped.fit,
     )
-    return tails.fit(pooled, _weight(scheme), unit)
+    return tails.fit(pooled, _weight(scheme), unit, usual)

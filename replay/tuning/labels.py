@@ -6,7 +6,7 @@ Knows the table of labels. Must not know detectors.
 from __future__ import annotations
 
 import csv
-from collections.abc import Collection
+from collections.abc import Collection, Sequence
 from dataclasses import dataclass
 from typing import Literal
 
@@ -55,6 +55,12 @@ def read(path: str, streams: Collection[str]) -> tuple[Label, ...]:
         raise CommandError(f"cannot read {path}: {error.strerror}") from error
     except (UnicodeDecodeError, csv.Error) as error:
         raise CommandError(f"cannot read {path} as a table: {error}") from error
+
+
+def within(labels: Sequence[Label], first: int, last: int) -> tuple[Label, ...]:
+    """Those that the recording reaches into, from its ``first`` to its ``last`` instant (µs): no
+    setting could have rung for others, nor kept quiet."""
+    return tuple(each for each in labels if each.begin <= last and each.end >= first)
 
 
 def _label(where: str, row: dict[str, str | None], streams: Collection[str]) -> Label:

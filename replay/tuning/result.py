@@ -334,13 +334,15 @@ class Result:
     spread that was put in. ``ramp`` is the readings of a stream over which a ramp grows.
     ``resolution``: the gauge's step, None where none was found. ``set_aside`` are readings not
     used, by reason. ``trust`` is the answer in one sentence to: may I trust this recording?
-    ``trusted`` is false where no interval can be given at all; ``with_care``: one can, but not
-    without reserve. ``best`` is the place of
-    the setting to take in ``settings``, None where none meets the promise, and ``best_spread`` that
-    of the one to take for the spread. ``settings`` are ordered: ranked ones first, of the mean and
-    then of the spread. ``together`` is what runs today, None where no stream has a baseline yet.
+    ``trusted`` is false where no interval can be given at all, or none helps, as sources are mixed;
+    ``with_care``: one can, but not without reserve. ``best`` is the place of the setting to take in
+    ``settings``, None where none meets the promise or the recording is not trusted, and
+    ``best_spread`` that of the one to take for the spread. ``settings`` are ordered: ranked ones
+    first, of the mean and then of the spread. ``together`` is what runs today, None where no stream
+    has a baseline yet.
     ``fragment`` is the YAML that puts the best into the configuration, empty without one;
-    ``notes`` are sentences on what it replaces and keeps. ``events`` counts labelled events.
+    ``notes`` are sentences on what it replaces and keeps, and ``breaking`` the names of those that
+    it keeps although they broke their part of the promise. ``events`` counts labelled events.
     """
 
     characteristic: str
@@ -371,3 +373,4 @@ class Result:
     fragment: str
     notes: tuple[str, ...]
     events: int
+    breaking: tuple[str, ...] = ()

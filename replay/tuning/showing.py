@@ -39,6 +39,7 @@ WANDERS = "the process wanders: no recording foretells its false alarms"
 TOO_FEW = "the last part holds too few peaks of the statistic to draw a tail through"
 NOT_EXPONENTIAL = "the tail of the statistic is not of the kind that can be drawn on"
 TOO_LONG = "more than 50 times the last part is not told"
+CONTRADICTED = "it rang far more often than the tail of its statistic has it"
 
 
 @dataclass(frozen=True, slots=True)
@@ -65,6 +66,10 @@ def setting(
     wanders = found.wander.wanders
     observed = _observed(grouped, counted, place, found, wanders)
     extrapolated, why, lowest = _extrapolated(judged, found)
+    if extrapolated is not None and contradicted(observed, extrapolated.interval.low):
+        # As where a stream lies off its baseline all the time: its sum never rests, so that all of
+        # its signals belong to one peak, or to none that begins in the last part.
+        extrapolated, why, lowest = None, CONTRADICTED, 0.0
     asked = place.promise / candidate.part
     return Setting(
         name=candidate.name,

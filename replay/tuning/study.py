@@ -16,6 +16,7 @@ from replay.tuning.batches import Batch, OnProgress
 from replay.tuning.candidates import Request, configured
 from replay.tuning.catching import JOINTLY
 from replay.tuning.hearing import hear
+from replay.tuning.mixing import mixed
 from replay.tuning.preparing import prepare
 from replay.tuning.ranking import ranked, to_take
 from replay.tuning.result import Refusal, Result, Setting, Source, Together
@@ -75,23 +76,26 @@ def study(
     if running_now is not None:
         running_now = replace(running_now, curve=curves.get(JOINTLY, ()))
     final = tuple(replace(each, curve=curves.get(index, ())) for index, each in order)
-    best, best_spread = to_take(final)
+    among = mixed(prepared.streams)
+    best, best_spread = to_take(final) if among is None else (None, None)
     running = prepared.running
     groupings = tuple(each.found for each in prepared.held)
     left_out = [name for batch in all_batches for name in batch.left_out]
     refusals = [
         *prepared.refusals,
-        *verdict.refusals(groupings, final, request.promise, running.whole, left_out, unmatched),
+        *verdict.refusals(
+            groupings, final, request.promise, running.whole, left_out, unmatched, among
+        ),
     ]
     if drifts.too_few:
         more = verdict.longer(request.promise, running.whole)
         refusals.append(Refusal("how late any drift is caught", drifts.too_few, more))
-    trust = verdict.trust(groupings, final, running.whole)
+    trust = verdict.trust(groupings, final, running.whole, among)
     written = None
     if best is not None:
         held = prepared.held[final[best].grouping]
         spread = None if best_spread is None else final[best_spread]
-        written = fragment.fragment(plan, final[best], spread, held, request)
+        written = fragment.fragment(plan, final[best], spread, final, held, request)
     return Result(
         characteristic=plan.name,
         title=plan.title,
@@ -120,5 +124,6 @@ def study(
         together=running_now,
         fragment="" if written is None else written.text,
         notes=() if written is None else written.notes,
+        breaking=() if written is None else written.breaking,
         events=len(request.labels),
     )

@@ -11,6 +11,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
+from monitor.methods.runlength.variance_cusum import decay
 from replay.readings import Places, Values
 
 ABOVE = 100
@@ -45,7 +46,8 @@ class TailFit:
     ``levels`` are the largest peaks, falling. With g as :func:`scale_of`, the chance that
     a subgroup reaches a level above ``threshold`` is ``rate`` · exp(−(g − g(threshold))/``scale``).
     ``independent`` is how many of the peaks above the threshold are events of their own;
-    ``variation`` the coefficient of variation of their excesses, 1 for an exponential tail.
+    ``variation`` the coefficient of variation of their excesses, 1 for an exponential tail;
+    ``usual`` the scale where readings are normal, None where it does not matter.
     """
 
     levels: Values
@@ -58,14 +60,16 @@ class TailFit:
     unit: float
     independent: float
     variation: float
+    usual: float | None
 
     @property
     def exponential(self) -> bool:
         """Whether the excesses look so (J. del Castillo, J. Daoudi & R. Lockhart 2014, Scandinavian
-        Journal of Statistics 41, judge by the coefficient of variation as well). Single points,
-        which nothing clips or averages, must fall off as fast as normal ones besides."""
+        Journal of Statistics 41, judge by the coefficient of variation as well). What nothing clips
+        must fall off as fast besides as it does where readings are normal, with the ``usual``
+        scale: a hundred peaks of a heavy tail may well look exponential, and go on heavier."""
         doubt = 2.5 / math.sqrt(self.above)
-        heavy = self.weight == 1.0 and self.scale > 1.0 + doubt
+        heavy = self.usual is not None and self.scale > self.usual * (1.0 + doubt)
         return abs(self.variation - 1.0) <= doubt and not heavy
 
     def interval(self, level: float) -> float:
@@ -113,9 +117,11 @@ class TailFit:
         return FAR * float(self.subgroups)
 
 
-def fit(peaks: PooledPeaks, weight: float | None, unit: float = 1.0) -> TailFit | None:
-    """The tail of ``peaks``, with ``weight`` and ``unit`` as :func:`scale_of` has them; None where
-    peaks are too few."""
+def fit(
+    peaks: PooledPeaks, weight: float | None, unit: float = 1.0, usual: float | None = None
+) -> TailFit | None:
+    """The tail of ``peaks``, with ``weight`` and ``unit`` as :func:`scale_of` has them, and the
+    scale that is ``usual`` as :class:`TailFit` has it; None where peaks are too few."""
     count = len(peaks.level)
     if count < 4 * FEWEST:
         return None
@@ -143,6 +149,7 @@ def fit(peaks: PooledPeaks, weight: float | None, unit: float = 1.0) -> TailFit 
         unit=unit,
         independent=_clusters(peaks.place[order[:above]]),
         variation=float(excess.std(ddof=1)) / mean,
+        usual=usual,
     )
 
 
@@ -194,3 +201,11 @@ def _level_at(g: float, weight: float | None, unit: float) -> float:
         middle = (low + high) / 2
         low, high = (middle, high) if scale_of(middle, weight) < g else (low, middle)
     return high * unit
+
+
+def of_variances(k: float, ratio: float, size: int) -> float | None:
+    """The scale of the tail of a sum of s²/σ² − k over subgroups of ``size`` normal readings whose
+    variance is ``ratio`` σ²; None where the sum has no rest to return to, or never leaves it."""
+    if size < 2 or not 0 < ratio < k:
+        return None
+    return ratio / decay(k / ratio, size - 1, "up")

@@ -9,9 +9,10 @@ from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
 
 from monitor.configuration import spans
+from monitor.methods.cycles import Cycle
 from replay.tuning.result import Grouping, Refusal, Setting
 from replay.tuning.running import PROVE
-from replay.tuning.showing import NOT_EXPONENTIAL, TOO_FEW
+from replay.tuning.showing import CONTRADICTED, NOT_EXPONENTIAL, TOO_FEW
 from replay.tuning.tails import FAR
 
 _SHIFT = 0.99 * 8 * 3_600.0
@@ -20,7 +21,7 @@ _SHIFT = 0.99 * 8 * 3_600.0
 
 @dataclass(frozen=True, slots=True)
 class Trust:
-    """Whether any interval can be given, whether only ``with_care``, and that as a sentence."""
+    """Whether anything can be recommended, whether only ``with_care``, and that as a sentence."""
 
     trusted: bool
     with_care: bool
@@ -36,8 +37,21 @@ def longer(promise: float, running: float) -> str:
     return f"record for longer: about {spans.long(needed)} of recording for {spans.long(promise)}"
 
 
-def trust(groupings: Sequence[Grouping], settings: Sequence[Setting], running: float) -> Trust:
-    """What a colleague would say of a recording of so many ``running`` seconds."""
+def trust(
+    groupings: Sequence[Grouping],
+    settings: Sequence[Setting],
+    running: float,
+    mixed: Cycle | None,
+) -> Trust:
+    """What a colleague would say of a recording of so many ``running`` seconds; ``mixed`` are the
+    sources that take turns in one stream."""
+    if mixed is not None:
+        return Trust(
+            False,
+            False,
+            f"No: {mixed.length} sources that differ take turns in one stream, and a drift of one "
+            "of them is caught far later than any drift here, which was put into all of them.",
+        )
     steady = [each for each in groupings if not each.wander.wanders]
     if not steady:
         return Trust(
@@ -70,11 +84,26 @@ def refusals(
     running: float,
     left_out: Sequence[str],
     unmatched: Sequence[str],
+    mixed: Cycle | None,
 ) -> tuple[Refusal, ...]:
     """Everything that a recording of so many ``running`` seconds does not answer; ``left_out`` are
     settings whose limits could not be worked out, ``unmatched`` configured detectors that cannot be
-    judged."""
-    return tuple(_refused(groupings, settings, promise, running, left_out, unmatched))
+    judged, ``mixed`` sources that take turns in one stream."""
+    return (
+        *_of_mixed(mixed),
+        *_refused(groupings, settings, promise, running, left_out, unmatched),
+    )
+
+
+def _of_mixed(mixed: Cycle | None) -> Iterator[Refusal]:
+    if mixed is not None:
+        yield Refusal(
+            "to recommend any setting",
+            f"readings {mixed.length} apart are alike and those between are not "
+            f"({mixed.share:.0%} of the variance), as where heads or cavities share a stream",
+            "give each a stream of its own: write its key under source.stream, or use a topic for "
+            "each",
+        )
 
 
 def _refused(
@@ -112,11 +141,22 @@ def _refused(
         )
     for why, instead in (
         (TOO_FEW, more),
-        (NOT_EXPONENTIAL, "take a detector that clips, such as a CUSUM, or larger subgroups"),
+        (
+            CONTRADICTED,
+            "look whether its baseline still holds: a stream that stays off it rings on and on",
+        ),
     ):
         names = [each.name for each in settings if each.no_interval == why]
         if names:
             yield Refusal(f"an interval for {_named(names)}", why, instead)
+    odd = [each for each in settings if each.no_interval == NOT_EXPONENTIAL]
+    for clips, instead in (
+        (False, "take a detector that clips, such as a CUSUM, or larger subgroups"),
+        (True, f"look for what stands out in the report's tail plot, or {more}"),
+    ):
+        names = [each.name for each in odd if _clips(each) == clips]
+        if names:
+            yield Refusal(f"an interval for {_named(names)}", NOT_EXPONENTIAL, instead)
     for name in unmatched:
         yield Refusal(
             f"the configured detector {name}",
@@ -129,6 +169,10 @@ def _refused(
 def _least_asked(settings: Sequence[Setting], promise: float) -> float:
     """The shortest interval that any of the settings is asked for by its part of the promise."""
     return min((each.asked for each in settings), default=promise)
+
+
+def _clips(setting: Setting) -> bool:
+    return any(key == "clip" for key, _ in setting.constants)
 
 
 def _named(names: Sequence[str]) -> str:

@@ -177,7 +177,7 @@ def _unfollowed(result: Result) -> str:
 
 def _nothing(result: Result) -> str:
     if not result.trusted:
-        return "Nothing yet: this recording cannot say how often a setting would ring."
+        return "Nothing yet: this recording does not say what a setting would do on the line."
     said = "Nothing yet: no setting is shown to keep the promise and to catch nine drifts in ten. "
     able = [each for each in result.settings if each.extrapolated and _catches(each, result)]
     if able:

@@ -10,7 +10,7 @@ import pytest
 from monitor.commandline import CommandError
 from monitor.times import SECOND, parse_iso_time
 from replay.readings import StreamReadings
-from replay.tuning.labels import Label, read
+from replay.tuning.labels import Label, read, within
 from replay.tuning.running import Running
 from replay.tuning.scoring import score
 
@@ -60,6 +60,12 @@ def test_what_cannot_be_understood(tmp_path: Path, rows: str, said: str) -> None
 def test_a_file_that_is_not_there(tmp_path: Path) -> None:
     with pytest.raises(CommandError, match="cannot read"):
         read(str(tmp_path / "events.csv"), STREAMS)
+
+
+def test_what_the_recording_does_not_reach_into_is_left_out() -> None:
+    spans = ((-20, -10), (-5, 0), (3, 4), (10, 20), (11, 20))
+    found = within([Label("cause", begin, end, None) for begin, end in spans], 0, 10)
+    assert [(each.begin, each.end) for each in found] == [(-5, 0), (3, 4), (10, 20)]
 
 
 def test_scores() -> None:

@@ -6,7 +6,7 @@ import math
 
 import numpy as np
 import pytest
-from scipy import stats
+from scipy import integrate, stats
 
 from replay.readings import Values
 from replay.tuning import tails
@@ -18,7 +18,7 @@ def apart(levels: Values, subgroups: int) -> PooledPeaks:
 
 
 def fitted(levels: Values, subgroups: int, weight: float | None = None) -> TailFit:
-    found = tails.fit(apart(levels, subgroups), weight)
+    found = tails.fit(apart(levels, subgroups), weight, usual=weight)
     assert found is not None
     return found
 
@@ -86,6 +86,23 @@ def test_too_few_peaks_give_no_tail() -> None:
     assert fitted(np.arange(100.0), 1_000).above == 25
     assert fitted(np.arange(400.0), 1_000).above == 40
     assert tails.fit(apart(np.ones(5_000), 10_000), None) is None
+
+
+@pytest.mark.parametrize(("k", "ratio", "size"), [(1.46, 1.0, 5), (1.46, 1.2, 5), (1.9, 1.0, 3)])
+def test_how_fast_a_sum_of_normal_variances_falls_off(k: float, ratio: float, size: int) -> None:
+    """scipy's chi-square as the reference: with θ = 1/scale, exp(θ(s²/σ² − k)) has mean 1."""
+    scale = tails.of_variances(k, ratio, size)
+    assert scale is not None
+    variance = stats.chi2(size - 1, scale=ratio / (size - 1))
+    mean, _ = integrate.quad(lambda x: np.exp((x - k) / scale + variance.logpdf(x)), 0, np.inf)
+    assert mean == pytest.approx(1.0, rel=1e-4)
+
+
+def test_where_a_sum_of_variances_has_no_usual_tail() -> None:
+    assert tails.of_variances(1.46, 1.5, 5) is None
+    assert tails.of_variances(1.46, 1.0, 1) is None
+    assert tails.of_variances(1.46, 0.0, 5) is None
+    assert tails.of_variances(1.46, np.nan, 5) is None
 
 
 def test_peaks_of_several_streams_lie_far_apart() -> None:

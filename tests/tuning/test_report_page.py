@@ -183,6 +183,14 @@ def test_the_badge_says_what_the_sentence_says(trusted: bool, with_care: bool, b
     assert found.startswith(badge)
 
 
+def test_a_detector_that_stays_and_breaks_the_promise_is_named_at_the_top() -> None:
+    plain = trustworthy()
+    assert "Caution:" not in parsed(shown(plain)).all("p", "answer")[0].text()
+    one = replace(plain, breaking=("shewhart-mean",))
+    said = parsed(shown(one)).all("p", "answer")[0].text()
+    assert "Caution: shewhart-mean stays as configured and rings more often than asked" in said
+
+
 def test_what_is_left_open_is_no_failure() -> None:
     """Of the fifth setting 5 alarms in 27 h are seen; of the other, none contradicts 14 days."""
     result = trustworthy()

@@ -451,6 +451,7 @@ def test_windows(capsys: pytest.CaptureFixture[str], tmp_path: Path, week: str) 
             [*ASKED, "--characteristic", "torque"],
             "--characteristic torque: the configuration has net-",
         ),
+        ([*ASKED, "--jobs", "0"], "--jobs: write a whole number from 1 up"),
         ([*ASKED, "--json", "--to", "-"], "only one of --to -, --html - and --json"),
     ],
 )
@@ -459,6 +460,91 @@ def test_a_wrong_command_line(
 ) -> None:
     assert main(["tune", config, week, *arguments]) == 2
     assert said in capsys.readouterr().err
+
+
+def test_events_of_another_week_are_left_out(
+    capsys: pytest.CaptureFixture[str], tmp_path: Path, config: str, week: str
+) -> None:
+    """They are no causes that a setting missed, nor false alarms that it avoided."""
+    path = tmp_path / "labels.csv"
+    path.write_text("time,what\n2026-03-01T08:00:00Z,cause\n2026-03-02T07:00:00Z,false\n")
+    asked = [config, week, *ASKED, "--kind", "cusum", "--json"]
+    assert main(["tune", *asked, "--events", str(path)]) == 0
+    out, said = capsys.readouterr()
+    events = json.loads(out)["settings"][0]["events"]
+    assert (events["causes"], events["false_verdicts"]) == (0, 1)
+    assert f"{path}: 1 of 2 events left out: the recording runs from 2026-03-02T06:00:00" in said
+
+
+def test_what_rings_all_the_time_is_told_no_long_interval(
+    capsys: pytest.CaptureFixture[str], tmp_path: Path, config: str
+) -> None:
+    """Head 2 is 1 sigma off its configured baseline from the first reading to the last: its sum
+    never rests, and none of its peaks begins in the last part."""
+    values = steady()
+    values[1::2] += 1.9
+    path = recording(tmp_path / "off.csv", values)
+    found = tune(capsys, config, path, *ASKED, "--kind", "cusum")
+    now = by_name(found)["as configured: cusum"]
+    seen = now["false_alarms"]
+    assert seen["seen"] > 100
+    assert (now["keeps"], now["interval"]) == ("no", None)
+    assert "it rang far more often" in now["no_interval"]
+    (refused,) = [each for each in found["refused"] if "rang far more" in each["why"]]
+    assert "whether its baseline still holds" in refused["instead"]
+
+
+def test_a_kept_detector_that_breaks_the_promise_is_named(
+    capsys: pytest.CaptureFixture[str], tmp_path: Path
+) -> None:
+    """Heavy tails, t with 4 degrees of freedom: textbook limits of points and of the variance ring
+    far too often on them, whatever the promise that they were worked out from."""
+    path = recording(
+        tmp_path / "heavy.csv",
+        341.2 + 1.9 * np.random.default_rng(1).standard_t(4, ROWS) / np.sqrt(2),
+    )
+    detectors = [
+        {"kind": "cusum", "catch": 2},
+        {"kind": "shewhart", "chart": "mean"},
+        {"kind": "cusum", "chart": "variance", "catch_ratio": 1.5},
+    ]
+    source = {**DOCUMENT["characteristics"]["net-weight"]["source"], "expected_streams": 2}
+    promise = {"false_alarm_every": "1h"}
+    config = changed(tmp_path / "line.yaml", source=source, promise=promise, detectors=detectors)
+    to = tmp_path / "best.yaml"
+    assert main(["tune", config, path, "--to", str(to), "--json"]) == 0
+    answer = json.loads(capsys.readouterr().out)
+    found = by_name(answer)
+    assert answer["breaking"] == ["shewhart-mean", "cusum-variance"]
+    kept = [found[f"as configured: {name}"] for name in ("shewhart-mean", "cusum-variance")]
+    assert [each["keeps"] for each in kept] == ["no", "no"]
+    # A hundred peaks of such a tail may look exponential; the variance is refused all the same.
+    assert found["cusum, catch_ratio 1.5, size 5"]["interval"] is None
+    said = " ".join(to.read_text().replace("\n# ", " ").split())
+    assert said.startswith("# Caution: shewhart-mean stays, and does not keep its part")
+    times = kept[1]["false_alarms"]["seen"]
+    assert "cusum-variance stays, and does not keep its part of the promise" in said
+    assert f"As configured it rang {times} times in the last" in said
+
+
+def test_sources_that_take_turns_in_one_stream_are_refused(
+    capsys: pytest.CaptureFixture[str], tmp_path: Path
+) -> None:
+    """Six heads in one stream, one of them 1 sigma heavy: baseline refuses them as well."""
+    values = steady()
+    values[::6] += 1.9
+    path = recording(tmp_path / "mixed.csv", values)
+    source = dict(DOCUMENT["characteristics"]["net-weight"]["source"])
+    del source["stream"]
+    config = changed(tmp_path / "line.yaml", source=source)
+    assert main(["baseline", config, path]) == 1
+    assert "take turns in one stream" in " ".join(capsys.readouterr().out.split())
+    to = tmp_path / "best.yaml"
+    assert main(["tune", config, path, *ASKED, "--kind", "cusum", "--to", str(to)]) == 1
+    out = " ".join(capsys.readouterr().out.split())
+    assert "No: 6 sources that differ take turns in one stream" in out
+    assert "write its key under source.stream" in out
+    assert not to.exists()
 
 
 def test_a_recording_that_says_nothing(

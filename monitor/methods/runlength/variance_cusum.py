@@ -115,7 +115,7 @@ def decision_interval(
         length = run_length(k, h, nu=nu, side=side, head_start=head_start)
         return math.log(length / wanted)
 
-    rate, overshoot = _decay(k, nu, side), 1.2 * math.sqrt(2 / nu)
+    rate, overshoot = decay(k, nu, side), 1.2 * math.sqrt(2 / nu)
     guess = math.log1p(wanted * rate * abs(k - 1)) / rate - overshoot
     guess = min(max(guess, overshoot / 6), _highest(nu))
     return increasing_root(excess, guess, rate, 1e-6, _highest(nu))
@@ -220,8 +220,10 @@ def _tails(values: Array, nu: int) -> tuple[Array, Array]:
     return tail, body
 
 
-def _decay(k: float, nu: int, side: Way) -> float:
-    """The θ > 0 at which E exp(θ·increment) = 1: by so much h grows ln(run length), far out."""
+def decay(k: float, nu: int, side: Way) -> float:
+    """The θ > 0 at which E exp(θ·increment) = 1 (H. Cramér; W. Feller, An Introduction to
+    Probability Theory II, XII.5, from memory): by so much h adds to ln(run length), far out. A
+    rough small number for a ``k`` on the wrong side of 1."""
     sign = 1 if side == "up" else -1
     if sign * (k - 1) <= 0:
         return 0.05

@@ -73,6 +73,13 @@ def _answer(result: Result, best: Setting | None) -> Text:
     spread = chosen.best_spread(result)
     if spread is not None:
         told += f" For the spread, {spread.name} goes beside it."
+    if result.breaking:
+        staying = " and ".join(result.breaking)
+        stay, ring = ("stays", "rings") if len(result.breaking) == 1 else ("stay", "ring")
+        told += (
+            f" Caution: {staying} {stay} as configured and {ring} more often than asked, so that "
+            "all of them together break the promise: see what to put in your configuration."
+        )
     return Html(f"Of {tried}, take {name}{markup.inline(told + _today(result))}")
 
 
