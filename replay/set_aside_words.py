@@ -19,7 +19,7 @@ REASONS = {
     "not-used": "left out by use_if",
     "no-stream": "a stream key is missing, or is neither text nor number",
     "no-value": "there is nothing where the value should be",
-    "not-a-number": "the value is no number",
+    "not-a-number": "the value is no number (with a decimal point: 341.7)",
     "not-finite": "the value is infinite or NaN",
     "implausible": "outside the plausible range",
     "no-time": "there is nothing where the time should be",

@@ -137,8 +137,8 @@ def _columns(name: str, header: list[str], layout: Layout) -> dict[str, int]:
         elif word in layout.headers:
             raise CommandError(f"{name} has no column {wanted!r}: {_has(header, wanted)}", WRONG)
     if "value" not in found:
-        hint = _has(header, "value") + '; say which with --column value="..."'
-        raise CommandError(f"{name} has no column 'value': {hint}")
+        which = "" if _joined(header) else '; say which with --column value="..."'
+        raise CommandError(f"{name} has no column 'value': {_has(header, 'value')}{which}")
     if "characteristic" not in found and layout.characteristic is None:
         raise CommandError(
             f"{name} has no column 'characteristic', and the configuration has more than one: "
@@ -148,10 +148,15 @@ def _columns(name: str, header: list[str], layout: Layout) -> dict[str, int]:
 
 
 def _has(header: list[str], wanted: str) -> str:
-    if len(header) == 1 and (";" in header[0] or "\t" in header[0]):
+    if _joined(header):
         return "its columns are not separated by commas; save it with commas"
     near = difflib.get_close_matches(wanted, header, 1)
     if near:
         return f"did you mean {near[0]!r}?"
     more = ", …" if len(header) > _SHOWN else ""
     return f"it has {', '.join(repr(cell[:40]) for cell in header[:_SHOWN])}{more}"
+
+
+def _joined(header: list[str]) -> bool:
+    """Whether something else than a comma separates the cells."""
+    return len(header) == 1 and (";" in header[0] or "\t" in header[0])

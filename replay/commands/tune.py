@@ -232,7 +232,11 @@ def _request(args: argparse.Namespace, characteristic: CharacteristicPlan) -> Re
         configured = _each([i.ignore for i in asked if i.catch is not None])
         ignore = tuple(each for each in configured if each < max(catch)) or (0.0,)
     if any(each < 0 for each in ignore) or min(ignore) >= max(catch):
-        raise CommandError("--ignore: write drifts from 0 up, less than those to catch", WRONG)
+        raise CommandError(
+            f"--ignore {min(ignore):g}, --catch {max(catch):g}: ignore drifts from 0 up, and catch "
+            "larger ones",
+            WRONG,
+        )
     kinds = _KINDS if args.kind is None else tuple(part.strip() for part in args.kind.split(","))
     strange = [kind for kind in kinds if kind not in _KINDS]
     if strange:

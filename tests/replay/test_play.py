@@ -344,7 +344,11 @@ def test_the_summary_answers_what_a_tuner_asks(
     lines = [line.strip() for line in out.splitlines()]
     assert "2026-03-02 06:00:00Z to 2026-03-02 06:01:30Z (1 min 30 s)" in lines[0]
     assert lines[1] == "Used 5 readings; set aside 1:"
-    assert lines[2].split(maxsplit=2) == ["not-a-number", "1", "the value is no number"]
+    assert lines[2].split(maxsplit=2) == [
+        "not-a-number",
+        "1",
+        "the value is no number (with a decimal point: 341.7)",
+    ]
     assert lines[3].startswith(f"first at {path}:5: plant/1/reading '")
     assert '"net":"n/a"' in lines[3]
     rows = [line.split() for line in lines]

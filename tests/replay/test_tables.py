@@ -147,7 +147,7 @@ def test_a_field_without_end_is_told_and_what_follows_it_is_read() -> None:
         ("", PLAIN, "a.csv is empty"),
         ("characteristic,Value\n", PLAIN, "a.csv has no column 'value': did you mean 'Value'?"),
         ("characteristic,x\n", PLAIN, "has no column 'value': it has 'characteristic', 'x'; say"),
-        ("characteristic;value\n", PLAIN, "not separated by commas"),
+        ("characteristic;value\n", PLAIN, "not separated by commas; save it with commas"),
         ("value\n1\n", PLAIN, "no column 'characteristic', and the configuration has more than"),
         ("characteristic,value,value\n", PLAIN, "has 2 columns 'value': keep one"),
         ("value\n", Layout((), {"time": "When"}, "a"), "has no column 'When': it has 'value'"),
@@ -158,6 +158,11 @@ def test_a_table_that_cannot_be_read_says_what_to_do(text: str, layout: Layout, 
         read(text, layout)
     assert why in str(error.value)
     assert (error.value.code == WRONG) == bool(layout.headers)
+
+
+def test_where_cells_are_not_told_apart_no_column_can_be_named() -> None:
+    with pytest.raises(CommandError, match="save it with commas$"):
+        read("characteristic;value\n", PLAIN)
 
 
 @given(st.text(max_size=200), st.booleans())

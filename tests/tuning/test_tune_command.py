@@ -443,7 +443,7 @@ def test_windows(capsys: pytest.CaptureFixture[str], tmp_path: Path, week: str) 
         ([*ASKED, "--size", "0"], "--size: write whole numbers"),
         ([*ASKED, "--cusum", "0.5"], "--cusum 0.5: write K,H"),
         ([*ASKED, "--ewma", "2,3"], "--ewma 2,3: lambda is above 0, up to 1"),
-        ([*ASKED, "--ignore", "2"], "--ignore: write drifts from 0 up, less than those to catch"),
+        ([*ASKED, "--ignore", "2"], "--ignore 2, --catch 1.5: ignore drifts from 0 up, and catch"),
         ([*ASKED, "--catch-ratio", "1"], "--catch-ratio: write a number above 1"),
         (["--catch", "much", "--false-alarm-every", "1d"], "--catch much: write a number"),
         (["--catch", "1", "--false-alarm-every", "soon"], "--false-alarm-every: 'soon' is not"),
