@@ -161,7 +161,7 @@ def test_a_table_that_cannot_be_read_says_what_to_do(text: str, layout: Layout, 
 
 
 def test_where_cells_are_not_told_apart_no_column_can_be_named() -> None:
-    with pytest.raises(CommandError, match="save it with commas$"):
+    with pytest.raises(CommandError, match=r"save it with commas$"):
         read("characteristic;value\n", PLAIN)
 
 
