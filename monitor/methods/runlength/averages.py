@@ -37,6 +37,7 @@ _CELLS = 6
 """In what one value adds: their error falls with the square of their number."""
 
 _FEWEST_CELLS = 100
+"""Where one value adds much, what lies at the clip is told badly by fewer."""
 
 
 @dataclass(frozen=True, slots=True)

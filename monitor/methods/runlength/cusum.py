@@ -18,11 +18,15 @@ from monitor.methods.runlength.waits import Wait, chain
 
 _HIGHEST = 300.0
 
-_BOTH_HIGH = 0.5
+BOTH_HIGH = 0.5
 """Of a head start: above, the two sums may both be high at first."""
 
-_MUCH = 2e7
-"""Steps that two sums are followed together, times moves in each; half a second to compute."""
+_MUCH = 1e8
+"""Steps that two sums are followed together, times the most moves in each; half a second or so to
+compute."""
+
+_SELDOM = 0.75
+"""Run length from the start over that from 0, from which on two sums hardly ever both come high."""
 
 _NEGLIGIBLE = 1e-9
 
@@ -43,8 +47,9 @@ def run_length(
     ``head_start`` is a fraction of h, below 1; ``clip`` limits each value (ValueError unless it is
     above k: the sums could not rise). ValueError for an h above 300. Both sides together follow
     J. M. Lucas & R. B. Crosier 1982, exact because the two sums cannot both be high; while they are
-    from a head start above a half, they are followed together: ValueError where that takes too
-    long, and with ``clip``. Relative error below 1e-6, with ``clip`` 1e-3.
+    from a head start above a half, they are followed together. Where that takes too long, and with
+    ``clip``, the answer may be 5 % too low then, and there is none (ValueError) where a sum that
+    starts so high mostly signals at once. Relative error below 1e-6 otherwise, with ``clip`` 1e-3.
     Check: k 0.5, h 5: 465.4 at shift 0, 10.38 at 1.
     """
     if clip is not None and clip <= k:
@@ -55,16 +60,18 @@ def run_length(
         return _one_side(k, h, shift if direction == "up" else -shift, head_start, clip)[1]
     up = _one_side(k, h, shift, head_start, clip)
     down = up if shift == 0 else _one_side(k, h, -shift, head_start, clip)
-    if head_start <= _BOTH_HIGH:
+    if head_start <= BOTH_HIGH:
         return either(up, down)
     # They fall by k a step, and wander as far as h in about h² steps.
     steps = min(h * h, head_start * h / max(k, 1e-9))
-    if clip is not None or steps * _nodes(h) ** 2 > _MUCH:
+    if clip is None and steps * _nodes(h) ** 2 < _MUCH:
+        return _both_high(k, h, shift, head_start * h, up[0], down[0])
+    if min(start / zero for zero, start in (up, down)) < _SELDOM:
         raise ValueError(
-            f"two sums from a head start of {head_start:g}: only up to {_BOTH_HIGH:g} their run "
+            f"two sums from a head start of {head_start:g}: only up to {BOTH_HIGH:g} their run "
             "length can be computed with a clip or so small a k"
         )
-    return _both_high(k, h, shift, head_start * h, up[0], down[0])
+    return either(up, down)
 
 
 def _nodes(h: float) -> int:
@@ -89,9 +96,9 @@ def _both_high(k: float, h: float, shift: float, start: float, up: float, down: 
         moves = density(at[None, :] - values[:, None] - (shift - k))
         return np.asarray(chances @ moves) * weights
 
-    nodes, quadrature = gauss_legendre(_nodes(h))
-
     def between(low: float, high: float) -> tuple[Array, Array]:
+        # Few different numbers of them: they take long to find.
+        nodes, quadrature = gauss_legendre(16 * math.ceil(1 + 0.1 * (high - low)))
         half = (high - low) / 2
         return low + half * (nodes + 1), half * quadrature
 

@@ -124,7 +124,7 @@ def width_for(
     clip: float | None = None,
 ) -> float:
     """The width whose run length at ``shift`` is ``wanted``, to 1e-7 of it
-    (1e-5 with exact limits, 1e-3 with ``clip``). Check, asymptotic, at shift 0: λ 0.1 and 500 give
+    (2e-5 with exact limits, 1e-3 with ``clip``). Check, asymptotic, at shift 0: λ 0.1 and 500 give
     2.814. ValueError where no width has.
     """
 
