@@ -137,6 +137,7 @@ def _shown(found: Shown) -> dict[str, Any]:
             "factor": _finite(told.factor),
             "low": told.interval.low,
             "high": told.interval.high,
+            "counted": told.counted,
         },
         "no_interval": found.no_interval or None,
         "meets": found.meets,

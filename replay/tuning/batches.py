@@ -46,9 +46,10 @@ def batches(
         tries: list[tuple[Grouped, list[Candidate]]] = []
         if held.asked:
             textbook = held.textbook
-            tries.append(
-                (held.ours, candidates(request, held.ours, textbook.error, textbook.interval))
+            tried = candidates(
+                request, held.ours, textbook.error, textbook.interval, held.found.correlation
             )
+            tries.append((held.ours, tried))
         if held.theirs is not None:
             tries.append((held.theirs, configured(plan, request.declared)[0]))
         for grouped, tried in tries:

@@ -93,14 +93,20 @@ def with_limit(scheme: Scheme, value: float) -> Scheme:
 
 
 def candidates(
-    request: Request, grouped: Grouped, error: float, interval: float
+    request: Request,
+    grouped: Grouped,
+    error: float,
+    interval: float,
+    correlation: float = 0.0,
 ) -> list[Candidate]:
-    """Settings worked out for subgroups with that standard ``error`` (gauge's unit), and given
-    constants; ``interval`` is the promise in subgroups of one stream."""
+    """Settings worked out for subgroups with that standard ``error`` (gauge's unit), neighbours of
+    which have that ``correlation``, and given constants; ``interval`` is the promise in subgroups
+    of one stream."""
     chart: Chart = "individual" if grouped.plan == ByCount(1) or grouped.size == 1 else "mean"
     if not isinstance(grouped.plan, ByCount):
         chart = "mean"
-    found = [*_worked_out(request, chart, error, interval, grouped.size), *_given(request, chart)]
+    worked_out = _worked_out(request, chart, error, interval, correlation, grouped.size)
+    found = [*worked_out, *_given(request, chart)]
     return [
         replace(each, name=f"{each.name}, size {grouped.size}", part=_part(each.scheme, request))
         for each in found
@@ -114,7 +120,12 @@ def _part(scheme: Scheme, request: Request) -> float:
 
 
 def _worked_out(
-    request: Request, chart: Chart, error: float, interval: float, size: int
+    request: Request,
+    chart: Chart,
+    error: float,
+    interval: float,
+    correlation: float,
+    size: int,
 ) -> Iterator[Candidate]:
     for kind in request.kinds:
         if kind == "shewhart":
@@ -128,7 +139,7 @@ def _worked_out(
             yield Candidate(
                 name,
                 kind,
-                _for(kind, chart, catch / error, ignore / error, interval),
+                _for(kind, chart, catch / error, ignore / error, interval, correlation),
                 "calibrated",
                 catch,
                 ignore,
@@ -159,12 +170,24 @@ def _written(value: float) -> float:
     return float(f"{value:.5g}")
 
 
-def _for(kind: Kind, chart: Chart, catch: float, ignore: float, interval: float) -> Scheme:
+def _for(
+    kind: Kind, chart: Chart, catch: float, ignore: float, interval: float, correlation: float
+) -> Scheme:
     if kind == "cusum":
         k = float(f"{(catch + ignore) / 2:.4g}")
         return CusumPlan(chart, k, 1.0, clip=max(CLIP, round(2 * k, 2)))
     lam = float(f"{ewma_weight(catch, ignore, interval):.3g}")
-    return EwmaPlan(chart, lam, 1.0, clip=CLIP if lam <= _HEAVIEST else None)
+    clip = round(CLIP * spreading(lam, correlation), 1) if lam <= _HEAVIEST else None
+    return EwmaPlan(chart, lam, 1.0, clip=clip)
+
+
+def spreading(lam: float, correlation: float) -> float:
+    """How many times as far an average of weight ``lam`` spreads, and its limit lies, where
+    neighbours correlate so and those further apart as of a first-order autoregression: √((1 + φq) /
+    (1 − φq)), q = 1 − λ (D. C. Montgomery & C. M. Mastrangelo 1991, Journal of Quality Technology
+    23, from memory). No less than 1."""
+    together = max(correlation, 0.0) * (1 - lam)
+    return math.sqrt((1 + together) / (1 - together))
 
 
 def ewma_weight(catch: float, ignore: float, interval: float) -> float:

@@ -10,13 +10,14 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from monitor.plan import CusumPlan, EwmaPlan, Scheme
+from monitor.plan import ByCount, CusumPlan, EwmaPlan, Scheme, ShewhartPlan
 from replay.readings import Values
 from replay.tuning import tails
 from replay.tuning.array_cusum import CusumPath
 from replay.tuning.array_ewma import EwmaPath
 from replay.tuning.array_shewhart import ShewhartPath
 from replay.tuning.candidates import Candidate, limit, with_limit
+from replay.tuning.changed import resolution
 from replay.tuning.grouped import Grouped, GroupedStream
 from replay.tuning.paths import Path, Peaks, Signals
 from replay.tuning.tails import PooledPeaks, TailFit
@@ -31,7 +32,8 @@ class Judged:
     """A candidate with its constants, and what came of them.
 
     ``fitted`` and ``proved`` are the tails of the two parts, None where peaks are too few.
-    ``signals`` are those of the whole recording, one entry a stream.
+    ``signals`` are those of the whole recording, one entry a stream. ``coarse``: the limit is one
+    of single points that lie on too few values for their tail to be drawn on.
     """
 
     candidate: Candidate
@@ -39,6 +41,7 @@ class Judged:
     fitted: TailFit | None
     proved: TailFit | None
     signals: tuple[Signals, ...]
+    coarse: bool = False
 
 
 def family(candidate: Candidate) -> Scheme:
@@ -62,6 +65,7 @@ def judge(grouped: Grouped, members: Sequence[Candidate], interval: float) -> li
     usual = _usual(scheme, grouped)
     fitted = _tail(grouped, peaks, scheme, unit, usual, proof=False)
     proved = _tail(grouped, peaks, scheme, unit, usual, proof=True)
+    step = _step(scheme, grouped)
     found = []
     for candidate in members:
         at = limit(candidate.scheme)
@@ -77,6 +81,8 @@ def judge(grouped: Grouped, members: Sequence[Candidate], interval: float) -> li
                 fitted,
                 proved,
                 tuple(each.signals(at) for each in paths),
+                # A step further, normal points are fewer by a factor of exp(limit · step).
+                coarse=at * step > 1.0,
             )
         )
     return found
@@ -111,6 +117,17 @@ def in_proof(grouped: Grouped, signals: Sequence[Signals]) -> list[Signals]:
         counts = (each.at >= stream.prove) & ~stream.left_out[each.at]
         found.append(Signals(each.at[counts], each.up[counts]))
     return found
+
+
+def _step(scheme: Scheme, grouped: Grouped) -> float:
+    """How far apart neighbouring points of a Shewhart chart lie, in standard errors; 0 where they
+    may lie anywhere."""
+    if not isinstance(scheme, ShewhartPlan) or not isinstance(grouped.plan, ByCount):
+        return 0.0
+    step = resolution([each.readings for each in grouped.streams])
+    if step is None:
+        return 0.0
+    return step / grouped.size / min(float(np.median(each.error)) for each in grouped.streams)
 
 
 def _weight(scheme: Scheme) -> float | None:

@@ -151,7 +151,8 @@ class Observed:
 
 @dataclass(frozen=True, slots=True)
 class Extrapolated:
-    """Seconds between false alarms by the tail of the statistic in the last part.
+    """Seconds between false alarms by the tail of the statistic in the last part or, ``counted``,
+    by its alarms, where they are many.
 
     ``factor``: the truth lies between ``seconds`` / factor and ``seconds`` · factor, with 90 %.
     More than ``Grouping.supports`` is not told: where the tail speaks of more, ``seconds`` is that
@@ -161,6 +162,7 @@ class Extrapolated:
     seconds: float
     factor: float
     interval: Range
+    counted: bool = False
 
 
 @dataclass(frozen=True, slots=True)

@@ -12,7 +12,7 @@ import numpy as np
 
 from monitor.plan import CusumPlan, EwmaPlan, Scheme
 from replay.readings import Times
-from replay.tuning import counting
+from replay.tuning import counting, intervals
 from replay.tuning.candidates import limit
 from replay.tuning.grouped import Grouped
 from replay.tuning.judging import Judged, in_proof
@@ -21,10 +21,8 @@ from replay.tuning.paths import Signals
 from replay.tuning.result import (
     Alarm,
     Delay,
-    Extrapolated,
     Grouping,
     Observed,
-    Range,
     Setting,
     Tail,
 )
@@ -34,12 +32,6 @@ from replay.tuning.tails import TailFit
 
 ALARMS = 500
 _POINTS = 200
-
-WANDERS = "the process wanders: no recording foretells its false alarms"
-TOO_FEW = "the last part holds too few peaks of the statistic to draw a tail through"
-NOT_EXPONENTIAL = "the tail of the statistic is not of the kind that can be drawn on"
-TOO_LONG = "more than 50 times the last part is not told"
-CONTRADICTED = "it rang far more often than the tail of its statistic has it"
 
 
 @dataclass(frozen=True, slots=True)
@@ -65,11 +57,7 @@ def setting(
     counted = in_proof(grouped, judged.signals)
     wanders = found.wander.wanders
     observed = _observed(grouped, counted, place, found, wanders)
-    extrapolated, why, lowest = _extrapolated(judged, found)
-    if extrapolated is not None and contradicted(observed, extrapolated.interval.low):
-        # As where a stream lies off its baseline all the time: its sum never rests, so that all of
-        # its signals belong to one peak, or to none that begins in the last part.
-        extrapolated, why, lowest = None, CONTRADICTED, 0.0
+    told, why, lowest = intervals.extrapolated(judged, found, observed)
     asked = place.promise / candidate.part
     return Setting(
         name=candidate.name,
@@ -81,7 +69,7 @@ def setting(
         catch=candidate.catch,
         ignore=candidate.ignore,
         observed=observed,
-        extrapolated=extrapolated,
+        extrapolated=told,
         no_interval=why,
         tail=None if judged.proved is None else _tail(judged.proved, limit(scheme)),
         delays=tuple(delays),
@@ -91,16 +79,10 @@ def setting(
         ),
         alarms=_alarms(grouped, counted, place),
         asked=asked,
-        meets=asked <= min(lowest, found.supports) and not contradicted(observed, asked),
+        meets=asked <= min(lowest, found.supports) and not intervals.contradicted(observed, asked),
         rank=None,
         unranked="",
     )
-
-
-def contradicted(observed: Observed, asked: float) -> bool:
-    """Whether the count by itself is of an interval shorter than ``asked`` seconds."""
-    counted = observed.interval
-    return counted is not None and counted.high is not None and counted.high < asked
 
 
 def constants(scheme: Scheme) -> tuple[tuple[str, float], ...]:
@@ -131,31 +113,6 @@ def _observed(
     instants = np.concatenate(_instants(grouped, counted))
     moments = place.running.seconds(instants) - PROVE * place.running.whole
     return Observed(alarms, seconds, counting.between(alarms, seconds, moments))
-
-
-def _extrapolated(judged: Judged, found: Grouping) -> tuple[Extrapolated | None, str, float]:
-    """The interval, why there is none, and the least that it is in seconds, told or not."""
-    tail = judged.proved
-    if found.wander.wanders:
-        return None, WANDERS, 0.0
-    if tail is None:
-        return None, TOO_FEW, 0.0
-    if not tail.exponential:
-        return None, NOT_EXPONENTIAL, 0.0
-    interval = tail.interval(limit(judged.scheme))
-    factor = tail.factor(interval)
-    seconds = interval / found.rate
-    lowest = _least(interval, factor) / found.rate
-    if interval > tail.supports():
-        told = found.supports
-        return Extrapolated(told, factor, Range(min(lowest, told), None)), TOO_LONG, lowest
-    return Extrapolated(seconds, factor, Range(lowest, seconds * factor)), "", lowest
-
-
-def _least(interval: float, factor: float) -> float:
-    if factor == np.inf or interval == np.inf:
-        return 0.0
-    return interval / factor
 
 
 def _tail(tail: TailFit, at: float) -> Tail:

@@ -15,6 +15,7 @@ from monitor.plan import CharacteristicPlan
 from replay.tuning import counting
 from replay.tuning.grouped import Grouped
 from replay.tuning.hearing import Heard
+from replay.tuning.intervals import WANDERS, contradicted
 from replay.tuning.result import (
     Alarm,
     Delay,
@@ -27,7 +28,7 @@ from replay.tuning.result import (
 )
 from replay.tuning.running import PROVE
 from replay.tuning.scoring import score
-from replay.tuning.showing import ALARMS, WANDERS, Place, contradicted
+from replay.tuning.showing import ALARMS, Place
 
 NAME = "all configured detectors together"
 

@@ -10,9 +10,9 @@ from dataclasses import dataclass
 
 from monitor.configuration import spans
 from monitor.methods.cycles import Cycle
+from replay.tuning.intervals import COARSE, CONTRADICTED, NOT_EXPONENTIAL, TOO_FEW
 from replay.tuning.result import Grouping, Refusal, Setting
 from replay.tuning.running import PROVE
-from replay.tuning.showing import CONTRADICTED, NOT_EXPONENTIAL, TOO_FEW
 from replay.tuning.tails import FAR
 
 _SHIFT = 0.99 * 8 * 3_600.0
@@ -141,6 +141,11 @@ def _refused(
         )
     for why, instead in (
         (TOO_FEW, more),
+        (
+            COARSE,
+            "judge means of larger subgroups or what adds many points up, as CUSUM and EWMA do, or "
+            "take a finer reading from the gauge",
+        ),
         (
             CONTRADICTED,
             "look whether its baseline still holds: a stream that stays off it rings on and on",

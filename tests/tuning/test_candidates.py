@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+import math
+
 import numpy as np
 import pytest
 from plans import characteristic, shewhart
@@ -9,12 +11,14 @@ from plans import characteristic, shewhart
 from monitor.methods.runlength import ewma
 from monitor.plan import BaselinePlan, ByCount, CusumPlan, EwmaPlan, RulePlan, ShewhartPlan
 from replay.readings import StreamReadings
+from replay.tuning.array_ewma import recurrence
 from replay.tuning.candidates import (
     Request,
     candidates,
     configured,
     ewma_weight,
     limit,
+    spreading,
     with_limit,
 )
 from replay.tuning.grouped import Grouped, group
@@ -42,6 +46,21 @@ def test_worked_out_from_what_people_can_judge() -> None:
     assert large.clip > large.k  # or the sums could never rise
     (single, *_) = candidates(REQUEST, grouped(1), 0.5, 1e5)
     assert single.scheme.chart == "individual"
+
+
+def test_an_average_clips_no_nearer_than_its_limit_will_lie() -> None:
+    """Limits lie as far out as averages spread: by simulation of an autoregression of 0.8."""
+    request = Request(1.0, (1.0,), kinds=("ewma",))
+    steps = np.random.default_rng(2).normal(size=400_000) * 0.6
+    average = recurrence(0.8, 0.2 * recurrence(0.8, steps))
+    spread = average.std() / math.sqrt(0.2 / 1.8)
+    assert spreading(0.2, 0.8) == pytest.approx(spread, rel=0.02)
+    for correlation, least in ((-0.4, 1.0), (0.0, 1.0), (0.8, 2.0)):
+        (one,) = candidates(request, grouped(1), 0.6, 1e4, correlation)
+        assert isinstance(one.scheme, EwmaPlan)
+        clip = 3.0 * spreading(one.scheme.lam, correlation)
+        assert one.scheme.clip == pytest.approx(clip, abs=0.051)
+        assert clip >= 3.0 * least
 
 
 @pytest.mark.parametrize("interval", [1e4, 1e6])

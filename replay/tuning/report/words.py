@@ -102,6 +102,8 @@ def by_tail(shown: Shown) -> tuple[str, str]:
     told = time_range(found.interval)
     if isinstance(shown, Together):
         return spans.long(found.seconds), f"{told}; rates added up"
+    if found.counted:
+        return spans.long(found.seconds), f"{told}; from the count, which is many"
     return spans.long(found.seconds), f"{told}; factor {found.factor:.2g}"
 
 

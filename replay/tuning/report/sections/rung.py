@@ -15,7 +15,8 @@ from replay.tuning.report.markup import Text
 from replay.tuning.result import Result, Setting, Shown, Together
 
 _WORDS = (
-    "“By the tail” carries on how fast ever larger values of the setting's statistic become rarer. "
+    "“By the tail” carries on how fast ever larger values of the setting's statistic become rarer; "
+    "of a setting that rang 25 times or more it is the count itself. "
     "“Not shown” is no failure: this recording leaves it open. Limits worked out here are set "
     "wider on purpose, because the tail is known from this recording only; the figure of driftbell "
     "check is the textbook's."
