@@ -127,8 +127,9 @@ def events(result: Result, settings: Sequence[Setting]) -> Table:
 
 
 def _interval(found: Shown) -> str:
-    if found.extrapolated is not None:
-        return _range(found.extrapolated.interval)
+    told = found.extrapolated
+    if told is not None:
+        return _range(told.interval) + (" (counted)" if told.counted else "")
     if found.observed.interval is not None:
         return f"{_range(found.observed.interval)} (counted)"
     return "not told"

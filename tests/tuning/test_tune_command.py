@@ -65,6 +65,7 @@ def test_the_whole_answer(capsys: pytest.CaptureFixture[str], config: str, week:
     assert given["false_alarms"]["interval"]["low"] < seconds
     assert seconds < given["false_alarms"]["interval"]["high"]
     assert not given["meets"]
+    assert not found["settings"][0]["interval"]["counted"]
     assert "the configured detector shewhart-range" in [each["what"] for each in found["refused"]]
 
 
@@ -113,6 +114,17 @@ def test_questions_in_the_readers_order(
         "What was refused, and why?",
         "What do I put into the configuration?",
     ]
+
+
+def test_an_interval_by_the_count_is_marked(
+    capsys: pytest.CaptureFixture[str], config: str, week: str
+) -> None:
+    assert main(["tune", config, week, *ASKED, "--kind", "cusum", "--cusum", "0.5,2"]) == 0
+    rows = capsys.readouterr().out.splitlines()
+    (often,) = [row for row in rows if "cusum 0.5,2" in row and "k 0.5" in row]
+    (seldom,) = [row for row in rows if "cusum, catch 1.5" in row and "k " in row]
+    assert "(counted)" in often
+    assert "(counted)" not in seldom
 
 
 def test_what_could_be_promised_is_said(
