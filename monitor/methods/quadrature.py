@@ -1,4 +1,4 @@
-"""Gauss–Legendre nodes, computed once.
+"""Gauss–Legendre nodes, computed once; and integrals over a part of where they lie.
 
 Knows one rule of integration. Must not know what is integrated.
 """
@@ -8,6 +8,7 @@ from __future__ import annotations
 from functools import lru_cache
 
 import numpy as np
+from numpy.polynomial.legendre import legvander
 
 from monitor.methods.normal import Array
 
@@ -33,3 +34,18 @@ def gauss_legendre(n: int) -> tuple[Array, Array]:
     weights = 2 / ((1 - nodes * nodes) * slope * slope)
     nodes.flags.writeable = weights.flags.writeable = False
     return nodes, weights
+
+
+def upto(n: int, ends: Array) -> Array:
+    """Weights at :func:`gauss_legendre`'s n nodes for integrals from −1 to each of ``ends`` ≤ 1,
+    shape (ends, n): exact for polynomials of a degree below n.
+
+    Those of the polynomial through the nodes, expanded in Legendre's: the integral of the d-th is
+    (P(d + 1) − P(d − 1)) / (2d + 1) (Abramowitz & Stegun 22.7.10 and 22.8.5).
+    """
+    nodes, weights = gauss_legendre(n)
+    degrees, at_ends = np.arange(n), legvander(ends, n)
+    integrals = np.empty((ends.size, n))
+    integrals[:, 0] = ends + 1
+    integrals[:, 1:] = (at_ends[:, 2:] - at_ends[:, :-2]) / (2 * degrees[1:] + 1)
+    return np.asarray(integrals @ (legvander(nodes, n - 1) * (degrees + 0.5)).T * weights)

@@ -30,6 +30,18 @@ def weight_and_width(catch: float, ignore: float, interval: float) -> tuple[floa
     return lam, ewma.width_for(lam, interval, ignore)
 
 
+def high_interval(k: float, interval: float, head_start: float) -> float:
+    try:
+        return cusum.decision_interval(k, interval, head_start=head_start)
+    except ValueError:  # refused: that is to be soon as well
+        return math.inf
+
+
+def one_sided_width(catch: float, interval: float) -> float:
+    lam = ewma.best_weight(catch, interval, direction="up")
+    return ewma.width_for(lam, interval, direction="up")
+
+
 def variance_interval(ratio: float, interval: float, nu: int) -> float:
     k = variance_cusum.reference_within(ratio, interval, nu)
     side = "up" if ratio > 1 else "down"
@@ -46,6 +58,15 @@ def inverses() -> dict[str, Callable[[], object]]:
         for catch, ignore in ((0.3, 0.05), (0.5, 0.0), (1.0, 0.2), (2.0, 0.0)):
             work[f"EWMA for {catch:g} SE, {ignore:g} ignored, {n:g}"] = (
                 lambda n=n, c=catch, e=ignore: weight_and_width(c, e, n)
+            )
+        work[f"EWMA for 0.3 SE, one side, {n:g}"] = lambda n=n: one_sided_width(0.3, n)
+        for lam in (0.01, 0.05, 0.2):
+            work[f"EWMA {lam:g}, clip 3, {n:g}"] = lambda n=n, lam=lam: ewma.width_for(
+                lam, n, clip=3.0
+            )
+        for k, head_start in ((0.05, 0.75), (0.1, 0.9)):
+            work[f"CUSUM {k:g} from a head start of {head_start:g}, {n:g}"] = (
+                lambda n=n, k=k, s=head_start: high_interval(k, n, s)
             )
         for ratio, nu in ((0.8, 4), (1.1, 4), (1.5, 1), (1.5, 4), (2.0, 9)):
             work[f"variance CUSUM for {ratio:g} times, {nu + 1} readings, {n:g}"] = (
@@ -64,6 +85,23 @@ def run_lengths() -> dict[str, Callable[[], object]]:
     for k, h in ((0.5, 5.0), (0.25, 24.0), (0.1, 60.0)):
         work[f"CUSUM {k:g}, {h:g}"] = lambda k=k, h=h: cusum.run_length(k, h)
         work[f"CUSUM {k:g}, {h:g}, clip 3"] = lambda k=k, h=h: cusum.run_length(k, h, clip=3.0)
+    for k, h, head_start in ((0.02, 60.0, 0.9), (0.05, 60.0, 0.75), (0.1, 40.0, 0.9)):
+        work[f"CUSUM {k:g}, {h:g}, head start {head_start:g}"] = lambda k=k, h=h, s=head_start: (
+            cusum.run_length(k, h, head_start=s)
+        )
+    for lam, width, shift in (
+        (0.01, 3.0, 0.0),
+        (0.05, 2.7, 0.0),
+        (0.05, 2.7, 2.0),
+        (0.2, 3.0, 0.0),
+    ):
+        for asymptotic in (True, False):
+            limits = "asymptotic" if asymptotic else "exact"
+            work[f"EWMA {lam:g}, {width:g}, clip 3, shift {shift:g}, {limits}"] = (
+                lambda lam=lam, w=width, d=shift, a=asymptotic: ewma.run_length(
+                    lam, w, d, asymptotic=a, clip=3.0
+                )
+            )
     for lam, width in ((0.005, 4.5), (0.02, 5.0), (0.1, 2.814), (0.2, 6.0)):
         for asymptotic in (True, False):
             limits = "asymptotic" if asymptotic else "exact"

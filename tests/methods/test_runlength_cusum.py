@@ -2,11 +2,14 @@
 
 import itertools
 import math
+from collections.abc import Callable
 
 import numpy as np
 import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
+from scipy.special import roots_legendre
+from scipy.stats import norm
 
 from monitor.methods.runlength.cusum import decision_interval, run_length, wait
 
@@ -65,6 +68,82 @@ def test_against_simulation(
     mean, error = simulated(k, h, shift, head_start, clip, sides)
     computed = run_length(k, h, shift, direction=sides, head_start=head_start, clip=clip)  # type: ignore[arg-type]
     assert computed == pytest.approx(mean, abs=4 * error)
+
+
+def by_its_equation(k: float, h: float, shift: float) -> Callable[[np.ndarray], np.ndarray]:
+    """Run lengths of the upper sum by itself, from any sums, with scipy."""
+    nodes, weights = roots_legendre(60)
+    nodes, weights = h / 2 * (nodes + 1), h / 2 * weights
+
+    def moves(origin: np.ndarray) -> np.ndarray:
+        to_zero = norm.cdf(k - shift - origin)[:, None]
+        onward = norm.pdf(nodes - origin[:, None] + k - shift) * weights
+        return np.concatenate((to_zero, onward), axis=1)
+
+    states = np.concatenate(([0.0], nodes))
+    lengths = np.linalg.solve(np.eye(states.size) - moves(states), np.ones(states.size))
+    return lambda sums: 1 + moves(sums) @ lengths
+
+
+def followed_to_zero(k: float, h: float, shift: float, start: float) -> float:
+    """Run length of both sums from ``start``: followed together, each step with nodes of its own,
+    until one of them is 0, from where the other's and its own run length from 0 tell the rest."""
+    at, chances, both, total = np.array([start]), np.ones(1), 2 * start, 1.0
+    x, w = roots_legendre(60)
+    upper, lower = by_its_equation(k, h, shift), by_its_equation(k, h, -shift)
+    up, down = upper(np.zeros(1))[0], lower(np.zeros(1))[0]
+
+    def arriving(low: float, high: float) -> tuple[np.ndarray, np.ndarray]:
+        to, half = low + (high - low) / 2 * (x + 1), (high - low) / 2
+        return to, (chances @ norm.pdf(to - at[:, None] + k - shift)) * half * w
+
+    while chances.sum() > 1e-12:
+        both -= 2 * k
+        low = max(both, 0.0)
+        if low < h:
+            to, chance = arriving(low, h)
+            total += chance @ upper(to) * down / (up + down)
+            to, chance = arriving(both - h, both - low)
+            total += chance @ lower(both - to) * up / (up + down)
+        if both <= 0:
+            return float(total + arriving(both, 0.0)[1].sum() * up * down / (up + down))
+        at, chances = arriving(max(0.0, both - h), min(h, both))
+        total += chances.sum()
+    return float(total)
+
+
+@pytest.mark.parametrize(
+    ("k", "h", "shift", "head_start"),
+    [
+        (0.5, 5, 0, 0.9),
+        (0.5, 4, 0.7, 0.8),
+        (0.2, 8, 0, 0.7),
+        (0.2, 8, -0.3, 0.95),
+        (1.0, 3, 0, 0.99),
+        (1.0, 3, 0, 0.8),  # one step, and they are no longer both high
+        (0.05, 6, 0.1, 0.75),
+    ],
+)
+def test_two_sums_that_begin_high_against_following_both(
+    k: float, h: float, shift: float, head_start: float
+) -> None:
+    expected = followed_to_zero(k, h, shift, head_start * h)
+    assert run_length(k, h, shift, head_start=head_start) == pytest.approx(expected, rel=1e-7)
+
+
+def test_of_two_high_sums_one_may_never_signal() -> None:
+    """At a shift of 20 the lower sum's run length from 0 exceeds a float."""
+    assert run_length(0.5, 5, 20, head_start=0.9) == pytest.approx(1)
+    assert run_length(0.5, 5, -20, head_start=0.9) == pytest.approx(1)
+
+
+@settings(max_examples=25)
+@given(st.floats(0.05, 1.0), st.floats(1, 15), st.floats(-1, 1))
+def test_a_higher_head_start_signals_sooner(k: float, h: float, shift: float) -> None:
+    lengths = [run_length(k, h, shift, head_start=each) for each in (0.5, 0.55, 0.7, 0.9, 0.99)]
+    assert all(sooner < later for later, sooner in itertools.pairwise(lengths))
+    # On one side alone it takes longer than on both.
+    assert lengths[-1] < run_length(k, h, shift, direction="up", head_start=0.99)
 
 
 @pytest.mark.parametrize(

@@ -4,7 +4,7 @@ import math
 
 import numpy as np
 import pytest
-from hypothesis import given, settings
+from hypothesis import assume, given, settings
 from hypothesis import strategies as st
 
 from monitor.methods.runlength import shewhart
@@ -56,6 +56,10 @@ def simulated(
         (0.02, 2.2, 0, False, "both", 2.0),
         (0.02, 2.0, 1, False, "both", 2.0),
         (0.8, 2.2, 0, True, "both", 2.0),
+        (0.005, 2.5, 3, False, "up", 3.0),  # signalled long before the limits settle
+        (0.02, 2.5, 2, False, "both", 2.0),
+        (0.2, 2.5, -2, False, "down", 2.0),
+        (0.4, 2.5, 1, False, "both", 2.5),
     ],
 )
 def test_clipped_values_against_simulation(
@@ -71,6 +75,31 @@ def test_clipped_values_against_simulation(
         clip=clip,
     )
     assert computed == pytest.approx(mean, abs=3 * error + 0.03 * mean)
+
+
+@settings(max_examples=20, deadline=None)
+@given(
+    st.floats(0.01, 1),
+    st.floats(2, 7),
+    st.floats(2, 4),
+    st.sampled_from(["both", "up"]),
+    st.booleans(),
+    st.floats(0, 0.2),
+)
+def test_the_inverse_gives_back_the_interval_of_clipped_values(
+    lam: float, log10: float, clip: float, direction: str, asymptotic: bool, ignored: float
+) -> None:
+    """Or, where the run length jumps past it, the width from which on it is longer."""
+    wanted = 10**log10
+    options = {"direction": direction, "asymptotic": asymptotic, "clip": clip}
+    try:
+        width = width_for(lam, wanted, ignored, **options)  # type: ignore[arg-type]
+    except ValueError:
+        assume(False)
+    length = run_length(lam, width, ignored, **options)  # type: ignore[arg-type]
+    before = run_length(lam, width * (1 - 1e-5), ignored, **options)  # type: ignore[arg-type]
+    assert length > 0.998 * wanted
+    assert length < 1.002 * wanted or before < wanted
 
 
 def test_a_wide_clip_changes_nothing() -> None:
@@ -148,7 +177,7 @@ def test_the_inverse_gives_back_the_interval(
 @settings(max_examples=15)
 @given(
     st.floats(0.004, 0.03),
-    st.floats(4, 12),
+    st.floats(2, 12),
     st.sampled_from(["both", "up"]),
     st.booleans(),
     st.floats(0, 0.2),

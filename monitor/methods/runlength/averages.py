@@ -8,11 +8,12 @@ from __future__ import annotations
 import math
 from collections.abc import Iterator
 from dataclasses import dataclass, replace
+from itertools import pairwise
 from typing import Self
 
 import numpy as np
 
-from monitor.methods.normal import Array, density, sf_array, sf_within
+from monitor.methods.normal import Array, density, sf_array
 from monitor.methods.quadrature import gauss_legendre
 from monitor.methods.runlength.chains import Side, steps_to_absorption
 
@@ -29,6 +30,9 @@ _SETTLED = 2e-3
 
 _ALIKE = 5
 """Of steps up to the i-th the last i/5 are taken alike: the variance grows ever more slowly."""
+
+_AHEAD = 0.75
+"""Where more nodes are needed, there are enough for values that add so much of what they do now."""
 
 _NEVER = -650.0
 """Of a logarithm: the processor is slow with numbers smaller than about e to the -700."""
@@ -91,20 +95,22 @@ class Average:
         return moves
 
     def settling(self, lam: float) -> Iterator[tuple[Array, int]]:
-        """Moves while exact limits settle, backwards: from those that end at :attr:`nodes` to those
-        of the first point, which have one row, the start; and how many steps each do for.
+        """Moves while exact limits settle: from those of the first point, which have one row, the
+        start, to those that end at :attr:`nodes`; and how many steps each do for.
 
         In units of a standard error that is small at first a single value adds much, and few nodes
         are enough. Steps that differ little are taken alike, so that they take the average's own
         mean and variance just as far together.
         """
         decay = math.log1p(-lam) if lam < 1 else -math.inf
-        grid = self
-        last = max(1, math.ceil(math.log(_SETTLED) / (2 * decay)))
-        while last > 1:
-            steps = 1 + last // _ALIKE
-            first, last_variance = last - steps, -math.expm1(2 * last * decay)
-            first_variance = -math.expm1(2 * first * decay)
+        ends = [max(1, math.ceil(math.log(_SETTLED) / (2 * decay)))]
+        while ends[-1] > 1:
+            ends.append(ends[-1] - 1 - ends[-1] // _ALIKE)
+        grid = self if len(ends) == 1 else self._resolving(1.0)
+        yield replace(grid, shift=self.shift).moves(np.zeros(1), 0.0, 1.0), 1
+        for first, last in pairwise(reversed(ends)):
+            steps, origin = last - first, grid.nodes
+            first_variance, last_variance = (-math.expm1(2 * i * decay) for i in (first, last))
             kept = math.exp(steps * decay) * math.sqrt(first_variance / last_variance)
             keep = kept ** (1 / steps)
             add = math.sqrt(1 - keep * keep)
@@ -114,15 +120,16 @@ class Average:
                 for i, variance in ((first, first_variance), (last, last_variance))
             )
             share = (last_mean - kept * first_mean) * (1 - keep) / (add * (1 - kept))
+            if last == ends[0]:
+                grid = self
+            elif self._resolving(add).nodes.size > grid.nodes.size:
+                grid = self._resolving(max(self.add, _AHEAD * add))
             grid = replace(grid, shift=self.shift * share)
-            coarse = grid._resolving(add)
-            if 4 * coarse.nodes.size <= 3 * grid.nodes.size:
-                yield grid.moves(coarse.nodes, keep, add), 1
-                grid, steps = coarse, steps - 1
+            if grid.nodes.size != origin.size:
+                yield grid.moves(origin, keep, add), 1
+                steps -= 1
             if steps:
                 yield grid.moves(grid.nodes, keep, add), steps
-            last = first
-        yield replace(grid, shift=self.shift).moves(np.zeros(1), 0.0, 1.0), 1
 
     def settled(self) -> Array:
         """Run lengths with settled limits, from each node and, last, from 0."""
@@ -162,18 +169,23 @@ class ClippedAverage(Average):
         nodes = _evenly(self.low, self.high, add, self.clip, self.coarser)
         return replace(self, nodes=nodes, weights=np.ones(nodes.size))
 
+    def moves(self, y: Array, keep: float, add: float) -> Array:
+        """Probabilities of moving from each of ``y`` to each node, shape (y, nodes): exact ones."""
+        return self._relative(y, keep, add)
+
     def _relative(self, y: Array, keep: float, add: float) -> Array:
         step = (self.high - self.low) / (self.nodes.size - 1)
         at = (self.nodes - keep * y[:, None]) / add
-        above, below = add * self._mean_above(at), add * self._mean_below(at)
-        upper = at[:, 1:-1] > self.shift
+        above, below = _mean_distances(at, self.shift, self.clip)
         moves = np.empty(at.shape)
-        moves[:, 1:-1] = np.where(upper, np.diff(above, 2), np.diff(below, 2)) / step
-        moves[:, 0] = (below[:, 1] - below[:, 0]) / step
-        moves[:, -1] = (above[:, -2] - above[:, -1]) / step - self._beyond(at[:, -1], self.shift)
+        moves[:, 1:-1] = np.where(at[:, 1:-1] > self.shift, _bends(above), _bends(below))
+        moves[:, 0] = below[:, 1] - below[:, 0]
+        moves[:, -1] = above[:, -2] - above[:, -1]
+        moves *= add / step
+        moves[:, -1] -= self._beyond(at[:, -1], self.shift)
         if not self.walled:
             moves[:, 0] -= self._beyond(-at[:, 0], -self.shift)
-        return np.maximum(moves, 0.0)
+        return np.maximum(moves, 0.0, out=moves)
 
     def absorbed(self, y: Array, keep: float, add: float) -> Array:
         """Probabilities of a signal from each of ``y``, shape (y,)."""
@@ -184,27 +196,29 @@ class ClippedAverage(Average):
 
     def _beyond(self, x: Array, shift: float) -> Array:
         """P(a value > x); towards the other side with both signs turned."""
-        tail = sf_within(x - shift, -self.clip - shift, self.clip - shift)
-        return np.where(x < -self.clip, 1.0, np.where(x >= self.clip, 0.0, tail))
-
-    def _mean_above(self, x: Array) -> Array:
-        """E max(value − x, 0)."""
-        return _limited_above(x, self.shift, self.clip)
-
-    def _mean_below(self, x: Array) -> Array:
-        """E max(x − value, 0)."""
-        return _limited_above(-x, -self.shift, self.clip)
+        beyond = np.where(x < -self.clip, 1.0, 0.0)
+        inside = (x >= -self.clip) & (x < self.clip)
+        beyond[inside] = sf_array(x[inside] - shift)
+        return beyond
 
 
-def _limited_above(x: Array, shift: float, clip: float) -> Array:
-    """E max(X − x, 0) of a normal X about ``shift`` limited to ± ``clip``: ∫ P(X > t) dt from x."""
-    inside = np.abs(x) < clip
-    above = np.zeros(x.shape)
-    above[inside] = _mean_excess(x[inside] - shift) - _mean_excess(np.array([clip - shift]))
-    whole = _mean_excess(np.array([-clip - shift, clip - shift]))
-    low = x <= -clip
-    above[low] = whole[0] - whole[1] - clip - x[low]
-    return np.maximum(above, 0.0)
+def _mean_distances(x: Array, shift: float, clip: float) -> tuple[Array, Array]:
+    """E max(X − x, 0) and E max(x − X, 0) of a normal X about ``shift`` limited to ± ``clip``.
+
+    The smaller one has the precision of a tail; their difference is E X − x.
+    """
+    beyond, short = _mean_excess(np.array([clip - shift, clip + shift]))
+    off = x - (shift - beyond + short)
+    high = x > min(max(shift, -clip), clip)
+    smaller, inside = np.zeros(x.shape), np.abs(x) <= clip
+    tail = _mean_excess(np.abs(x[inside] - shift))
+    smaller[inside] = np.maximum(tail - np.where(high[inside], beyond, short), 0.0)
+    return np.where(high, smaller, smaller - off), np.where(high, smaller + off, smaller)
+
+
+def _bends(values: Array) -> Array:
+    """Second differences along rows."""
+    return np.asarray(values[:, 2:] - 2 * values[:, 1:-1] + values[:, :-2])
 
 
 def _mean_excess(x: Array) -> Array:

@@ -6,12 +6,11 @@ Knows sums of normal values. Must not know sigma, streams or alerts.
 from __future__ import annotations
 
 import math
-from collections.abc import Callable
 
 import numpy as np
 
 from monitor.methods.normal import Array, density, sf, sf_array, sf_within
-from monitor.methods.quadrature import gauss_legendre
+from monitor.methods.quadrature import gauss_legendre, upto
 from monitor.methods.runlength.chains import Side, either, steps_to_absorption
 from monitor.methods.runlength.roots import increasing_root
 from monitor.methods.runlength.waits import Wait, chain
@@ -22,15 +21,20 @@ BOTH_HIGH = 0.5
 """Of a head start: above, the two sums may both be high at first."""
 
 _MUCH = 1e8
-"""Steps that two sums are followed together, times the most moves in each; half a second or so to
-compute."""
+"""Steps that two sums are followed together, times the most moves in each; a tenth of a second or
+so to compute."""
+
+_STAGE_STEPS, _STAGE_WIDTH, _OUTER = 64, 2.0, 16
+"""Two sums are followed with the same nodes for so many steps at most, until there is so much more
+room on either side, which so many of them are for."""
 
 _SELDOM = 0.75
 """Run length from the start over that from 0, from which on two sums hardly ever both come high."""
 
 _NEGLIGIBLE = 1e-9
 
-_ABOVE = 1 + 1e-8
+_JUMP = 1e-8
+"""Of h, where the run length of clipped values jumps."""
 
 
 def run_length(
@@ -60,18 +64,25 @@ def run_length(
         return _one_side(k, h, shift if direction == "up" else -shift, head_start, clip)[1]
     up = _one_side(k, h, shift, head_start, clip)
     down = up if shift == 0 else _one_side(k, h, -shift, head_start, clip)
-    if head_start <= BOTH_HIGH:
+    start = head_start * h
+    if start <= h / 2 + k:
         return either(up, down)
-    # They fall by k a step, and wander as far as h in about h² steps.
-    steps = min(h * h, head_start * h / max(k, 1e-9))
-    if clip is None and steps * _nodes(h) ** 2 < _MUCH:
-        return _both_high(k, h, shift, head_start * h, up[0], down[0])
-    if min(start / zero for zero, start in (up, down)) < _SELDOM:
+    if clip is None and _steps_together(k, h, start) * _nodes(h) ** 2 < _MUCH:
+        return _both_high(k, h, shift, start, up[0], down[0])
+    if min(begun / zero for zero, begun in (up, down)) < _SELDOM:
         raise ValueError(
             f"two sums from a head start of {head_start:g}: only up to {BOTH_HIGH:g} their run "
             "length can be computed with a clip or so small a k"
         )
     return either(up, down)
+
+
+def _steps_together(k: float, h: float, start: float) -> float:
+    """About how many steps it takes two sums to fall from ``start`` to half of h, or hardly ever
+    to have got so far: within ±w a share of π²/8w² leaves a step."""
+    limit = h - start + 1
+    leaves = max(1 / limit - 20 * k, 1e-9)
+    return min((start - h / 2) / max(k, 1e-9), 20 * limit / leaves)
 
 
 def _nodes(h: float) -> int:
@@ -82,58 +93,56 @@ def _both_high(k: float, h: float, shift: float, start: float, up: float, down: 
     """Run length of two sums that both begin at ``start``; ``up`` and ``down`` are those of each by
     itself, from 0.
 
-    Until one of them is 0 they fall together by 2k a step, so that one tells the other; from then
-    on they are never both high.
+    While both are above 0 they fall together by 2k a step. Half their difference wanders by itself
+    between two limits, which widen by k a step, until neither can signal before the other is 0:
+    from then on :func:`either` is exact.
     """
-    if math.inf in (up, down):
-        return math.inf
     inverse = 1 / up + 1 / down
-    together, total = 2 * start, 1.0
-    values, chances = np.array([start]), np.ones(1)
-
-    def arriving(at: Array, weights: Array) -> Array:
-        """The probability that the upper sum comes to each of ``at``."""
-        moves = density(at[None, :] - values[:, None] - (shift - k))
-        return np.asarray(chances @ moves) * weights
-
-    def between(low: float, high: float) -> tuple[Array, Array]:
-        # Few different numbers of them: they take long to find.
-        nodes, quadrature = gauss_legendre(16 * math.ceil(1 + 0.1 * (high - low)))
-        half = (high - low) / 2
-        return low + half * (nodes + 1), half * quadrature
-
-    from_up, from_down = _from(k, h, shift), _from(k, h, -shift)
-    while True:
-        together -= 2 * k
-        least = max(together, 0.0)
-        if least < h:
-            at, weights = between(least, h)
-            # The other sum at 0: L(u, 0) = L(u)·L'(0) / (L(0) + L'(0)).
-            total += float(arriving(at, weights) @ from_up(at)) / (up * inverse)
-            total += float(arriving(together - at, weights) @ from_down(at)) / (down * inverse)
-        if together <= 0:
-            at, weights = between(together, 0.0)
-            return total + float(arriving(at, weights).sum()) / inverse
-        at, weights = between(max(0.0, together - h), min(h, together))
-        values, chances = at, arriving(at, weights)
-        both = float(chances.sum())
-        total += both
+    if inverse == 0:
+        return math.inf
+    stage = max(1, min(_STAGE_STEPS, int(_STAGE_WIDTH / max(k, 1e-9))))
+    ends, width = 2 * np.arange(stage) / stage - 1, stage * k
+    outer_nodes = width / 2 * (gauss_legendre(_OUTER)[0] + 1)
+    outer_weights = width / 2 * upto(_OUTER, ends)
+    mean, total = start, 1.0
+    at, arriving = np.zeros(1), np.ones(1)
+    while mean > h / 2 + k:
+        # What is inside the limits at the stage's first step, and what they widen by until its end.
+        limit, before = h - mean + k, at
+        # Few different numbers of nodes: they take long to find.
+        nodes, weights = gauss_legendre(16 * math.ceil(1 + 0.2 * limit))
+        outer = limit + outer_nodes
+        at = np.concatenate((-outer, limit * nodes, outer))
+        inner_weights = np.broadcast_to(limit * weights, (stage, nodes.size))
+        all_weights = np.concatenate((outer_weights, inner_weights, outer_weights), axis=1)
+        chances = arriving @ density(at[None, :] - before[:, None] - shift)
+        moves = density(at[None, :] - at[:, None] - shift)
+        for now in all_weights:
+            arriving = chances * now
+            both = float(arriving.sum())
+            mean -= k
+            if mean <= h / 2 + k:
+                break
+            total += both
+            chances = arriving @ moves
         if both / inverse < _NEGLIGIBLE * total:
             return total
+    # As either has it: times that from (0, 0), the upper sum's share plus the lower's less 1.
+    from_up = _share(k, h, shift, up, mean + at)
+    from_down = _share(k, h, -shift, down, mean - at)
+    return total + float(arriving @ (from_up + from_down - 1)) / inverse
 
 
-def _from(k: float, h: float, shift: float) -> Callable[[Array], Array]:
-    """Run lengths of the upper sum from any others, by its integral equation."""
+def _share(k: float, h: float, shift: float, zero: float, sums: Array) -> Array:
+    """Run lengths of the upper sum from each of ``sums``, by its integral equation, as shares of
+    that from 0."""
+    if zero == math.inf:
+        return np.ones(sums.size)
     moves, absorbed = _moves(k, h, shift, 0.0)
-    sums = np.concatenate(([0.0], h / 2 * (gauss_legendre(absorbed.size - 2)[0] + 1)))
-    weights = np.concatenate(([0.0], h / 2 * gauss_legendre(absorbed.size - 2)[1]))
     lengths = steps_to_absorption(moves, absorbed)[:-1]
-
-    def found(at: Array) -> Array:
-        onward = density(sums[None, :] - at[:, None] - (shift - k)) * weights
-        return np.asarray(1 + sf_array(at + shift - k) * lengths[0] + onward @ lengths)
-
-    return found
+    nodes, weights = gauss_legendre(lengths.size - 1)
+    moves = density(h / 2 * (nodes + 1) - sums[:, None] - (shift - k)) * (h / 2 * weights)
+    return np.asarray(1 + sf_array(sums + shift - k) * lengths[0] + moves @ lengths[1:]) / zero
 
 
 def wait(
@@ -179,7 +188,7 @@ def decision_interval(
     if clip is None:
         return increasing_root(excess, guess, slope, 1e-7, _HIGHEST)
     # A jump is where clipped values alone add up to h; rounding must not put h below their sum.
-    return _ABOVE * increasing_root(excess, guess, slope, 1e-5, _HIGHEST, jumps=True)
+    return (1 + _JUMP) * increasing_root(excess, guess, slope, 1e-5, _HIGHEST, jump=_JUMP)
 
 
 def _siegmund_interval(drift: float, wanted: float) -> float:

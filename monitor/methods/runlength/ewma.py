@@ -6,19 +6,30 @@ Knows weighted averages of normal values. Must not know sigma, streams or alerts
 from __future__ import annotations
 
 import math
+from functools import cache
 
 import numpy as np
 
-from monitor.methods.normal import density, sf, upper_quantile
+from monitor.methods.normal import Array, density, sf, upper_quantile
 from monitor.methods.runlength.averages import Average, ClippedAverage
 from monitor.methods.runlength.chains import Side
 from monitor.methods.runlength.roots import increasing_root
 from monitor.methods.runlength.waits import Wait, chain
 
 _SLOW = 0.03
-"""A weight of which exact limits settle so slowly that a clip tells the same before and after: it
-is counted with settled limits alone."""
+"""A weight of which exact limits settle so slowly that clipped values make up normal averages."""
 
+_NEAR = 1.0
+"""A shift up to which exact limits make a small difference to clipped values."""
+
+_NEGLIGIBLE = 1e-9
+"""Share of a run length that is left out."""
+
+_CLIPPED_TOLERANCE = 1e-3
+"""Of a run length of clipped values, whose own error is larger."""
+
+_JUMP = 1e-6
+"""Of a width, where their run length jumps."""
 
 _LEAST = 0.003
 """Weight worth trying: at less, hundreds of points are needed to see any shift."""
@@ -36,33 +47,43 @@ def run_length(
     """Average run length of an EWMA of weight ``lam`` with limits ``width`` of its standard errors.
 
     S. V. Crowder 1987's integral equation; with exact limits (J. M. Lucas & M. S. Saccucci 1990) it
-    is stepped back from where they have settled. ``clip`` limits each value. Relative error below
-    2e-3 with exact limits, else 1e-5; with a ``clip``, it and the width 2 or more, 3e-2.
+    is stepped on until they have settled. ``clip`` limits each value. Relative error below 2e-3
+    with exact limits, else 1e-5; with a ``clip``, it and the width 2 or more, 3e-2 (5e-2 where
+    shifts above 1 are signalled within a few points).
     Check: λ 0.1, width 2.814, asymptotic: 499.6 at shift 0, 10.33 at 1.
     """
     off = -shift if direction == "down" else shift
     if clip is None:
         return _length(Average.of(lam, width, off, direction), lam, asymptotic)
-    if not asymptotic and lam < _SLOW:
-        settled = run_length(lam, width, shift, direction=direction, asymptotic=True, clip=clip)
-        return settled * _settling(lam, width, shift, direction, clip)
+    near_the_mean = abs(shift) <= _NEAR
     # The cells' error falls with the square of their number: extrapolate from two (Richardson).
     rough, close = (
         ClippedAverage.limited(lam, width, off, direction, clip, each) for each in (2, 1)
     )
-    far, near = _length(rough, lam, asymptotic), _length(close, lam, asymptotic)
+    far, near = (_length(each, lam, asymptotic or near_the_mean) for each in (rough, close))
     if math.inf in (far, near):
         return near
     finer = (close.nodes.size - 1) / (rough.nodes.size - 1)
-    return near * math.pow(near / far, 1 / (finer * finer - 1))
+    length = near * math.pow(near / far, 1 / (finer * finer - 1))
+    if asymptotic or not near_the_mean:
+        return length
+    return length * _settling(lam, width, shift, direction, clip)
 
 
 def _settling(lam: float, width: float, shift: float, direction: Side, clip: float) -> float:
-    """What exact limits do to the run length of clipped values that settled ones have: the same as
-    with normal values of their mean and spread, as many values make up an average."""
-    mean, sd = _clipped(shift, clip)
-    exact = run_length(lam, width / sd, mean / sd, direction=direction)
-    return exact / run_length(lam, width / sd, mean / sd, direction=direction, asymptotic=True)
+    """What exact limits do to the run length of clipped values that settled ones have.
+
+    A rough computation tells it; where they settle slowly, normal values of the same mean and
+    spread, as many values make up an average then.
+    """
+    off = -shift if direction == "down" else shift
+    if lam < _SLOW:
+        mean, sd = _clipped(off, clip)
+        average = Average.of(lam, width / sd, mean / sd, direction)
+    else:
+        average = ClippedAverage.limited(lam, width, off, direction, clip, 2)
+    settled = average.settled()
+    return _exact_length(average, lam, settled) / float(settled[-1])
 
 
 def _clipped(shift: float, clip: float) -> tuple[float, float]:
@@ -75,16 +96,24 @@ def _clipped(shift: float, clip: float) -> tuple[float, float]:
 
 
 def _length(average: Average, lam: float, asymptotic: bool) -> float:
-    if asymptotic:
-        return float(average.settled()[-1])
-    onward = average.settled()[:-1]
-    if not np.isfinite(onward).all():
+    settled = average.settled()
+    return float(settled[-1]) if asymptotic else _exact_length(average, lam, settled)
+
+
+def _exact_length(average: Average, lam: float, settled: Array) -> float:
+    """With exact limits; ``settled`` are the average's run lengths with settled ones."""
+    if not np.isfinite(settled).all():
         return math.inf
+    states, total, longest = np.ones(1), 1.0, settled.max()
     for moves, steps in average.settling(lam):
+        passed = np.zeros(moves.shape[1])
         for _ in range(steps):
-            onward = moves @ onward
-            onward += 1
-    return float(onward[0])
+            states = states @ moves
+            passed += states
+        total, left = total + float(passed.sum()), float(states.sum())
+        if left * longest < _NEGLIGIBLE * total:
+            return total
+    return total - left + float(states @ settled[:-1])
 
 
 def wait(
@@ -107,7 +136,7 @@ def wait(
     asymptotic = asymptotic or (clip is not None and lam < _SLOW)
     first = [(average.moves(np.zeros(1), 0.0, average.add), 1)]
     states = np.ones(1)
-    for moves, steps in first if asymptotic else reversed(list(average.settling(lam))):
+    for moves, steps in first if asymptotic else average.settling(lam):
         for _ in range(steps):
             states = states @ moves
             yield float(states.sum())
@@ -124,32 +153,47 @@ def width_for(
     clip: float | None = None,
 ) -> float:
     """The width whose run length at ``shift`` is ``wanted``, to 1e-7 of it
-    (2e-5 with exact limits, 1e-3 with ``clip``). Check, asymptotic, at shift 0: λ 0.1 and 500 give
+    (2e-5 with exact limits, 2e-3 with ``clip``). Check, asymptotic, at shift 0: λ 0.1 and 500 give
     2.814. ValueError where no width has.
     """
+    if clip is not None:
+        return _clipped_width(lam, wanted, shift, direction, asymptotic, clip)
+    if asymptotic:
+        return _settled_width(lam, wanted, shift, direction, 1e-7)
+    return _exact_width(lam, wanted, shift, direction)
 
-    if clip is None:
-        if asymptotic:
-            return _settled_width(lam, wanted, shift, direction, 1e-7)
-        return _exact_width(lam, wanted, shift, direction)
 
-    def excess(width: float) -> float:
-        length = run_length(
-            lam, width, shift, direction=direction, asymptotic=asymptotic, clip=clip
-        )
-        return math.log(length / wanted)
-
-    settled = _settled_width(lam, wanted, shift, direction, 1e-3)
+def _clipped_width(
+    lam: float, wanted: float, shift: float, direction: Side, asymptotic: bool, clip: float
+) -> float:
     # Values at the clip for ever take the average to it.
     most = clip * math.sqrt((2 - lam) / lam)
-    guess = min(settled, 0.98 * most)
-    if not asymptotic and lam < _SLOW:
-        # That ratio hardly changes, and costs much to evaluate.
-        wanted, asymptotic = wanted / _settling(lam, guess, shift, direction, clip), True
-    found = increasing_root(excess, guess, guess, 1e-3, most, jumps=True)
-    if excess(found) == math.inf:
+
+    @cache
+    def length(width: float, settled: bool) -> float:
+        return run_length(lam, width, shift, direction=direction, asymptotic=settled, clip=clip)
+
+    def found(settled: bool, target: float, guess: float, slope: float) -> float:
+        return increasing_root(
+            lambda width: math.log(length(width, settled) / target),
+            *(guess, slope, _CLIPPED_TOLERANCE, most),
+            jump=_JUMP,
+        )
+
+    # Many values make up an average, which is nearly as if they were normal then.
+    mean, sd = _clipped(shift, clip)
+    guess = min(sd * _settled_width(lam, wanted, mean / sd, direction, 1e-3), 0.98 * most)
+    longer, settled = wanted, length(guess, True)
+    if not asymptotic and settled < math.inf:
+        # Exact limits cost about as many points at any width.
+        longer += settled * (1 - _settling(lam, guess, shift, direction, clip))
+    width = found(True, longer, guess, guess)
+    if abs(longer - wanted) > 2 * _CLIPPED_TOLERANCE * wanted:
+        slope = _slope(width - _centre(lam, shift, direction))
+        width = found(False, wanted, width, slope)
+    if length(width, True) == math.inf:
         raise ValueError("no setting gives that run length")
-    return found
+    return width
 
 
 def _exact_width(lam: float, wanted: float, shift: float, direction: Side) -> float:
@@ -157,12 +201,14 @@ def _exact_width(lam: float, wanted: float, shift: float, direction: Side) -> fl
         return math.log(run_length(lam, width, shift, direction=direction) / wanted)
 
     settled = _settled_width(lam, wanted, shift, direction, 5e-6)
-    change = excess(settled)
-    if abs(change) < 2e-3:
-        # Exact limits cost more to evaluate, and change as much at widths so near each other.
-        return _settled_width(lam, wanted * math.exp(-change), shift, direction, 5e-6, settled)
-    slope = _slope(settled - _centre(lam, shift, direction))
-    return increasing_root(excess, settled, slope, 1e-5)
+    short = -excess(settled)
+    if abs(short) < 1.2e-5:
+        return settled
+    # Exact limits cost about as many points at any width.
+    longer = wanted * (1 - math.expm1(-short))
+    near = 5e-6 if abs(short) < 0.05 else 1e-3
+    guess = _settled_width(lam, longer, shift, direction, near, settled)
+    return increasing_root(excess, guess, short / (guess - settled), 1e-5)
 
 
 def _settled_width(

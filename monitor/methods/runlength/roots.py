@@ -8,9 +8,6 @@ from __future__ import annotations
 import math
 from collections.abc import Callable
 
-_CLOSE = 1e-8
-"""Of a jump, on either side of it."""
-
 
 def increasing_root(
     f: Callable[[float], float],
@@ -19,21 +16,21 @@ def increasing_root(
     tolerance: float = 1e-7,
     most: float = math.inf,
     *,
-    jumps: bool = False,
+    jump: float = 0.0,
 ) -> float:
     """The x > 0 with |f(x)| ≤ ``tolerance``, for an increasing ``f``.
 
     ``guess`` is a positive first try, ``slope`` roughly how fast f rises there. The secant method,
     kept inside the bracket that the signs of f have shown: three or four evaluations where f is
-    nearly straight, as log run lengths are. Where f ``jumps`` past zero, the point just beyond.
-    ValueError where f has no root up to ``most``.
+    nearly straight, as log run lengths are. Where f jumps past zero, the point just beyond, within
+    a share ``jump`` of it. ValueError where f has no root up to ``most``.
     """
     low, high = 0.0, math.inf
     x, value = guess, f(guess)
     for _ in range(100):
         if abs(value) <= tolerance:
             return x
-        if jumps and low > 0 and high - low < _CLOSE * high:
+        if low > 0 and high - low < jump * high:
             return high
         if value < 0:
             low = x
