@@ -9,6 +9,10 @@ import os
 from collections.abc import Callable, Iterator
 from pathlib import Path
 
+# Before numpy is loaded: where tests run side by side, threads of its matrix products wait for each
+# other a hundred times as long as they compute.
+os.environ.setdefault("OPENBLAS_NUM_THREADS", "1")
+
 import hypothesis
 import pytest
 from brokers import Broker, Client, Daemon, Embedded, Mosquitto, mosquitto_path
