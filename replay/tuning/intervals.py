@@ -44,7 +44,7 @@ def extrapolated(
         return counted, "", counted.interval.low
     if judged.coarse:
         return None, COARSE, 0.0
-    if not tail.exponential:
+    if judged.wild or not tail.exponential:
         return None, NOT_EXPONENTIAL, 0.0
     factor = tail.factor(interval)
     seconds = interval / found.rate

@@ -7,10 +7,11 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass
+from typing import TypeGuard
 
 import numpy as np
 
-from monitor.plan import ByCount, CusumPlan, EwmaPlan, Scheme, ShewhartPlan
+from monitor.plan import ByCount, CusumPlan, EwmaPlan, RulePlan, Scheme, ShewhartPlan
 from replay.readings import Values
 from replay.tuning import tails
 from replay.tuning.array_cusum import CusumPath
@@ -23,6 +24,7 @@ from replay.tuning.paths import Path, Peaks, Signals
 from replay.tuning.tails import PooledPeaks, TailFit
 
 _ROUNDS = 8
+_BY_ITSELF = 0.8  # of its limit
 _MOST = 5.0
 """Of an interval's logarithm, standard deviations open: beyond, a recording proves nothing."""
 
@@ -33,7 +35,8 @@ class Judged:
 
     ``fitted`` and ``proved`` are the tails of the two parts, None where peaks are too few.
     ``signals`` are those of the whole recording, one entry a stream. ``coarse``: the limit is one
-    of single points that lie on too few values for their tail to be drawn on.
+    of single points that lie on too few values for their tail to be drawn on. ``wild``: nothing
+    clips, and the furthest point takes a sum to its limit, or nearly, by itself.
     """
 
     candidate: Candidate
@@ -42,6 +45,7 @@ class Judged:
     proved: TailFit | None
     signals: tuple[Signals, ...]
     coarse: bool = False
+    wild: bool = False
 
 
 def family(candidate: Candidate) -> Scheme:
@@ -50,9 +54,11 @@ def family(candidate: Candidate) -> Scheme:
     return with_limit(candidate.scheme, 1.0)
 
 
-def judge(grouped: Grouped, members: Sequence[Candidate], interval: float) -> list[Judged]:
+def judge(
+    grouped: Grouped, members: Sequence[Candidate], interval: float, wildest: float = 0.0
+) -> list[Judged]:
     """Every member of one family; ``interval`` is the promise in subgroups of all streams, of which
-    each has its part.
+    each has its part; ``wildest`` as :func:`furthest` has it.
 
     A calibrated limit is set so far beyond that part that the last part may be expected to prove
     it: by what 90 % leaves open of both parts' estimates. Where no tail can be fitted a calibrated
@@ -83,6 +89,7 @@ def judge(grouped: Grouped, members: Sequence[Candidate], interval: float) -> li
                 tuple(each.signals(at) for each in paths),
                 # A step further, normal points are fewer by a factor of exp(limit · step).
                 coarse=at * step > 1.0,
+                wild=adds_up(scheme) and wildest - scheme.k > _BY_ITSELF * at,
             )
         )
     return found
@@ -117,6 +124,20 @@ def in_proof(grouped: Grouped, signals: Sequence[Signals]) -> list[Signals]:
         counts = (each.at >= stream.prove) & ~stream.left_out[each.at]
         found.append(Signals(each.at[counts], each.up[counts]))
     return found
+
+
+def adds_up(scheme: Scheme) -> TypeGuard[CusumPlan]:
+    """Whether it is a CUSUM that one wild point may ring by itself."""
+    return isinstance(scheme, CusumPlan) and scheme.chart != "variance" and scheme.clip is None
+
+
+def furthest(grouped: Grouped) -> float:
+    """The furthest point of the last part, in standard errors, where points have heavy tails; else
+    0. A sum of such points has a heavy tail as well, beyond what its peaks so far show."""
+    scheme = ShewhartPlan("mean", 1.0, (RulePlan("outside", 1.0),))
+    peaks = [path(scheme, stream).peaks() for stream in grouped.streams]
+    points = _tail(grouped, peaks, scheme, 1.0, 1.0, proof=True)
+    return float(points.levels[0]) if points is not None and points.heavy else 0.0
 
 
 def _step(scheme: Scheme, grouped: Grouped) -> float:

@@ -65,12 +65,20 @@ class TailFit:
     @property
     def exponential(self) -> bool:
         """Whether the excesses look so (J. del Castillo, J. Daoudi & R. Lockhart 2014, Scandinavian
-        Journal of Statistics 41, judge by the coefficient of variation as well). What nothing clips
-        must fall off as fast besides as it does where readings are normal, with the ``usual``
-        scale: a hundred peaks of a heavy tail may well look exponential, and go on heavier."""
-        doubt = 2.5 / math.sqrt(self.above)
-        heavy = self.usual is not None and self.scale > self.usual * (1.0 + doubt)
-        return abs(self.variation - 1.0) <= doubt and not heavy
+        Journal of Statistics 41, judge by the coefficient of variation as well), and are not
+        :attr:`heavy`: a hundred peaks of a heavy tail may well look exponential, and go on
+        heavier."""
+        return abs(self.variation - 1.0) <= self._doubt and not self.heavy
+
+    @property
+    def heavy(self) -> bool:
+        """Whether what nothing clips falls off more slowly than where readings are normal, with the
+        ``usual`` scale."""
+        return self.usual is not None and self.scale > self.usual * (1.0 + self._doubt)
+
+    @property
+    def _doubt(self) -> float:
+        return 2.5 / math.sqrt(self.above)
 
     def interval(self, level: float) -> float:
         """Subgroups from one passing of ``level`` to the next; inf where no float holds it."""

@@ -24,7 +24,7 @@ from replay.tuning.array_ewma import recurrence
 from replay.tuning.candidates import Request, candidates, limit
 from replay.tuning.grouped import Grouped, group
 from replay.tuning.intervals import COARSE, NOT_EXPONENTIAL
-from replay.tuning.judging import Judged, judge, path
+from replay.tuning.judging import Judged, furthest, judge, path
 from replay.tuning.preparing import prepare
 from replay.tuning.result import Setting
 from replay.tuning.showing import Place, setting
@@ -107,7 +107,7 @@ def told(values: Values, promise: float, request: Request | None = None) -> list
     return [
         Told(judged, setting(judged, held.ours, 0, found, place, ()))
         for each in tried
-        for judged in judge(held.ours, [each], held.interval)
+        for judged in judge(held.ours, [each], held.interval, furthest(held.ours))
     ]
 
 
@@ -262,6 +262,17 @@ def test_heavy_and_coarse_single_points_are_refused(process: Process, why: str) 
         assert found.setting.extrapolated is None
         assert found.setting.no_interval == why
         assert not found.setting.meets
+
+
+def test_a_sum_of_heavy_points_is_refused_unless_they_are_clipped() -> None:
+    rng = np.random.default_rng(3)
+    request = Request(1.0, (1.0,), kinds=("cusum",), cusums=((0.5, 11.0),))
+    for _ in range(10):
+        clipped, whole = told(heavy(rng, SUBGROUPS), 0.5, request)
+        assert clipped.setting.no_interval != NOT_EXPONENTIAL
+        assert whole.setting.no_interval == NOT_EXPONENTIAL
+        *_, whole = told(independent(rng, SUBGROUPS), 0.5, request)
+        assert whole.setting.no_interval != NOT_EXPONENTIAL
 
 
 @pytest.mark.parametrize(
