@@ -117,8 +117,12 @@ def test_questions_in_the_readers_order(
 
 
 def test_an_interval_by_the_count_is_marked(
-    capsys: pytest.CaptureFixture[str], config: str, week: str
+    capsys: pytest.CaptureFixture[str],
+    monkeypatch: pytest.MonkeyPatch,
+    config: str,
+    week: str,
 ) -> None:
+    monkeypatch.setenv("COLUMNS", "200")
     assert main(["tune", config, week, *ASKED, "--kind", "cusum", "--cusum", "0.5,2"]) == 0
     rows = capsys.readouterr().out.splitlines()
     (often,) = [row for row in rows if "cusum 0.5,2" in row and "k 0.5" in row]
