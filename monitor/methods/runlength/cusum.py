@@ -21,10 +21,10 @@ BOTH_HIGH = 0.5
 """Of a head start: above, the two sums may both be high at first."""
 
 _MUCH = 1e8
-"""Steps that two sums are followed together, times the most moves in each; a tenth of a second or
-so to compute."""
+"""Steps that two sums are followed together, times the most moves in each; some twenty
+milliseconds to compute."""
 
-_STAGE_STEPS, _STAGE_WIDTH, _OUTER = 64, 2.0, 16
+_STAGE_STEPS, _STAGE_WIDTH, _OUTER = 256, 4.0, 20
 """Two sums are followed with the same nodes for so many steps at most, until there is so much more
 room on either side, which so many of them are for."""
 
@@ -100,6 +100,12 @@ def _both_high(k: float, h: float, shift: float, start: float, up: float, down: 
     inverse = 1 / up + 1 / down
     if inverse == 0:
         return math.inf
+    even = shift == 0  # to either side alike: of the difference only the size is followed
+
+    def chance(before: Array, after: Array) -> Array:
+        moves = density(after - before[:, None] - shift)
+        return moves + density(after + before[:, None]) if even else moves
+
     stage = max(1, min(_STAGE_STEPS, int(_STAGE_WIDTH / max(k, 1e-9))))
     ends, width = 2 * np.arange(stage) / stage - 1, stage * k
     outer_nodes = width / 2 * (gauss_legendre(_OUTER)[0] + 1)
@@ -109,28 +115,37 @@ def _both_high(k: float, h: float, shift: float, start: float, up: float, down: 
     while mean > h / 2 + k:
         # What is inside the limits at the stage's first step, and what they widen by until its end.
         limit, before = h - mean + k, at
+        low = 0.0 if even else -limit
+        half = (limit - low) / 2
         # Few different numbers of nodes: they take long to find.
-        nodes, weights = gauss_legendre(16 * math.ceil(1 + 0.2 * limit))
+        nodes, weights = gauss_legendre(16 * math.ceil(1 + 0.2 * half))
         outer = limit + outer_nodes
-        at = np.concatenate((-outer, limit * nodes, outer))
-        inner_weights = np.broadcast_to(limit * weights, (stage, nodes.size))
-        all_weights = np.concatenate((outer_weights, inner_weights, outer_weights), axis=1)
-        chances = arriving @ density(at[None, :] - before[:, None] - shift)
-        moves = density(at[None, :] - at[:, None] - shift)
-        for now in all_weights:
-            arriving = chances * now
-            both = float(arriving.sum())
-            mean -= k
-            if mean <= h / 2 + k:
-                break
-            total += both
-            chances = arriving @ moves
-        if both / inverse < _NEGLIGIBLE * total:
+        inner_weights = np.broadcast_to(half * weights, (stage, nodes.size))
+        parts = [(low + half * (nodes + 1), inner_weights), (outer, outer_weights)]
+        if not even:
+            parts.append((-outer, outer_weights))
+        at = np.concatenate([part for part, _ in parts])
+        all_weights = np.concatenate([part for _, part in parts], axis=1)
+        steps = min(stage, math.ceil((mean - h / 2 - k) / max(k, 1e-9)))
+        followed = np.empty((steps, at.size))
+        chances, moves = arriving @ chance(before, at), chance(at, at)
+        for now, then in zip(followed, all_weights, strict=False):
+            np.multiply(chances, then, out=now)
+            np.dot(now, moves, out=chances)
+        mean -= steps * k
+        arriving = followed[-1]
+        both = followed.sum(axis=1)
+        total += float(both[:-1].sum())
+        if mean > h / 2 + k:
+            total += float(both[-1])
+        if both[-1] / inverse < _NEGLIGIBLE * total:
             return total
     # As either has it: times that from (0, 0), the upper sum's share plus the lower's less 1.
-    from_up = _share(k, h, shift, up, mean + at)
-    from_down = _share(k, h, -shift, down, mean - at)
-    return total + float(arriving @ (from_up + from_down - 1)) / inverse
+    both_ways = np.concatenate((mean + at, mean - at))
+    from_up = _share(k, h, shift, up, both_ways)
+    from_down = from_up if even else _share(k, h, -shift, down, both_ways)
+    shares = from_up[: at.size] + from_down[at.size :] - 1
+    return total + float(arriving @ shares) / inverse
 
 
 def _share(k: float, h: float, shift: float, zero: float, sums: Array) -> Array:
