@@ -260,7 +260,18 @@ def test_an_interval_too_high_to_compute_says_so() -> None:
         run_length(0.5, 1e9)
 
 
-@pytest.mark.parametrize(("k", "h", "clip"), [(0.5, 5.0, 3.0), (0.01, 100.0, None)])
+@pytest.mark.parametrize(
+    ("k", "h", "head_start"), [(0.5, 5.0, 0.9), (0.5, 5.0, 0.75), (1.0, 3.0, 0.9)]
+)
+def test_two_high_clipped_sums_are_told_to_ring_a_little_too_often(
+    k: float, h: float, head_start: float
+) -> None:
+    mean, error = simulated(k, h, 0.0, head_start, 3.0, "both")
+    computed = run_length(k, h, head_start=head_start, clip=3.0)
+    assert 0.9 * mean - 3 * error < computed < mean + 3 * error
+
+
+@pytest.mark.parametrize(("k", "h", "clip"), [(0.25, 8.0, 3.0), (0.01, 100.0, None)])
 def test_two_high_sums_that_cannot_be_followed_are_refused(
     k: float, h: float, clip: float | None
 ) -> None:

@@ -201,6 +201,23 @@ def test_no_other_weight_is_faster(shift: float, wanted: float) -> None:
     assert delay(best) <= 1.002 * min(delay(best * f) for f in (0.5, 0.7, 0.85, 1.2, 1.5))
 
 
+@pytest.mark.parametrize(("shift", "wanted"), [(0.2, 1000.0), (0.5, 200.0), (1.0, 50.0)])
+def test_one_side_begins_clear_of_its_limit(shift: float, wanted: float) -> None:
+    """No detector that rings at its start, as the tiniest weight would: of a simulation, as many of
+    the first tenth of ``wanted`` points as chance has it, or fewer."""
+    lam = best_weight(shift, wanted, direction="up")
+    width = width_for(lam, wanted, direction="up")
+    rng = np.random.default_rng(1)
+    average, variance, rung = np.zeros(20_000), 0.0, np.zeros(20_000, np.bool_)
+    for _ in range(round(wanted / 10)):
+        average = lam * rng.standard_normal(average.size) + (1 - lam) * average
+        variance = lam**2 + (1 - lam) ** 2 * variance
+        rung |= average > width * math.sqrt(variance)
+    assert rung.mean() < 0.25
+    # Two sides that ring as often each have the same weight.
+    assert lam == best_weight(shift, 2 * wanted)
+
+
 def test_the_best_weight_falls_with_the_interval() -> None:
     """About 0.045·d² at long intervals, not the textbook's 0.2; and close to the CUSUM's delay."""
     lam = best_weight(1.0, 1e6)

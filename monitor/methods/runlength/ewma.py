@@ -258,16 +258,20 @@ def best_weight(
 
     To about 5 %, within which the delay hardly moves, and not below 0.003, nor below a hundredth of
     ``ignored``, where too much lies between the mean and its limit to compute. Judged with settled
-    limits: a shift meets an average that has long been running. ValueError where no λ has it.
+    limits: a shift meets an average that has long been running. One side takes the λ of two that
+    ring as often each: for short run lengths a tiny λ would else be best, whose limit lies where
+    the average begins, and is passed at once, shift or none. ValueError where no λ has it.
     """
+    if direction != "both" and not ignored:
+        wanted *= 2
 
     def delay(log_lam: float) -> float:
         lam = math.exp(log_lam)
         try:
-            width = _settled_width(lam, wanted, ignored, direction, 1e-3)
+            width = _settled_width(lam, wanted, ignored, "both", 1e-3)
         except ValueError:
             return math.inf
-        return run_length(lam, width, shift, direction=direction, asymptotic=True)
+        return run_length(lam, width, shift, asymptotic=True)
 
     step = 0.4
     lowest = min(math.log(max(_LEAST, ignored / 100)), -step)
