@@ -103,7 +103,10 @@ def main(args: argparse.Namespace) -> int:
     try:
         found = worked_out(shifts)
     except ValueError as error:
-        raise CommandError(f"{error}: ask for another setting") from None
+        instead = "write other constants"
+        if args.catch is not None:
+            instead = "catch a larger drift, ignore less, or take a CUSUM"
+        raise CommandError(f"{error}: {instead}") from None
     if args.html is not None:
         # A simulated curve is drawn through what is told: each of its points takes its time.
         low, high = min(shifts), max(shifts)

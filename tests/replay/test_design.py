@@ -210,7 +210,12 @@ def test_a_wrong_command_line_says_what_to_do(
 
 def test_a_run_length_that_is_too_much_to_compute(capsys: pytest.CaptureFixture[str]) -> None:
     assert main(["design", "--ewma", "0.001,20"]) == 1
-    assert "lambda 0.001 is too small" in capsys.readouterr().err
+    said = capsys.readouterr().err
+    assert "lambda 0.001 is too small" in said
+    assert "write other constants" in said
+    asked = ["--catch", "0.5", "--ignore", "0.3", "--run-length", "1e9", "--kind", "ewma"]
+    assert main(["design", *asked]) == 1
+    assert "catch a larger drift, ignore less, or take a CUSUM" in capsys.readouterr().err
 
 
 def test_an_interval_no_detector_has(capsys: pytest.CaptureFixture[str]) -> None:
