@@ -13,12 +13,13 @@ from typing import Literal
 import numpy as np
 
 from monitor.baselining.material import StreamSubgroups
-from monitor.methods import autocorrelation, estimates
+from monitor.baselining.moving import Moved, cut_at, most_moved
+from monitor.methods import autocorrelation, estimates, shift
 from monitor.methods.estimates import Components
 from monitor.methods.f_ratio import Comparison, compare, f_cdf, f_sf
 from monitor.methods.normal import Array
 from monitor.methods.shape import Shape, shape
-from monitor.methods.split import split
+from monitor.methods.shift import Move
 from monitor.methods.wander import Wander, wander
 from monitor.plan import Stream
 
@@ -30,8 +31,6 @@ DIFFER = 0.01
 """The chance below which streams count as different."""
 _ALIKE, _DOUBT = 1.02, 0.001
 """Inflation worth speaking of, and the chance below which means count as following each other."""
-_ALIKE_MOVED = 0.5
-"""A stream moved with the one that moved most where a cut explains half as much in it."""
 _APART = 1.2
 """The ratio of variances from which on it matters that they differ."""
 
@@ -82,16 +81,6 @@ class StreamEstimate:
 
 
 @dataclass(frozen=True, slots=True)
-class Moved:
-    """From event time ``time`` (µs) on, means of ``stream`` lay ``by`` (its unit) off those before:
-    the best cut in two, whether the centre stepped or crept."""
-
-    stream: Stream
-    time: int
-    by: float
-
-
-@dataclass(frozen=True, slots=True)
 class Estimate:
     """All streams. ``common`` are values for all of them together.
 
@@ -100,7 +89,9 @@ class Estimate:
     they reach, else 1 alone. ``heads`` compares the streams' means, None where there is but one;
     ``differ`` says whether means or spreads of streams do. ``shape`` is of the standardised means.
     ``moved``, where the centre seems to wander: the streams that moved, the one that did so most
-    first. ``between`` is how sigma_between was estimated.
+    first; ``stayed`` says that they moved and stayed away for certain. Then ``memory`` is what
+    there is of it but for the move, and so is ``wander``, where nothing else wanders. ``between``
+    is how sigma_between was estimated.
     """
 
     each: tuple[StreamEstimate, ...]
@@ -115,6 +106,7 @@ class Estimate:
     shape: Shape | None
     wander: Wander | None
     moved: tuple[Moved, ...]
+    stayed: bool
     first: int
     last: int
     between: BetweenBy
@@ -162,8 +154,11 @@ def estimate(
         raise ValueError("a baseline takes two subgroups of a stream")
     single = all((each.n == 1).all() for each in streams)
     standard = [_standardised(each) for each in streams]
+    moves = shift.moves(standard)
+    # A move that stayed looks like a memory that never ends.
+    steady = [_standard(each) for each in shift.levelled(standard, moves)] if moves else standard
     lags = min(_LAGS, max(2, max(map(len, streams)) // 4))
-    correlation = autocorrelation.correlations(standard, lags)
+    correlation = autocorrelation.correlations(steady, lags)
     total = sum(map(len, streams))
     memory = autocorrelation.memory(correlation, total)
     follows = (
@@ -183,6 +178,10 @@ def estimate(
     )
     spread_ratio, spreads_differ = _compare_spreads(each)
     found = wander([z for z in standard if z.any()])
+    if moves and found is not None:
+        rest = wander([z for z in steady if z.any()])
+        # One move, with a steady centre before and after it, is no wandering.
+        found = rest if rest is None or not rest.may_wander else found
     return Estimate(
         each,
         _common(streams, each, sigma, between, single),
@@ -195,7 +194,8 @@ def estimate(
         spread_ratio,
         _shape_of_means(streams, inflation),
         found,
-        _moved(streams) if found is not None and found.may_wander else (),
+        _moved(streams, moves, found is not None and found.may_wander),
+        bool(moves),
         min(int(s.time[0]) for s in streams),
         max(int(s.time[-1]) for s in streams),
         between,
@@ -216,19 +216,18 @@ def behaving(all_of: Estimate, inside: Estimate) -> Estimate:
         spread_ratio=inside.spread_ratio,
         shape=inside.shape,
         wander=inside.wander,
-        moved=inside.moved,
+        moved=(all_of if all_of.stayed else inside).moved,
+        stayed=all_of.stayed or inside.stayed,
     )
 
 
-def _moved(streams: Sequence[StreamSubgroups]) -> tuple[Moved, ...]:
-    """Those that moved about as much as the one that moved most."""
-    cuts = [(cut, each) for each in streams if (cut := split(each.mean)) is not None]
-    cuts.sort(key=lambda found: -found[0].share)
-    return tuple(
-        Moved(each.stream, int(each.time[cut.index]), cut.by)
-        for cut, each in cuts
-        if cut.share >= _ALIKE_MOVED * cuts[0][0].share
-    )
+def _moved(
+    streams: Sequence[StreamSubgroups], moves: Sequence[Move], wanders: bool
+) -> tuple[Moved, ...]:
+    means = [(each.stream, each.time, each.mean) for each in streams]
+    if moves:
+        return tuple(cut_at(means[move.number], move.index) for move in moves)
+    return most_moved(means) if wanders else ()
 
 
 def _shape_of_means(streams: Sequence[StreamSubgroups], inflation: float) -> Shape | None:
@@ -241,8 +240,12 @@ def _shape_of_means(streams: Sequence[StreamSubgroups], inflation: float) -> Sha
 
 
 def _standardised(stream: StreamSubgroups) -> Array:
-    deviation = stream.mean - stream.mean.mean()
-    sd = float(stream.mean.std(ddof=1))
+    return _standard(stream.mean)
+
+
+def _standard(values: Array) -> Array:
+    deviation = values - values.mean()
+    sd = float(values.std(ddof=1))
     return np.asarray(deviation / sd if sd > 0 else np.zeros(len(deviation)))
 
 

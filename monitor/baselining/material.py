@@ -11,6 +11,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
+from monitor.baselining.stuck import Stuck
 from monitor.methods.cycles import Cycle
 from monitor.methods.normal import Array
 from monitor.plan import Stream
@@ -54,9 +55,10 @@ class StreamSubgroups:
 
 @dataclass(frozen=True, slots=True)
 class Clues:
-    """What readings show and subgroups do not: the gauge's smallest ``step`` (its unit), and a
-    ``cycle`` of sources that take turns within a stream; None where there is none, or nobody
-    looked."""
+    """What readings show and subgroups do not: the gauge's smallest ``step`` (its unit), a
+    ``cycle`` of sources that take turns within a stream, and streams whose gauge was ``stuck``;
+    None where there is none, or nobody looked."""
 
     step: float | None = None
     cycle: Cycle | None = None
+    stuck: tuple[Stuck, ...] = ()

@@ -8,7 +8,7 @@ from __future__ import annotations
 
 from collections.abc import Iterator
 
-from monitor import stream_names, times
+from monitor.baselining import moving, upset_reasons
 from monitor.baselining.delivered import Delivered
 from monitor.baselining.estimating import Estimate
 from monitor.baselining.material import Clues
@@ -23,14 +23,14 @@ _SURE, _RARE = 1e-6, 1e-3
 _MORE = 1.1
 """Of the variance of means that readings explain, from which on it is worth a word."""
 _COSTLY = 0.5
-_NAMED = 2
-"""Streams that are named; more are counted."""
 
 
 def wander(estimate: Estimate, unit: str) -> Iterator[Reason]:
     """Does the centre stay?"""
     found = estimate.wander
-    if found is None:
+    if estimate.stayed and (found is None or not found.wanders):
+        yield upset_reasons.moved(estimate.moved, unit)
+    elif found is None:
         yield Reason(
             "provisional",
             "wander-unseen",
@@ -55,30 +55,23 @@ def wander(estimate: Estimate, unit: str) -> Iterator[Reason]:
             else "the centre may not stay, though the recording is too short to be sure"
         )
         then = ", so no frozen centre describes this process" if found.wanders else ""
+        without = ""
+        if estimate.stayed:
+            without = f" ({upset_reasons.leave_out(*moving.shorter_side(estimate.moved))})"
         yield Reason(
             "refuse" if found.wanders else "provisional",
             "wander",
             f"{so} (it wanders): {slow}{then}{_where(estimate, unit)}",
             "find what moves it (a warm-up, a change of material, an adjustment, one step in "
-            "the middle) and record again without it; if it always moves so and that does no "
-            "harm, gather longer subgroups, or write ignore: with what is harmless",
+            f"the middle) and record again without it{without}; if it always moves so and that "
+            "does no harm, gather longer subgroups, or write ignore: with what is harmless",
         )
 
 
 def _where(estimate: Estimate, unit: str) -> str:
-    moved = estimate.moved
-    if not moved:
+    if not estimate.moved:
         return ""
-    told = [
-        f"{stream_names.name(each.stream) or 'the mean'} by {each.by:+.2g} {unit}".rstrip()
-        + f" from about {times.format_time(each.time)[:19]}Z on"
-        for each in moved[:_NAMED]
-    ]
-    more = len(moved) - len(told)
-    also = f", and {more} more streams about as much" if more > 1 else ""
-    if more == 1:
-        also = ", and one more stream about as much"
-    return f". Cut in two, it moved most so: {', '.join(told)}{also}"
+    return f". Cut in two, it moved most so: {moving.told(estimate.moved, unit)}"
 
 
 def mixed(estimate: Estimate, clues: Clues) -> Iterator[Reason]:

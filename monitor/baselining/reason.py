@@ -9,6 +9,8 @@ from collections.abc import Iterable
 from dataclasses import dataclass
 from typing import Literal
 
+from monitor import times
+
 Grade = Literal["refuse", "provisional", "note"]
 Word = Literal["trust", "provisional", "refuse"]
 
@@ -36,6 +38,16 @@ def word(reasons: Iterable[Reason]) -> Word:
 def gravest_first(reasons: Iterable[Reason]) -> tuple[Reason, ...]:
     """The reasons in order of their grades."""
     return tuple(sorted(reasons, key=lambda reason: _ORDER.index(reason.grade)))
+
+
+def second(instant: int) -> str:
+    """An instant (µs) to the second at or before it, as options take it."""
+    return f"{times.format_time(instant)[:19]}Z"
+
+
+def second_after(instant: int) -> str:
+    """The same, to the second at or after it."""
+    return second(instant + times.SECOND - 1)
 
 
 def part(share: float) -> str:

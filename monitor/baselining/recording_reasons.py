@@ -35,7 +35,8 @@ def amount(estimate: Estimate) -> Iterator[Reason]:
         if estimate.inflation > 1.05
         else ""
     )
-    if effective < ENOUGH:
+    # Where a stream moved, how they differ and what they are worth is told once that is gone.
+    if effective < (LEAST if estimate.stayed else ENOUGH):
         yield Reason(
             "refuse" if effective < LEAST else "provisional",
             "few",

@@ -6,7 +6,7 @@ shown.
 
 from __future__ import annotations
 
-from monitor.baselining import process_reasons, recording_reasons
+from monitor.baselining import process_reasons, recording_reasons, upset_reasons
 from monitor.baselining.delivered import Delivered
 from monitor.baselining.estimating import Estimate
 from monitor.baselining.material import Clues
@@ -48,6 +48,7 @@ def _found(
 ) -> list[Reason]:
     return [
         *recording_reasons.promise(delivered),
+        *upset_reasons.stuck(clues.stuck),
         *process_reasons.wander(estimate, unit),
         *process_reasons.mixed(estimate, clues),
         *process_reasons.following(estimate, delivered),

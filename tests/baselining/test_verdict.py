@@ -10,7 +10,9 @@ from plans import START
 from streams import MINUTE, SHEWHART, assessed, following, gathered, heads, kinds
 
 from monitor.baselining.material import Clues
+from monitor.baselining.stuck import stuck
 from monitor.methods.cycles import cycle
+from monitor.times import SECOND
 
 
 @pytest.fixture
@@ -53,7 +55,68 @@ def test_one_step_in_the_middle_is_refused(chance: np.random.Generator) -> None:
     readings = chance.normal(size=(4000, 5))
     readings[2000:] += 0.5
 
-    assert kinds(assessed(gathered(readings)))["wander"] == "refuse"
+    assert kinds(assessed(gathered(readings)))["moved"] == "refuse"
+
+
+@pytest.mark.parametrize("at", [0.05, 0.5, 0.8, 0.95])
+@pytest.mark.parametrize("moving", [(2,), (0, 1, 2, 3, 4, 5)])
+def test_a_step_anywhere_is_refused_and_told(
+    chance: np.random.Generator, at: float, moving: tuple[int, ...]
+) -> None:
+    """All six heads, or one of them, 2 g down, as where an adjustment was made."""
+    readings = chance.normal(340, 2, (6, 960, 5))
+    begun = round(960 * at)
+    for head in moving:
+        readings[head, begun:] -= 2
+    found = assessed(*heads(*readings))
+
+    assert found.verdict == kinds(found)["moved"] == "refuse"
+    assert "wander" not in kinds(found)
+    assert found.reasons[0].kind == "moved"
+    moved = found.estimate.moved
+    assert {each.stream for each in moved} == {(("head", str(h + 1)),) for h in moving}
+    for each in moved:
+        assert each.by == pytest.approx(-2, abs=0.6)
+        assert abs(each.time - (START + (begun + 1) * MINUTE)) <= 10 * MINUTE
+        assert each.share == pytest.approx(min(at, 1 - at), abs=0.011)
+        assert (each.begin == each.time) == (each.end == found.estimate.last)
+    assert "few" not in kinds(found)
+    assert not found.estimate.follows
+    assert re.search(r"--leave-out \S+Z/\S+Z", found.reasons[0].do)
+
+
+def test_a_short_part_elsewhere_leaves_a_provisional_baseline(chance: np.random.Generator) -> None:
+    readings = chance.normal(340, 2, (2000, 5))
+    readings[1960:] -= 1.6
+
+    assert kinds(assessed(gathered(readings))) == {"moved": "provisional"}
+
+
+def test_of_a_long_steady_recording_a_step_too_small_to_matter_is_let_be(
+    chance: np.random.Generator,
+) -> None:
+    readings = chance.normal(size=(20_000, 5))
+    readings[10_000:] += 0.1 * 5**-0.5
+
+    assert "moved" not in kinds(assessed(gathered(readings)))
+
+
+@pytest.mark.parametrize(("length", "grade"), [(576, "refuse"), (100, "provisional")])
+def test_a_gauge_that_stood_still_is_named(
+    chance: np.random.Generator, length: int, grade: str
+) -> None:
+    readings = np.round(chance.normal(340, 2, 28_800), 1)
+    readings[8_640 : 8_640 + length] = readings[8_640]
+    time = START + np.arange(28_800) * SECOND
+    still = stuck([((("head", "3"),), time, readings)])
+    streams = heads(*readings.reshape(3, 1920, 5))
+    found = assessed(*streams, clues=Clues(stuck=still))
+
+    assert kinds(found)["stuck"] == grade
+    (why,) = (each for each in found.reasons if each.kind == "stuck")
+    assert f"head=3 stood still: {length} readings in a row" in why.found
+    assert "from 2026-03-02T09:05:12Z to 2026-03-02T09:" in why.found
+    assert "--leave-out 2026-03-02T09:05:12Z/2026-03-02T09:" in why.do
 
 
 @pytest.mark.parametrize(("count", "step"), [(300, 0.15), (600, 0.1)])
@@ -65,8 +128,8 @@ def test_a_short_recording_shows_a_walking_centre(
     for _ in range(20):
         walk = np.cumsum(chance.normal(size=(count, 1))) * step * 5**-0.5
         found = assessed(gathered(chance.normal(size=(count, 5)) + walk[:, None]), scheme=None)
-        verdicts.append(kinds(found).get("wander"))
-        if verdicts[-1]:
+        verdicts.append(kinds(found).get("wander", kinds(found).get("moved")))
+        if "wander" in kinds(found):
             (why,) = (each.found for each in found.reasons if each.kind == "wander")
             assert re.search(
                 r"swings over \d+ subgroups or more are [0-9.e+]+ times as strong", why
@@ -112,7 +175,7 @@ def test_who_moved_and_when_is_told(chance: np.random.Generator) -> None:
     assert moved.stream == (("head", "2"),)
     assert moved.by == pytest.approx(1.2, abs=0.1)
     assert abs(moved.time - (START + 1001 * MINUTE)) < 5 * MINUTE
-    (why,) = (each.found for each in found.reasons if each.kind == "wander")
+    (why,) = (each.found for each in found.reasons if each.kind == "moved")
     assert "head=2 by +1.2 g from about 2026-03-0" in why
 
 
