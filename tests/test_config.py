@@ -713,6 +713,21 @@ def test_a_replay_needs_nothing_of_the_daemon(write: Write) -> None:
     assert list(replayed.characteristics) == ["weight", "glue"]
 
 
+def test_keys_that_stand_instead_of_those_written(write: Write) -> None:
+    """A fragment's keys, new ones too; the others stay, and what is wrong is said as ever."""
+    keys = {"baseline": {"mean": 3.5, "sigma": 0.25}, "resolution": 0.5}
+    before = load_measured(write(GOOD), {}).characteristics
+    after = load_measured(write(GOOD), {}, instead={"weight": keys}).characteristics
+    common = after["weight"].baseline.given.common
+    assert common is not None
+    assert (common.mean, common.sigma) == (3.5, 0.25)
+    assert (before["weight"].resolution, after["weight"].resolution) == (None, 0.5)
+    assert after["weight"].detectors == before["weight"].detectors
+    assert after["glue"] == before["glue"]
+    with pytest.raises(ConfigurationError, match="sigma"):
+        load_measured(write(GOOD), {}, instead={"weight": {"baseline": {"mean": 1, "sigma": -1}}})
+
+
 def test_the_daemon_needs_what_a_replay_does_not(write: Write) -> None:
     alone = "version: 1\n" + GOOD[GOOD.index("characteristics:") :]
     assert [problem.split(";")[0] for problem in problems(write(alone))] == [

@@ -351,7 +351,7 @@ REFUSED: list[tuple[str, Change, str, str, str]] = [
     ),
     (
         "two clipped sums that both begin high",
-        detectors({"kind": "cusum", "catch": 1.5, "clip": 3, "head_start": 0.99}),
+        detectors({"kind": "cusum", "catch": 0.6, "clip": 3, "head_start": 0.99}),
         "detectors[0].head_start",
         "lets both sums begin so high",
         "write 0.5 or less",

@@ -20,7 +20,7 @@ from monitor.configuration.complaints import Complaint, complaints, shown
 from monitor.configuration.problems import ConfigurationError, Problem, dotted
 from monitor.configuration.problems import Path as KeyPath
 from monitor.configuration.sections.document import DAEMON, Document, Measured
-from monitor.configuration.unjudged import Baselines, with_baselines
+from monitor.configuration.unjudged import Baselines, Keys, with_baselines, with_keys
 from monitor.configuration.yamltree import Flaw, Node, UnreadableError
 
 __all__ = ["Config", "ConfigurationError", "load", "load_measured"]
@@ -51,14 +51,18 @@ def load(path: Path, environ: Mapping[str, str]) -> Config:
 
 
 def load_measured(
-    path: Path, environ: Mapping[str, str], baselines: Baselines | None = None
+    path: Path,
+    environ: Mapping[str, str],
+    baselines: Baselines | None = None,
+    instead: Keys | None = None,
 ) -> Measured:
     """Read only what a replay needs: it has no broker, and no password to read.
 
     With ``baselines`` only the characteristics named in them are judged, by these instead of what
-    is written. Other arguments and errors are those of ``load``.
+    is written; ``instead`` are keys that take the place of what is written. Other arguments and
+    errors are those of ``load``.
     """
-    reading = _Reading(path, environ, leaving=DAEMON, baselines=baselines)
+    reading = _Reading(path, environ, leaving=DAEMON, baselines=baselines, instead=instead)
     return reading.checked(Measured, [])
 
 
@@ -72,6 +76,7 @@ class _Reading:
         *,
         leaving: frozenset[str] = frozenset(),
         baselines: Baselines | None = None,
+        instead: Keys | None = None,
     ) -> None:
         flaws: list[Flaw] = []
         trees, self._unreadable = _trees(path, environ, flaws)
@@ -82,6 +87,8 @@ class _Reading:
         flaws = [flaw for flaw in flaws if not (flaw.path and flaw.path[0] in leaving)]
         if baselines is not None:
             whole = with_baselines(whole, baselines)
+        if instead is not None:
+            whole = with_keys(whole, instead)
         self._planted = baseline_files.plant(whole, self.folder, environ)
         self.tree = self._planted.tree
         self._flaws = [*flaws, *self._planted.flaws, *_blanks(self.tree)]

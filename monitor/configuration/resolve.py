@@ -67,7 +67,7 @@ def read_settings(path: Path, environ: Mapping[str, str]) -> Settings:
 def read_plan(path: Path, environ: Mapping[str, str], baselines: Baselines | None = None) -> Plan:
     """What a replay needs of a file or folder: broker, outputs and journal may be missing, and are
     not looked at. Arguments and errors are those of ``load_measured``."""
-    return _plan(load_measured(path, environ, baselines))
+    return plan_of(load_measured(path, environ, baselines))
 
 
 def resolve(config: Config) -> Settings:
@@ -75,7 +75,7 @@ def resolve(config: Config) -> Settings:
     document = config.document
     broker, root = document.broker, document.outputs.root
     return Settings(
-        plan=_plan(document),
+        plan=plan_of(document),
         broker=BrokerPlan(
             host=broker.host,
             port=broker.port or (PORT if broker.tls is None else TLS_PORT),
@@ -105,7 +105,8 @@ def _tls(section: Tls, folder: Path) -> TlsPlan:
     return TlsPlan(str(folder / section.ca), certificate, key)
 
 
-def _plan(document: Measured) -> Plan:
+def plan_of(document: Measured) -> Plan:
+    """What is watched and judged, of a configuration without a fault."""
     return Plan(
         tuple(
             _characteristic(name, each, document.alerts)

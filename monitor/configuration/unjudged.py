@@ -1,4 +1,4 @@
-"""A configuration whose baselines are still to come: read as if they were there.
+"""A configuration read as if other things stood in it: baselines to come, keys that are proposed.
 
 Knows which keys say how readings are judged. Must not know how a baseline is estimated.
 """
@@ -10,6 +10,7 @@ from collections.abc import Mapping
 from dataclasses import replace
 from typing import Any
 
+from monitor.configuration import yamltree
 from monitor.configuration.yamltree import Node
 
 _STAND_IN = {"baseline": {"mean": 0.0, "sigma": 1.0}, "detectors": [{"kind": "shewhart"}]}
@@ -17,6 +18,9 @@ _JUDGED_BY = ("baseline", "detectors", "promise")
 
 Baselines = Mapping[str, Mapping[str, Any]]
 """Values by characteristic, as the key ``baseline`` takes them."""
+
+Keys = Mapping[str, Mapping[str, Any]]
+"""Keys of characteristics, that take the place of those that stand there."""
 
 
 def with_baselines(tree: Node, baselines: Baselines) -> Node:
@@ -31,6 +35,18 @@ def with_baselines(tree: Node, baselines: Baselines) -> Node:
     assert isinstance(tree.value, dict)
     found = {**tree.value, "characteristics": replace(characteristics, value=prepared)}
     return replace(tree, value=found)
+
+
+def with_keys(tree: Node, instead: Keys) -> Node:
+    """The configuration with these keys of these characteristics, which it has."""
+    for name, keys in instead.items():
+        path = ("characteristics", name)
+        place = yamltree.at(tree, path)
+        assert place is not None
+        assert isinstance(place.value, dict)
+        new = {key: _node(value, place) for key, value in keys.items()}
+        tree = yamltree.put(tree, path, replace(place, value=place.value | new))
+    return tree
 
 
 def _prepared(characteristic: Node, baseline: Mapping[str, Any] | None) -> Node:
