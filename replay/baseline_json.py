@@ -14,6 +14,7 @@ from monitor.baselining.estimating import StreamEstimate
 from monitor.baselining.outside import Outside
 from replay.baseline import Estimated
 from replay.baseline_file import values
+from replay.baseline_rings import Rung
 
 
 def as_json(estimated: Estimated, written: str | None) -> dict[str, Any]:
@@ -58,8 +59,20 @@ def as_json(estimated: Estimated, written: str | None) -> dict[str, Any]:
                     "stream": stream_names.name(each.stream),
                     "time": times.format_time(each.time),
                     "by": each.by,
+                    "share": each.share,
                 }
                 for each in estimate.moved
+            ],
+            "stuck": [
+                {
+                    "stream": stream_names.name(each.stream),
+                    "readings": each.readings,
+                    "first": times.format_time(each.first),
+                    "last": times.format_time(each.last),
+                    "runs": each.runs,
+                    "share": each.share,
+                }
+                for each in estimated.clues.stuck
             ],
             "shape": None if estimate.shape is None else asdict(estimate.shape),
             "resolution": estimated.clues.step,
@@ -67,6 +80,7 @@ def as_json(estimated: Estimated, written: str | None) -> dict[str, Any]:
             "outside": [_outside(point) for point in found.outside.points],
             "beyond_three": found.outside.beyond_three,
             "promise": None if found.delivered is None else asdict(found.delivered),
+            "rings": None if estimated.rung is None else _rings(estimated.rung),
         }
     )
     return document
@@ -83,6 +97,30 @@ def _stream(each: StreamEstimate) -> dict[str, Any]:
         "f_between_subgroups": None if each.components is None else each.components.ratio,
         "skewness": None if each.shape is None else each.shape.skewness,
         "kurtosis": None if each.shape is None else each.shape.kurtosis,
+    }
+
+
+def _rings(rung: Rung) -> dict[str, Any]:
+    return {
+        "alerts": len(rung.rings),
+        "expected": rung.expected,
+        "chance": rung.chance,
+        "too_many": rung.too_many,
+        "kept": rung.kept,
+        "subgroups": rung.subgroups,
+        "at_left_outside": rung.strangers,
+        "by_detector": rung.by_detector,
+        "each": [
+            {
+                "stream": stream_names.name(ring.stream),
+                "time": times.format_time(ring.time),
+                "detector": ring.detector,
+                "rule": ring.rule,
+                "direction": ring.direction,
+                "left_outside": ring.stranger,
+            }
+            for ring in rung.rings
+        ],
     }
 
 

@@ -1,4 +1,4 @@
-"""The tables of a baseline: values, estimators, and subgroups outside.
+"""The tables of a baseline: values, estimators, subgroups outside, and what would have rung.
 
 Knows how many digits and rows are worth showing. Must not know how a figure was worked out.
 """
@@ -12,6 +12,7 @@ from monitor import stream_names, times
 from monitor.baselining.assess import Baselines
 from monitor.baselining.estimating import Estimate, Values
 from monitor.baselining.outside import Outside
+from replay.baseline_rings import Ring
 
 SHOWN = 12
 """Rows of a table; the JSON object has them all."""
@@ -102,13 +103,29 @@ def strangers(points: Sequence[Outside], sigma: float) -> Iterator[str]:
         yield f"  … and {len(points) - SHOWN:,} more (--json has them all)"
 
 
+def rings(found: Sequence[Ring]) -> Iterator[str]:
+    """When the crew would have heard what."""
+    rows = [
+        (
+            times.format_time(ring.time),
+            stream_names.name(ring.stream) or "all",
+            ring.detector,
+            ring.rule,
+        )
+        for ring in found[:SHOWN]
+    ]
+    yield from _table(("time", "stream", "detector", "rule"), rows)
+    if len(found) > SHOWN:
+        yield f"  … and {len(found) - SHOWN:,} more (--json has them all)"
+
+
 def _places(sigma: float) -> int:
     return max(0, 2 - math.floor(math.log10(sigma))) if sigma > 0 else 3
 
 
 def _table(header: tuple[str, ...], rows: Sequence[tuple[str, ...]]) -> Iterator[str]:
     widths = [max(map(len, column)) for column in zip(header, *rows, strict=True)]
-    left = {"stream", "time", "what"}
+    left = {"stream", "time", "what", "detector", "rule"}
     for row in (header, *rows):
         cells = [
             cell.ljust(width) if title in left else cell.rjust(width)

@@ -1,7 +1,8 @@
 """A baseline in words and tables, for whoever must decide whether to put it on the line.
 
 Their questions, in this order: May I trust it? What are centre and spread? Do the heads differ? Was
-anything odd? What becomes of my promise? Where is it written? What do I do next?
+anything odd? What becomes of my promise? What would have rung? Where is it written? What do I do
+next?
 
 Knows plain words and how many digits are worth showing. Must not know how a figure was worked out.
 """
@@ -14,10 +15,11 @@ from collections.abc import Iterator
 from monitor import stream_names
 from monitor.baselining.delivered import Delivered
 from monitor.baselining.estimating import DIFFER
-from monitor.baselining.reason import part
+from monitor.baselining.reason import Reason, part
 from monitor.configuration import spans
 from replay import baseline_tables
 from replay.baseline import Estimated
+from replay.baseline_verdict import counted
 
 _WIDTH = 88
 
@@ -34,26 +36,34 @@ def verdict(estimated: Estimated) -> Iterator[str]:
     """May I trust it?"""
     found = estimated.assessment
     reasons = [each for each in found.reasons if each.grade != "note"]
-    broken = next((each for each in reasons if each.kind == "promise"), None)
-    if broken is None or found.delivered is None:
+    headline = _headline(estimated)
+    if headline is None:
         yield _VERDICTS[found.verdict]
     else:
+        broken, why = headline
         reasons.remove(broken)
         yield from textwrap.wrap(
-            " ".join(
-                (
-                    _VERDICTS["broken"],
-                    f"{_rings(found.delivered, estimated.rate)}.",
-                    _sentence(broken.do),
-                )
-            ),
+            " ".join((_VERDICTS["broken"], _sentence(why), _sentence(broken.do))),
             _WIDTH,
             break_on_hyphens=False,
         )
     for reason in reasons:
         yield from _point(_sentence(reason.found), _sentence(f"what to do: {reason.do}"))
-    if found.verdict == "provisional" and broken is None and found.delivered is not None:
-        yield from _point(f"How much the promise shrinks: {_shrinks(found.delivered)}.")
+    if found.verdict == "provisional" and headline is None and found.delivered is not None:
+        yield from _point(f"How much the promise shrinks: {_shrinks(estimated, found.delivered)}.")
+
+
+def _headline(estimated: Estimated) -> tuple[Reason, str] | None:
+    """The reason why these detectors do not go with this baseline, and how it is said first."""
+    found = estimated.assessment
+    if found.delivered is None or not found.delivered.broken:
+        return None
+    by_kind = {each.kind: each for each in found.reasons}
+    if "promise" in by_kind:
+        return by_kind["promise"], _often(found.delivered, estimated.rate)
+    if "rings" in by_kind:
+        return by_kind["rings"], by_kind["rings"].found
+    return None
 
 
 def body(estimated: Estimated) -> Iterator[str]:
@@ -64,6 +74,7 @@ def body(estimated: Estimated) -> Iterator[str]:
         _heads(estimated),
         _odd(estimated),
         _promise(estimated),
+        _rung(estimated),
     ]
     for section in [_oddities(estimated)] if found.verdict == "refuse" else sections:
         lines = list(section)
@@ -86,7 +97,7 @@ def next_steps(
         yield f"Written to {written}. Next, in {config}:"
         yield f"  characteristics: {{{name}: {{baseline: {{file: {named}}}, …}}}}"
         yield f"and let `driftbell check {config}` read it."
-        if any(each.kind == "promise" for each in found.reasons):
+        if _headline(estimated) is not None:
             yield "But not yet with these detectors: first do what stands under the verdict."
 
 
@@ -96,22 +107,24 @@ def note(estimated: Estimated) -> str:
     word = {"trust": "Trusted.", "provisional": "Provisional."}[found.verdict]
     why = [_sentence(r.found) for r in found.reasons if r.grade == "provisional"]
     if found.delivered is not None and not found.delivered.broken:
-        why.append(f"How much the promise shrinks: {_shrinks(found.delivered)}.")
+        why.append(f"How much the promise shrinks: {_shrinks(estimated, found.delivered)}.")
     return " ".join([word, *why])
 
 
-def _rings(found: Delivered, rate: float | None) -> str:
+def _often(found: Delivered, rate: float | None) -> str:
     if rate is None:
         often, asked = (f"{spans.number(n)} subgroups" for n in (found.rings, found.subgroups))
     else:
         often, asked = (spans.long(n / rate) for n in (found.rings, found.subgroups))
     return (
-        f"With the configured detectors it may ring as often as once in {often} with nothing "
+        f"with the configured detectors it may ring as often as once in {often} with nothing "
         f"wrong, instead of once in {asked}"
     )
 
 
-def _shrinks(found: Delivered) -> str:
+def _shrinks(estimated: Estimated, found: Delivered) -> str:
+    if estimated.rung is not None and estimated.rung.too_many:
+        return f"what rang on this recording leaves {share(estimated.rung.kept)} of it"
     if found.unlucky >= 0.995:
         return "not at all, as far as this recording shows"
     return (
@@ -218,7 +231,7 @@ def _promise(estimated: Estimated) -> Iterator[str]:
         once += f", {spans.long(found.subgroups / rate)} at this recording's pace"
     yield from _point(
         f"With nothing wrong and an exact baseline, all detectors together ring once in {once}.",
-        _of_estimates(found),
+        _of_estimates(estimated, found),
     )
     for left, why in (
         (
@@ -234,7 +247,27 @@ def _promise(estimated: Estimated) -> Iterator[str]:
         yield from _point(f"Not counted, as too long to work out: {', '.join(found.left_out)}.")
 
 
-def _of_estimates(found: Delivered) -> str:
+def _rung(estimated: Estimated) -> Iterator[str]:
+    rung = estimated.rung
+    if rung is None:
+        return
+    yield "What would have rung on this recording?"
+    note = (
+        "Counted as the crew hears alerts: one that comes back is heard twice. What was left out "
+        "for its time is not played. Centre and spread come from these same readings, so few "
+        "alerts prove nothing."
+    )
+    said = counted(rung, estimated.rate)
+    if rung.strangers:
+        said += f"; {rung.strangers:,} at subgroups left out because they lay outside"
+    yield from _point(_sentence(said), note)
+    if rung.rings:
+        yield from baseline_tables.rings(rung.rings)
+
+
+def _of_estimates(estimated: Estimated, found: Delivered) -> str:
+    if estimated.rung is not None and estimated.rung.too_many:
+        return f"What rang on this recording itself leaves {share(estimated.rung.kept)} of that."
     if found.unlucky >= 0.995:
         return "A baseline estimated as this one was keeps all of that, nine times out of ten."
     return (

@@ -19,14 +19,16 @@ from monitor.baselining.assess import Baselines
 from monitor.commandline import COULD_NOT, DONE, WRONG, CommandError
 from monitor.configuration.problems import ConfigurationError
 from monitor.configuration.resolve import read_plan
-from monitor.plan import CharacteristicPlan, DetectorPlan, Plan, Stream
+from monitor.plan import CharacteristicPlan, Plan
 from monitor.progress import Progress
 from replay import baseline_file, baseline_words, set_aside_words
-from replay.baseline import Choices, Estimated, baseline
+from replay.baseline import Choices, Estimated, baseline, unmatched
 from replay.baseline_json import as_json
 from replay.commands import inputs
-from replay.readings import Gathered, gather, sha256
+from replay.readings import Gathered, Readings, gather, sha256
 from replay.recordings import Recording
+
+_OUTSIDE = "outside"
 
 
 def configure(parser: argparse.ArgumentParser) -> None:
@@ -46,7 +48,8 @@ def configure(parser: argparse.ArgumentParser) -> None:
         action="append",
         default=[],
         help="subgroups not to estimate from: those of a moment or a span of time (ISO 8601 with "
-        "an offset), or all that lie outside; repeatable",
+        "an offset), or all that lie outside; repeatable. A time at which there is no reading is "
+        "refused",
     )
     parser.add_argument(
         "--sigma",
@@ -79,16 +82,19 @@ def main(args: argparse.Namespace) -> int:
         gathered = gather(
             Plan((plan,)), recordings, layout, interval, inputs.teller(progress, len(recordings))
         )
-        progress(lambda: "estimating…")
+        progress.clear()
         _complain(gathered)
-        detectors = _Detectors(args.config, plan.name)
-        estimated = _estimated(gathered, plan, choices, detectors)
+        _check_left_out(args.leave_out, choices, gathered.readings[plan.name])
+        configured_with = _ConfiguredWith(args.config, plan.name)
+        estimated = _estimated(
+            gathered, plan, choices, configured_with, lambda text: progress(lambda: text)
+        )
     finally:
         progress.clear()
     refused = estimated.assessment.verdict == "refuse"
-    if detectors.problems is not None and not refused:
+    if configured_with.problems is not None and not refused:
         # What check would say of CONFIG with this baseline: there is nothing to use it with.
-        raise CommandError(str(detectors.problems), WRONG)
+        raise CommandError(str(configured_with.problems), WRONG)
     if args.to is not None and not refused:
         _write(args, estimated, choices)
     _show(args, estimated)
@@ -112,7 +118,7 @@ def _check_target(args: argparse.Namespace) -> None:
 def _choices(args: argparse.Namespace) -> Choices:
     spans: list[tuple[int, int]] = []
     for each in args.leave_out:
-        if each == "outside":
+        if each == _OUTSIDE:
             continue
         parts = each.split("/")
         try:
@@ -126,7 +132,7 @@ def _choices(args: argparse.Namespace) -> Choices:
                 WRONG,
             )
         spans.append((moments[0], moments[-1]))
-    return Choices(args.sigma, args.between, tuple(spans), "outside" in args.leave_out)
+    return Choices(args.sigma, args.between, tuple(spans), _OUTSIDE in args.leave_out)
 
 
 def _plan(path: str, baselines: Mapping[str, Mapping[str, Any]]) -> Plan:
@@ -136,28 +142,23 @@ def _plan(path: str, baselines: Mapping[str, Mapping[str, Any]]) -> Plan:
         raise CommandError(str(error), WRONG) from None
 
 
-class _Detectors:
-    """The detectors that CONFIG declares, solved on the baseline that was estimated; ``problems``
+class _ConfiguredWith:
+    """What CONFIG declares, its detectors solved on a baseline that was estimated; ``problems``
     says what stands in the way, if anything does."""
 
     def __init__(self, config: str, name: str) -> None:
         self._config, self._name = config, name
         self.problems: ConfigurationError | None = None
 
-    def __call__(self, found: Baselines) -> Callable[[Stream], Sequence[DetectorPlan]]:
+    def __call__(self, found: Baselines) -> CharacteristicPlan | None:
         values = {self._name: baseline_file.values(found)}
         try:
             plan = read_plan(Path(self._config), os.environ, values)
         except ConfigurationError as error:
             self.problems = error
-            return lambda stream: ()
+            return None
         (own,) = (each for each in plan.characteristics if each.name == self._name)
-
-        def of(stream: Stream) -> Sequence[DetectorPlan]:
-            judgement = own.judgement_of(stream)
-            return () if judgement is None else judgement.detectors
-
-        return of
+        return own
 
 
 def _complain(gathered: Gathered) -> None:
@@ -170,12 +171,33 @@ def _complain(gathered: Gathered) -> None:
         print(note, file=sys.stderr)
 
 
+def _check_left_out(asked: Sequence[str], choices: Choices, readings: Readings) -> None:
+    """A mistyped day would put the very fault into the baseline that it was to keep out."""
+    if not readings.count:
+        return
+    texts = [text for text in asked if text != _OUTSIDE]
+    wrong = [
+        f"--leave-out {text}: the recording has no reading of {readings.plan.name} then"
+        for text, span in zip(texts, choices.spans, strict=True)
+        if unmatched(readings, span)
+    ]
+    if wrong:
+        first = min(int(each.time[0]) for each in readings.streams)
+        last = max(int(each.time[-1]) for each in readings.streams)
+        runs = f"It runs from {times.format_time(first)} to {times.format_time(last)}"
+        raise CommandError("\n".join((*wrong, f"{runs}: correct the time, or drop it.")), WRONG)
+
+
 def _estimated(
-    gathered: Gathered, plan: CharacteristicPlan, choices: Choices, detectors: _Detectors
+    gathered: Gathered,
+    plan: CharacteristicPlan,
+    choices: Choices,
+    configured_with: _ConfiguredWith,
+    tell: Callable[[str], None],
 ) -> Estimated:
     readings = gathered.readings[plan.name]
     try:
-        return baseline(readings, choices, detectors)
+        return baseline(readings, choices, configured_with, tell)
     except ValueError:
         pass
     wrong = [f"no stream of {plan.name} has two subgroups to estimate from"]

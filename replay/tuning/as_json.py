@@ -9,6 +9,7 @@ import math
 from dataclasses import asdict
 from typing import Any
 
+from monitor import stream_names
 from monitor.times import format_time
 from replay.tuning.ranking import keeps
 from replay.tuning.result import (
@@ -49,6 +50,7 @@ def as_json(result: Result) -> dict[str, Any]:
         },
         "groupings": [_grouping(each) for each in result.groupings],
         "together": None if result.together is None else _together(result.together),
+        "proposed": None if result.proposed is None else _together(result.proposed),
         "settings": [_setting(each, result) for each in result.settings],
         "refused": [asdict(each) for each in result.refusals],
         "best": _taken(result.best, result),
@@ -94,6 +96,15 @@ def _grouping(found: Grouping) -> dict[str, Any]:
             "wanders": found.wander.wanders,
             "growth": found.wander.growth,
             "limit": found.wander.limit,
+            "moved": [
+                {
+                    "stream": stream_names.name(each.stream),
+                    "time": format_time(each.time),
+                    "by": each.by,
+                    "share": each.share,
+                }
+                for each in found.wander.moved
+            ],
         },
         "supports": found.supports,
         "baseline": {

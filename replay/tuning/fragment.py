@@ -6,7 +6,7 @@ Knows the configuration's keys. Must not know how the setting was found.
 from __future__ import annotations
 
 import math
-from collections.abc import Collection, Sequence
+from collections.abc import Collection
 from dataclasses import dataclass
 from typing import Any
 
@@ -15,9 +15,8 @@ import yaml
 
 from monitor.plan import ByCount, CharacteristicPlan
 from monitor.times import SECOND, format_duration
-from replay.tuning.candidates import AS_CONFIGURED, Request
+from replay.tuning.candidates import Request
 from replay.tuning.declared import Declared
-from replay.tuning.fragment_notes import breaking, noted, unchanged
 from replay.tuning.preparing import Held
 from replay.tuning.replacing import New, Settled, settled
 from replay.tuning.result import Setting
@@ -25,47 +24,29 @@ from replay.tuning.result import Setting
 
 @dataclass(frozen=True, slots=True)
 class Fragment:
-    """YAML that puts a setting in force, and ``notes``: what it replaces, keeps and leaves out;
-    ``breaking`` are those of the kept detectors that broke their part of the promise."""
+    """YAML that puts a setting in force; what becomes of the detectors, None where nothing changes;
+    and whether it ``promises`` anything."""
 
     text: str
-    notes: tuple[str, ...]
-    breaking: tuple[str, ...]
+    settled: Settled | None
+    promises: bool
 
 
 def fragment(
-    plan: CharacteristicPlan,
-    best: Setting,
-    spread: Setting | None,
-    settings: Sequence[Setting],
-    held: Held,
-    request: Request,
+    plan: CharacteristicPlan, best: Setting, spread: Setting | None, held: Held, request: Request
 ) -> Fragment:
     """The characteristic's subgroup, promise, baseline and detectors, which take the place of those
-    that stand there; ``spread`` is the setting to put in beside ``best`` for the spread. All
-    ``settings`` say what those that stay did by themselves."""
+    that stand there; ``spread`` is the setting to put in beside ``best`` for the spread."""
     declared = request.declared
     if best.origin == "configured" and declared:
         text = _dumped(plan.name, {"detectors": [each.keys for each in declared]})
-        return Fragment(
-            text,
-            tuple(unchanged(plan.name, best, spread, settings, request)),
-            _names(breaking(declared, settings)),
-        )
+        return Fragment(text, None, False)
     found = settled(best, spread, held.plan, declared)
     keys: dict[str, Any] = {"subgroup": _subgroup(held), "baseline": _baselines(held)}
     if request.promised is not None:
         keys["promise"] = {"false_alarm_every": format_duration(round(request.promise * SECOND))}
     keys["detectors"] = _detectors(found)
-    return Fragment(
-        _dumped(plan.name, keys),
-        tuple(noted(plan, found, settings, held, request, "promise" in keys)),
-        _names(breaking(found.kept, settings)),
-    )
-
-
-def _names(settings: Sequence[Setting]) -> tuple[str, ...]:
-    return tuple(each.name.removeprefix(AS_CONFIGURED) for each in settings)
+    return Fragment(_dumped(plan.name, keys), found, "promise" in keys)
 
 
 def _dumped(name: str, keys: dict[str, Any]) -> str:

@@ -11,10 +11,11 @@ from monitor.configuration import spans
 from monitor.plan import CharacteristicPlan
 from replay.tuning.candidates import AS_CONFIGURED, Request
 from replay.tuning.declared import Declared
+from replay.tuning.foreseen import Foreseen
 from replay.tuning.preparing import Held
 from replay.tuning.ranking import keeps
 from replay.tuning.replacing import SEVERAL, Settled
-from replay.tuning.result import Setting
+from replay.tuning.result import Setting, Together
 
 
 def unchanged(
@@ -22,10 +23,12 @@ def unchanged(
     best: Setting,
     spread: Setting | None,
     settings: Sequence[Setting],
+    now: Together | None,
     request: Request,
 ) -> Iterator[str]:
-    """Where what stands there does best; all ``settings`` as in :func:`noted`."""
-    yield from _too_often(request.declared, settings)
+    """Where what stands there does best; all ``settings`` as in :func:`noted`, and what they do
+    together ``now``."""
+    yield from _too_often(request.declared, settings, settings, "As configured it rang")
     name = best.name.removeprefix(AS_CONFIGURED)
     also = (
         "" if spread is None else f", and {spread.name.removeprefix(AS_CONFIGURED)} for the spread"
@@ -34,6 +37,13 @@ def unchanged(
         f"Nothing need change: {name}, as it stands in {characteristic} with its baseline, does "
         f"best{also}. These are the detectors that stand there."
     )
+    if now is not None and not now.meets:
+        rang = f"{now.observed.alarms:,} time{'' if now.observed.alarms == 1 else 's'}"
+        yield (
+            f"Whether all of them together keep the promise is another matter: they rang {rang} in "
+            f"the last {spans.long(now.observed.seconds)} of time without an alert, and "
+            f"{'that is too often' if keeps(now) == 'no' else 'the recording leaves it open'}."
+        )
     promised = request.promised
     if promised is not None and promised != request.promise:
         yield (
@@ -47,14 +57,20 @@ def noted(
     plan: CharacteristicPlan,
     settled: Settled,
     settings: Sequence[Setting],
+    foreseen: Foreseen | None,
     held: Held,
     request: Request,
     promises: bool,
 ) -> Iterator[str]:
     """What the fragment replaces, keeps and leaves out, the gravest first; whether it ``promises``
-    anything. All ``settings`` say what those that are kept did by themselves."""
+    anything. ``foreseen`` says what those that are kept would do, all ``settings`` what might be
+    put in their place."""
     kept = settled.kept
-    yield from _too_often(kept, settings)
+    if foreseen is not None:
+        yield from _too_often(kept, foreseen.alone, settings, "With this baseline it would ring")
+        yield from _all_of_it(foreseen.together)
+    else:
+        yield "Caution: driftbell check refuses these keys as they stand; it says why."
     names = " and ".join(each.setting.name for each in settled.new)
     keys = "subgroup, baseline, promise" if promises else "subgroup, baseline"
     yield (
@@ -96,22 +112,40 @@ def noted(
         )
 
 
-def breaking(kept: Sequence[Declared], settings: Sequence[Setting]) -> list[Setting]:
-    """What those of the ``kept`` detectors did by themselves that broke their part of the promise
-    on this very recording, whatever the textbook says of them."""
-    judged = {each.name: each for each in settings if each.origin == "configured"}
+def breaking(kept: Sequence[Declared], alone: Sequence[Setting]) -> list[Setting]:
+    """Those of ``alone`` that are ``kept`` and break their part of the promise on this very
+    recording, whatever the textbook says of them."""
+    judged = {each.name: each for each in alone if each.origin == "configured"}
     found = [judged.get(f"{AS_CONFIGURED}{each.name}") for each in kept]
     return [each for each in found if each is not None and keeps(each) == "no"]
 
 
-def _too_often(kept: Sequence[Declared], settings: Sequence[Setting]) -> Iterator[str]:
-    for each in breaking(kept, settings):
+def names(found: Sequence[Setting]) -> tuple[str, ...]:
+    """What the detectors are called in the configuration."""
+    return tuple(each.name.removeprefix(AS_CONFIGURED) for each in found)
+
+
+def _too_often(
+    kept: Sequence[Declared], alone: Sequence[Setting], settings: Sequence[Setting], rings: str
+) -> Iterator[str]:
+    for each in breaking(kept, alone):
         alarms, asked = each.observed.alarms, spans.long(each.asked)
         yield (
             f"Caution: {each.name.removeprefix(AS_CONFIGURED)} stays, and does not keep its part "
-            f"of the promise. As configured it rang {alarms:,} time{'' if alarms == 1 else 's'} in "
+            f"of the promise. {rings} {alarms:,} time{'' if alarms == 1 else 's'} in "
             f"the last {spans.long(each.observed.seconds)} with nothing wrong, where one in "
             f"{asked} was asked of it. {_instead(each, settings)}"
+        )
+
+
+def _all_of_it(together: Together) -> Iterator[str]:
+    if keeps(together) == "no":
+        alarms = together.observed.alarms
+        yield (
+            f"Caution: all of it together would have rung {alarms:,} "
+            f"time{'' if alarms == 1 else 's'} in the last "
+            f"{spans.long(together.observed.seconds)} with nothing wrong, where one in "
+            f"{spans.long(together.asked)} was asked."
         )
 
 

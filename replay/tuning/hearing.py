@@ -12,14 +12,15 @@ import numpy as np
 
 from monitor.alerts import Numbering
 from monitor.outputs import Alert
-from monitor.plan import CharacteristicPlan, Direction
+from monitor.plan import CharacteristicPlan, Direction, SubgroupPlan
 from monitor.stream import Counts, StreamState
 from monitor.subgroups import Subgroup
 from replay.readings import Times
 from replay.subgrouping import spans
 from replay.tuning.grouped import Grouped, GroupedStream
 
-_RINGS = ("raised", "rejoined")
+RINGS = ("raised", "rejoined")
+"""Events of an alert that the crew hears."""
 _ENDS = ("returned-to-normal", "withdrawn")
 
 
@@ -60,7 +61,7 @@ def hear(plan: CharacteristicPlan, grouped: Grouped) -> Heard:
         state, counts = _stream(plan, stream)
         open_now = 0
         instants: list[int] = []
-        for at, subgroup, restarts in _subgroups(grouped, stream):
+        for at, subgroup, restarts in one_by_one(grouped.plan, stream):
             before = counts.signals
             outputs = state.gauge_restarted(subgroup.first, counts) if restarts else []
             outputs = [*outputs, *state.judge(subgroup, counts, points=False)]
@@ -69,8 +70,8 @@ def hear(plan: CharacteristicPlan, grouped: Grouped) -> Heard:
                 if not isinstance(output, Alert):
                     continue
                 kind = output.event["event"]
-                open_now += (kind in _RINGS) - (kind in _ENDS)
-                if counts_here and kind in _RINGS:
+                open_now += (kind in RINGS) - (kind in _ENDS)
+                if counts_here and kind in RINGS:
                     rings.append(Ring(place, at, subgroup.last, output.event["direction"]))
             more = counts.signals - before
             if more:
@@ -89,10 +90,10 @@ def _stream(plan: CharacteristicPlan, stream: GroupedStream) -> tuple[StreamStat
     return StreamState(plan, stream.readings.stream, first, counts, Numbering()), counts
 
 
-def _subgroups(grouped: Grouped, stream: GroupedStream) -> Iterator[tuple[int, Subgroup, bool]]:
+def one_by_one(plan: SubgroupPlan, stream: GroupedStream) -> Iterator[tuple[int, Subgroup, bool]]:
     """Each subgroup with its place, and whether the gauge restarted before it."""
     readings = stream.readings
-    broken = spans(grouped.plan, readings.time, readings.breaks).broken.tolist()
+    broken = spans(plan, readings.time, readings.breaks).broken.tolist()
     restarts = set(stream.restarts.tolist())
     first = readings.time[stream.start].tolist()
     edges = zip(stream.start.tolist(), stream.stop.tolist(), strict=True)

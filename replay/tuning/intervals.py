@@ -21,6 +21,7 @@ _FAR_MORE = 5.0
 its sum never rests. All of its signals belong to one peak, or to none that begins in the last part;
 they tell nothing of false alarms. Where neighbours correlate, few peaks give more than two."""
 WANDERS = "the process wanders: no recording foretells its false alarms"
+MOVED = "the centre moved and stayed away: what was before does not foretell what comes after"
 TOO_FEW = "the last part holds too few peaks of the statistic to draw a tail through"
 NOT_EXPONENTIAL = "the tail of the statistic is not of the kind that can be drawn on"
 TOO_LONG = "more than 50 times the last part is not told"
@@ -34,7 +35,7 @@ def extrapolated(
     """The interval, why there is none, and the least that it is in seconds, told or not."""
     tail = judged.proved
     if found.wander.wanders:
-        return None, WANDERS, 0.0
+        return None, unsteady(found), 0.0
     if tail is None:
         return None, TOO_FEW, 0.0
     interval = tail.interval(limit(judged.scheme))
@@ -56,6 +57,11 @@ def extrapolated(
         return Extrapolated(told, factor, Range(min(lowest, told), None)), TOO_LONG, lowest
     high = None if bounded(judged.scheme) else seconds * factor
     return Extrapolated(seconds, factor, Range(lowest, high)), "", lowest
+
+
+def unsteady(found: Grouping) -> str:
+    """Why there is no interval where ``found.wander`` forbids one."""
+    return MOVED if found.wander.moved else WANDERS
 
 
 def _by_count(observed: Observed) -> Extrapolated | None:

@@ -5,9 +5,9 @@ Knows peaks, signals and parts. Must not know drifts, words or files.
 
 from __future__ import annotations
 
+import math
 from collections.abc import Sequence
 from dataclasses import dataclass
-from typing import TypeGuard
 
 import numpy as np
 
@@ -36,7 +36,7 @@ class Judged:
     ``fitted`` and ``proved`` are the tails of the two parts, None where peaks are too few.
     ``signals`` are those of the whole recording, one entry a stream. ``coarse``: the limit is one
     of single points that lie on too few values for their tail to be drawn on. ``wild``: nothing
-    clips, and the furthest point takes a sum to its limit, or nearly, by itself.
+    clips, and the furthest point takes the statistic to its limit, or nearly, by itself.
     """
 
     candidate: Candidate
@@ -89,7 +89,7 @@ def judge(
                 tuple(each.signals(at) for each in paths),
                 # A step further, normal points are fewer by a factor of exp(limit · step).
                 coarse=at * step > 1.0,
-                wild=adds_up(scheme) and wildest - scheme.k > _BY_ITSELF * at,
+                wild=by_itself(scheme, wildest) > _BY_ITSELF * at,
             )
         )
     return found
@@ -126,9 +126,16 @@ def in_proof(grouped: Grouped, signals: Sequence[Signals]) -> list[Signals]:
     return found
 
 
-def adds_up(scheme: Scheme) -> TypeGuard[CusumPlan]:
-    """Whether it is a CUSUM that one wild point may ring by itself."""
-    return isinstance(scheme, CusumPlan) and scheme.chart != "variance" and scheme.clip is None
+def by_itself(scheme: Scheme, point: float) -> float:
+    """How far one point takes a sum or an average of means from its rest, in what its limit is in;
+    0 where points are clipped, and of single points and spreads, which are judged by themselves."""
+    match scheme:
+        case CusumPlan(chart=chart, clip=None) if chart != "variance":
+            return point - scheme.k
+        case EwmaPlan(clip=None):
+            return point * math.sqrt(scheme.lam * (2 - scheme.lam))
+        case _:
+            return 0.0
 
 
 def furthest(grouped: Grouped) -> float:

@@ -6,15 +6,16 @@ Knows parts, baselines and rates. Must not know settings.
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 
 from monitor import stream_names
+from monitor.baselining.stuck import Stuck, stuck
 from monitor.commandline import CommandError
-from monitor.plan import BaselinePlan, ByCount, CharacteristicPlan, SubgroupPlan
+from monitor.plan import BaselinePlan, ByCount, CharacteristicPlan, Stream, SubgroupPlan
 from monitor.times import format_duration
-from replay.readings import StreamReadings
+from replay.readings import StreamReadings, Times, Values
 from replay.tuning import wandering
 from replay.tuning.candidates import Request
 from replay.tuning.catching import FLOORS, LEAST, Textbook
@@ -55,6 +56,7 @@ class Prepared:
     prove_from: int
     held: tuple[Held, ...]
     refusals: tuple[Refusal, ...]
+    stuck: tuple[Stuck, ...]
 
 
 def prepare(
@@ -89,7 +91,43 @@ def prepare(
         ours = Grouped(how, _size(how, kept), kept)
         theirs = _theirs(plan, how, streams, edges, request) if how == plan.subgroup else None
         held.append(_hold(ours, theirs, asked, running, request))
-    return Prepared(streams, running, *edges, tuple(held), refusals)
+    still = stuck(_uncaused(each, request) for each in streams)
+    return Prepared(streams, running, *edges, _moved_alike(held), refusals, still)
+
+
+def _moved_alike(held: Sequence[Held]) -> tuple[Held, ...]:
+    """What moved in one way of gathering moved in all of them, though not all show it."""
+    moved = max((each.found.wander for each in held), key=lambda wander: len(wander.moved))
+    if not moved.wanders or not moved.moved:
+        return tuple(held)
+    return tuple(
+        each
+        if each.found.wander.wanders
+        else replace(
+            each,
+            found=replace(
+                each.found, wander=replace(each.found.wander, wanders=True, moved=moved.moved)
+            ),
+        )
+        for each in held
+    )
+
+
+def _uncaused(readings: StreamReadings, request: Request) -> tuple[Stream, Times, Values]:
+    """What a stream's gauge showed while nothing was labelled as wrong."""
+    kept = np.ones(len(readings.time), np.bool_)
+    for begin, end in _causes(readings, request):
+        kept &= (readings.time < begin) | (readings.time > end)
+    return readings.stream, readings.time[kept], readings.value[kept]
+
+
+def _causes(readings: StreamReadings, request: Request) -> list[tuple[int, int]]:
+    name = stream_names.name(readings.stream)
+    return [
+        (label.begin, label.end)
+        for label in request.labels
+        if label.what == "cause" and label.concerns(name)
+    ]
 
 
 def horizon(held: Sequence[Held], catch: float) -> int:
@@ -126,18 +164,12 @@ def _group(
     request: Request,
     baseline: BaselinePlan | None = None,
 ) -> GroupedStream | None:
-    name = stream_names.name(readings.stream)
-    causes = [
-        (label.begin, label.end)
-        for label in request.labels
-        if label.what == "cause" and label.concerns(name)
-    ]
     found = group(
         how,
         readings,
         fit_to=edges[0],
         prove_from=edges[1],
-        left_out=causes,
+        left_out=_causes(readings, request),
         baseline=baseline,
     )
     return found if found is not None and found.prove < len(found) and found.fit > 1 else None
@@ -193,7 +225,7 @@ def _hold(
         proof=ours.proof,
         rate=rate,
         correlation=wandering.first_lag(values),
-        wander=wandering.wander(values),
+        wander=wandering.kept(streams),
         supports=FAR * ours.proof / rate,
         baselines=tuple(_baseline(each) for each in streams),
     )

@@ -10,6 +10,7 @@ from collections.abc import Sequence
 from dataclasses import replace
 from typing import Literal
 
+from monitor.configuration import spans
 from replay.tuning.result import Delay, Result, Setting, Shown
 
 
@@ -83,6 +84,10 @@ def keeps(shown: Shown) -> Literal["yes", "no", "not shown"]:
 def _why_not(setting: Setting, catch: float) -> str:
     delay = that_ranks(setting, catch)
     if not setting.meets:
+        seen = setting.observed
+        if seen.interval and seen.interval.high is not None and seen.interval.high < setting.asked:
+            times = "once" if seen.alarms == 1 else f"{seen.alarms:,} times"
+            return f"it rang {times} in {spans.long(seen.seconds)}"
         if setting.extrapolated is None:
             return setting.no_interval
         if setting.extrapolated.interval.high is None:

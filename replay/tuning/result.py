@@ -14,6 +14,8 @@ from __future__ import annotations
 from dataclasses import dataclass
 from typing import Literal
 
+from monitor.baselining.moving import Moved
+
 Kind = Literal["cusum", "ewma", "shewhart"]
 Shape = Literal["step", "ramp", "spread"]
 Origin = Literal["calibrated", "given", "configured"]
@@ -93,7 +95,9 @@ class Wander:
     ``lengths`` are numbers m of subgroups, ``ratios`` m times the variance of means of m over the
     variance of single ones: about 1 where subgroups are independent, level where they follow each
     other for a while, ever rising where the process wanders. ``growth`` is the ratio at 200 over
-    that at 50, None where the recording is too short to tell; above ``limit`` it wanders.
+    that at 50, None where the recording is too short to tell; above ``limit`` it wanders. ``moved``
+    are the streams that moved once and stayed away, the one that did so most clearly first, where
+    nothing wanders but for that. ``wanders``: no interval can be told, for either.
     """
 
     lengths: tuple[int, ...]
@@ -101,6 +105,7 @@ class Wander:
     growth: float | None
     limit: float
     wanders: bool
+    moved: tuple[Moved, ...] = ()
 
 
 @dataclass(frozen=True, slots=True)
@@ -285,7 +290,7 @@ class Setting:
 
 @dataclass(frozen=True, slots=True)
 class Together:
-    """All configured detectors on every stream at once, as the crew hears them today.
+    """All detectors of a configuration on every stream at once, as the crew hears them.
 
     ``detectors`` are their names; all are in ``observed``, counted by the engine's own alerts: as
     one what several detectors signal on one side of a stream until it has returned to normal, again
@@ -341,7 +346,7 @@ class Result:
     ``settings``, None where none meets the promise or the recording is not trusted, and
     ``best_spread`` that of the one to take for the spread. ``settings`` are ordered: ranked ones
     first, of the mean and then of the spread. ``together`` is what runs today, None where no stream
-    has a baseline yet.
+    has a baseline yet, and ``proposed`` what the fragment would run, None where it changes nothing.
     ``fragment`` is the YAML that puts the best into the configuration, empty without one;
     ``notes`` are sentences on what it replaces and keeps, and ``breaking`` the names of those that
     it keeps although they broke their part of the promise. ``events`` counts labelled events.
@@ -372,6 +377,7 @@ class Result:
     best: int | None
     best_spread: int | None
     together: Together | None
+    proposed: Together | None
     fragment: str
     notes: tuple[str, ...]
     events: int

@@ -12,8 +12,8 @@ from replay.tuning.layout import Row, Table
 from replay.tuning.ranking import at_catch, at_spread, keeps
 from replay.tuning.result import Delay, Quantile, Range, Result, Setting, Shown
 
-NOW = "now"
-"""What stands before the row of all configured detectors together."""
+NOW, NEW = "now", "new"
+"""What stands before the rows of all configured detectors together, and of all of the fragment."""
 
 _ROWS = 12
 _SPREAD = 4
@@ -34,7 +34,8 @@ def _groups(
     more: bool,
     figures: Callable[[Shown], tuple[str, ...]],
 ) -> tuple[tuple[str, tuple[Row, ...]], ...]:
-    """What runs today, then settings for the mean, then those for the spread."""
+    """What runs today, what would with the fragment, then settings for the mean, then those for the
+    spread."""
 
     def rows(settings: Sequence[Setting]) -> tuple[Row, ...]:
         return tuple(
@@ -47,11 +48,11 @@ def _groups(
             for each in settings
         )
 
-    now = result.together
     spread = [each for each in shown if each.of_spread]
     told: list[tuple[str, tuple[Row, ...]]] = []
-    if now is not None and any(figures(now)):
-        told.append(("", (Row(NOW, now.name, "", figures(now)),)))
+    for mark, whole in ((NOW, result.together), (NEW, result.proposed)):
+        if whole is not None and any(figures(whole)):
+            told.append(("", (Row(mark, whole.name, "", figures(whole)),)))
     told.append(("", rows([each for each in shown if not each.of_spread])))
     if spread:
         title = f"for the spread, ranked by one {result.ratio:g} times as large:"

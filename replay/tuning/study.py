@@ -5,16 +5,18 @@ Knows the order of the steps. Must not know how any of them is done, or how a re
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Iterable, Sequence
 from dataclasses import replace
 
 from monitor import stream_names
 from monitor.plan import Scheme
 from replay.readings import Readings
-from replay.tuning import batches, fragment, lateness, looking, verdict
+from replay.tuning import batches, fragment, fragment_notes, lateness, looking, verdict
 from replay.tuning.batches import Batch, OnProgress
 from replay.tuning.candidates import Request, configured
 from replay.tuning.catching import JOINTLY
+from replay.tuning.foreseen import Propose, foresee
+from replay.tuning.fragment_notes import names, noted, unchanged
 from replay.tuning.hearing import hear
 from replay.tuning.mixing import mixed
 from replay.tuning.preparing import prepare
@@ -28,10 +30,14 @@ _CURVED = 5
 
 
 def study(
-    readings: Readings, sources: Sequence[Source], request: Request, progress: OnProgress
+    readings: Readings,
+    sources: Sequence[Source],
+    request: Request,
+    progress: OnProgress,
+    propose: Propose,
 ) -> Result:
-    """Judge every setting that ``request`` asks for. Raises CommandError where there is nothing to
-    judge."""
+    """Judge every setting that ``request`` asks for, and what comes of the best if it is put in, as
+    ``propose`` reads it. Raises CommandError where there is nothing to judge."""
     plan = readings.plan
     progress("looking at the recording")
     prepared = prepare(plan, readings.streams, request)
@@ -77,25 +83,49 @@ def study(
         running_now = replace(running_now, curve=curves.get(JOINTLY, ()))
     final = tuple(replace(each, curve=curves.get(index, ())) for index, each in order)
     among = mixed(prepared.streams)
-    best, best_spread = to_take(final) if among is None else (None, None)
+    stuck = prepared.stuck
+    may_take = among is None and not (stuck and stuck[0].much)
+    best, best_spread = to_take(final) if may_take else (None, None)
     running = prepared.running
     groupings = tuple(each.found for each in prepared.held)
     left_out = [name for batch in all_batches for name in batch.left_out]
     refusals = [
         *prepared.refusals,
         *verdict.refusals(
-            groupings, final, request.promise, running.whole, left_out, unmatched, among
+            groupings,
+            final,
+            request.promise,
+            running.whole,
+            left_out,
+            unmatched,
+            among,
+            stuck,
+            plan.unit,
         ),
     ]
     if drifts.too_few:
         more = verdict.longer(request.promise, running.whole)
         refusals.append(Refusal("how late any drift is caught", drifts.too_few, more))
-    trust = verdict.trust(groupings, final, running.whole, among)
-    written = None
+    trust = verdict.trust(groupings, final, running.whole, among, stuck, plan.unit)
+    written, foreseen = None, None
+    notes: Iterable[str] = ()
+    breaking: tuple[str, ...] = ()
     if best is not None:
-        held = prepared.held[final[best].grouping]
+        number = final[best].grouping
+        held = prepared.held[number]
         spread = None if best_spread is None else final[best_spread]
-        written = fragment.fragment(plan, final[best], spread, final, held, request)
+        written = fragment.fragment(plan, final[best], spread, held, request)
+        if written.settled is None:
+            notes = unchanged(plan.name, final[best], spread, final, running_now, request)
+            breaking = names(fragment_notes.breaking(request.declared, final))
+        else:
+            progress("all of the fragment together")
+            proposed = propose(written.text)
+            if proposed is not None:
+                foreseen = foresee(proposed, held, number, prepared, drifts, place, request)
+                kept = fragment_notes.breaking(written.settled.kept, foreseen.alone)
+                breaking = names(kept)
+            notes = noted(plan, written.settled, final, foreseen, held, request, written.promises)
     return Result(
         characteristic=plan.name,
         title=plan.title,
@@ -122,8 +152,9 @@ def study(
         best=best,
         best_spread=best_spread,
         together=running_now,
+        proposed=None if foreseen is None else foreseen.together,
         fragment="" if written is None else written.text,
-        notes=() if written is None else written.notes,
-        breaking=() if written is None else written.breaking,
+        notes=tuple(notes),
+        breaking=breaking,
         events=len(request.labels),
     )

@@ -1,4 +1,4 @@
-"""What runs today as a whole: all configured detectors, as the crew hears them.
+"""A configuration's detectors as a whole, as the crew hears them: what runs today, or would.
 
 Knows what was heard and what each detector does alone. Must not know readings or how drifts are put
 in.
@@ -15,7 +15,7 @@ from monitor.plan import CharacteristicPlan
 from replay.tuning import counting
 from replay.tuning.grouped import Grouped
 from replay.tuning.hearing import Heard
-from replay.tuning.intervals import WANDERS, contradicted
+from replay.tuning.intervals import contradicted, unsteady
 from replay.tuning.result import (
     Alarm,
     Delay,
@@ -30,7 +30,8 @@ from replay.tuning.running import PROVE
 from replay.tuning.scoring import score
 from replay.tuning.showing import ALARMS, Place
 
-NAME = "all configured detectors together"
+NOW = "all configured detectors together"
+WITH_IT = "all of the fragment together"
 
 _STANDING = 0.1
 """Of the streams' time: where alerts stand open for longer, the detectors by themselves, which are
@@ -47,8 +48,9 @@ def together(
     found: Grouping,
     number: int,
     place: Place,
+    name: str = NOW,
 ) -> Together:
-    """``alone`` are the settings of the configured detectors, each by itself; ``number`` is the
+    """``alone`` are the settings of the detectors of ``plan``, each by itself; ``number`` is the
     place of their grouping ``found``."""
     proof = max(grouped.proof, 1)
     standing = heard.standing / proof
@@ -64,7 +66,7 @@ def together(
     extrapolated, why = summed(alone, unfollowed, standing, found)
     judgement = plan.example()[1]
     return Together(
-        name=NAME,
+        name=name,
         detectors=tuple(each.name for each in judgement.detectors) if judgement else (),
         unfollowed=tuple(unfollowed),
         grouping=number,
@@ -96,7 +98,7 @@ def summed(
     together ring at least as often as the one that rings most.
     """
     if found.wander.wanders:
-        return None, WANDERS
+        return None, unsteady(found)
     if standing > _STANDING:
         return None, (
             "alerts stood open for more than a tenth of the time, and while one does, nothing more "

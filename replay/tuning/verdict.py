@@ -8,8 +8,11 @@ from __future__ import annotations
 from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
 
+from monitor.baselining import moving
+from monitor.baselining.stuck import Stuck
 from monitor.configuration import spans
 from monitor.methods.cycles import Cycle
+from replay.tuning import unsteady
 from replay.tuning.intervals import COARSE, CONTRADICTED, NOT_EXPONENTIAL, TOO_FEW
 from replay.tuning.result import Grouping, Refusal, Setting
 from replay.tuning.running import PROVE
@@ -42,9 +45,11 @@ def trust(
     settings: Sequence[Setting],
     running: float,
     mixed: Cycle | None,
+    stuck: Sequence[Stuck],
+    unit: str,
 ) -> Trust:
     """What a colleague would say of a recording of so many ``running`` seconds; ``mixed`` are the
-    sources that take turns in one stream."""
+    sources that take turns in one stream, ``stuck`` the gauges that stood still."""
     if mixed is not None:
         return Trust(
             False,
@@ -52,7 +57,15 @@ def trust(
             f"No: {mixed.length} sources that differ take turns in one stream, and a drift of one "
             "of them is caught far later than any drift here, which was put into all of them.",
         )
+    if stuck and stuck[0].much:
+        said = "No: a gauge stood still, so what it showed is not what the process did."
+        return Trust(False, False, said)
     steady = [each for each in groupings if not each.wander.wanders]
+    moved = next((each.wander.moved for each in groupings if each.wander.moved), ())
+    if not steady and moved:
+        where = moving.told(moved, unit)
+        said = f"No: the centre moved and stayed away: {where}. One baseline does not fit both."
+        return Trust(False, False, said)
     if not steady:
         return Trust(
             False,
@@ -68,6 +81,12 @@ def trust(
     if len(steady) < len(groupings):
         wandering = ", ".join(each.said for each in groupings if each.wander.wanders)
         return Trust(True, True, f"In part: y{said}, but not with {wandering}, where it wanders.")
+    if stuck:
+        why = "but a gauge stood still for a while."
+        return Trust(True, True, f"With care: y{said}, {why}")
+    if moved:
+        why = f"but for a short part the centre lay elsewhere: {moving.told(moved, unit)}."
+        return Trust(True, True, f"With care: y{said}, {why}")
     if any(each.wander.growth is None for each in steady):
         why = "but it is too short to see whether the process wanders."
         return Trust(True, True, f"With care: y{said}, {why}")
@@ -85,12 +104,17 @@ def refusals(
     left_out: Sequence[str],
     unmatched: Sequence[str],
     mixed: Cycle | None,
+    stuck: Sequence[Stuck],
+    unit: str,
 ) -> tuple[Refusal, ...]:
     """Everything that a recording of so many ``running`` seconds does not answer; ``left_out`` are
     settings whose limits could not be worked out, ``unmatched`` configured detectors that cannot be
-    judged, ``mixed`` sources that take turns in one stream."""
+    judged, ``mixed`` sources that take turns in one stream, ``stuck`` gauges that stood still."""
+    moved = next((each.wander.moved for each in groupings if each.wander.moved), ())
     return (
         *_of_mixed(mixed),
+        *((unsteady.of_stuck(stuck),) if stuck else ()),
+        *((unsteady.of_moved(moved, unit),) if moved and groupings[0].wander.wanders else ()),
         *_refused(groupings, settings, promise, running, left_out, unmatched),
     )
 
@@ -117,6 +141,8 @@ def _refused(
     more = longer(max(promise, _least_asked(settings, promise)), running)
     for number, each in enumerate(groupings):
         asked = _least_asked([s for s in settings if s.grouping == number], promise)
+        if each.wander.wanders and each.wander.moved:
+            continue  # told once for all of them
         if each.wander.wanders:
             yield Refusal(
                 f"any interval with {each.said}",

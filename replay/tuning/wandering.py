@@ -1,14 +1,19 @@
-"""Whether subgroup means keep to a centre, or wander: then no recording foretells false alarms.
+"""Whether subgroup means keep to a centre, or wander, or moved once and stayed away: then no
+recording foretells false alarms.
 
-Knows variance ratios of standardised values. Must not know detectors.
+Knows variance ratios and moves of standardised values. Must not know detectors.
 """
 
 from __future__ import annotations
 
 from collections.abc import Sequence
+from dataclasses import replace
 
+from monitor.baselining.moving import BRIEF, Means, cut_at, widest
+from monitor.methods import shift
 from monitor.methods.wander import GROWTH, LONG, SHORT, variance_ratio
 from replay.readings import Values
+from replay.tuning.grouped import GroupedStream
 from replay.tuning.result import Wander
 
 LIMIT = GROWTH
@@ -29,6 +34,22 @@ def wander(streams: Sequence[Values]) -> Wander:
         LIMIT,
         growth is not None and growth > LIMIT,
     )
+
+
+def kept(streams: Sequence[GroupedStream]) -> Wander:
+    """The verdict on the streams of one way of gathering, labelled causes left out."""
+    standard = [((each.mean - each.centre) / each.error)[~each.left_out] for each in streams]
+    found = wander(standard)
+    moves = shift.moves(standard)
+    if not moves or wander(shift.levelled(standard, moves)).wanders:
+        return found
+    moved = tuple(cut_at(_means(streams[move.number]), move.index) for move in moves)
+    return replace(found, wanders=found.wanders or widest(moved) >= BRIEF, moved=moved)
+
+
+def _means(stream: GroupedStream) -> Means:
+    kept = ~stream.left_out
+    return stream.readings.stream, stream.last[kept], stream.mean[kept]
 
 
 def first_lag(streams: Sequence[Values]) -> float:

@@ -53,6 +53,12 @@ def lines(result: Result, width: int = WIDTH) -> Iterator[str]:
     )
     if result.together is not None:
         yield from paragraph(_about_together(result.together), width)
+    if result.proposed is not None:
+        yield from paragraph(
+            f"{rows.NEW}: {result.proposed.name} ({', '.join(result.proposed.detectors)}), held "
+            "against its baseline and counted alike.",
+            width,
+        )
     yield from table(rows.alarms(result, shown), width)
     if left:
         yield f"… and {left} more setting{'s' if left > 1 else ''}: --json has them all"
@@ -118,7 +124,9 @@ def _trust(result: Result, width: int) -> Iterator[str]:
 
 
 def _grouping(found: Grouping, told: bool) -> str:
-    if found.wander.growth is None:
+    if found.wander.moved:
+        wander = "a stream moved and stayed away"
+    elif found.wander.growth is None:
         wander = "too few to see whether the process wanders"
     elif found.wander.wanders:
         wander = f"the process wanders ({found.wander.growth:.2g}, limit {found.wander.limit:g})"
@@ -139,7 +147,7 @@ def _about_together(now: Together) -> str:
     )
     if now.signals:
         said += f"Here {now.observed.alarms:,} came of {now.signals:,} signals"
-        said += f"; an alert stood open for {100 * now.standing:.2g} % of the time. "
+        said += f"; an alert stood open for {spans.number(100 * now.standing)} % of the time. "
     if now.extrapolated is None:
         return f"{said}No interval by the tails is told: {now.no_interval}."
     return f"{said}One in: the rates of all added up, which is a little too often."

@@ -411,3 +411,41 @@ def test_a_wrong_configuration_is_said_before_anything_is_read(
 
     assert bench.run() == 2
     assert "source" in capsys.readouterr().err
+
+
+def test_a_move_near_the_end_and_what_it_says_to_do(
+    bench: Bench, chance: np.random.Generator, capsys: pytest.CaptureFixture[str]
+) -> None:
+    heads = alike(chance)
+    heads["2"][4800:] -= 1.9
+    bench.record(heads)
+
+    assert bench.run() == 1
+
+    said = " ".join(capsys.readouterr().out.split())
+    assert said.startswith("Refused")
+    assert re.search(r"head=2 by -(1.9|2|1.8) g from about 2026-03-02T22:4\d:\d\dZ on", said)
+    assert not bench.baseline.exists()
+    span = re.search(r"--leave-out (\S+Z/\S+Z)", said)
+    assert span is not None
+    assert bench.run("--leave-out", span[1]) == 0
+
+
+def test_a_gauge_that_stood_still(
+    bench: Bench, chance: np.random.Generator, capsys: pytest.CaptureFixture[str]
+) -> None:
+    heads = alike(chance)
+    heads["2"][1000:1200] = heads["2"][1000]
+    bench.record(heads)
+
+    assert bench.run("--json") == 1
+
+    found = json.loads(capsys.readouterr().out)
+    (still,) = found["stuck"]
+    assert (still["stream"], still["readings"], still["runs"]) == ("head=2", 200, 1)
+    assert still["first"] == format_time(START + 2001 * 6 * SECOND)
+    assert still["last"] == format_time(START + (2001 + 398) * 6 * SECOND)
+    (why,) = (each for each in found["reasons"] if each["kind"] == "stuck")
+    span = re.search(r"--leave-out (\S+Z/\S+Z)", why["do"])
+    assert span is not None
+    assert bench.run("--leave-out", span[1]) == 0

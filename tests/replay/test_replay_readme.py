@@ -48,7 +48,7 @@ def run(words: list[str], folder: Path) -> str:
     done = subprocess.run(
         [sys.executable, "-m", "replay", *words[1:]],
         cwd=folder,
-        env={**os.environ, "PYTHONPATH": str(REPOSITORY)},
+        env={**os.environ, "PYTHONPATH": str(REPOSITORY), "COLUMNS": "120"},
         capture_output=True,
         text=True,
         timeout=60,

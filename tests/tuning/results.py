@@ -96,6 +96,7 @@ def trustworthy(settings: int = 14) -> Result:
         best=0,
         best_spread=None,
         together=_together(),
+        proposed=None,
         fragment=FRAGMENT,
         notes=("It replaces cusum and keeps shewhart-mean.",),
         events=0,

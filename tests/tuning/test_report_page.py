@@ -18,7 +18,7 @@ from results import FRAGMENT, refused, trustworthy, with_events
 
 from monitor.commandline import CommandError
 from replay.tuning.report import page
-from replay.tuning.result import Result
+from replay.tuning.result import Extrapolated, Observed, Range, Result
 
 # The order of the reader's questions is the issue's own.
 QUESTIONS = [
@@ -134,6 +134,30 @@ def test_what_runs_today_stands_beside_the_candidates() -> None:
     for name in ("promised", "streams"):
         (plot,) = (p for p in found.all("div", "plot") if p.attributes["id"] == name)
         assert "all configured detectors together" in plot.attributes["aria-label"]
+
+
+def test_what_the_fragment_would_run_is_what_is_delivered() -> None:
+    """The best setting alone is one thing, all that the crew will hear another."""
+    result = trustworthy()
+    assert result.together is not None
+    then = replace(
+        result.together,
+        name="all of the fragment together",
+        observed=Observed(2, 27 * 3_600.0, Range(15_000.0, 274_000.0)),
+        extrapolated=Extrapolated(50_000.0, 2.0, Range(25_000.0, 100_000.0)),
+        meets=False,
+    )
+    found = parsed(shown(replace(result, proposed=then)))
+    first, second = rows(tables(found.one("rung"), "Keeps the promise?"))[:2]
+    assert "what runs today" in first[0]
+    assert "what would run with the fragment: cusum, shewhart-mean, cusum-variance" in second[0]
+    told = found.all("p", "answer")[0].text()
+    assert "All of the fragment together would have rung 2 times in the 27 h" in told
+    tiles = found.all("dl", "key")[0].text()
+    assert "2 false alarms of all of the fragment in 27 h of the last part" in tiles
+    assert "14 h between false alarms of all of the fragment" in tiles
+    (plot,) = (p for p in found.all("div", "plot") if p.attributes["id"] == "promised")
+    assert "all of the fragment together" in plot.attributes["aria-label"]
 
 
 def test_without_a_baseline_nothing_runs_today() -> None:

@@ -53,7 +53,7 @@ def test_a_delay_that_not_all_had_is_told_by_how_long_was_waited() -> None:
 
 def test_a_count_of_none_is_a_bound() -> None:
     assert words.counted(Observed(0, 90_000, Range(30_000, None)))[0] == "at least 8.3 h"
-    assert words.counted(Observed(3, 90_000, None)) == ("not given", "the process wanders")
+    assert words.counted(Observed(3, 90_000, None)) == ("not given", "its centre does not stay")
 
 
 @given(st.floats(0, 60), st.floats(1, 20), st.floats(0.2, 5))

@@ -158,6 +158,38 @@ def test_a_line_never_at_rest_is_not_called_quiet(
     assert "stood open" in now["no_interval"]
 
 
+def test_what_the_fragment_would_run_is_judged_against_its_own_baseline(
+    capsys: pytest.CaptureFixture[str], tmp_path: Path
+) -> None:
+    """The configured sigma is far too large, so that nothing rings today; with the fragment's, wild
+    readings ring the charts that are kept, as ``play`` of it on the same recording says."""
+    values = steady(3)[:ROWS]
+    values[::151] += 12.0
+    path = recording(tmp_path / "line.csv", values)
+    detectors = [
+        {"kind": "cusum", "catch": 1.5},
+        {"kind": "shewhart", "chart": "mean"},
+        {"kind": "cusum", "chart": "variance", "catch_ratio": 1.5},
+    ]
+    more = {"baseline": {"mean": 341.2, "sigma": 6.0}, "promise": {"false_alarm_every": "1h"}}
+    source = {**DOCUMENT["characteristics"]["net-weight"]["source"], "expected_streams": 2}
+    config = configured(tmp_path / "line.yaml", detectors, source=source, **more)
+    best = tmp_path / "best.yaml"
+    assert main(["tune", config, path, "--to", str(best), "--json"]) == 0
+    found = json.loads(capsys.readouterr().out)
+    assert found["together"]["false_alarms"]["seen"] == 0
+    then = found["proposed"]
+    keys = yaml.safe_load(best.read_text())["characteristics"]["net-weight"]
+    proposed = configured(tmp_path / "then.yaml", **({"source": source} | keys))
+    assert then["false_alarms"]["seen"] == rung(capsys, proposed, path, tmp_path) > 10
+    assert then["detectors"] == ["cusum", "shewhart-mean", "cusum-variance"]
+    assert then["keeps"] == "no"
+    assert found["breaking"]
+    said = " ".join(best.read_text().replace("\n# ", " ").split())
+    assert "With this baseline it would ring" in said
+    assert "Caution: all of it together would have rung" in said
+
+
 def test_no_baseline_nothing_runs_today(capsys: pytest.CaptureFixture[str], tmp_path: Path) -> None:
     path = recording(tmp_path / "line.csv", steady(4)[:ROWS])
     config = configured(tmp_path / "line.yaml", DETECTORS[:1], baseline={"learn": 1000})

@@ -25,9 +25,11 @@ def few(result: Result) -> tuple[Setting, ...]:
     )[: 2 * _FEW]
 
 
-def with_today(result: Result, settings: Sequence[Setting]) -> tuple[Shown, ...]:
-    """What all configured detectors do together, where they are judged, before ``settings``."""
-    return (*settings,) if result.together is None else (result.together, *settings)
+def with_wholes(result: Result, settings: Sequence[Setting]) -> tuple[Shown, ...]:
+    """Before ``settings`` what all configured detectors do together, and all of the fragment, where
+    they are judged."""
+    wholes = (result.together, result.proposed)
+    return (*(each for each in wholes if each is not None), *settings)
 
 
 def rest(result: Result) -> tuple[Setting, ...]:

@@ -86,7 +86,7 @@ def counted(observed: Observed) -> tuple[str, str]:
     if not observed.seconds:
         return "not given", "an alert was open all the time"
     if observed.interval is None:
-        return "not given", "the process wanders"
+        return "not given", "its centre does not stay"
     if not observed.alarms:
         return f"at least {spans.long(observed.interval.low)}", "none seen; 95 %"
     return spans.long(observed.seconds / observed.alarms), time_range(observed.interval)
@@ -182,13 +182,14 @@ def purpose(setting: Setting, grouping: Grouping, unit: str) -> str:
     return "; ".join(parts)
 
 
-def today(now: Together) -> str:
-    """What is counted in the row of all configured detectors, in a line."""
-    told = f"what runs today: {', '.join(now.detectors)}; as the crew hears alerts"
-    if now.signals:
-        told += f", {plural(now.signals, 'signal')} in all"
-    if now.standing >= 0.001:
-        told += f"; one stood open for {100 * now.standing:.2g} % of the time"
+def whole(found: Together, result: Result) -> str:
+    """What is counted in the row of all detectors of a configuration, in a line."""
+    told = "what runs today" if found is result.together else "what would run with the fragment"
+    told += f": {', '.join(found.detectors)}; as the crew hears alerts"
+    if found.signals:
+        told += f", {plural(found.signals, 'signal')} in all"
+    if found.standing >= 0.001:
+        told += f"; one stood open for {spans.number(100 * found.standing)} % of the time"
     return told
 
 

@@ -13,7 +13,7 @@ from monitor.configuration import spans
 from replay.tuning.report import chosen, words
 from replay.tuning.report.charts import look
 from replay.tuning.report.markup import Chart
-from replay.tuning.result import Result, Shown
+from replay.tuning.result import Result, Setting, Shown
 
 _LINES = 3
 
@@ -22,7 +22,7 @@ def chart(result: Result) -> Chart | None:
     """Every setting as a point: how seldom it rings against how late it is."""
     points: list[tuple[Shown, float, float]] = []
     mean = [each for each in result.settings if not each.of_spread]
-    for setting in chosen.with_today(result, mean):
+    for setting in chosen.with_wholes(result, mean):
         delay = chosen.first_step(setting, result)
         found = setting.extrapolated
         if found is None or found.interval.high is None:
@@ -51,16 +51,20 @@ def chart(result: Result) -> Chart | None:
         (True, "keeps the promise", "circle", look.OWN),
         (False, "not shown to keep it", "circle-open", look.MUTED),
     ):
-        these = [p for p in points if p[0].meets is meets and p[0] is not result.together]
+        these = [p for p in points if p[0].meets is meets and isinstance(p[0], Setting)]
         if these:
             drawn.add_trace(_points(these, name, symbol, color))
     best = chosen.best(result)
     these = [point for point in points if point[0] is best]
     if these:
         drawn.add_trace(_points(these, "the one to take", "star-diamond", look.INK, size=15))
-    these = [point for point in points if point[0] is result.together]
-    if these:
-        drawn.add_trace(_points(these, "what runs now, together", "square", look.FLOOR, size=12))
+    for whole, name, symbol in (
+        (result.together, "what runs now, together", "square"),
+        (result.proposed, "the fragment, together", "square-open"),
+    ):
+        these = [point for point in points if point[0] is whole]
+        if these:
+            drawn.add_trace(_points(these, name, symbol, look.FLOOR, size=12))
     kept = sum(1 for point in points if point[0].meets)
     said = (
         f"{words.plural(len(points), 'setting')}, {kept} of them keep the promise: the seldomer a "

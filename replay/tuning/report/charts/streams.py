@@ -70,11 +70,9 @@ def chart(result: Result) -> Chart:
 
 
 def _rows(result: Result) -> list[Shown]:
-    """The best settings, and below them what runs today."""
-    rows: list[Shown] = list(chosen.few(result)[:_ROWS])
-    if result.together is not None:
-        rows[_ROWS - 1 :] = [result.together]
-    return rows
+    """The best settings, and below them what runs today and what would with the fragment."""
+    wholes = chosen.with_wholes(result, ())
+    return [*chosen.few(result)[: _ROWS - len(wholes)], *wholes]
 
 
 _CAPTION = (

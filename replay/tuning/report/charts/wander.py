@@ -58,6 +58,8 @@ _CAPTION = (
 def sentence(grouping: Grouping) -> str:
     """What the ratios say, in figures."""
     wander = grouping.wander
+    if wander.moved:
+        return "a stream moved and stayed away"
     if wander.growth is None:
         return "too short to tell whether it wanders"
     word = "wanders" if wander.wanders else "keeps to its centre"

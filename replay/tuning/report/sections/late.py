@@ -50,7 +50,7 @@ def render(result: Result) -> str:
     parts.append(markup.paragraph(_FLOOR, "small"))
     if (cost := price.chart(result)) is not None:
         parts += [markup.heading("What does ringing less often cost?"), markup.chart(cost)]
-    shown = chosen.with_today(result, few)
+    shown = chosen.with_wholes(result, few)
     parts += [_drift(result, shown, rest, shape, amount) for shape, amount in found]
     if result.together is not None and (missing := result.together.unfollowed):
         parts.append(

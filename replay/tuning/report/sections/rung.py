@@ -22,7 +22,8 @@ _WORDS = (
     "check is the textbook's."
 )
 _TODAY = (
-    "All configured detectors together are counted as the crew hears alerts: what several of them "
+    "All detectors together - those configured, and those that the fragment would put in their "
+    "place, held against its baseline - are counted as the crew hears alerts: what several of them "
     "signal on one side of a stream is one alert until it is back to normal, and what comes after "
     "that rings again. Their interval by the tails adds up the rates of each, which is a little "
     "too often, since some of it rings together. A detector among others is asked for its part of "
@@ -40,7 +41,7 @@ def render(result: Result) -> str:
             markup.paragraph(_WORDS),
             *([] if result.together is None else [markup.paragraph(_TODAY)]),
             markup.table(
-                _caption(result), _columns(result), _rows(chosen.with_today(result, few), result)
+                _caption(result), _columns(result), _rows(chosen.with_wholes(result, few), result)
             ),
         ]
     if rest:
@@ -50,7 +51,7 @@ def render(result: Result) -> str:
     if any(setting.observed.interval or setting.extrapolated for setting in few):
         parts += [
             markup.heading("Promise against delivered"),
-            markup.chart(promised.chart(result, chosen.with_today(result, few))),
+            markup.chart(promised.chart(result, chosen.with_wholes(result, few))),
         ]
     if result.streams:
         parts += [
@@ -58,7 +59,7 @@ def render(result: Result) -> str:
             markup.chart(streams.chart(result)),
         ]
     if result.events:
-        shown = chosen.with_today(result, few)
+        shown = chosen.with_wholes(result, few)
         parts += [markup.heading("Your labelled events"), _events(shown, rest, result)]
     return "".join(parts)
 
@@ -102,7 +103,7 @@ def _row(shown: Shown, result: Result) -> tuple[Text, ...]:
 
 def _what(shown: Shown, result: Result) -> str:
     if isinstance(shown, Together):
-        return words.today(shown)
+        return words.whole(shown, result)
     return words.purpose(shown, result.groupings[shown.grouping], result.unit)
 
 

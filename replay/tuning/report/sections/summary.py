@@ -80,7 +80,22 @@ def _answer(result: Result, best: Setting | None) -> Text:
             f" Caution: {staying} {stay} as configured and {ring} more often than asked, so that "
             "all of them together break the promise: see what to put in your configuration."
         )
-    return Html(f"Of {tried}, take {name}{markup.inline(told + _today(result))}")
+    return Html(
+        f"Of {tried}, take {name}{markup.inline(told + _fragment(result) + _today(result))}"
+    )
+
+
+def _fragment(result: Result) -> str:
+    """What all that is to be put in does together, in a sentence."""
+    whole = result.proposed
+    if whole is None:
+        return ""
+    seen = whole.observed
+    return (
+        " All of the fragment together would have rung "
+        f"{words.plural(seen.alarms, 'time')} in the {spans.long(seen.seconds)} that prove it; "
+        f"asked was one in {spans.long(whole.asked)}."
+    )
 
 
 def _asked(best: Setting, result: Result) -> str:
@@ -123,7 +138,7 @@ def _delivered(best: Shown) -> str:
 def _key(result: Result, best: Setting | None) -> list[tuple[str, Text]]:
     note = "between false alarms"
     if best is not None and best.asked != result.promise:
-        note += f" of all detectors; {spans.long(best.asked)} of this one"
+        note += " of all detectors"
     pairs = [_tile("Asked", spans.long(result.promise), note)]
     if best is None:
         supports = max((grouping.supports for grouping in result.groupings), default=0.0)
@@ -131,22 +146,24 @@ def _key(result: Result, best: Setting | None) -> list[tuple[str, Text]]:
             note = "the longest interval it supports"
             pairs.append(_tile("This recording", spans.long(supports), note))
         return pairs
-    seen = best.observed
+    # As the crew would hear it: all that is to be put in, where it is known.
+    shown: Shown = result.proposed or best
+    whole = " of all of the fragment" if result.proposed is not None else ""
     pairs.append(
         _tile(
             "Counted",
-            words.plural(seen.alarms, "false alarm"),
-            f"in {spans.long(seen.seconds)} of the last part",
+            words.plural(shown.observed.alarms, "false alarm"),
+            f"{whole[1:]} in {spans.long(shown.observed.seconds)} of the last part".strip(),
         )
     )
-    if best.extrapolated is not None:
-        interval = best.extrapolated.interval
+    if shown.extrapolated is not None:
+        interval = shown.extrapolated.interval
         if interval.high is None:
             told = f"at least {spans.long(interval.low)}"
-            note = "between false alarms; more than this recording can tell"
+            note = f"between false alarms{whole}; more than this recording can tell"
         else:
-            told = spans.long(best.extrapolated.seconds)
-            note = f"between false alarms; {words.time_range(interval)} with 90 %"
+            told = spans.long(shown.extrapolated.seconds)
+            note = f"between false alarms{whole}; {words.time_range(interval)} with 90 %"
         pairs.append(_tile("Delivered", told, note))
     delay = chosen.first_step(best, result)
     if delay is not None and delay.late_readings.value is not None:

@@ -88,7 +88,7 @@ def _baseline(line: Baseline, readings: int) -> tuple[Text, ...]:
     moved = line.mean_proof - line.mean
     whole = (line.sigma**2 + line.sigma_between**2) ** 0.5
     note = ""
-    if whole > 0:
+    if abs(moved) >= 0.005 * whole > 0:
         way = "down" if moved < 0 else "up"
         note = f"{abs(moved) / whole:.2f} of the whole spread {way}"
     return (
@@ -121,7 +121,8 @@ def _groupings(result: Result) -> str:
 
 
 def _grouping(grouping: Grouping, told: bool) -> tuple[Text, ...]:
-    sign = "✗" if grouping.wander.wanders else "?" if grouping.wander.growth is None else "✓"
+    kept = grouping.wander
+    sign = "✗" if kept.wanders else "?" if kept.growth is None or kept.moved else "✓"
     return (
         grouping.said,
         f"{grouping.fit:,}",
