@@ -28,6 +28,9 @@ _NEGLIGIBLE = 1e-9
 _CLIPPED_TOLERANCE = 1e-3
 """Of a run length of clipped values, whose own error is larger."""
 
+_NEAR_ENOUGH = 0.1
+"""Of run lengths at two widths, at which exact limits cost as many points."""
+
 _JUMP = 1e-6
 """Of a width, where their run length jumps."""
 
@@ -183,11 +186,17 @@ def _clipped_width(
     # Many values make up an average, which is nearly as if they were normal then.
     mean, sd = _clipped(shift, clip)
     guess = min(sd * _settled_width(lam, wanted, mean / sd, direction, 1e-3), 0.98 * most)
-    longer, settled = wanted, length(guess, True)
-    if not asymptotic and settled < math.inf:
-        # Exact limits cost about as many points at any width.
-        longer += settled * (1 - _settling(lam, guess, shift, direction, clip))
-    width = found(True, longer, guess, guess)
+    longer, width, near = wanted, guess, asymptotic
+    while True:
+        settled = length(width, True)
+        if not asymptotic and settled < math.inf:
+            # Exact limits cost about as many points at any width near this one.
+            longer = wanted + settled * (1 - _settling(lam, width, shift, direction, clip))
+        near = near or abs(settled - longer) < _NEAR_ENOUGH * longer
+        width = found(True, longer, width, guess)
+        if near:
+            break
+        near = True
     if abs(longer - wanted) > 2 * _CLIPPED_TOLERANCE * wanted:
         slope = _slope(width - _centre(lam, shift, direction))
         width = found(False, wanted, width, slope)
