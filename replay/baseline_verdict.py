@@ -28,8 +28,8 @@ def heard(assessment: Assessment, rung: Rung, rate: float | None) -> Assessment:
         "rings",
         found,
         "look at the times listed; where nothing was wrong then, let `driftbell-replay tune` find "
-        "detectors that keep the promise on this recording (larger subgroups help, and so do "
-        "clip: 3 at a CUSUM or EWMA of means and no detector of the spread)",
+        "detectors that keep the promise on this recording (larger subgroups help; so does "
+        "clip: 3 at a CUSUM or EWMA of means, or leaving out detectors of the spread)",
     )
     reasons = gravest_first((reason, *assessment.reasons))
     kept = replace(

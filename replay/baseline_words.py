@@ -123,14 +123,20 @@ def _often(found: Delivered, rate: float | None) -> str:
 
 
 def _shrinks(estimated: Estimated, found: Delivered) -> str:
-    if estimated.rung is not None and estimated.rung.too_many:
-        return f"what rang on this recording leaves {share(estimated.rung.kept)} of it"
+    if _rang_more(estimated, found):
+        return f"what rang on this recording leaves {share(found.unlucky)} of it"
     if found.unlucky >= 0.995:
         return "not at all, as far as this recording shows"
     return (
         "one time out of ten, a baseline estimated as this one was keeps less than "
         f"{share(found.unlucky)} of the promised interval between false alarms"
     )
+
+
+def _rang_more(estimated: Estimated, found: Delivered) -> bool:
+    """Whether it is what rang on the recording that keeps so little of the promise."""
+    rung = estimated.rung
+    return rung is not None and rung.too_many and rung.kept <= found.unlucky
 
 
 def share(left: float) -> str:
@@ -266,8 +272,8 @@ def _rung(estimated: Estimated) -> Iterator[str]:
 
 
 def _of_estimates(estimated: Estimated, found: Delivered) -> str:
-    if estimated.rung is not None and estimated.rung.too_many:
-        return f"What rang on this recording itself leaves {share(estimated.rung.kept)} of that."
+    if _rang_more(estimated, found):
+        return f"What rang on this recording itself leaves {share(found.unlucky)} of that."
     if found.unlucky >= 0.995:
         return "A baseline estimated as this one was keeps all of that, nine times out of ten."
     return (

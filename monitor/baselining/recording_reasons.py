@@ -70,7 +70,7 @@ def strangers(estimate: Estimate, outside: Found) -> Iterator[Reason]:
         f"{out:,} of {total:,} subgroups lie outside limits that chance hardly ever crosses "
         f"({100 * share:.2g} %); they are part of the estimate",
         "look up what happened at the times listed; where there was a cause, estimate again "
-        "with --leave-out TIME or FROM/TO (or --leave-out outside for all of them)",
+        "without them: driftbell-replay baseline has --leave-out TIME or FROM/TO (or outside)",
     )
 
 

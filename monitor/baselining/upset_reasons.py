@@ -23,8 +23,8 @@ def moved(found: Sequence[Moved], unit: str) -> Reason:
         "moved",
         f"the centre moved and stayed away: {moving.told(found, unit)} (the shorter side is "
         f"{100 * widest:.2g} % of the recording), so one centre does not describe both sides",
-        "find what moved it and estimate again without it: "
-        f"{leave_out(*moving.shorter_side(found))}, or record again",
+        "find what moved it and estimate again without it (driftbell-replay baseline with "
+        f"{leave_out(*moving.shorter_side(found))}), or record again",
     )
 
 
@@ -36,7 +36,8 @@ def stuck(found: Sequence[Stuck]) -> Iterator[Reason]:
             "refuse" if most.much else "provisional",
             "stuck",
             f"{stood_still(found)}, far more than chance makes of its steps",
-            f"look at the gauge, and estimate again without it: {leave_out(most.first, most.last)}",
+            "look at the gauge, and estimate again without it (driftbell-replay baseline with "
+            f"{leave_out(most.first, most.last)})",
         )
 
 

@@ -46,10 +46,12 @@ def _found(
     delivered: Delivered | None,
     unit: str,
 ) -> list[Reason]:
+    # Where a gauge stood still, its centre did as well, and that is no news of the process.
+    still = bool(clues.stuck) and clues.stuck[0].much
     return [
         *recording_reasons.promise(delivered),
         *upset_reasons.stuck(clues.stuck),
-        *process_reasons.wander(estimate, unit),
+        *(() if still else process_reasons.wander(estimate, unit)),
         *process_reasons.mixed(estimate, clues),
         *process_reasons.following(estimate, delivered),
         *recording_reasons.amount(estimate),

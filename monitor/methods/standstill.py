@@ -18,6 +18,8 @@ _SURE = 1e-9
 a little longer than the formula knows."""
 _FEWEST = 20
 """In a row, below which nobody would call it stuck."""
+_MOST = 20
+"""Standstills that are looked for behind each other."""
 _RUNS, _RUNS_OF_ONE = 100, 30
 """Runs outside the longest that tell how long runs are, of all values and of the commonest."""
 
@@ -38,8 +40,9 @@ def standstill(values: Array) -> Standstill | None:
 
     A run of L is due about N·pᴸ times in N values (W. Feller 1968, An Introduction to Probability
     Theory, volume 1, section XIII.7), with p the chance of one more like the last. As p counts,
-    outside the longest run, the share of the commonest value, or how often it repeats itself where
-    that is more often: a coarse gauge on a slow process has long runs with nothing wrong.
+    outside the longest run and those half as long, the share of the commonest value, or how often
+    it repeats itself where that is more often: a coarse gauge on a slow process has long runs with
+    nothing wrong.
     """
     count = len(values)
     if count < 2 * _FEWEST:
@@ -51,13 +54,17 @@ def standstill(values: Array) -> Standstill | None:
     if length < _FEWEST or length == count:
         return None
     others = lengths.copy()
-    others[longest] = 0
-    again = _again(values[begins], others)
-    if again is None:
-        return None
-    due = math.log(_SURE / count) / math.log(again)
-    stuck = lengths > max(due, _FEWEST - 1)
-    if not stuck[longest]:
+    for run in np.argsort(-lengths, kind="stable")[:_MOST].tolist():
+        if lengths[run] < max(length / 2, _FEWEST):
+            return None
+        others[run] = 0  # what it showed while it stood still makes its values look common
+        again = _again(values[begins], others)
+        if again is None:
+            return None
+        stuck = lengths > max(math.log(_SURE / count) / math.log(again), _FEWEST - 1)
+        if stuck[longest]:
+            break
+    else:
         return None
     return Standstill(start, length, int(stuck.sum()), int(lengths[stuck].sum()))
 

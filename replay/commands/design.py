@@ -105,7 +105,8 @@ def main(args: argparse.Namespace) -> int:
     except ValueError as error:
         instead = "write other constants"
         if args.catch is not None:
-            instead = "catch a larger drift, ignore less, or take a CUSUM"
+            instead = "catch a larger drift, or ignore less"
+            instead += ", or take a CUSUM" if args.kind == "ewma" else ""
         raise CommandError(f"{error}: {instead}") from None
     if args.html is not None:
         # A simulated curve is drawn through what is told: each of its points takes its time.

@@ -49,7 +49,7 @@ def request(args: argparse.Namespace, characteristic: CharacteristicPlan) -> Req
             WRONG,
         )
     for drift, alone in itertools.product(catch, ignore):
-        if alone >= drift:
+        if alone >= drift and args.ignore is not None:
             print(
                 f"catch {drift:g} is not tried with ignore {alone:g}, which is not smaller "
                 "(numbers in a list stand apart by commas: 1.5,3)",

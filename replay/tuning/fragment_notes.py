@@ -67,7 +67,8 @@ def noted(
     put in their place."""
     kept = settled.kept
     if foreseen is not None:
-        yield from _too_often(kept, foreseen.alone, settings, "With this baseline it would ring")
+        rings = "With this baseline it would have rung"
+        yield from _too_often(kept, foreseen.alone, settings, rings)
         yield from _all_of_it(foreseen.together)
     else:
         yield "Caution: driftbell check refuses these keys as they stand; it says why."

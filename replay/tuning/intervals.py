@@ -37,7 +37,7 @@ def extrapolated(
     if found.wander.wanders:
         return None, unsteady(found), 0.0
     if tail is None:
-        return None, TOO_FEW, 0.0
+        return None, CONTRADICTED if _by_count(observed) else TOO_FEW, 0.0
     interval = tail.interval(limit(judged.scheme))
     if counted := _by_count(observed):
         if tail.exponential and interval > _FAR_MORE * counted.seconds * found.rate:

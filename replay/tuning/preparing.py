@@ -13,6 +13,7 @@ import numpy as np
 from monitor import stream_names
 from monitor.baselining.stuck import Stuck, stuck
 from monitor.commandline import CommandError
+from monitor.methods import shift
 from monitor.plan import BaselinePlan, ByCount, CharacteristicPlan, Stream, SubgroupPlan
 from monitor.times import format_duration
 from replay.readings import StreamReadings, Times, Values
@@ -97,8 +98,9 @@ def prepare(
 
 def _moved_alike(held: Sequence[Held]) -> tuple[Held, ...]:
     """What moved in one way of gathering moved in all of them, though not all show it."""
-    moved = max((each.found.wander for each in held), key=lambda wander: len(wander.moved))
-    if not moved.wanders or not moved.moved:
+    refusing = [each.found.wander for each in held if each.found.wander.wanders]
+    moved = max(refusing, key=lambda wander: len(wander.moved), default=None)
+    if moved is None or not moved.moved:
         return tuple(held)
     return tuple(
         each
@@ -224,7 +226,7 @@ def _hold(
         fit=ours.fit,
         proof=ours.proof,
         rate=rate,
-        correlation=wandering.first_lag(values),
+        correlation=wandering.first_lag(shift.levelled(values, shift.moves(values))),
         wander=wandering.kept(streams),
         supports=FAR * ours.proof / rate,
         baselines=tuple(_baseline(each) for each in streams),

@@ -110,11 +110,12 @@ def refusals(
     """Everything that a recording of so many ``running`` seconds does not answer; ``left_out`` are
     settings whose limits could not be worked out, ``unmatched`` configured detectors that cannot be
     judged, ``mixed`` sources that take turns in one stream, ``stuck`` gauges that stood still."""
-    moved = next((each.wander.moved for each in groupings if each.wander.moved), ())
+    refusing = (each.wander.moved for each in groupings if each.wander.wanders)
+    moved = next(filter(None, refusing), ())
     return (
         *_of_mixed(mixed),
         *((unsteady.of_stuck(stuck),) if stuck else ()),
-        *((unsteady.of_moved(moved, unit),) if moved and groupings[0].wander.wanders else ()),
+        *((unsteady.of_moved(moved, unit),) if moved and not (stuck and stuck[0].much) else ()),
         *_refused(groupings, settings, promise, running, left_out, unmatched),
     )
 
@@ -150,6 +151,12 @@ def _refused(
                 f"times as much, for their length, as means of 50 (limit {each.wander.limit:g})",
                 "find what moved the process, and label it with --events if it was a real cause; "
                 "or take longer subgroups, or leave such a drift alone with --ignore",
+            )
+        elif not each.supports:
+            yield Refusal(
+                f"any interval with {each.said}",
+                "labelled causes leave nothing of the last part of the recording",
+                "cut them off instead of labelling them, or record again",
             )
         elif asked > each.supports:
             part = "that" if asked <= promise else f"a part of it, one in {spans.long(asked)},"

@@ -44,7 +44,7 @@ def kept(streams: Sequence[GroupedStream]) -> Wander:
     if not moves or wander(shift.levelled(standard, moves)).wanders:
         return found
     moved = tuple(cut_at(_means(streams[move.number]), move.index) for move in moves)
-    return replace(found, wanders=found.wanders or widest(moved) >= BRIEF, moved=moved)
+    return replace(found, wanders=widest(moved) >= BRIEF, moved=moved)
 
 
 def _means(stream: GroupedStream) -> Means:

@@ -115,12 +115,13 @@ def _trust(result: Result, width: int) -> Iterator[str]:
     )
     for number, each in enumerate(result.groupings):
         yield from paragraph(_grouping(each, has_interval(result, number)), width, "- ")
-    yield from paragraph(
-        "A process wanders where its mean itself moves on and on, so that one part of a recording "
-        "does not foretell the next: then means of 200 subgroups vary more, for their length, than "
-        "means of 50, by the factor in brackets.",
-        width,
-    )
+    if any(each.wander.growth is not None and not each.wander.moved for each in result.groupings):
+        yield from paragraph(
+            "A process wanders where its mean itself moves on and on, so that one part of a "
+            "recording does not foretell the next: then means of 200 subgroups vary more, for "
+            "their length, than means of 50, by the factor in brackets.",
+            width,
+        )
 
 
 def _grouping(found: Grouping, told: bool) -> str:

@@ -31,6 +31,19 @@ def test_a_gauge_that_stood_still_is_found(correlation: float, step: float) -> N
     assert (found.runs, found.values) == (1, found.length)
 
 
+@pytest.mark.parametrize("runs", [2, 5])
+@pytest.mark.parametrize("seed", range(10))
+def test_several_do_not_hide_each_other(runs: int, seed: int) -> None:
+    """On a gauge so fine that a value it stood still at is met by itself now and then as well."""
+    values = readings(0.0, 0.005, 20_000, seed)
+    for start in range(1_000, 1_000 + 3_000 * runs, 3_000):
+        values[start : start + 600] = values[start]
+    found = standstill(values)
+    assert found is not None
+    assert found.runs == runs
+    assert found.values >= 600 * runs
+
+
 @pytest.mark.parametrize("correlation", [0.0, 0.5, 0.9, 0.99])
 @pytest.mark.parametrize("step", [0.001, 0.3, 1.0, 2.5])
 def test_runs_of_a_coarse_gauge_are_no_standstill(correlation: float, step: float) -> None:

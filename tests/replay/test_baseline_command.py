@@ -449,3 +449,19 @@ def test_a_gauge_that_stood_still(
     span = re.search(r"--leave-out (\S+Z/\S+Z)", why["do"])
     assert span is not None
     assert bench.run("--leave-out", span[1]) == 0
+
+
+def test_a_gauge_that_died_did_not_move(
+    bench: Bench, chance: np.random.Generator, capsys: pytest.CaptureFixture[str]
+) -> None:
+    """For the most part of the recording, at a value of its own: what is left out is that part."""
+    heads = alike(chance)
+    count = len(heads["2"])
+    heads["2"][2 * count // 5 :] = 345.0
+    bench.record(heads)
+
+    assert bench.run("--json") == 1
+
+    kinds = {each["kind"] for each in json.loads(capsys.readouterr().out)["reasons"]}
+    assert "stuck" in kinds
+    assert not {"moved", "wander"} & kinds

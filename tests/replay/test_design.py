@@ -215,7 +215,7 @@ def test_a_run_length_that_is_too_much_to_compute(capsys: pytest.CaptureFixture[
     assert "write other constants" in said
     asked = ["--catch", "0.5", "--ignore", "0.3", "--run-length", "1e9", "--kind", "ewma"]
     assert main(["design", *asked]) == 1
-    assert "catch a larger drift, ignore less, or take a CUSUM" in capsys.readouterr().err
+    assert "catch a larger drift, or ignore less, or take a CUSUM" in capsys.readouterr().err
 
 
 def test_an_interval_no_detector_has(capsys: pytest.CaptureFixture[str]) -> None:

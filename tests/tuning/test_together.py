@@ -186,7 +186,7 @@ def test_what_the_fragment_would_run_is_judged_against_its_own_baseline(
     assert then["keeps"] == "no"
     assert found["breaking"]
     said = " ".join(best.read_text().replace("\n# ", " ").split())
-    assert "With this baseline it would ring" in said
+    assert "With this baseline it would have rung" in said
     assert "Caution: all of it together would have rung" in said
 
 

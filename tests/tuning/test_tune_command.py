@@ -604,7 +604,7 @@ def test_a_kept_detector_that_breaks_the_promise_is_named(
     said = " ".join(to.read_text().replace("\n# ", " ").split())
     assert said.startswith("# Caution: shewhart-mean stays, and does not keep its part")
     assert "cusum-variance stays, and does not keep its part of the promise" in said
-    assert "With this baseline it would ring" in said
+    assert "With this baseline it would have rung" in said
 
 
 def test_sources_that_take_turns_in_one_stream_are_refused(
