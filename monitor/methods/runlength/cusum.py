@@ -6,6 +6,7 @@ Knows sums of normal values. Must not know sigma, streams or alerts.
 from __future__ import annotations
 
 import math
+from functools import cache
 
 import numpy as np
 
@@ -33,8 +34,8 @@ _SELDOM = 0.65
 
 _NEGLIGIBLE = 1e-9
 
-_JUMP = 1e-8
-"""Of h, where the run length of clipped values jumps."""
+_JUMP, _CLOSE = 1e-8, 1e-3
+"""Of h, where the run length of clipped values jumps; and near enough to try where it should."""
 
 
 def run_length(
@@ -192,6 +193,7 @@ def decision_interval(
     soon. Check, at shift 0: k 0.5 and 1e6 give 12.657.
     """
 
+    @cache
     def excess(h: float) -> float:
         length = run_length(k, h, shift, direction=direction, head_start=head_start, clip=clip)
         return math.log(length / wanted)
@@ -203,7 +205,13 @@ def decision_interval(
     if clip is None:
         return increasing_root(excess, guess, slope, 1e-7, _HIGHEST)
     # A jump is where clipped values alone add up to h; rounding must not put h below their sum.
-    return (1 + _JUMP) * increasing_root(excess, guess, slope, 1e-5, _HIGHEST, jump=_JUMP)
+    near = increasing_root(excess, guess, slope, 1e-5, _HIGHEST, jump=_CLOSE)
+    jump = round(near / (clip - k)) * (clip - k)
+    if abs(near - jump) < _CLOSE * near and excess(jump * (1 - _JUMP)) < 0 < excess(
+        jump * (1 + _JUMP)
+    ):
+        return (1 + _JUMP) * jump
+    return (1 + _JUMP) * increasing_root(excess, near, slope, 1e-5, _HIGHEST, jump=_JUMP)
 
 
 def _siegmund_interval(drift: float, wanted: float) -> float:
