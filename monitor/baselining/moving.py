@@ -1,6 +1,6 @@
 """Which streams moved, when, how far, and how that is said.
 
-Knows cuts of a series in two. Must not know what follows from them.
+Knows cuts of a series in two, and which are brief. Must not know what follows from them.
 """
 
 from __future__ import annotations

@@ -16,7 +16,7 @@ from monitor.methods.standstill import standstill
 from monitor.plan import Stream
 
 MUCH = 0.01
-"""Of a stream's readings, from which on a baseline is refused."""
+"""Of a stream's readings, from which on that is more than an incident."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -33,7 +33,7 @@ class Stuck:
 
     @property
     def much(self) -> bool:
-        """Whether that is more than an incident."""
+        """Whether so many readings were identical that the rest tells little of the gauge."""
         return self.share >= MUCH
 
 

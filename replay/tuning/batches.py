@@ -13,7 +13,7 @@ from functools import partial
 from monitor.plan import CharacteristicPlan, Scheme
 from replay.tuning.candidates import Candidate, Request, candidates, configured
 from replay.tuning.grouped import Grouped
-from replay.tuning.judging import Judged, by_itself, family, furthest, judge
+from replay.tuning.judging import Judged, family, furthest, judge
 from replay.tuning.preparing import Held, Prepared
 
 OnProgress = Callable[[str], None]
@@ -57,8 +57,8 @@ def batches(
             families: dict[Scheme, list[Candidate]] = {}
             for candidate in tried:
                 families.setdefault(family(candidate), []).append(candidate)
-            wild = furthest(grouped) if any(by_itself(each.scheme, 1e9) for each in tried) else 0.0
-            one = partial(judge, grouped, interval=held.interval, wildest=wild)
+            wildest = furthest(grouped, tried)
+            one = partial(judge, grouped, interval=held.interval, wildest=wildest)
             if request.jobs > 1:
                 with ThreadPoolExecutor(request.jobs) as pool:
                     done = list(pool.map(one, families.values()))

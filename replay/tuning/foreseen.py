@@ -14,7 +14,7 @@ from replay.tuning.batches import Batch
 from replay.tuning.candidates import Request, configured
 from replay.tuning.declared import Declared
 from replay.tuning.hearing import hear
-from replay.tuning.judging import by_itself, furthest, judge
+from replay.tuning.judging import furthest, judge
 from replay.tuning.lateness import Drifts
 from replay.tuning.preparing import Held, Prepared
 from replay.tuning.result import Setting, Together
@@ -56,7 +56,7 @@ def foresee(
     first part, which are those of the fragment."""
     grouped, found = held.ours, held.found
     tried, unfollowed = configured(proposed.plan, proposed.declared)
-    wildest = furthest(grouped) if any(by_itself(each.scheme, 1e9) for each in tried) else 0.0
+    wildest = furthest(grouped, tried)
     judged = [one for each in tried for one in judge(grouped, [each], held.interval, wildest)]
     batch = Batch(number, held, grouped, judged, [])
     delays, jointly = (

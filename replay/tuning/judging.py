@@ -138,9 +138,12 @@ def by_itself(scheme: Scheme, point: float) -> float:
             return 0.0
 
 
-def furthest(grouped: Grouped) -> float:
+def furthest(grouped: Grouped, tried: Sequence[Candidate]) -> float:
     """The furthest point of the last part, in standard errors, where points have heavy tails; else
-    0. A sum of such points has a heavy tail as well, beyond what its peaks so far show."""
+    0, and where no candidate feels one. A sum of such points has a heavy tail as well, beyond what
+    its peaks so far show."""
+    if not any(by_itself(each.scheme, math.inf) for each in tried):
+        return 0.0
     scheme = ShewhartPlan("mean", 1.0, (RulePlan("outside", 1.0),))
     peaks = [path(scheme, stream).peaks() for stream in grouped.streams]
     points = _tail(grouped, peaks, scheme, 1.0, 1.0, proof=True)

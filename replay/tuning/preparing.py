@@ -13,7 +13,6 @@ import numpy as np
 from monitor import stream_names
 from monitor.baselining.stuck import Stuck, stuck
 from monitor.commandline import CommandError
-from monitor.methods import shift
 from monitor.plan import BaselinePlan, ByCount, CharacteristicPlan, Stream, SubgroupPlan
 from monitor.times import format_duration
 from replay.readings import StreamReadings, Times, Values
@@ -216,18 +215,18 @@ def _hold(
     proof = sum(len(each) - each.prove for each in streams)
     seconds = (1 - PROVE) * running.whole
     rate = proof / seconds
-    values = [((each.mean - each.centre) / each.error)[~each.left_out] for each in streams]
     interval = request.promise * rate
     error = float(np.median([np.median(each.error) for each in streams]))
     readings = sum(len(each.readings.value) for each in streams) / sum(map(len, streams))
+    wander, correlation = wandering.kept(streams)
     found = Grouping(
         size=ours.size,
         said=_said(ours.plan, ours.size),
         fit=ours.fit,
         proof=ours.proof,
         rate=rate,
-        correlation=wandering.first_lag(shift.levelled(values, shift.moves(values))),
-        wander=wandering.kept(streams),
+        correlation=correlation,
+        wander=wander,
         supports=FAR * ours.proof / rate,
         baselines=tuple(_baseline(each) for each in streams),
     )

@@ -36,15 +36,18 @@ def wander(streams: Sequence[Values]) -> Wander:
     )
 
 
-def kept(streams: Sequence[GroupedStream]) -> Wander:
-    """The verdict on the streams of one way of gathering, labelled causes left out."""
+def kept(streams: Sequence[GroupedStream]) -> tuple[Wander, float]:
+    """The verdict on the streams of one way of gathering, labelled causes left out; and how
+    neighbours correlate but for what moved."""
     standard = [((each.mean - each.centre) / each.error)[~each.left_out] for each in streams]
     found = wander(standard)
     moves = shift.moves(standard)
-    if not moves or wander(shift.levelled(standard, moves)).wanders:
-        return found
+    steady = shift.levelled(standard, moves)
+    correlation = first_lag(steady)
+    if not moves or wander(steady).wanders:
+        return found, correlation
     moved = tuple(cut_at(_means(streams[move.number]), move.index) for move in moves)
-    return replace(found, wanders=widest(moved) >= BRIEF, moved=moved)
+    return replace(found, wanders=widest(moved) >= BRIEF, moved=moved), correlation
 
 
 def _means(stream: GroupedStream) -> Means:

@@ -107,7 +107,7 @@ def told(values: Values, promise: float, request: Request | None = None) -> list
     return [
         Told(judged, setting(judged, held.ours, 0, found, place, ()))
         for each in tried
-        for judged in judge(held.ours, [each], held.interval, furthest(held.ours))
+        for judged in judge(held.ours, [each], held.interval, furthest(held.ours, tried))
     ]
 
 

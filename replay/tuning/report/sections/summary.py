@@ -148,22 +148,25 @@ def _key(result: Result, best: Setting | None) -> list[tuple[str, Text]]:
         return pairs
     # As the crew would hear it: all that is to be put in, where it is known.
     shown: Shown = result.proposed or best
-    whole = " of all of the fragment" if result.proposed is not None else ""
+    whole = "" if result.proposed is None else "of all of the fragment "
     pairs.append(
         _tile(
             "Counted",
             words.plural(shown.observed.alarms, "false alarm"),
-            f"{whole[1:]} in {spans.long(shown.observed.seconds)} of the last part".strip(),
+            f"{whole}in {spans.long(shown.observed.seconds)} of the last part",
         )
     )
     if shown.extrapolated is not None:
         interval = shown.extrapolated.interval
         if interval.high is None:
             told = f"at least {spans.long(interval.low)}"
-            note = f"between false alarms{whole}; more than this recording can tell"
+            note = f"between false alarms {whole}".rstrip() + "; more than this recording can tell"
         else:
             told = spans.long(shown.extrapolated.seconds)
-            note = f"between false alarms{whole}; {words.time_range(interval)} with 90 %"
+            note = (
+                f"between false alarms {whole}".rstrip()
+                + f"; {words.time_range(interval)} with 90 %"
+            )
         pairs.append(_tile("Delivered", told, note))
     delay = chosen.first_step(best, result)
     if delay is not None and delay.late_readings.value is not None:
